@@ -1,0 +1,86 @@
+"""The errors that reach a user, each with the place, the rule, the value found and the remedy."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass, field
+
+__all__ = ["GradelineError", "OutputError", "Problem", "QuantityError", "ReductionError", "SurveyError"]
+
+
+class GradelineError(Exception):
+    """The base of every error that gradeline raises on purpose."""
+
+
+class QuantityError(GradelineError, ValueError):
+    """A text that is not a number with a unit of the wanted dimension."""
+
+
+class ReductionError(GradelineError, ValueError):
+    """A survey that is sound as a file but from which nothing at all can be reduced as asked."""
+
+
+class OutputError(GradelineError, OSError):
+    """A result that could not be written."""
+
+
+@dataclass(frozen=True, order=True)
+class Problem:
+    """One fault of a survey.
+
+    Problems sort by place: file, then row, then column or key.
+
+    Parameters
+    ----------
+    file : str
+        Name of the file inside the survey folder, such as ``readings.csv``.
+    row : int or None
+        Line number in the file as an editor shows it (the heading is 1); None where the whole file is meant.
+    column : str or None
+        Heading of the column, or the TOML key such as ``reach[1].diameter``.
+    message : str
+        The rule, the value found and the remedy, in one sentence.
+
+    Examples
+    --------
+    >>> str(Problem("readings.csv", 7, "T4 [mm]", "'12,4x' is not a number; leave the cell empty"))
+    "readings.csv row 7, T4 [mm]: '12,4x' is not a number; leave the cell empty"
+    """
+
+    file: str
+    row: int | None = field(compare=False)
+    column: str | None = field(compare=False)
+    message: str = field(compare=False)
+    _order: tuple[int, str, str] = field(init=False, repr=False)
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "_order", (self.row or 0, self.column or "", self.message))
+
+    def __str__(self) -> str:
+        row = f" row {self.row}" if self.row is not None else ""
+        comma = "," if row else ""
+        column = f"{comma} {self.column}" if self.column else ""
+        return f"{self.file}{row}{column}: {self.message}"
+
+
+class SurveyError(GradelineError, ValueError):
+    """A survey with problems; all of them are told at once.
+
+    Parameters
+    ----------
+    problems : iterable of Problem
+        At least one; sorted by place here.
+
+    Examples
+    --------
+    >>> error = SurveyError([Problem("taps.csv", None, None, "the file is missing; add it")])
+    >>> print(error)
+    taps.csv: the file is missing; add it
+    """
+
+    def __init__(self, problems: Iterable[Problem]) -> None:
+        self.problems = tuple(sorted(problems))
+        super().__init__("\n".join(str(problem) for problem in self.problems))
+
+    def __reduce__(self) -> tuple[type[SurveyError], tuple[tuple[Problem, ...]]]:
+        return type(self), (self.problems,)

@@ -1,0 +1,1 @@
+"""Pure functions over float arrays, SI in and SI out: fluids, friction, manometry, losses, grade lines."""

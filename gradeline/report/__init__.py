@@ -1,0 +1,1 @@
+"""A reduction to what people read and keep: figures, page, tables, terminal."""

@@ -1,0 +1,441 @@
+"""The domain model: a survey is a line (reaches, fittings, taps, gauges), its runs and their readings.
+
+Everything here is in SI units (metres, seconds, kelvin, pascals, radians) and valid once made. An uncertainty
+that nobody stated is None, never zero.
+"""
+
+from __future__ import annotations
+
+import itertools
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from types import MappingProxyType
+from typing import Literal
+
+import numpy as np
+import pandas as pd
+
+from gradeline.errors import Problem, SurveyError
+from gradeline.quantities import Measured
+
+__all__ = [
+    "GAUGE_KINDS",
+    "Fitting",
+    "Fluid",
+    "Gauge",
+    "GaugeKey",
+    "GaugeKind",
+    "Observation",
+    "Reach",
+    "Site",
+    "SourceFile",
+    "Stated",
+    "StatedUncertainties",
+    "Survey",
+    "Tap",
+]
+
+
+@dataclass(frozen=True)
+class GaugeKey:
+    """One key that a gauge of some kind takes in ``survey.toml``.
+
+    Parameters
+    ----------
+    dimension : str
+        A dimension that `gradeline.quantities` knows, or ``"text"``.
+    meaning : str
+        One line for messages and for the written survey.
+    required : bool
+        Whether the key must be given.
+    positive : bool
+        Whether the value must be above zero.
+    """
+
+    dimension: str
+    meaning: str
+    required: bool = False
+    positive: bool = False
+
+
+@dataclass(frozen=True)
+class GaugeKind:
+    """What a survey may say of one kind of gauge; its physics is in `gradeline.hydraulics.manometry`.
+
+    Parameters
+    ----------
+    reading : str
+        Dimension of a reading: ``"length"`` or ``"pressure"``.
+    keys : mapping of str to GaugeKey
+        The keys of this kind beside those that every gauge takes.
+    differential : bool
+        Whether one reading is a difference between two taps.
+    """
+
+    reading: Literal["length", "pressure"]
+    keys: Mapping[str, GaugeKey]
+    differential: bool = False
+
+
+_LINE_KEYS = {
+    "line_fluid": GaugeKey("text", "fluid in the connecting line, where it is not the flowing one"),
+    "line_temperature": GaugeKey(
+        "temperature", "temperature of the connecting line, where it is not the run's"
+    ),
+}
+
+#: Every gauge kind by its name in ``survey.toml``. The loader dispatches on this table; the head of each kind is
+#: the entry of the same name in `gradeline.hydraulics.manometry.HEADS`.
+GAUGE_KINDS: Mapping[str, GaugeKind] = MappingProxyType(
+    {
+        "piezometer": GaugeKind(
+            reading="length",
+            keys={
+                "zero": GaugeKey("length", "elevation of the scale's zero above datum"),
+                "inclination": GaugeKey(
+                    "angle", "of the scale from the horizontal; 90 deg when left out", positive=True
+                ),
+                "bore": GaugeKey("length", "of the tube, for its capillary rise", positive=True),
+                "column_temperature": GaugeKey("temperature", "of the column, where it is not the run's"),
+            },
+        ),
+        "pressure gauge": GaugeKind(reading="pressure", keys=_LINE_KEYS),
+    }
+)
+
+
+@dataclass(frozen=True)
+class Stated:
+    """A stated standard uncertainty, absolute (SI) or relative to the value.
+
+    Examples
+    --------
+    >>> Stated(0.004, relative=True).of(0.5)
+    0.002
+    """
+
+    value: float
+    relative: bool = False
+
+    def of(self, value: float) -> float:
+        """Return the standard uncertainty of `value`, in the unit of `value`."""
+        return abs(value) * self.value if self.relative else self.value
+
+
+@dataclass(frozen=True)
+class StatedUncertainties:
+    """The table ``[uncertainty]``: standard uncertainties, None where nobody stated one.
+
+    ``reading`` (m or Pa by the gauge; one reading, random), ``chainage`` and ``elevation`` (m; one tap, the same in
+    all runs), ``flow`` (one run, random), ``flow_scale`` (relative; all runs alike), ``temperature`` (K; all runs
+    alike), ``temperature_run`` (K; random), ``friction_law`` (relative, of f). A reading uncertainty has a length
+    and a pressure, since one survey may hold gauges of both kinds; the table states one of them.
+    """
+
+    reading: float | None = None
+    reading_pressure: float | None = None
+    chainage: float | None = None
+    elevation: float | None = None
+    flow: Stated | None = None
+    flow_scale: float | None = None
+    temperature: float | None = None
+    temperature_run: float | None = None
+    friction_law: float | None = None
+
+
+@dataclass(frozen=True)
+class Fluid:
+    """The flowing fluid: water by name, any other by its density and one viscosity.
+
+    Parameters
+    ----------
+    name : str
+        ``"water"``, or any name where the properties are given.
+    density : Measured or None
+        kg/m³.
+    viscosity : Measured or None
+        Dynamic, Pa s.
+    kinematic_viscosity : Measured or None
+        m²/s.
+    """
+
+    name: str = "water"
+    density: Measured | None = None
+    viscosity: Measured | None = None
+    kinematic_viscosity: Measured | None = None
+
+
+@dataclass(frozen=True)
+class Site:
+    """Where the line lies: gravity (m/s²) as stated, or latitude (rad) and altitude (m)."""
+
+    latitude: float | None = None
+    altitude: float | None = None
+    gravity: Measured | None = None
+
+
+@dataclass(frozen=True)
+class Reach:
+    """A length of one bore and one wall, from chainage `start` to `end` (m), in flow order.
+
+    `inlet` says that the flow enters here undeveloped, so that the entrance length counts from `start`.
+    """
+
+    name: str
+    start: float
+    end: float
+    diameter: Measured
+    wall: str
+    inlet: bool = False
+
+    @property
+    def length(self) -> float:
+        """Length of the reach, m."""
+        return self.end - self.start
+
+
+@dataclass(frozen=True)
+class Fitting:
+    """A local loss at one chainage.
+
+    Parameters
+    ----------
+    name : str
+        Its label.
+    at : float
+        Chainage, m.
+    loss_coefficient : Measured or None
+        K, or None where it is to be fitted.
+    velocity : {"smaller", "upstream", "downstream"}
+        The bore whose velocity head K refers to.
+    change_of_bore : bool
+        Whether it stands for the change of bore at a boundary between reaches.
+    approach, recovery : float
+        Taps nearer than this many bores upstream and downstream are disturbed.
+    """
+
+    name: str
+    at: float
+    loss_coefficient: Measured | None
+    velocity: Literal["smaller", "upstream", "downstream"] = "smaller"
+    change_of_bore: bool = False
+    approach: float = 2.0
+    recovery: float = 10.0
+
+
+@dataclass(frozen=True)
+class Gauge:
+    """An instrument that reads one or more taps.
+
+    Parameters
+    ----------
+    name : str
+        Its label, as in ``[gauge.NAME]``.
+    kind : str
+        A key of `GAUGE_KINDS`.
+    settings : mapping
+        The kind's own keys that were given, SI values as `Measured` or text.
+    reading_u : float or None
+        Standard uncertainty of one reading, random, in the unit of the reading (m or Pa).
+    resolution : float or None
+        Smallest step that can be read, in the unit of the reading.
+    zero_u : float or None
+        Standard uncertainty of the zero, the same in all runs, in the unit of the reading.
+    scale_u : float or None
+        Relative standard uncertainty of the scale, the same in all runs.
+    """
+
+    name: str
+    kind: str
+    settings: Mapping[str, Measured | str] = field(default_factory=dict)
+    reading_u: float | None = None
+    resolution: float | None = None
+    zero_u: float | None = None
+    scale_u: float | None = None
+
+
+@dataclass(frozen=True)
+class Tap:
+    """A pressure tap.
+
+    Parameters
+    ----------
+    name : str
+        Its label.
+    chainage : float
+        True length along the pipe's axis, m.
+    elevation : float
+        Of the pipe's axis above datum, m.
+    gauge : str or None
+        The gauge that reads it; None where only differential gauges do.
+    gauge_elevation : float or None
+        Elevation of its gauge, m; None: at the pipe's axis.
+    reading_u, chainage_u, elevation_u : float or None
+        This tap's own standard uncertainties, which go before those of the gauge and the survey.
+    """
+
+    name: str
+    chainage: float
+    elevation: float = 0.0
+    gauge: str | None = None
+    gauge_elevation: float | None = None
+    reading_u: float | None = None
+    chainage_u: float | None = None
+    elevation_u: float | None = None
+
+
+@dataclass(frozen=True)
+class Observation:
+    """One column of readings: a gauge at a tap, or between `tap` (upstream) and `tap_2` (downstream)."""
+
+    gauge: str
+    tap: str
+    tap_2: str | None = None
+
+    @property
+    def label(self) -> str:
+        """The tap, or the gauge of a differential reading: the name of its column of readings."""
+        return self.tap if self.tap_2 is None else self.gauge
+
+
+@dataclass(frozen=True)
+class SourceFile:
+    """An input file and the SHA-256 of its bytes."""
+
+    name: str
+    sha256: str
+
+
+@dataclass(frozen=True)
+class Survey:
+    """A line, its runs and their readings, valid once made.
+
+    Parameters
+    ----------
+    title : str
+        What the survey calls itself.
+    source : str
+        The folder or file it was read from.
+    reaches : tuple of Reach
+        In flow order, contiguous.
+    fittings, taps, gauges : tuples
+        Taps in order of chainage.
+    observations : tuple of Observation
+        One for each column of `readings`, in the same order.
+    runs : DataFrame
+        One row a run, in the order of the file: ``run`` (text), ``flow`` (m³/s, mean of the repeats),
+        ``flow_u`` (standard uncertainty of that mean from the spread of repeats, NaN without repeats),
+        ``temperature`` (K, NaN where it was not given), ``repeats`` (int).
+    readings : DataFrame
+        Indexed by run, one column an observation (its label), SI (m or Pa), mean of the repeats, NaN where not taken.
+    repeats : DataFrame
+        Like `readings`: how many values each mean has (int).
+    spreads : DataFrame
+        Like `readings`: standard deviation of one reading among the repeats, NaN where there are fewer than two.
+    stated : StatedUncertainties
+        What ``[uncertainty]`` says.
+    files : tuple of SourceFile
+        The input files.
+    assumptions, cautions : tuple of str
+        What the loader took for granted, and what a reader should know.
+    date : str or None
+        As in the file (ISO 8601).
+
+    Raises
+    ------
+    SurveyError
+        Where the parts do not fit together.
+    """
+
+    title: str
+    source: str
+    reaches: tuple[Reach, ...]
+    taps: tuple[Tap, ...]
+    gauges: tuple[Gauge, ...]
+    observations: tuple[Observation, ...]
+    runs: pd.DataFrame
+    readings: pd.DataFrame
+    repeats: pd.DataFrame
+    spreads: pd.DataFrame
+    fittings: tuple[Fitting, ...] = ()
+    fluid: Fluid = Fluid()
+    site: Site = Site()
+    stated: StatedUncertainties = StatedUncertainties()
+    files: tuple[SourceFile, ...] = ()
+    assumptions: tuple[str, ...] = ()
+    cautions: tuple[str, ...] = ()
+    date: str | None = None
+
+    def __post_init__(self) -> None:
+        problems = [Problem(self.source or "survey", None, None, text) for text in _faults(self)]
+        if problems:
+            raise SurveyError(problems)
+
+    def tap(self, name: str) -> Tap:
+        """Return the tap called `name`; KeyError where there is none."""
+        return {tap.name: tap for tap in self.taps}[name]
+
+    def gauge(self, name: str) -> Gauge:
+        """Return the gauge called `name`; KeyError where there is none."""
+        return {gauge.name: gauge for gauge in self.gauges}[name]
+
+
+def _faults(survey: Survey) -> list[str]:
+    """What keeps the parts of a survey from fitting together."""
+    found: list[str] = []
+    found += [
+        f"two {plural} are called {name!r}; give each its own name"
+        for plural, names in (
+            ("reaches", [reach.name for reach in survey.reaches]),
+            ("fittings", [fitting.name for fitting in survey.fittings]),
+            ("taps", [tap.name for tap in survey.taps]),
+            ("gauges", [gauge.name for gauge in survey.gauges]),
+            ("runs", list(survey.runs["run"])),
+        )
+        for name in sorted({name for name in names if names.count(name) > 1})
+    ]
+    if not survey.reaches:
+        return [*found, "there is no reach; give at least one"]
+    for reach in survey.reaches:
+        if not reach.end > reach.start:
+            found.append(
+                f"reach {reach.name!r} ends at {reach.end} m, not after its start at {reach.start} m"
+            )
+        if not reach.diameter.value > 0:
+            found.append(f"reach {reach.name!r} has a bore of {reach.diameter.value} m; it must be above 0")
+    for before, after in itertools.pairwise(survey.reaches):
+        if not np.isclose(before.end, after.start, rtol=0, atol=1e-9):
+            found.append(
+                f"reach {after.name!r} starts at {after.start} m but {before.name!r} ends at {before.end} m; "
+                "reaches follow each other without a gap"
+            )
+    first, last = survey.reaches[0].start, survey.reaches[-1].end
+    for what, name, at in [("tap", tap.name, tap.chainage) for tap in survey.taps] + [
+        ("fitting", fitting.name, fitting.at) for fitting in survey.fittings
+    ]:
+        if not first <= at <= last:
+            found.append(f"{what} {name!r} at {at} m lies outside every reach ({first} m to {last} m)")
+    chainages = [tap.chainage for tap in survey.taps]
+    if any(after <= before for before, after in itertools.pairwise(chainages)):
+        found.append("the chainages of the taps do not increase")
+    known = {tap.name for tap in survey.taps}
+    kinds = {gauge.name: gauge.kind for gauge in survey.gauges}
+    found += [
+        f"gauge {name!r} is of unknown kind {kind!r}; known are {', '.join(GAUGE_KINDS)}"
+        for name, kind in kinds.items()
+        if kind not in GAUGE_KINDS
+    ]
+    for observation in survey.observations:
+        if observation.gauge not in kinds:
+            found.append(f"readings name the gauge {observation.gauge!r}, which is not described")
+        if not {observation.tap, observation.tap_2} <= known | {None}:
+            found.append(f"readings name a tap that is not described: {observation.label!r}")
+    shape = (len(survey.runs), len(survey.observations))
+    for table in ("readings", "repeats", "spreads"):
+        if getattr(survey, table).shape != shape:
+            found.append(
+                f"{table} has the shape {getattr(survey, table).shape}, not {shape} (runs, observations)"
+            )
+    if (survey.runs["flow"].to_numpy(float) < 0).any():
+        found.append("a flow is negative; chainage increases downstream")
+    return found
