@@ -1,1 +1,38 @@
-"""From manometer and gauge readings along a pipe to head loss, friction factor and wall roughness."""
+"""From manometer and gauge readings along a pipe to head loss, friction factor and wall roughness.
+
+`read_survey` reads a survey's folder, `reduce` makes a `Reduction` of it: a set of tables. Each name is loaded when
+it is first used, so that the command line answers at once.
+"""
+
+from __future__ import annotations
+
+import importlib
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from gradeline.errors import GradelineError
+    from gradeline.loader import read_survey
+    from gradeline.reduction import Reduction, reduce
+    from gradeline.survey import Survey
+
+__all__ = ["GradelineError", "Reduction", "Survey", "read_survey", "reduce"]
+
+_HOMES = {
+    "GradelineError": "gradeline.errors",
+    "Reduction": "gradeline.reduction",
+    "Survey": "gradeline.survey",
+    "read_survey": "gradeline.loader",
+    "reduce": "gradeline.reduction",
+}
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _HOMES:
+        raise AttributeError(f"module 'gradeline' has no attribute {name!r}")
+    value = getattr(importlib.import_module(_HOMES[name]), name)
+    globals()[name] = value
+    return value
+
+
+def __dir__() -> list[str]:
+    return sorted({*globals(), *__all__})

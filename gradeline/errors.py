@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 __all__ = ["GradelineError", "OutputError", "Problem", "QuantityError", "ReductionError", "SurveyError"]
 
@@ -24,11 +24,13 @@ class OutputError(GradelineError, OSError):
     """A result that could not be written."""
 
 
-@dataclass(frozen=True, order=True)
+# Files in the order in which a survey is read, by name without ending; any other file comes first.
+_ORDER = ("survey", "taps", "runs", "readings")
+
+
+@dataclass(frozen=True)
 class Problem:
     """One fault of a survey.
-
-    Problems sort by place: file, then row, then column or key.
 
     Parameters
     ----------
@@ -48,13 +50,15 @@ class Problem:
     """
 
     file: str
-    row: int | None = field(compare=False)
-    column: str | None = field(compare=False)
-    message: str = field(compare=False)
-    _order: tuple[int, str, str] = field(init=False, repr=False)
+    row: int | None
+    column: str | None
+    message: str
 
-    def __post_init__(self) -> None:
-        object.__setattr__(self, "_order", (self.row or 0, self.column or "", self.message))
+    @property
+    def place(self) -> tuple[int, str, int]:
+        """What problems are sorted by: the file in reading order, then the row."""
+        stem = self.file.partition(".")[0]
+        return (_ORDER.index(stem) if stem in _ORDER else -1, self.file, self.row or 0)
 
     def __str__(self) -> str:
         row = f" row {self.row}" if self.row is not None else ""
@@ -69,7 +73,7 @@ class SurveyError(GradelineError, ValueError):
     Parameters
     ----------
     problems : iterable of Problem
-        At least one; sorted by place here.
+        At least one; sorted by place here, and left in their order within one row.
 
     Examples
     --------
@@ -79,7 +83,7 @@ class SurveyError(GradelineError, ValueError):
     """
 
     def __init__(self, problems: Iterable[Problem]) -> None:
-        self.problems = tuple(sorted(problems))
+        self.problems = tuple(sorted(problems, key=lambda problem: problem.place))
         super().__init__("\n".join(str(problem) for problem in self.problems))
 
     def __reduce__(self) -> tuple[type[SurveyError], tuple[tuple[Problem, ...]]]:

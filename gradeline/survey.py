@@ -7,6 +7,7 @@ that nobody stated is None, never zero.
 from __future__ import annotations
 
 import itertools
+from collections import Counter
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from types import MappingProxyType
@@ -340,6 +341,8 @@ class Survey:
         What the loader took for granted, and what a reader should know.
     date : str or None
         As in the file (ISO 8601).
+    units : mapping of str to str
+        The unit of each column as the files gave it; columns of ``taps.csv`` begin with the file's name.
 
     Raises
     ------
@@ -365,6 +368,7 @@ class Survey:
     assumptions: tuple[str, ...] = ()
     cautions: tuple[str, ...] = ()
     date: str | None = None
+    units: Mapping[str, str] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         problems = [Problem(self.source or "survey", None, None, text) for text in _faults(self)]
@@ -392,7 +396,8 @@ def _faults(survey: Survey) -> list[str]:
             ("gauges", [gauge.name for gauge in survey.gauges]),
             ("runs", list(survey.runs["run"])),
         )
-        for name in sorted({name for name in names if names.count(name) > 1})
+        for name, count in sorted(Counter(names).items())
+        if count > 1
     ]
     if not survey.reaches:
         return [*found, "there is no reach; give at least one"]

@@ -1,1 +1,33 @@
-"""The command line: parse, call, print. No arithmetic."""
+"""The command line."""
+
+from __future__ import annotations
+
+import os
+import sys
+
+__all__ = ["main"]
+
+
+def main() -> None:
+    """Run the command line and exit with its code: 0 done, 2 wrong use, 3 survey problems, 4 not written.
+
+    Whatever goes wrong that nobody foresaw is told in one line, with exit code 1; with ``GRADELINE_TRACEBACK`` set
+    in the environment, its traceback is shown.
+    """
+    from gradeline.cli.app import app  # noqa: PLC0415
+
+    for stream in (sys.stdout, sys.stderr):
+        if hasattr(stream, "reconfigure"):  # a terminal that cannot show ± or ε shows a question mark instead
+            stream.reconfigure(errors="replace")
+    try:
+        app(prog_name="gradeline")
+    except Exception as error:
+        if os.environ.get("GRADELINE_TRACEBACK"):
+            raise
+        said = " ".join(str(error).split())[:200]
+        print(
+            f"gradeline met an error that it does not know ({type(error).__name__}: {said}). Please report it, with "
+            "the survey if you can; GRADELINE_TRACEBACK=1 in the environment shows where it happened.",
+            file=sys.stderr,
+        )
+        sys.exit(1)

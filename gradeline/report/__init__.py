@@ -1,1 +1,30 @@
-"""A reduction to what people read and keep: figures, page, tables, terminal."""
+"""A reduction to what people read and keep: figures, page, tables, terminal.
+
+The names below are loaded when they are first asked for, so that asking for help loads no drawing.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+from gradeline.report.formats import FORMATS
+
+if TYPE_CHECKING:
+    from gradeline.report.output import write
+    from gradeline.report.sentences import summarise
+    from gradeline.report.terminal import terminal_summary
+
+__all__ = ["FORMATS", "summarise", "terminal_summary", "write"]
+
+_HOMES = {
+    "summarise": "gradeline.report.sentences",
+    "terminal_summary": "gradeline.report.terminal",
+    "write": "gradeline.report.output",
+}
+
+
+def __getattr__(name: str) -> Any:
+    if name in _HOMES:
+        return getattr(import_module(_HOMES[name]), name)
+    raise AttributeError(f"module {__name__!r} has no attribute {name!r}")

@@ -1,0 +1,189 @@
+"""How the readings scatter: σ² = σ₀² + (c V²/2g)², since columns and needles surge with the flow.
+
+The scale is robust (each run is trimmed of its worst readings first, and no single run counts for more than its
+share), pooled over all runs, and held up by what was stated.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+__all__ = ["Scatter", "estimate_scatter", "scatter_variance"]
+
+Array = NDArray[np.float64]
+
+#: A surge is taken up only where it improves twice the log-likelihood by this much (5 %, one-sided).
+_SURGE_EVIDENCE = 2.71
+#: No run's scatter counts for more than this many times what the model expects.
+_MOST_RATIO = 6.0
+
+
+@dataclass(frozen=True)
+class Scatter:
+    """The scatter of one gauge kind.
+
+    Parameters
+    ----------
+    base : float
+        σ₀, m; NaN where there is nothing to judge by.
+    surge : float
+        c, dimensionless: the part of the velocity head that a reading swings by.
+    pooled : float
+        σ₀ from the readings alone, before a stated floor, m; NaN where the readings leave no freedom.
+    dof : float
+        Degrees of freedom of the pooled scatter, dimensionless.
+    """
+
+    base: float
+    surge: float
+    pooled: float
+    dof: float
+
+
+def estimate_scatter(
+    squares: Array,
+    expected: Array,
+    shape: Array,
+    velocity_head: Array,
+    *,
+    known: Array | None = None,
+    floor: float = 0.0,
+) -> Scatter:
+    """Fit σ₀ and c to the runs' sums of squares.
+
+    Parameters
+    ----------
+    squares : (R,) array
+        (Trimmed) sum of squared residuals of each run, m².
+    expected : (R,) array
+        Its mean for unit variance, dimensionless; runs with 0 are left out.
+    shape : (R,) array
+        Degrees of freedom of the chi-square of the same relative spread, dimensionless.
+    velocity_head : (R,) array
+        V²/2g of each run, m.
+    known : (R,) array, optional
+        Variance from sources that are accounted for elsewhere, m²: taken out of the scatter.
+    floor : float
+        Stated uncertainty of one reading, with its resolution, m; 0 where nothing was stated.
+
+    Returns
+    -------
+    Scatter
+        With `base` at least `floor`.
+
+    Notes
+    -----
+    The variances s² = squares / expected are taken as gamma distributed about σ₀² + c² (V²/2g)² + known, and σ₀², c²
+    are found by iterated weighted least squares, which is the maximum likelihood of that model (P. McCullagh and
+    J. A. Nelder, *Generalized Linear Models*, 2nd ed. 1989, ch. 8). c is kept only where the likelihood asks for it.
+
+    Examples
+    --------
+    >>> rng = np.random.default_rng(1)
+    >>> heads = np.linspace(0.0, 0.5, 40)
+    >>> true = 0.001**2 + (0.01 * heads) ** 2
+    >>> scatter = estimate_scatter(true * rng.chisquare(8, 40), np.full(40, 8.0), np.full(40, 8.0), heads)
+    >>> round(scatter.base, 4), round(scatter.surge, 3)
+    (0.001, 0.01)
+    """
+    sound = np.isfinite(squares) & (expected > 1e-6)
+    dof = float(shape[sound].sum())
+    if not sound.any():
+        base = floor if floor > 0 else np.nan
+        return Scatter(base=base, surge=0.0, pooled=np.nan, dof=0.0)
+    variance = squares[sound] / expected[sound]
+    freedom, head = shape[sound], velocity_head[sound]
+    given = np.zeros_like(variance) if known is None else known[sound]
+    flat = _fit(variance, freedom, np.zeros((len(head), 0)), given)
+    base2, surge2 = float(flat[0]), 0.0
+    if len(variance) >= 4 and np.ptp(head) > 0:
+        steep = _fit(variance, freedom, (head**2)[:, None], given)
+        gains = _gains(variance, freedom, steep[0] + steep[1] * head**2 + given, base2 + given)
+        # One run is no evidence: a surge must show without the run that speaks loudest for it.
+        rest = np.arange(len(variance)) != int(gains.argmax())
+        if steep[1] > 0 and 2 * gains.sum() > _SURGE_EVIDENCE and _surges(variance, freedom, head, given, rest):
+            base2, surge2 = float(steep[0]), float(steep[1])
+    pooled = float(np.sqrt(base2))
+    return Scatter(base=max(pooled, floor), surge=float(np.sqrt(surge2)), pooled=pooled, dof=dof)
+
+
+def _fit(variance: Array, freedom: Array, extra: Array, given: Array) -> Array:
+    """Non-negative weighted least squares of the variances, weights renewed until they settle."""
+    columns = np.column_stack([np.ones(len(variance)), extra])
+    tiny = max(float(np.median(variance)), 1e-30) * 1e-9
+    estimate = np.zeros(columns.shape[1])
+    estimate[0] = max(float(np.median(variance - given)), tiny)
+    for _ in range(30):
+        model = columns @ estimate + given
+        bounded = np.minimum(variance, _MOST_RATIO * model)
+        weight = freedom / model**2
+        new = _non_negative(columns, bounded - given, weight)
+        new[0] = max(float(new[0]), tiny)
+        done = bool(np.all(np.abs(new - estimate) <= 1e-10 * np.abs(estimate) + 1e-300))
+        estimate = new
+        if done:
+            break
+    return estimate
+
+
+def _non_negative(columns: Array, values: Array, weight: Array) -> Array:
+    """Weighted least squares in one or two parameters, none below zero."""
+    normal = columns.T @ (weight[:, None] * columns)
+    right = columns.T @ (weight * values)
+    alone = np.maximum(right / np.diagonal(normal), 0.0)
+    if len(right) == 1:
+        return np.asarray(alone)
+    if np.linalg.det(normal) > 1e-12 * normal[0, 0] * normal[1, 1]:
+        both = np.linalg.solve(normal, right)
+        if (both >= 0).all():
+            return np.asarray(both)
+    # The minimum lies on an edge: the one that explains more.
+    falls = alone * right
+    best = int(np.argmax(falls))
+    edge = np.zeros(2)
+    edge[best] = alone[best]
+    return edge
+
+
+def _surges(variance: Array, freedom: Array, head: Array, given: Array, runs: NDArray[np.bool_]) -> bool:
+    """Whether the likelihood of these runs asks for a surge."""
+    part = [values[runs] for values in (variance, freedom, head, given)]
+    flat = _fit(part[0], part[1], np.zeros((len(part[0]), 0)), part[3])
+    steep = _fit(part[0], part[1], (part[2] ** 2)[:, None], part[3])
+    gains = _gains(part[0], part[1], steep[0] + steep[1] * part[2] ** 2 + part[3], flat[0] + part[3])
+    return bool(steep[1] > 0 and 2 * gains.sum() > _SURGE_EVIDENCE)
+
+
+def _gains(variance: Array, freedom: Array, model: Array, rival: Array) -> Array:
+    """How much each run's log-likelihood prefers the model to its rival."""
+
+    def likelihood(of: Array) -> Array:
+        return np.asarray(-0.5 * freedom * (np.log(of) + np.minimum(variance / of, _MOST_RATIO)))
+
+    return likelihood(model) - likelihood(rival)
+
+
+def scatter_variance(scatter: Scatter, velocity_head: Array) -> Array:
+    """Return σ² at each velocity head.
+
+    Parameters
+    ----------
+    scatter : Scatter
+        Of the gauge kind.
+    velocity_head : array
+        V²/2g, m.
+
+    Returns
+    -------
+    array
+        σ₀² + (c V²/2g)², m².
+
+    Examples
+    --------
+    >>> scatter_variance(Scatter(0.001, 0.01, 0.001, 80.0), np.array([0.0, 0.1])).tolist()
+    [1e-06, 2e-06]
+    """
+    return np.asarray(scatter.base**2 + (scatter.surge * velocity_head) ** 2)

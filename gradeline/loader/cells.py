@@ -1,0 +1,288 @@
+"""A table on disk as columns of text cells with their line numbers, and the text of cells as numbers.
+
+Other table formats join here: each needs to return `Cells`, and nothing else has to change.
+"""
+
+from __future__ import annotations
+
+import csv
+import difflib
+import io
+import re
+from collections.abc import Iterable
+from dataclasses import dataclass
+
+import numpy as np
+
+from gradeline.errors import QuantityError
+from gradeline.loader.ledger import PLACEHOLDER, Ledger
+from gradeline.quantities import Unit, parse_number
+
+__all__ = ["Cells", "Heading", "Hints", "column_index", "nearest", "numbers", "parse_heading", "read_cells"]
+
+_NOT_NUMERIC = re.compile(r"[^0-9eE.+\-\n]")
+_TO_FILL_IN = "the value is still to be filled in"
+_TOO_LARGE = 1e100
+_LISTED = 12
+_HINTED = 20
+
+
+@dataclass(frozen=True)
+class Heading:
+    """The heading of a column: a name and the text between its square brackets.
+
+    `unit` is None where there are no brackets.
+    """
+
+    text: str
+    name: str
+    unit: str | None
+
+
+@dataclass(frozen=True)
+class Cells:
+    """A table of text cells, stripped.
+
+    Parameters
+    ----------
+    file : str
+        Its name, for messages.
+    headings : tuple of Heading
+        One for each column.
+    columns : tuple of list of str
+        The cells below each heading.
+    lines : list of int
+        The line of each row as an editor shows it.
+    heading_line : int
+        The line of the heading.
+    """
+
+    file: str
+    headings: tuple[Heading, ...]
+    columns: tuple[list[str], ...]
+    lines: list[int]
+    heading_line: int = 1
+
+    def __len__(self) -> int:
+        return len(self.lines)
+
+
+def parse_heading(text: str) -> Heading:
+    """Return the name and the unit of a heading.
+
+    Examples
+    --------
+    >>> parse_heading("flow [L/s]")
+    Heading(text='flow [L/s]', name='flow', unit='L/s')
+    >>> parse_heading("run").unit is None
+    True
+    """
+    stripped = " ".join(text.split())
+    found = re.fullmatch(r"(.*?)\s*\[([^\[\]]*)\]", stripped)
+    return Heading(stripped, found[1], found[2].strip()) if found else Heading(stripped, stripped, None)
+
+
+def nearest(name: str, known: Iterable[str]) -> str:
+    """Return the remedy for an unknown name: the nearest known one, or all of them.
+
+    Examples
+    --------
+    >>> nearest("chainge", ["tap", "chainage"])
+    "did you mean 'chainage'?"
+    >>> nearest("x", ["tap", "gauge"])
+    'known are gauge, tap'
+    """
+    folded = {each.casefold(): each for each in known}
+    close = difflib.get_close_matches(name.casefold(), folded, n=1, cutoff=0.6)
+    if close:
+        return f"did you mean {folded[close[0]]!r}?"
+    listed = sorted(folded.values())
+    more = f" and {len(listed) - _LISTED} more" if len(listed) > _LISTED else ""
+    return f"known are {', '.join(listed[:_LISTED])}{more}" if listed else "none is known here"
+
+
+class Hints:
+    """The remedy for each of many unknown names: the nearest known one, for the first few that differ.
+
+    To compare thousands of names with thousands would take minutes, and a list of remedies so long helps nobody.
+
+    Parameters
+    ----------
+    known : iterable of str
+        The known names.
+
+    Examples
+    --------
+    >>> Hints(["T1", "T2"])("T11")
+    "did you mean 'T1'?"
+    """
+
+    def __init__(self, known: Iterable[str]) -> None:
+        self._known = list(known)
+        self._found: dict[str, str] = {}
+
+    def __call__(self, name: str) -> str:
+        """Return the remedy for `name`."""
+        if name not in self._found:
+            if len(self._found) >= _HINTED:
+                return "see the remedies above"
+            self._found[name] = nearest(name, self._known)
+        return self._found[name]
+
+
+def read_cells(ledger: Ledger, name: str, *, required: bool = True) -> Cells | None:
+    """Return a csv file of the survey as cells, None (with its problems noted) where that fails.
+
+    Rows without any text are passed over. A column that begins with ``note`` is dropped.
+    """
+    text = ledger.text_of(name, required=required)
+    if text is None:
+        return None
+    rows, lines = _rows(ledger, name, text)
+    if not rows:
+        if not any(problem.file == name for problem in ledger.problems):
+            ledger.problem(name, None, None, "the file is empty; give a heading and rows")
+        return None
+    headings = tuple(parse_heading(cell) for cell in rows[0])
+    if len(headings) == 1 and re.search(r"[;\t]", rows[0][0]):
+        mark = "semicolons" if ";" in rows[0][0] else "tabs"
+        ledger.problem(
+            name,
+            lines[0],
+            None,
+            f"cells are separated by {mark}; separate them by commas, decimals by a point",
+        )
+        return None
+    width = len(headings)
+    ledger.order.update({f"{name}: {heading.text}": place for place, heading in enumerate(headings)})
+    wrong = [index for index, row in enumerate(rows) if len(row) != width]
+    for index in wrong:
+        ledger.problem(
+            name,
+            lines[index],
+            None,
+            f"the row has {len(rows[index])} cell{'s' * (len(rows[index]) != 1)}, the heading has {width}; "
+            "give every column a cell, empty where there is no value",
+        )
+    if wrong:
+        left_out = set(wrong)
+        lines = [line for index, line in enumerate(lines) if index not in left_out]
+        rows = [row for index, row in enumerate(rows) if index not in left_out]
+    if len(rows) == 1 and not wrong:
+        ledger.problem(name, None, None, "there are no rows below the heading; add one for each line of data")
+        return None
+    columns = [[cell.strip() for cell in column] for column in zip(*rows[1:], strict=True)]
+    columns = columns or [[] for _ in headings]
+    return _named_columns(ledger, Cells(name, headings, tuple(columns), lines[1:], lines[0]))
+
+
+def _rows(ledger: Ledger, name: str, text: str) -> tuple[list[list[str]], list[int]]:
+    """The rows that hold any text, each with the line it begins on."""
+    rows: list[list[str]] = []
+    lines: list[int] = []
+    reader = csv.reader(io.StringIO(text, newline=""), strict=True, skipinitialspace=True)
+    line = 1
+    try:
+        for row in reader:
+            if any(row) and "".join(row).strip():
+                rows.append(row)
+                lines.append(line)
+            line = reader.line_num + 1
+    except csv.Error as error:
+        ledger.problem(
+            name, line, None, f"the row cannot be read as csv ({error}); check its quotation marks"
+        )
+        return [], []
+    return rows, lines
+
+
+def _named_columns(ledger: Ledger, cells: Cells) -> Cells:
+    """Drop notes and empty columns without a name; note columns that are named twice or not at all."""
+    line = cells.heading_line
+    kept: list[int] = []
+    seen: set[str] = set()
+    for index, heading in enumerate(cells.headings):
+        if heading.name.casefold().startswith("note"):
+            continue
+        if not heading.name:
+            if any(cells.columns[index]):
+                ledger.problem(cells.file, line, None, f"column {index + 1} has no heading; name it")
+            continue
+        if heading.name in seen:
+            ledger.problem(
+                cells.file, line, heading.text, f"two columns are called {heading.name!r}; keep one of them"
+            )
+            continue
+        seen.add(heading.name)
+        kept.append(index)
+    return Cells(
+        cells.file,
+        tuple(cells.headings[index] for index in kept),
+        tuple(cells.columns[index] for index in kept),
+        cells.lines,
+        line,
+    )
+
+
+def numbers(
+    ledger: Ledger, cells: Cells, index: int, unit: Unit, *, remedy: str, difference: bool = False
+) -> np.ndarray:
+    """Return a column in SI units, NaN for an empty cell and for one that is no number (noted as a problem).
+
+    Parameters
+    ----------
+    ledger : Ledger
+        Takes the problems.
+    cells : Cells
+        The table.
+    index : int
+        Which column.
+    unit : Unit
+        Of the column.
+    remedy : str
+        What to do about a cell that is no number.
+    difference : bool
+        Whether the column holds differences or uncertainties, to which an offset does not apply.
+
+    Returns
+    -------
+    ndarray
+        One value a row, SI.
+    """
+    column = cells.columns[index]
+    values: np.ndarray | None = None
+    if not _NOT_NUMERIC.search("\n".join(column)):
+        try:
+            values = np.array([float(cell) if cell else np.nan for cell in column], dtype=float)
+        except ValueError:
+            values = None
+        if values is not None and (np.abs(values) > _TOO_LARGE).any():
+            values = None
+    if values is None:
+        values = np.array([_number(ledger, cells, index, row, remedy) for row in range(len(cells))])
+    return unit.difference_to_si(values) if difference else unit.to_si(values)
+
+
+def _number(ledger: Ledger, cells: Cells, index: int, row: int, remedy: str) -> float:
+    """One cell with its problem noted; the slow path, taken where a column holds anything unusual."""
+    cell = cells.columns[index][row]
+    if not cell:
+        return np.nan
+    if cell.startswith(PLACEHOLDER):
+        message = _TO_FILL_IN
+    else:
+        try:
+            value = parse_number(cell)
+        except QuantityError as error:
+            message = str(error)
+        else:
+            if abs(value) <= _TOO_LARGE:
+                return value
+            message = f"{cell!r} is too large to be meant"
+    ledger.problem(cells.file, cells.lines[row], cells.headings[index].text, f"{message}; {remedy}")
+    return np.nan
+
+
+def column_index(cells: Cells, name: str) -> int | None:
+    """Return where the column called `name` is, None where there is none."""
+    return next((index for index, heading in enumerate(cells.headings) if heading.name == name), None)

@@ -1,0 +1,328 @@
+"""`survey.toml` to checked tables: its syntax, its keys and the value of each key."""
+
+from __future__ import annotations
+
+import functools
+import re
+import tomllib
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, field
+from typing import Annotated, Any
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationError, create_model
+
+from gradeline.loader.cells import nearest
+from gradeline.loader.keys import (
+    Bores,
+    Chainage,
+    KelvinUncertainty,
+    LengthUncertainty,
+    RelativeUncertainty,
+    Text,
+    Truth,
+    choice_reader,
+    exact_reader,
+    measured_reader,
+    read_date,
+    read_loss_coefficient,
+    read_reading_uncertainty,
+    read_text,
+    uncertainty_reader,
+    written,
+)
+from gradeline.loader.ledger import PLACEHOLDER, Ledger
+from gradeline.quantities import Measured
+from gradeline.survey import GAUGE_KINDS, Stated
+
+__all__ = ["LINE_FLUIDS", "NAME", "Document", "FittingTable", "GaugeTable", "ReachTable", "read_document"]
+
+#: The file's name in the folder.
+NAME = "survey.toml"
+
+#: Fluids whose density is known from their temperature, for the connecting line of a gauge, and where, K.
+LINE_FLUIDS = {"air": (223.15, 373.15), "mercury": (253.15, 373.15), "water": (273.15, 373.15)}
+
+_SHOWN_DEPTH = 12
+
+
+class _Table(BaseModel):
+    model_config = ConfigDict(extra="forbid", frozen=True, arbitrary_types_allowed=True)
+
+
+class SurveyTable(_Table):
+    """``[survey]``."""
+
+    title: Text | None = None
+    date: Annotated[str, BeforeValidator(read_date)] | None = None
+    chainage_is: Annotated[str, BeforeValidator(choice_reader("axis", "plan"))] = "axis"
+
+
+class FluidTable(_Table):
+    """``[fluid]``."""
+
+    name: Text
+    density: (
+        Annotated[Measured, BeforeValidator(measured_reader("density", "868 kg/m^3", 0, strict=True))] | None
+    ) = None
+    viscosity: (
+        Annotated[Measured, BeforeValidator(measured_reader("dynamic viscosity", "31 mPa s", 0, strict=True))]
+        | None
+    ) = None
+    kinematic_viscosity: (
+        Annotated[
+            Measured, BeforeValidator(measured_reader("kinematic viscosity", "35 mm^2/s", 0, strict=True))
+        ]
+        | None
+    ) = None
+
+
+class SiteTable(_Table):
+    """``[site]``."""
+
+    latitude: Annotated[float, BeforeValidator(exact_reader("angle", "53.4 deg", -1.5708, 1.5708))] | None = (
+        None
+    )
+    altitude: Annotated[float, BeforeValidator(exact_reader("length", "38 m", -500, 9000))] | None = None
+    gravity: (
+        Annotated[Measured, BeforeValidator(measured_reader("acceleration", "9.8137 m/s^2", 9.7, 9.9))] | None
+    ) = None
+
+
+class ReachTable(_Table):
+    """One ``[[reach]]``."""
+
+    name: Text = Field(examples=["test length"])
+    start: Chainage = Field(alias="from", examples=["0 m"])
+    end: Chainage = Field(alias="to", examples=["5.5 m"])
+    diameter: Annotated[
+        Measured, BeforeValidator(measured_reader("length", "26.64 mm +/- 0.03 mm", 0, strict=True))
+    ] = Field(examples=["26.64 mm +/- 0.03 mm"])
+    wall: Text = Field(examples=["copper"])
+    inlet: Truth = False
+
+
+class FittingTable(_Table):
+    """One ``[[fitting]]``."""
+
+    name: Text = Field(examples=["gate valve"])
+    at: Chainage = Field(examples=["3.1 m"])
+    loss_coefficient: Annotated[Measured | None, BeforeValidator(read_loss_coefficient)] = Field(
+        examples=["fit"]
+    )
+    kind: Annotated[str, BeforeValidator(choice_reader("change of bore"))] | None = None
+    velocity: Annotated[str, BeforeValidator(choice_reader("smaller", "upstream", "downstream"))] = "smaller"
+    approach: Bores = 2.0
+    recovery: Bores = 10.0
+
+
+class UncertaintyTable(_Table):
+    """``[uncertainty]``."""
+
+    reading: Annotated[tuple[str, float], BeforeValidator(read_reading_uncertainty)] | None = None
+    chainage: LengthUncertainty | None = None
+    elevation: LengthUncertainty | None = None
+    flow: Annotated[Stated, BeforeValidator(uncertainty_reader("flow", "0.4 %", kind="either"))] | None = None
+    flow_scale: RelativeUncertainty | None = None
+    temperature: KelvinUncertainty | None = None
+    temperature_run: KelvinUncertainty | None = None
+    friction_law: RelativeUncertainty | None = None
+
+
+@dataclass(frozen=True)
+class GaugeTable:
+    """One ``[gauge.NAME]``: its kind, None where that is unknown, and its values, None where any is at fault."""
+
+    name: str
+    kind: str | None
+    values: Mapping[str, Any] | None
+
+
+@dataclass(frozen=True)
+class Document:
+    """What ``survey.toml`` says, table by table; None stands for a table at fault."""
+
+    survey: SurveyTable | None
+    fluid: FluidTable | None
+    site: SiteTable | None
+    uncertainty: UncertaintyTable | None
+    reaches: tuple[ReachTable | None, ...]
+    fittings: tuple[FittingTable | None, ...]
+    gauges: Mapping[str, GaugeTable] = field(default_factory=dict)
+
+
+@functools.cache
+def _gauge_model(kind: str) -> type[_Table]:
+    """The model of one gauge kind, from `GAUGE_KINDS` and the keys that every gauge takes."""
+    known = GAUGE_KINDS[kind]
+    example = "0.5 mm" if known.reading == "length" else "0.1 kPa"
+    reading = Annotated[Stated, BeforeValidator(uncertainty_reader(known.reading, example, kind="absolute"))]
+    fields: dict[str, Any] = {
+        "uncertainty": (reading | None, None),
+        "resolution": (reading | None, None),
+        "u_zero": (reading | None, None),
+        "u_scale": (RelativeUncertainty | None, None),
+    }
+    examples = {"length": "0.80 m", "angle": "30 deg", "temperature": "18 degC"}
+    for name, key in known.keys.items():
+        reader: Callable[[object], Any]
+        if name == "line_fluid":
+            reader = choice_reader(*LINE_FLUIDS)
+        elif key.dimension == "text":
+            reader = read_text
+        else:
+            low, strict = (0.0, True) if key.positive else (None, False)
+            high = 1.5708 if key.dimension == "angle" else None
+            reader = measured_reader(
+                key.dimension, examples.get(key.dimension, "1"), low, high, strict=strict
+            )
+        annotated = Annotated[Any, BeforeValidator(reader)]
+        fields[name] = (
+            (annotated, Field(examples=[examples.get(key.dimension, "water")]))
+            if key.required
+            else (
+                annotated,
+                None,
+            )
+        )
+    return create_model("Gauge", __base__=_Table, kind=(Text, ...), **fields)
+
+
+_SINGLE: Mapping[str, type[_Table]] = {
+    "survey": SurveyTable,
+    "fluid": FluidTable,
+    "site": SiteTable,
+    "uncertainty": UncertaintyTable,
+}
+_LISTS: Mapping[str, type[_Table]] = {"reach": ReachTable, "fitting": FittingTable}
+_TOP_LEVEL = (*_SINGLE, *_LISTS, "gauge")
+
+
+def read_document(ledger: Ledger) -> Document | None:
+    """Return ``survey.toml`` checked key by key, None where there is none or its syntax is at fault.
+
+    Every fault is noted in `ledger` under its key, such as ``reach[1].diameter`` (the first reach is 1).
+    """
+    text = ledger.text_of(NAME)
+    if text is None:
+        return None
+    try:
+        data = tomllib.loads(text)
+    except ValueError as error:
+        found = re.search(
+            r"(.*?)\s*\(at (?:line (\d+), column (\d+)|end of document)\)", str(error), re.DOTALL
+        )
+        row = int(found[2]) if found and found[2] else (len(text.rstrip().splitlines()) if found else None)
+        column = f", at character {found[3]}" if found and found[3] else ""
+        said = found[1] if found else "a number or date is out of range"
+        ledger.problem(NAME, row, None, f"this is not TOML: {said}{column}; mend the line")
+        return None
+    except RecursionError:
+        ledger.problem(NAME, None, None, "the file nests lists or tables too deeply; write them flat")
+        return None
+    ledger.order.update({path: place for place, path in enumerate(_paths(data))})
+    for key in data:
+        if key not in _TOP_LEVEL:
+            ledger.problem(NAME, None, key, f"unknown table or key {key!r}; {nearest(key, _TOP_LEVEL)}")
+    single = {
+        name: _validate(ledger, model, data[name], name) if name in data else None
+        for name, model in _SINGLE.items()
+    }
+    lists = {name: _list(ledger, model, data.get(name, []), name) for name, model in _LISTS.items()}
+    if not lists["reach"] and "reach" not in data:
+        ledger.problem(NAME, None, "reach", "there is no [[reach]]; describe at least one length of pipe")
+    return Document(
+        survey=single["survey"] if "survey" in data else SurveyTable(),  # type: ignore[arg-type]
+        fluid=single["fluid"] if "fluid" in data else FluidTable(name="water"),  # type: ignore[arg-type]
+        site=single["site"] if "site" in data else SiteTable(),  # type: ignore[arg-type]
+        uncertainty=single["uncertainty"] if "uncertainty" in data else UncertaintyTable(),  # type: ignore[arg-type]
+        reaches=lists["reach"],  # type: ignore[arg-type]
+        fittings=lists["fitting"],  # type: ignore[arg-type]
+        gauges=_gauges(ledger, data.get("gauge")),
+    )
+
+
+def _paths(value: object, path: str = "", depth: int = 0) -> Iterator[str]:
+    """Every key path of the file in its order."""
+    if path:
+        yield path
+    if depth > _SHOWN_DEPTH:
+        return
+    if isinstance(value, dict):
+        for key, inner in value.items():
+            yield from _paths(inner, f"{path}.{key}" if path else str(key), depth + 1)
+    elif isinstance(value, list):
+        for place, inner in enumerate(value, start=1):
+            yield from _paths(inner, f"{path}[{place}]", depth + 1)
+
+
+def _list(ledger: Ledger, model: type[_Table], data: object, name: str) -> tuple[_Table | None, ...]:
+    if not isinstance(data, list):
+        ledger.problem(NAME, None, name, f"{written(data)} stands here; begin each one with [[{name}]]")
+        return (None,)
+    return tuple(
+        _validate(ledger, model, each, f"{name}[{place}]") for place, each in enumerate(data, start=1)
+    )
+
+
+def _gauges(ledger: Ledger, data: object) -> dict[str, GaugeTable]:
+    if data is None or data == {}:
+        ledger.problem(NAME, None, "gauge", "there is no [gauge.NAME]; describe at least one gauge")
+        return {}
+    if not isinstance(data, dict):
+        ledger.problem(
+            NAME, None, "gauge", f"{written(data)} stands here; begin each gauge with [gauge.NAME]"
+        )
+        return {}
+    gauges: dict[str, GaugeTable] = {}
+    for key, table in data.items():
+        name, path = key.strip(), f"gauge.{key}"
+        kind = table.get("kind") if isinstance(table, dict) else None
+        if not isinstance(table, dict):
+            ledger.problem(NAME, None, path, f"{written(table)} stands here; begin the gauge with [{path}]")
+        elif kind is None:
+            ledger.problem(NAME, None, f"{path}.kind", f"the key is missing; {nearest('', GAUGE_KINDS)}")
+        elif not isinstance(kind, str) or kind.strip() not in GAUGE_KINDS:
+            said = f"unknown kind {written(kind)}; {nearest(str(kind) if isinstance(kind, str) else '', GAUGE_KINDS)}"
+            if isinstance(kind, str) and kind.strip().startswith(PLACEHOLDER):
+                said = f"the value is still to be filled in; {nearest('', GAUGE_KINDS)}"
+            ledger.problem(NAME, None, f"{path}.kind", said)
+            kind = None
+        else:
+            kind = kind.strip()
+            model = _validate(ledger, _gauge_model(kind), table, path)
+            values = (
+                None if model is None else {each: getattr(model, each) for each in type(model).model_fields}
+            )
+            gauges[name] = GaugeTable(name, kind, values)
+            continue
+        gauges[name] = GaugeTable(name, None, None)
+    return gauges
+
+
+def _validate(ledger: Ledger, model: type[_Table], data: object, path: str) -> _Table | None:
+    """One table through its model; its faults are noted under their key paths."""
+    if not isinstance(data, dict):
+        ledger.problem(
+            NAME, None, path, f"{written(data)} stands here; write the table [{path}] with its keys"
+        )
+        return None
+    try:
+        return model.model_validate(data)
+    except ValidationError as error:
+        for fault in error.errors(include_url=False):
+            key = ".".join(str(part) for part in fault["loc"] if isinstance(part, str)) or path
+            ledger.problem(NAME, None, f"{path}.{key}", _told(model, fault, key))
+        return None
+
+
+def _told(model: type[_Table], fault: Any, key: str) -> str:
+    """A fault as pydantic tells it, in the words of this program."""
+    fields = {known.alias or name: known for name, known in model.model_fields.items()}
+    if fault["type"] == "missing":
+        example = (fields[key].examples or [""])[0]
+        return f'the key is missing; add it, such as {key} = "{example}"'
+    if fault["type"] == "extra_forbidden":
+        return f"unknown key {key!r}; {nearest(key, fields)}"
+    if fault["type"] == "value_error":
+        return str(fault["ctx"]["error"])
+    return f"{written(fault['input'])} cannot be read ({fault['msg']})"

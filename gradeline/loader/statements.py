@@ -1,0 +1,133 @@
+"""What the loader took for granted and what a reader should know, in sentences."""
+
+from __future__ import annotations
+
+import numpy as np
+import pandas as pd
+
+from gradeline.loader.document import Document
+from gradeline.loader.ledger import Ledger
+from gradeline.loader.taps import TapTable
+from gradeline.survey import GAUGE_KINDS, Fluid, Gauge, Reach, StatedUncertainties, Tap
+
+__all__ = ["state_assumptions", "state_cautions"]
+
+
+def _listed(names: list[str]) -> str:
+    """Names as a phrase; a long list is cut.
+
+    Examples
+    --------
+    >>> _listed(["T1", "T2", "T3"])
+    'T1, T2 and T3'
+    """
+    if len(names) > 8:
+        return f"{', '.join(names[:7])} and {len(names) - 7} more"
+    return " and ".join(([", ".join(names[:-1])] if len(names) > 1 else []) + names[-1:])
+
+
+def state_assumptions(
+    ledger: Ledger, document: Document, *, taps: TapTable, gauges: tuple[Gauge, ...], runs: pd.DataFrame
+) -> None:
+    """Note every default that the loader put in place of a value that is not in the files."""
+    note = ledger.assumptions.append
+    if "fluid" not in ledger.order:
+        note("The survey names no fluid: it is taken as water.")
+    site = document.site
+    if site is not None and site.gravity is None and site.latitude is None:
+        note("Neither latitude nor gravity is given: gravity is taken as 9.80665 m/s².")
+    elif site is not None and site.gravity is not None and site.latitude is not None:
+        note("Gravity is given as well as the latitude: the given gravity is used.")
+    if "elevation" not in taps.columns:
+        note("No elevation of the taps is given: the pipe's axis is taken as level, at the datum.")
+    pressure = {gauge.name for gauge in gauges if GAUGE_KINDS[gauge.kind].reading == "pressure"}
+    at_axis = [tap.name for tap in taps.taps if tap.gauge in pressure and tap.gauge_elevation is None]
+    if at_axis:
+        note(
+            f"The elevation of the gauge is not given at {_listed(at_axis)}: "
+            "it is taken to be at the pipe's axis."
+        )
+    for gauge in gauges:
+        if gauge.kind != "piezometer":
+            continue
+        if "zero" not in gauge.settings:
+            note(f"The zero of gauge {gauge.name!r} is not given: it is taken to be at the datum.")
+        if "inclination" not in gauge.settings:
+            note(f"The inclination of gauge {gauge.name!r} is not given: its scale is taken as upright.")
+        if "bore" not in gauge.settings:
+            note(f"The tube bore of gauge {gauge.name!r} is not given: no capillary rise is taken off.")
+    if len(gauges) == 1 and ("gauge" not in taps.columns):
+        note(f"The gauge {gauges[0].name!r} is the only one: it is taken to read every tap.")
+    repeated = runs.loc[runs["repeats"] > 1]
+    if len(repeated):
+        listed = _listed(
+            [f"{run} ({n} rows)" for run, n in zip(repeated["run"], repeated["repeats"], strict=True)]
+        )
+        note(f"Rows with one run label are averaged as repeats: run {listed}.")
+    if document.survey is not None and document.survey.date is None:
+        note("The survey states no date.")
+
+
+def state_cautions(
+    ledger: Ledger,
+    stated: StatedUncertainties,
+    *,
+    fluid: Fluid,
+    reaches: tuple[Reach, ...],
+    taps: tuple[Tap, ...],
+    gauges: tuple[Gauge, ...],
+    runs: pd.DataFrame,
+) -> None:
+    """Note every uncertainty that matters and that nobody stated, and what is dangerous or of no use."""
+    note = ledger.cautions.append
+    nothing = "it contributes nothing to the results"
+    bores = [reach.name for reach in reaches if reach.diameter.u is None]
+    if bores:
+        note(f"The uncertainty of the bore is not stated for {_listed(bores)}: {nothing}. f grows as D⁵.")
+    if stated.flow is None:
+        note(f"The random uncertainty of the flow is not stated: {nothing}.")
+    if stated.flow_scale is None:
+        note(f"The calibration uncertainty of the flow (flow_scale) is not stated: {nothing}.")
+    if stated.chainage is None and any(tap.chainage_u is None for tap in taps):
+        own = any(tap.chainage_u is not None for tap in taps)
+        note(f"The uncertainty of the chainage is not stated{' for every tap' if own else ''}: {nothing}.")
+    pressure = {gauge.name for gauge in gauges if GAUGE_KINDS[gauge.kind].reading == "pressure"}
+    if stated.elevation is None and any(tap.gauge in pressure and tap.elevation_u is None for tap in taps):
+        note(f"The uncertainty of the elevation is not stated: {nothing}.")
+    for gauge in gauges:
+        read = [tap for tap in taps if tap.gauge == gauge.name]
+        if not read:
+            note(f"The gauge {gauge.name!r} reads no tap and is not used.")
+            continue
+        general = stated.reading_pressure if gauge.name in pressure else stated.reading
+        if gauge.reading_u is None and general is None and any(tap.reading_u is None for tap in read):
+            note(
+                f"The uncertainty of a reading of gauge {gauge.name!r} is not stated: it is estimated from the "
+                "scatter where there are taps and runs enough, and otherwise contributes nothing."
+            )
+        unstated = [
+            word for word, value in (("zero", gauge.zero_u), ("scale", gauge.scale_u)) if value is None
+        ]
+        if unstated:
+            one = len(unstated) == 1
+            noun, verb = ("uncertainty", "is") if one else ("uncertainties", "are")
+            they = "it contributes" if one else "they contribute"
+            note(
+                f"The {noun} of the {' and the '.join(unstated)} of gauge {gauge.name!r} {verb} not stated: "
+                f"{they} nothing to the results."
+            )
+        if gauge.name not in pressure and any(tap.gauge_elevation is not None for tap in read):
+            note(
+                f"A gauge elevation is given for taps of gauge {gauge.name!r}, which has its elevation from "
+                "its zero: it is not used."
+            )
+    has_temperature = bool(np.isfinite(runs["temperature"].to_numpy(float)).any())
+    if has_temperature and fluid.density is None and stated.temperature is None:
+        note(f"The uncertainty of the temperature is not stated: {nothing}.")
+    if "mercury" in fluid.name.casefold() or any(
+        gauge.settings.get("line_fluid") == "mercury" for gauge in gauges
+    ):
+        note(
+            "Mercury is poisonous, as a vapour too: fill and bleed such lines over a tray, in moving air, "
+            "and have a spill kit at hand."
+        )

@@ -1,0 +1,230 @@
+"""``taps.csv`` to taps, with the gauge that reads each."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from gradeline.loader.cells import nearest, parse_heading, read_cells
+from gradeline.loader.columns import Columns, Known
+from gradeline.loader.document import GaugeTable
+from gradeline.loader.ledger import Ledger
+from gradeline.loader.line import within_line
+from gradeline.survey import GAUGE_KINDS, Reach, Tap
+
+__all__ = ["RESERVED", "TapTable", "read_taps"]
+
+#: Names that columns of the readings have, so that no tap can be called so.
+RESERVED = ("run", "flow", "temperature", "tap", "reading", "unit")
+
+_COLUMNS: Mapping[str, Known] = {
+    "tap": Known(required=True),
+    "chainage": Known(("length",), required=True, remedy="give the tap's chainage"),
+    "elevation": Known(("length",), remedy="give the elevation of the pipe's axis"),
+    "gauge elevation": Known(
+        ("length",), remedy="leave the cell empty where the gauge is at the pipe's axis"
+    ),
+    "gauge": Known(),
+    "reading uncertainty": Known(("length", "pressure"), difference=True),
+    "chainage uncertainty": Known(("length",), difference=True),
+    "elevation uncertainty": Known(("length",), difference=True),
+}
+
+
+@dataclass(frozen=True)
+class TapTable:
+    """The taps as read.
+
+    Parameters
+    ----------
+    names : tuple of str
+        Every label in the file, also of taps at fault: the readings are checked against it.
+    reads : mapping of str to str or None
+        What the gauge of each tap reads, ``"length"`` or ``"pressure"``; None where its gauge is at fault.
+    taps : tuple of Tap
+        The taps, of use only where no problem was noted.
+    units : mapping of str to str
+        The unit found in each heading.
+    columns : frozenset of str
+        The columns that the file has.
+    rows : mapping of str to int
+        The line of each tap in the file.
+    file : str
+        Name of the file.
+    """
+
+    names: tuple[str, ...]
+    reads: Mapping[str, str | None]
+    taps: tuple[Tap, ...]
+    units: Mapping[str, str]
+    columns: frozenset[str]
+    rows: Mapping[str, int]
+    file: str = "taps.csv"
+
+    @property
+    def distinct(self) -> list[str]:
+        """The labels, each once."""
+        return list(dict.fromkeys(self.names))
+
+
+def read_taps(
+    ledger: Ledger,
+    gauges: Mapping[str, GaugeTable],
+    reaches: Sequence[Reach] | None,
+) -> TapTable | None:
+    """Return ``taps.csv`` as taps, None where the file is missing or no table."""
+    cells = read_cells(ledger, "taps.csv")
+    if cells is None:
+        return None
+    columns = Columns(ledger, cells, _COLUMNS)
+    names = columns.labels("tap")
+    _check_names(columns, names)
+    reads = _gauges_of(columns, gauges)
+    _check_chainages(columns, names, reaches)
+    for name in ("elevation", "gauge elevation"):
+        columns.values(name)
+    if "elevation" in columns:
+        for row, cell in enumerate(columns.raw("elevation")):
+            if not cell:
+                columns.problem(row, "elevation", "the cell is empty; give the elevation of the pipe's axis")
+    for name in ("reading uncertainty", "chainage uncertainty", "elevation uncertainty"):
+        for row in np.flatnonzero(columns.values(name) < 0).tolist():
+            columns.problem(row, name, f"{columns.raw(name)[row]!r} is negative; state it above zero")
+    _check_reading_uncertainty(columns, reads, gauges)
+    units = {name: unit.text for name, unit in columns.units.items() if unit is not None}
+    return TapTable(
+        names=tuple(name for name in names if name),
+        reads={name: _read_by(gauge, gauges) for name, gauge in zip(names, reads, strict=True)},
+        taps=tuple(_tap(columns, row, names[row], reads[row], reaches) for row in range(len(cells))),
+        units=units,
+        columns=frozenset(columns.units),
+        rows=dict(zip(names, cells.lines, strict=True)),
+    )
+
+
+def _read_by(gauge: str | None, gauges: Mapping[str, GaugeTable]) -> str | None:
+    """What a gauge reads, None where it or its kind is not known."""
+    kind = gauges[gauge].kind if gauge is not None else None
+    return None if kind is None else GAUGE_KINDS[kind].reading
+
+
+def _tap(columns: Columns, row: int, name: str, gauge: str | None, reaches: Sequence[Reach] | None) -> Tap:
+    def optional(column: str) -> float | None:
+        value = float(columns.values(column)[row])
+        return None if np.isnan(value) else value
+
+    chainage = float(columns.values("chainage")[row])
+    on_line = within_line(chainage, reaches) if reaches is not None else None
+    return Tap(
+        name=name,
+        chainage=chainage if on_line is None else on_line,
+        elevation=optional("elevation") or 0.0,
+        gauge=gauge,
+        gauge_elevation=optional("gauge elevation"),
+        reading_u=optional("reading uncertainty"),
+        chainage_u=optional("chainage uncertainty"),
+        elevation_u=optional("elevation uncertainty"),
+    )
+
+
+def _check_names(columns: Columns, names: Sequence[str]) -> None:
+    first: dict[str, int] = {}
+    for row, name in enumerate(names):
+        if not name:
+            continue
+        if name in first:
+            columns.problem(
+                row,
+                "tap",
+                f"the tap {name!r} stands in row {first[name]} already; give each tap its own label",
+            )
+        first.setdefault(name, columns.cells.lines[row])
+        heading = parse_heading(name)
+        if heading.unit is not None or name != heading.text:
+            columns.problem(
+                row,
+                "tap",
+                f"{name!r} cannot be the heading of a column; take away brackets and double spaces",
+            )
+        elif name in RESERVED or name.casefold().startswith("note"):
+            columns.problem(
+                row, "tap", f"a tap cannot be called {name!r}, which names another column; call it otherwise"
+            )
+
+
+def _gauges_of(columns: Columns, gauges: Mapping[str, GaugeTable]) -> list[str | None]:
+    """The gauge of each tap: as written, or the only one."""
+    only = next(iter(gauges)) if len(gauges) == 1 else None
+    found: list[str | None] = []
+    for row, name in enumerate(columns.raw("gauge")):
+        if name in gauges:
+            found.append(name)
+        elif name and not gauges:
+            found.append(None)  # that there is no gauge, or no survey.toml, is told already
+        elif name:
+            columns.problem(row, "gauge", f"unknown gauge {name!r}; {nearest(name, gauges)}")
+            found.append(None)
+        else:
+            if only is None and gauges and "gauge" in columns:
+                columns.problem(
+                    row, "gauge", f"the cell is empty; say which gauge reads the tap ({', '.join(gauges)})"
+                )
+            found.append(only)
+    if "gauge" not in columns and len(gauges) > 1:
+        columns.ledger.problem(
+            columns.cells.file,
+            columns.cells.heading_line,
+            None,
+            f"the column 'gauge' is missing; with {len(gauges)} gauges it says which one reads each tap",
+        )
+    return found
+
+
+def _check_chainages(columns: Columns, names: Sequence[str], reaches: Sequence[Reach] | None) -> None:
+    if columns.units.get("chainage") is None:
+        return
+    chainages, raw = columns.values("chainage"), columns.raw("chainage")
+    unit = columns.units["chainage"]
+    assert unit is not None
+    previous: int | None = None
+    for row, chainage in enumerate(chainages):
+        if not raw[row]:
+            columns.problem(row, "chainage", "the cell is empty; give the tap's chainage")
+        if np.isnan(chainage):
+            continue
+        if reaches is not None and within_line(chainage, reaches) is None:
+            columns.problem(
+                row,
+                "chainage",
+                f"{raw[row]} {unit.text} lies outside every reach ({reaches[0].start:g} m to "
+                f"{reaches[-1].end:g} m); mend the chainage or extend a reach",
+            )
+        if previous is not None and chainage <= chainages[previous]:
+            columns.problem(
+                row,
+                "chainage",
+                f"{raw[row]} {unit.text} does not come after {raw[previous]} {unit.text} of tap "
+                f"{names[previous]!r}; list the taps in order of chainage, each at its own",
+            )
+        previous = row
+
+
+def _check_reading_uncertainty(
+    columns: Columns, reads: Sequence[str | None], gauges: Mapping[str, GaugeTable]
+) -> None:
+    """The one column serves gauges of both kinds; each tap's value has to suit its gauge."""
+    unit = columns.units.get("reading uncertainty")
+    if unit is None:
+        return
+    for row, value in enumerate(columns.values("reading uncertainty")):
+        read = _read_by(reads[row], gauges)
+        if np.isnan(value) or read is None or read == unit.dimension:
+            continue
+        columns.problem(
+            row,
+            "reading uncertainty",
+            f"{unit.text!r} is a {unit.dimension}, but the gauge {reads[row]!r} reads a {read}; "
+            "leave the cell empty and state the uncertainty with the gauge",
+        )

@@ -1,0 +1,304 @@
+"""Printing: values rounded to two digits of their uncertainty, intervals, and the units a reader expects."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from decimal import ROUND_HALF_EVEN, Decimal
+from types import MappingProxyType
+
+__all__ = [
+    "MISSING",
+    "SI_DISPLAY",
+    "Display",
+    "DisplayUnit",
+    "format_interval",
+    "format_number",
+    "rounded",
+    "thousands",
+]
+
+#: What stands where there is no value.
+MISSING = "–"
+
+_SUPERSCRIPT = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
+_LARGEST_FIXED = 1e7
+_SMALLEST_FIXED = 1e-4
+
+
+def rounded(value: float | None, u: float | None = None, *, digits: int = 4) -> str:
+    """Print a value rounded to two digits of its standard uncertainty, with that uncertainty.
+
+    Parameters
+    ----------
+    value : float or None
+        In the unit that is printed beside it. None, NaN and infinities print as an en dash.
+    u : float or None
+        Standard uncertainty in the same unit. None, NaN, zero and negative mean that none is known: the value is
+        then printed alone to `digits` significant digits.
+    digits : int
+        Significant digits where there is no uncertainty, at least 1.
+
+    Returns
+    -------
+    str
+        Such as ``0.02231 ± 0.00042``, in powers of ten where the digits would not be readable.
+
+    Notes
+    -----
+    Two digits of the uncertainty, as JCGM 100:2008, 7.2.6 advises; halves go to the even digit.
+
+    Examples
+    --------
+    >>> rounded(0.022314, 0.000421)
+    '0.02231 ± 0.00042'
+    >>> rounded(28437.0, 1234.0)
+    '28400 ± 1200'
+    >>> rounded(1.4142e-7, 3.3e-9)
+    '(1.414 ± 0.033)×10⁻⁷'
+    >>> rounded(12.3456, None), rounded(float("nan"), 0.1)
+    ('12.35', '–')
+    """
+    if not _finite(value):
+        return MISSING
+    assert value is not None
+    if not _finite(u) or u is None or u <= 0:
+        return format_number(value, digits)
+    largest = max(abs(value), u)
+    place = _place(u, 2)
+    if _SMALLEST_FIXED <= largest < _LARGEST_FIXED and place >= -8:
+        return f"{_fixed(value, place)} ± {_fixed(u, place)}"
+    power = math.floor(math.log10(largest))
+    shown, shown_u = (_fixed(number, place - power, shift=power) for number in (value, u))
+    return f"({shown} ± {shown_u})×10{str(power).translate(_SUPERSCRIPT)}"
+
+
+def format_number(value: float | None, digits: int = 4) -> str:
+    """Print a number to `digits` significant digits; an en dash where it is missing.
+
+    Parameters
+    ----------
+    value : float or None
+        In the unit that is printed beside it.
+    digits : int
+        Significant digits, at least 1. Digits before the decimal point are always kept.
+
+    Examples
+    --------
+    >>> format_number(0.0223142), format_number(45231.7, 3), format_number(1.5e-6, 2), format_number(None)
+    ('0.02231', '45232', '1.5×10⁻⁶', '–')
+    """
+    if not _finite(value):
+        return MISSING
+    assert value is not None
+    if value == 0:
+        return "0"
+    if _SMALLEST_FIXED <= abs(value) < _LARGEST_FIXED:
+        return _fixed(value, min(_place(abs(value), digits), 0))
+    place = _place(abs(value), digits)
+    power = place + digits - 1
+    return f"{_fixed(value, place - power, shift=power)}×10{str(power).translate(_SUPERSCRIPT)}"
+
+
+def thousands(value: float | None, digits: int = 4) -> str:
+    """Print a large number rounded to `digits` significant digits, its thousands apart.
+
+    Parameters
+    ----------
+    value : float or None
+        Such as a Reynolds number; missing ones print as an en dash.
+    digits : int
+        Significant digits, at least 1.
+
+    Examples
+    --------
+    >>> thousands(304361.2), thousands(812.3), thousands(None)
+    ('304\u202f400', '812', '–')
+    """
+    if not _finite(value):
+        return MISSING
+    assert value is not None
+    if value == 0 or abs(value) >= _LARGEST_FIXED:
+        return format_number(value, digits)
+    place = max(_place(abs(value), digits), 0)
+    return f"{round(value, -place):,.0f}".replace(",", "\u202f").replace("-", "−")
+
+
+def format_interval(low: float | None, high: float | None) -> str:
+    """Print an interval, its ends rounded to two digits of half its width.
+
+    A missing end leaves a bound; where both are missing there is an en dash. An end so near to zero that it would
+    round to it, without being it, keeps two digits of its own.
+
+    Parameters
+    ----------
+    low, high : float or None
+        In the unit that is printed beside them.
+
+    Examples
+    --------
+    >>> format_interval(0.021472, 0.023156)
+    '0.02147 to 0.02316'
+    >>> format_interval(0.0, 0.00312), format_interval(None, 2.0), format_interval(float("nan"), None)
+    ('0 to 0.0031', 'at most 2.000', '–')
+    """
+    if not _finite(low) and not _finite(high):
+        return MISSING
+    if not _finite(low):
+        return f"at most {format_number(high)}"
+    if not _finite(high):
+        return f"at least {format_number(low)}"
+    assert low is not None
+    assert high is not None
+    half = abs(high - low) / 2
+    if half == 0:
+        return f"{format_number(low)} to {format_number(high)}"
+    largest = max(abs(low), abs(high))
+    place = _place(half, 2)
+    if not (_SMALLEST_FIXED <= largest < _LARGEST_FIXED):
+        return f"{format_number(low, 2)} to {format_number(high, 2)}"
+    ends = []
+    for end in (low, high):
+        own = min(place, _place(abs(end), 2)) if end else 0
+        if end and abs(end) < _SMALLEST_FIXED:
+            ends.append(format_number(end, 2))
+        else:
+            ends.append(_fixed(end, own) if end else "0")
+    return " to ".join(ends)
+
+
+def _finite(value: float | None) -> bool:
+    return value is not None and math.isfinite(value)
+
+
+def _place(value: float, digits: int) -> int:
+    """The power of ten of the last of `digits` significant digits, after rounding."""
+    place = math.floor(math.log10(value)) - digits + 1
+    # 0.0997 to two digits is 0.10, not 0.100
+    return place + 1 if round(value / 10.0**place) >= 10**digits else place
+
+
+def _fixed(value: float, place: int, *, shift: int = 0) -> str:
+    """`value` / 10^shift in plain digits, rounded to the given power of ten."""
+    exact = Decimal(repr(float(value))).scaleb(-shift)
+    text = format(exact.quantize(Decimal(1).scaleb(place), rounding=ROUND_HALF_EVEN), "f")
+    # a rounded -0.00 would read as if it had a sign; the minus is a true one, as in print
+    if float(text) == 0:
+        text = text.removeprefix("-")
+    return text.replace("-", "−")
+
+
+@dataclass(frozen=True)
+class DisplayUnit:
+    """How a quantity is shown: shown = SI × factor + offset.
+
+    Parameters
+    ----------
+    label : str
+        The unit as printed; empty for a pure number.
+    factor : float
+        Shown units for each SI unit.
+    offset : float
+        Added after the factor, in the shown unit (temperatures).
+    """
+
+    label: str
+    factor: float = 1.0
+    offset: float = 0.0
+
+
+_SI_UNITS: Mapping[str, DisplayUnit] = MappingProxyType(
+    {
+        "chainage": DisplayUnit("m"),
+        "elevation": DisplayUnit("m"),
+        "head": DisplayUnit("m"),
+        "small head": DisplayUnit("mm", 1e3),
+        "length": DisplayUnit("m"),
+        "diameter": DisplayUnit("mm", 1e3),
+        "roughness": DisplayUnit("mm", 1e3),
+        "flow": DisplayUnit("L/s", 1e3),
+        "velocity": DisplayUnit("m/s"),
+        "temperature": DisplayUnit("°C", 1.0, -273.15),
+        "density": DisplayUnit("kg/m³"),
+        "kinematic viscosity": DisplayUnit("mm²/s", 1e6),
+        "pressure": DisplayUnit("kPa", 1e-3),
+        "slope": DisplayUnit("mm/m", 1e3),
+        "gravity": DisplayUnit("m/s²"),
+        "number": DisplayUnit(""),
+    }
+)
+
+
+@dataclass(frozen=True)
+class Display:
+    """The units a reader sees, one for each quantity.
+
+    Parameters
+    ----------
+    units : mapping of str to DisplayUnit
+        By quantity: chainage, elevation, head, small head, length, diameter, roughness, flow, velocity,
+        temperature, density, kinematic viscosity, pressure, slope, gravity, number.
+
+    Examples
+    --------
+    >>> SI_DISPLAY.value("flow", 0.00125), SI_DISPLAY.unit("flow")
+    (1.25, 'L/s')
+    >>> SI_DISPLAY.text("diameter", 0.02664, 0.00003)
+    '26.640 ± 0.030'
+    >>> SI_DISPLAY.head("friction slope S", "slope")
+    'friction slope S (mm/m)'
+    """
+
+    units: Mapping[str, DisplayUnit] = field(default_factory=lambda: _SI_UNITS)
+
+    def unit(self, quantity: str) -> str:
+        """Return the label of the unit; KeyError for an unknown quantity."""
+        return self.units[quantity].label
+
+    def factor(self, quantity: str) -> float:
+        """Return the shown units for each SI unit."""
+        return self.units[quantity].factor
+
+    def value(self, quantity: str, value: float) -> float:
+        """Return a value in SI in the shown unit."""
+        unit = self.units[quantity]
+        return value * unit.factor + unit.offset
+
+    def text(
+        self,
+        quantity: str,
+        value: float | None,
+        u: float | None = None,
+        *,
+        digits: int = 4,
+        unit: bool = False,
+    ) -> str:
+        """Print a value in SI, with its uncertainty, in the shown unit; the unit is added where `unit` asks."""
+        if not _finite(value):
+            return MISSING
+        assert value is not None
+        u_shown = u * self.factor(quantity) if u is not None else None
+        shown = rounded(self.value(quantity, value), u_shown, digits=digits)
+        label = self.unit(quantity)
+        if not unit or not label:
+            return shown
+        return f"({shown}) {label}" if " ± " in shown and "×10" not in shown else f"{shown} {label}"
+
+    def interval(self, quantity: str, low: float | None, high: float | None, *, unit: bool = False) -> str:
+        """Print an interval given in SI in the shown unit."""
+        ends = [
+            self.value(quantity, end) if end is not None and _finite(end) else None for end in (low, high)
+        ]
+        shown = format_interval(*ends)
+        label = self.unit(quantity)
+        return f"{shown} {label}" if unit and label and shown != MISSING else shown
+
+    def head(self, words: str, quantity: str) -> str:
+        """Return the words of a column head or an axis with the unit in brackets."""
+        label = self.unit(quantity)
+        return f"{words} ({label})" if label else words
+
+
+#: SI units of the size that readers use.
+SI_DISPLAY = Display()

@@ -1,0 +1,181 @@
+"""The line as the fits see it: which reaches and losses lie between the taps, and which taps are disturbed."""
+
+from __future__ import annotations
+
+import itertools
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from gradeline.hydraulics.friction import entrance_length
+from gradeline.hydraulics.gradelines import passed, path_lengths
+from gradeline.hydraulics.local_losses import change_of_bore_loss_coefficient
+from gradeline.quantities import Measured
+from gradeline.survey import Fitting, Survey
+
+__all__ = ["Line", "disturbed_taps", "line_of"]
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+#: Taps nearer than this many bores downstream of a fitting are used, with a caution.
+CAUTIOUS_RECOVERY = 30.0
+
+
+@dataclass(frozen=True)
+class Line:
+    """Geometry of the line.
+
+    Parameters
+    ----------
+    bounds : (K + 1,) array
+        Chainages of the reaches' ends, m.
+    diameter : (K,) array
+        Bores, m.
+    chainage, elevation : (T,) array
+        Of the taps, m.
+    reach_of_tap : (T,) int array
+        Reach in which each tap lies; a tap at a boundary belongs to the reach upstream.
+    fittings : tuple of Fitting
+        Local losses in order of chainage, changes of bore among them.
+    reference : (M,) int array
+        Reach whose velocity head each loss coefficient refers to.
+    fitted : (M,) bool array
+        Whether its loss coefficient is to be fitted.
+    lengths : (T, K) array
+        Length of each reach passed on the way to each tap, m.
+    passed : (T, M) array
+        1 where a local loss lies upstream of a tap.
+    assumptions : tuple of str
+        Loss coefficients taken from the literature.
+    """
+
+    bounds: Array
+    diameter: Array
+    chainage: Array
+    elevation: Array
+    reach_of_tap: NDArray[np.intp]
+    fittings: tuple[Fitting, ...]
+    reference: NDArray[np.intp]
+    fitted: Mask
+    lengths: Array
+    passed: Array
+    assumptions: tuple[str, ...]
+
+    @property
+    def area(self) -> Array:
+        """Cross-section of each reach, m²."""
+        return np.asarray(np.pi / 4 * self.diameter**2)
+
+
+def line_of(survey: Survey) -> Line:
+    """Lay out the line of a survey.
+
+    Parameters
+    ----------
+    survey : Survey
+        Its reaches, fittings and taps.
+
+    Returns
+    -------
+    Line
+        With an implicit fitting at each change of bore that no fitting stands for.
+    """
+    reaches = survey.reaches
+    bounds = np.array([reaches[0].start, *(reach.end for reach in reaches)])
+    diameter = np.array([reach.diameter.value for reach in reaches])
+    fittings, assumptions = list(survey.fittings), []
+    for before, after in itertools.pairwise(reaches):
+        changes = before.diameter.value != after.diameter.value
+        given = any(fitting.change_of_bore and abs(fitting.at - before.end) < 1e-6 for fitting in fittings)
+        if changes and not given:
+            coefficient = float(change_of_bore_loss_coefficient(before.diameter.value, after.diameter.value))
+            what = "contraction" if after.diameter.value < before.diameter.value else "expansion"
+            name = f"{what} {before.name} to {after.name}"
+            fittings.append(Fitting(name, before.end, Measured(coefficient), change_of_bore=True))
+            assumptions.append(
+                f"The change of bore at {before.end:g} m is taken as a sudden {what}: K = {coefficient:.3g} of the "
+                "velocity head in the smaller bore (Borda–Carnot for an expansion, 0.5 (1 − β²) for a contraction)."
+            )
+    fittings.sort(key=lambda fitting: fitting.at)
+    chainage = np.array([tap.chainage for tap in survey.taps])
+    at = np.array([fitting.at for fitting in fittings])
+    reach_of_tap = np.clip(np.searchsorted(bounds, chainage, side="left") - 1, 0, len(reaches) - 1)
+    return Line(
+        bounds=bounds,
+        diameter=diameter,
+        chainage=chainage,
+        elevation=np.array([tap.elevation for tap in survey.taps]),
+        reach_of_tap=reach_of_tap.astype(np.intp),
+        fittings=tuple(fittings),
+        reference=np.array([_reference(fitting, bounds, diameter) for fitting in fittings], dtype=np.intp),
+        fitted=np.array([fitting.loss_coefficient is None for fitting in fittings], dtype=bool),
+        lengths=path_lengths(chainage, bounds),
+        passed=passed(chainage, at).reshape(len(chainage), len(at)),
+        assumptions=tuple(assumptions),
+    )
+
+
+def _reference(fitting: Fitting, bounds: Array, diameter: Array) -> int:
+    last = len(diameter) - 1
+    upstream = int(np.clip(np.searchsorted(bounds, fitting.at, side="left") - 1, 0, last))
+    downstream = int(np.clip(np.searchsorted(bounds, fitting.at, side="right") - 1, 0, last))
+    if fitting.velocity == "upstream":
+        return upstream
+    if fitting.velocity == "downstream":
+        return downstream
+    return upstream if diameter[upstream] <= diameter[downstream] else downstream
+
+
+def disturbed_taps(survey: Survey, line: Line, reynolds: Array) -> tuple[Mask, list[str], list[str]]:
+    """Tell which taps lie where the flow is not yet, or no longer, that of a straight pipe.
+
+    Parameters
+    ----------
+    survey : Survey
+        Its reaches.
+    line : Line
+        Its layout.
+    reynolds : (R, K) array
+        Re of each run and reach, dimensionless.
+
+    Returns
+    -------
+    disturbed : (R, T) bool array
+        Taps to leave out.
+    reasons : list of str
+        One for each tap; empty where it is never disturbed.
+    cautions : list of str
+        Taps that are near a fitting, but used.
+    """
+    count = len(line.chainage)
+    disturbed = np.zeros((len(reynolds), count), dtype=bool)
+    reasons, cautions = [""] * count, []
+    last = len(line.diameter) - 1
+    for k, reach in enumerate(survey.reaches):
+        if not reach.inlet:
+            continue
+        length = entrance_length(reynolds[:, k], line.diameter[k])
+        inside = (line.reach_of_tap == k) & (line.chainage - reach.start < np.asarray(length)[:, None])
+        disturbed |= inside
+        for tap in np.flatnonzero(inside.any(axis=0)):
+            reasons[tap] = f"inside the entrance length of reach {reach.name!r}"
+    for fitting in line.fittings:
+        upstream = int(np.clip(np.searchsorted(line.bounds, fitting.at, side="left") - 1, 0, last))
+        downstream = int(np.clip(np.searchsorted(line.bounds, fitting.at, side="right") - 1, 0, last))
+        before = (fitting.at - line.chainage) / line.diameter[upstream]
+        after = (line.chainage - fitting.at) / line.diameter[downstream]
+        # A tap at the very place of a loss is upstream of it, and in the midst of its disturbance.
+        near = ((before >= 0) & (before < fitting.approach)) | ((after > 0) & (after < fitting.recovery))
+        disturbed[:, near] = True
+        for tap in np.flatnonzero(near):
+            bores, side = (before[tap], "upstream") if before[tap] >= 0 else (after[tap], "downstream")
+            reasons[tap] = f"{bores:.1f} bores {side} of {fitting.name!r}"
+        soon = (after >= fitting.recovery) & (after < CAUTIOUS_RECOVERY)
+        cautions += [
+            f"Tap {survey.taps[tap].name} lies {after[tap]:.0f} bores downstream of {fitting.name!r}: used, but flow may "
+            f"not have recovered within {CAUTIOUS_RECOVERY:.0f} bores."
+            for tap in np.flatnonzero(soon & ~near)
+        ]
+    return disturbed, reasons, cautions

@@ -1,0 +1,155 @@
+"""The fluids and the site of a survey: densities, viscosity and gravity for each run, and how they go with their inputs."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from gradeline.errors import ReductionError
+from gradeline.hydraulics.fluid import (
+    air_density,
+    mercury_density,
+    standard_atmosphere_pressure,
+    water_density,
+    water_properties,
+    water_surface_tension,
+)
+from gradeline.hydraulics.gravity import STANDARD_GRAVITY, normal_gravity
+from gradeline.survey import Fluid, Site, Survey
+
+__all__ = ["Media", "fluid_density", "media_of"]
+
+Array = NDArray[np.float64]
+
+#: Temperature of the air beside columns and gauges, K: it matters by 1e-5 of the head at most.
+_AIR_TEMPERATURE = 293.15
+#: Half the step of the central difference by temperature, K: small against the curvature, large against rounding.
+_STEP = 0.25
+
+
+@dataclass(frozen=True)
+class Media:
+    """What fills the line and surrounds it.
+
+    Parameters
+    ----------
+    density, kinematic_viscosity, surface_tension : (R,) array
+        Of the flowing fluid in each run: kg/m³, m²/s, N/m.
+    density_by_temperature : (R,) array
+        kg/(m³ K).
+    viscosity_by_temperature : (R,) array
+        ∂ ln ν / ∂T, 1/K.
+    air : float
+        Density of the air at the site, kg/m³.
+    gravity : float
+        m/s².
+    gravity_u : float
+        Relative standard uncertainty of gravity, 0 where it is not stated.
+    """
+
+    density: Array
+    kinematic_viscosity: Array
+    surface_tension: Array
+    density_by_temperature: Array
+    viscosity_by_temperature: Array
+    air: float
+    gravity: float
+    gravity_u: float
+
+
+def media_of(survey: Survey) -> Media:
+    """Work out the media of a survey.
+
+    Parameters
+    ----------
+    survey : Survey
+        Its fluid, site and run temperatures.
+
+    Returns
+    -------
+    Media
+        For its runs, in their order.
+    """
+    temperature = survey.runs["temperature"].to_numpy(float)
+    density, viscosity = _flowing(survey.fluid, temperature)
+    by_density, by_viscosity = np.zeros_like(density), np.zeros_like(density)
+    tension = np.full_like(density, 0.0728)
+    if survey.fluid.density is None:
+        (below, thin), (above, thick) = (_flowing(survey.fluid, temperature + step) for step in _sides(temperature))
+        width = np.subtract(*_sides(temperature)[::-1])
+        by_density = (above - below) / width
+        by_viscosity = np.log(thick / thin) / width
+        tension = np.asarray(water_surface_tension(temperature))
+    gravity, gravity_u = _gravity(survey.site)
+    pressure = standard_atmosphere_pressure(survey.site.altitude or 0.0)
+    return Media(
+        density=density,
+        kinematic_viscosity=viscosity,
+        surface_tension=tension,
+        density_by_temperature=by_density,
+        viscosity_by_temperature=by_viscosity,
+        air=float(air_density(_AIR_TEMPERATURE, pressure)),
+        gravity=gravity,
+        gravity_u=gravity_u,
+    )
+
+
+def _sides(temperature: Array) -> tuple[Array, Array]:
+    """Steps below and above each temperature that stay between freezing and boiling."""
+    return (
+        np.maximum(-_STEP, 273.151 - temperature),
+        np.minimum(_STEP, 373.15 - temperature),
+    )
+
+
+def _flowing(fluid: Fluid, temperature: Array) -> tuple[Array, Array]:
+    """Density and kinematic viscosity of the flowing fluid."""
+    if fluid.density is None:
+        density, viscosity = water_properties(temperature)
+        return np.asarray(density), np.asarray(viscosity / density)
+    density = np.full(temperature.shape, fluid.density.value)
+    if fluid.kinematic_viscosity is not None:
+        return density, np.full(temperature.shape, fluid.kinematic_viscosity.value)
+    if fluid.viscosity is None:
+        raise ReductionError(f"the fluid {fluid.name!r} has a density but no viscosity; give one in [fluid]")
+    return density, np.full(temperature.shape, fluid.viscosity.value / fluid.density.value)
+
+
+def fluid_density(name: str, temperature: Array) -> Array:
+    """Return the density of a fluid in a connecting line or a column.
+
+    Parameters
+    ----------
+    name : str
+        ``water``, ``mercury`` or ``air``.
+    temperature : array
+        K.
+
+    Returns
+    -------
+    array
+        kg/m³.
+
+    Raises
+    ------
+    ReductionError
+        For another name.
+    """
+    known = {
+        "water": water_density,
+        "mercury": mercury_density,
+        "air": lambda at: air_density(at, standard_atmosphere_pressure(0.0)),
+    }
+    if name not in known:
+        raise ReductionError(f"no density is known for the fluid {name!r}; known are {', '.join(known)}")
+    return np.asarray(known[name](temperature))
+
+
+def _gravity(site: Site) -> tuple[float, float]:
+    if site.gravity is not None:
+        return site.gravity.value, site.gravity.relative_u or 0.0
+    if site.latitude is not None:
+        return float(normal_gravity(site.latitude, site.altitude or 0.0)), 0.0
+    return STANDARD_GRAVITY, 0.0

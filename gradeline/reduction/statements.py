@@ -1,0 +1,153 @@
+"""What a reduction took for granted and what its reader must know, in sentences."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from gradeline.fitting.misfit import PATTERNS
+from gradeline.fitting.null import FALSE_ALARM
+from gradeline.hydraulics.gravity import STANDARD_GRAVITY
+from gradeline.reduction.corrections import Corrections
+from gradeline.reduction.line import Line
+from gradeline.reduction.media import Media
+from gradeline.reduction.runs import Flowing
+from gradeline.reduction.walls import Wall
+from gradeline.survey import Survey
+
+__all__ = ["assumptions_of", "cautions_of"]
+
+Array = NDArray[np.float64]
+
+
+def assumptions_of(
+    survey: Survey,
+    media: Media,
+    line: Line,
+    corrections: Corrections,
+    flowing: Flowing,
+    *,
+    level: float,
+    correct: str,
+    keep_all: bool,
+) -> tuple[str, ...]:
+    """List every default and choice made by the reduction, after those of the loader."""
+    said = list(survey.assumptions)
+    if survey.fluid.density is None:
+        said.append(
+            "Water: density by IAPWS-95 at 101.325 kPa and viscosity by IAPWS R12-08, at each run's temperature."
+        )
+    if survey.site.gravity is None and survey.site.latitude is not None:
+        said.append(f"Gravity {media.gravity:.5f} m/s² by the WGS 84 formula at the site's latitude and altitude.")
+    if media.gravity == STANDARD_GRAVITY and not any("9.80665" in text for text in said):
+        said.append("Gravity 9.80665 m/s², since neither gravity nor latitude was given.")
+    said.append(f"Air beside columns and gauges: {media.air:.3f} kg/m³ (20 °C, 50 % humidity, standard atmosphere).")
+    said += line.assumptions
+    if corrections.applied:
+        runs = int((survey.runs["flow"] == 0).sum())
+        said.append(
+            f"The offsets of the taps in {'the static run' if runs == 1 else f'the {runs} static runs'} are taken off the "
+            "readings of all flowing runs (--correct none switches this off)."
+        )
+    elif (survey.runs["flow"] == 0).any():
+        why = "switched off" if correct == "none" else "no static reading was usable"
+        said.append(f"The static runs do not correct the others: {why}.")
+    said.append(
+        "Velocity heads carry the kinetic-energy coefficient α: 2 in laminar flow, 1 + 2.7 f in turbulent flow, linear "
+        "in Re between."
+    )
+    said.append(
+        "Regimes: laminar below Re 2000, critical to 4000, turbulent above. The wall's roughness comes from the turbulent "
+        "runs by the Colebrook–White law (2.51, 3.7)."
+    )
+    said.append(_search_sentence(flowing, keep_all=keep_all))
+    said.append(f"Uncertainties are standard uncertainties (k = 1); intervals cover {100 * level:g} %.")
+    return tuple(dict.fromkeys(said))
+
+
+def _search_sentence(flowing: Flowing, *, keep_all: bool) -> str:
+    search = flowing.fits.search
+    if not search.done:
+        return f"Single readings were not judged: {search.reason}."
+    whole = 1 - (1 - FALSE_ALARM) ** search.runs
+    kept = " Flagged readings were kept in the fits, as asked." if keep_all else ""
+    return (
+        f"Up to {search.most} outlying readings a run were looked for among all sets of readings. In a sound run one is "
+        f"flagged by chance in about {100 * FALSE_ALARM:.0f} of 100 runs; over the {search.runs} runs of this survey at "
+        f"least one false flag is to be expected with a probability of {100 * whole:.0f} %.{kept}"
+    )
+
+
+def cautions_of(
+    survey: Survey,
+    line: Line,
+    corrections: Corrections,
+    flowing: Flowing,
+    walls: tuple[Wall, ...],
+    piezometric: Array,
+    crown: Array,
+) -> tuple[str, ...]:
+    """List what a reader must know, after what the loader says.
+
+    Parameters
+    ----------
+    survey, line, corrections, flowing, walls
+        What the fits say.
+    piezometric, crown : (F, m) array
+        Hydraulic grade line and crown of the pipe at the places of the drawn line, m.
+    """
+    said = [*survey.cautions, *flowing.cautions]
+    said += _misfit(survey, flowing)
+    said += _scatter(survey, flowing)
+    said += _sub_atmospheric(survey, line, flowing, piezometric, crown)
+    search, runs = flowing.fits.search, len(flowing.rows)
+    if search.done and search.critical and runs <= 2 and not (flowing.fits.search.critical[0] < 10.5):
+        size = np.sqrt(search.critical[0])
+        said.append(
+            f"With {runs} flowing run{'s' if runs > 1 else ''} and no stated reading uncertainty, the search for outlying "
+            f"readings can find only errors above about {size:.0f} times the scatter."
+        )
+    for wall in walls:
+        share = wall.fit.off_law.sum() / max((wall.fit.off_law | wall.fit.used).sum(), 1)
+        if share > 0.25:
+            said.append(
+                f"Wall {wall.name!r}: {100 * share:.0f} % of the slopes lie off the fitted law; take its roughness with care."
+            )
+    return tuple(dict.fromkeys(said))
+
+
+def _misfit(survey: Survey, flowing: Flowing) -> list[str]:
+    misfit = flowing.fits.misfit
+    if misfit is None or not misfit.shared:
+        return []
+    worst = np.abs(misfit.score).max(axis=1)
+    taps = [survey.observations[i].label for i in np.argsort(-worst) if worst[i] > misfit.critical][:4]
+    return [
+        f"Most runs share a misfit, {PATTERNS[misfit.pattern]}, clearest at {', '.join(taps)}: a tap with an error of its "
+        "own, an unlisted local loss or a change of slope. No single reading is flagged in this survey; the slopes and "
+        "all that follows from them may be biased until the cause is found."
+    ]
+
+
+def _scatter(survey: Survey, flowing: Flowing) -> list[str]:
+    search = flowing.fits.search
+    if search.done or search.reason is None or "stated" not in search.reason:
+        return []
+    return [f"The stated reading uncertainty is doubtful: {search.reason}. No single reading is flagged."]
+
+
+def _sub_atmospheric(survey: Survey, line: Line, flowing: Flowing, piezometric: Array, crown: Array) -> list[str]:
+    if not len(flowing.rows) or not np.any(line.elevation != line.elevation[0]) and not np.any(line.elevation):
+        return []
+    with np.errstate(invalid="ignore"):
+        below = piezometric < crown
+    runs = survey.runs["run"].to_numpy(object)[flowing.rows[below.any(axis=1)]]
+    if not len(runs):
+        return []
+    names = ", ".join(map(str, runs[:6])) + (" and others" if len(runs) > 6 else "")
+    return [
+        f"The hydraulic grade line falls below the pipe's crown in run{'s' if len(runs) > 1 else ''} {names}: the pressure "
+        "there is below that of the atmosphere, air or dirty water can be drawn in, and the column can part."
+    ]
+
+

@@ -1,0 +1,135 @@
+"""The walls of a survey: which slopes each is fitted to, and what came of it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from gradeline.fitting.wall import WallData, WallFit, fit_wall
+from gradeline.hydraulics.friction import LAMINAR_LIMIT, TURBULENT_LIMIT
+from gradeline.reduction.line import Line
+from gradeline.reduction.media import Media
+from gradeline.reduction.runs import Flowing
+from gradeline.survey import Survey
+
+__all__ = ["Wall", "bore_variants", "slope_uncertainty", "walls_of"]
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+#: A slope below this many of its standard uncertainties says nothing of the wall.
+_FAINT = 2.0
+
+
+@dataclass(frozen=True)
+class Wall:
+    """A wall and its fit.
+
+    Parameters
+    ----------
+    name : str
+        Its label.
+    reaches : (k,) int array
+        The reaches that have it.
+    data : WallData
+        What was fitted.
+    fit : WallFit
+        The outcome.
+    faint : (F, k) bool array
+        Slopes left out since they do not exceed twice their uncertainty.
+    turbulent : (F, k) bool array
+        Slopes of turbulent runs.
+    dof : float
+        Degrees of freedom of the scatter.
+    """
+
+    name: str
+    reaches: NDArray[np.intp]
+    data: WallData
+    fit: WallFit
+    faint: Mask
+    turbulent: Mask
+    dof: float
+
+
+def slope_uncertainty(flowing: Flowing, reaches: int) -> tuple[Array, Array]:
+    """Return (standard uncertainty of S with shared inputs, random alone), each (F, K); NaN where not known."""
+    part = slice(1, 1 + reaches)
+    random = np.einsum("fpp->fp", flowing.random)[:, part] + flowing.own[:, part] ** 2
+    shared = np.einsum("fpq,fpq->fp", flowing.effect, flowing.effect)[:, part]
+    return np.sqrt(random + shared), np.sqrt(random)
+
+
+def walls_of(survey: Survey, line: Line, media: Media, flowing: Flowing, *, level: float) -> tuple[Wall, ...]:
+    """Fit every wall of a survey.
+
+    Parameters
+    ----------
+    survey, line, media, flowing
+        The survey and what its runs say.
+    level : float
+        Coverage of the intervals.
+
+    Returns
+    -------
+    tuple of Wall
+        In order of first appearance.
+    """
+    slopes = flowing.slopes()
+    total, _ = slope_uncertainty(flowing, len(line.diameter))
+    found = []
+    for name in dict.fromkeys(reach.wall for reach in survey.reaches):
+        mine = np.array([k for k, reach in enumerate(survey.reaches) if reach.wall == name], dtype=np.intp)
+        data = _data(survey, line, media, flowing, mine)
+        turbulent = flowing.reynolds[:, mine] > TURBULENT_LIMIT
+        there = turbulent & np.isfinite(slopes[:, mine])
+        with np.errstate(invalid="ignore"):
+            faint = there & ~(slopes[:, mine] > np.where(np.isfinite(total[:, mine]), _FAINT * total[:, mine], 0.0))
+        dof = flowing.fits.pooled_dof or np.inf
+        fit = fit_wall(data, there & ~faint, level=level, dof=dof)
+        found.append(Wall(name, mine, data, fit, faint, turbulent, dof))
+    return tuple(found)
+
+
+def _data(survey: Survey, line: Line, media: Media, flowing: Flowing, mine: NDArray[np.intp]) -> WallData:
+    count = len(flowing.rows)
+    columns = 1 + mine
+    zero, none = np.zeros(len(line.diameter)), np.zeros(count)
+    inputs = flowing.inputs
+    by_temperature = media.viscosity_by_temperature[flowing.rows]
+    bore = [zero if one.diameter is None else one.diameter for one in inputs]
+    viscosity = [none if one.viscosity is None else one.viscosity for one in inputs]
+    return WallData(
+        slope=flowing.slopes()[:, mine],
+        slope_covariance=flowing.random[:, columns[:, None], columns],
+        velocity=flowing.velocity[:, mine],
+        diameter=line.diameter[mine],
+        kinematic_viscosity=media.kinematic_viscosity[flowing.rows],
+        gravity=media.gravity,
+        flow_u=flowing.flow_u,
+        own_slope_effect=flowing.own[:, columns],
+        viscosity_u=by_temperature * (survey.stated.temperature_run or 0.0),
+        slope_effect=flowing.effect[:, columns],
+        diameter_effect=np.stack(bore, axis=1)[mine] if bore else np.zeros((len(mine), 0)),
+        flow_effect=np.array([one.flow for one in inputs]),
+        viscosity_effect=np.stack(viscosity, axis=1) if viscosity else np.zeros((count, 0)),
+        gravity_effect=np.array([one.gravity for one in inputs]),
+    )
+
+
+def bore_variants(wall: Wall, changes: tuple[float, ...]) -> list[float]:
+    """Return the roughness that would be found if every bore of the wall were larger by each relative change."""
+    found = []
+    for change in changes:
+        diameter = wall.data.diameter * (1.0 + change)
+        # The same flow through another bore.
+        data = replace(wall.data, diameter=diameter, velocity=wall.data.velocity / (1.0 + change) ** 2)
+        found.append(fit_wall(data, wall.fit.used, level=wall.fit.level, dof=wall.dof).roughness)
+    return found
+
+
+def laminar(flowing: Flowing) -> Mask:
+    """Return which slopes are of laminar flow (F, K)."""
+    return np.asarray(flowing.reynolds < LAMINAR_LIMIT)

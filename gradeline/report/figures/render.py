@@ -1,0 +1,225 @@
+"""Every figure of a report as SVG and PNG bytes, the same bytes for the same reduction."""
+
+from __future__ import annotations
+
+import io
+import re
+import warnings
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from functools import partial
+
+import matplotlib as mpl
+import numpy as np
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.backends.backend_svg import FigureCanvasSVG
+from matplotlib.figure import Figure
+
+from gradeline.quantities.printing import SI_DISPLAY, Display
+from gradeline.reduction.tables import Reduction
+from gradeline.report.figures.compose import Canvases, grade_line_figure, sheet_figure, single
+from gradeline.report.figures.grade_lines import run_title
+from gradeline.report.figures.laws import draw_friction_factor, draw_slope_velocity
+from gradeline.report.figures.residuals import draw_residuals
+from gradeline.report.figures.style import shorten, styled
+
+__all__ = ["Picture", "embedded", "pictures"]
+
+#: More runs than this are drawn as panels.
+SINGLE_RUNS = 24
+PANELS_A_SHEET = 12
+MOST_PANELS = 120
+_DPI = 125
+
+
+@dataclass(frozen=True)
+class Picture:
+    """One figure of a report.
+
+    Parameters
+    ----------
+    name : str
+        Name of its file without the ending.
+    title : str
+        One line for the page's caption.
+    alt : str
+        What it shows, for readers who do not see it.
+    group : {"grade lines", "residuals", "slope velocity", "friction factor"}
+        The section of the page it belongs to.
+    svg, png : bytes
+        Empty where that format was not asked for.
+    """
+
+    name: str
+    title: str
+    alt: str
+    group: str
+    svg: bytes
+    png: bytes
+
+
+def pictures(
+    reduction: Reduction, *, svg: bool = True, png: bool = True, display: Display = SI_DISPLAY
+) -> tuple[Picture, ...]:
+    """Draw every figure of a reduction.
+
+    Parameters
+    ----------
+    reduction : Reduction
+        What is drawn.
+    svg, png : bool
+        Which formats are wanted.
+    display : Display
+        Units of the axes.
+
+    Returns
+    -------
+    tuple of Picture
+        Grade lines run by run (or sheets of panels where there are more than 24 runs), residuals by tap, slope
+        against velocity, friction factor against Reynolds number.
+    """
+    with styled(), warnings.catch_warnings():
+        # a name in a script that the font lacks: the SVG keeps the text, the PNG shows a box
+        warnings.filterwarnings("ignore", message=r"Glyph .* missing from", category=UserWarning)
+        plans = _plans(reduction, display, Canvases())
+        return tuple(_render(*plan, svg=svg, png=png) for plan in plans)
+
+
+_Plan = tuple[str, str, str, str, Callable[[], Figure]]
+
+
+def _plans(reduction: Reduction, display: Display, blanks: Canvases) -> Iterator[_Plan]:
+    runs = list(dict.fromkeys(reduction.runs["run"]))
+    if len(runs) <= SINGLE_RUNS:
+        for n, run in enumerate(runs, 1):
+            slug = re.sub(r"[^A-Za-z0-9_-]+", "-", str(run)).strip("-")[:40]
+            title = run_title(reduction, run, display)
+            yield (
+                f"grade_lines_{n:02d}" + (f"_{slug}" if slug else ""),
+                title,
+                f"Hydraulic and energy grade line against chainage. {title}. {_readings_in_words(reduction, run)}",
+                "grade lines",
+                partial(grade_line_figure, reduction, run, title, display, blanks),
+            )
+    else:
+        chosen = chosen_runs(reduction)
+        sheets = [chosen[at : at + PANELS_A_SHEET] for at in range(0, len(chosen), PANELS_A_SHEET)]
+        for n, sheet in enumerate(sheets, 1):
+            title = f"Grade lines, sheet {n} of {len(sheets)}: runs {shorten(sheet[0], 20)} to {shorten(sheet[-1], 20)}"
+            yield (
+                f"grade_lines_sheet_{n}",
+                title,
+                f"{title}. Each panel shows the hydraulic and the energy grade line of one run against chainage.",
+                "grade lines",
+                partial(sheet_figure, reduction, sheet, display),
+            )
+    yield (
+        "residuals",
+        "Residuals by tap, all runs",
+        "Measured minus fitted energy head of every reading, the taps in order of chainage, flagged readings ringed.",
+        "residuals",
+        lambda: single(
+            lambda ax: draw_residuals(ax, reduction, display=display), "Residuals by tap", below=0.72
+        ),
+    )
+    yield (
+        "slope_velocity",
+        "Friction slope against velocity",
+        "Friction slope against mean velocity on log axes with the fitted powers of the velocity.",
+        "slope velocity",
+        lambda: single(
+            lambda ax: draw_slope_velocity(ax, reduction, display=display), "Friction slope and velocity"
+        ),
+    )
+    yield (
+        "friction_factor",
+        "Friction factor against Reynolds number",
+        "Darcy friction factor against Reynolds number on log axes with the laminar law, the law of a smooth wall "
+        "and the fitted law with its band.",
+        "friction factor",
+        lambda: single(
+            lambda ax: draw_friction_factor(ax, reduction), "Friction factor and Reynolds number", height=4.4
+        ),
+    )
+
+
+def chosen_runs(reduction: Reduction) -> list[str]:
+    """Return the runs that get a panel: all up to 120, else the flagged ones and others spread evenly over the flow."""
+    runs = list(dict.fromkeys(reduction.runs["run"]))
+    if len(runs) <= MOST_PANELS:
+        return runs
+    flagged = set(reduction.flags["run"].dropna())
+    kept = [run for run in runs if run in flagged][: MOST_PANELS // 2]
+    flow = dict(zip(reduction.runs["run"], reduction.runs["flow"].to_numpy(float), strict=True))
+    rest = sorted((run for run in runs if run not in flagged), key=lambda run: flow[run])
+    if rest:
+        places = np.unique(np.linspace(0, len(rest) - 1, MOST_PANELS - len(kept)).astype(int))
+        kept += [rest[place] for place in places]
+    wanted = set(kept)
+    return [run for run in runs if run in wanted]
+
+
+def _readings_in_words(reduction: Reduction, run: str) -> str:
+    heads = reduction.heads[(reduction.heads["run"] == run).to_numpy(bool)]
+    used = int(heads["used"].fillna(False).to_numpy(bool).sum())
+    flagged = [str(tap) for tap, flag in zip(heads["tap"], heads["flag"], strict=True) if flag == "outlier"]
+    words = f"{used} readings in the fit"
+    return f"{words}; flagged: {', '.join(flagged)}." if flagged else f"{words}; none flagged."
+
+
+def _render(
+    name: str, title: str, alt: str, group: str, draw: Callable[[], Figure], *, svg: bool, png: bool
+) -> Picture:
+    mpl.rcParams["svg.hashsalt"] = name
+    figure = draw()
+    as_svg, as_png = io.BytesIO(), io.BytesIO()
+    if svg:
+        FigureCanvasSVG(figure).print_svg(  # type: ignore[no-untyped-call]
+            as_svg, metadata={"Date": None, "Creator": None}
+        )
+    if png:
+        figure.set_dpi(_DPI)
+        canvas = FigureCanvasAgg(figure)
+        canvas.print_png(  # type: ignore[no-untyped-call]
+            as_png, metadata={"Software": None}, pil_kwargs={"compress_level": 3}
+        )
+    return Picture(name, title, alt, group, as_svg.getvalue(), as_png.getvalue())
+
+
+_TAG = re.compile(r"<[a-zA-Z][^>]*>")
+_IDENTITY = re.compile(r"""\bid="([^"]*)"|url\(#([^)]*)\)|href="#([^"]*)\"""")
+
+
+def embedded(picture: Picture) -> str:
+    """Return a picture's SVG as it stands inside a page: no prolog, its names its own, an accessible label.
+
+    Parameters
+    ----------
+    picture : Picture
+        With its SVG.
+
+    Returns
+    -------
+    str
+        Markup; every text in it was escaped when it was drawn.
+    """
+    text = picture.svg.decode("utf-8")
+    text = text[text.index("<svg") :]
+    text = re.sub(r"<metadata>.*?</metadata>", "", text, count=1, flags=re.DOTALL)
+    prefix = picture.name + "-"
+
+    def own(match: re.Match[str]) -> str:
+        return _IDENTITY.sub(_renamed, match.group())
+
+    def _renamed(match: re.Match[str]) -> str:
+        identity, url, reference = match.groups()
+        if identity is not None:
+            return f'id="{prefix}{identity}"'
+        return f"url(#{prefix}{url})" if url is not None else f'href="#{prefix}{reference}"'
+
+    text = _TAG.sub(own, text)
+    return re.sub(
+        r'^<svg\b([^>]*?) width="[^"]*"',
+        r'<svg role="img"\1',
+        re.sub(r'^(<svg\b[^>]*?) height="[^"]*"', r"\1", text),
+    )

@@ -1,0 +1,241 @@
+"""Residuals by tap over all runs."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+from matplotlib.axes import Axes
+from matplotlib.collections import PolyCollection
+from matplotlib.lines import Line2D
+from matplotlib.text import Annotation
+
+from gradeline.quantities.printing import SI_DISPLAY, Display, format_number
+from gradeline.reduction.tables import Reduction
+from gradeline.report.figures.style import (
+    COLOURS,
+    INK,
+    MUTED,
+    REGIME_COLOURS,
+    REGIME_MARKERS,
+    legend_above,
+    shorten,
+)
+
+__all__ = ["ResidualArtists", "draw_residuals"]
+
+_MANY_MARKS = 4000
+_NAMED_TAPS = 24
+_NAMED_RINGS = 12
+
+
+@dataclass(frozen=True)
+class ResidualArtists:
+    """What `draw_residuals` drew.
+
+    Parameters
+    ----------
+    used : mapping of str to Line2D
+        Readings in the fit, by regime.
+    left_out : Line2D or None
+        Readings left out.
+    flagged : Line2D or None
+        Rings around the flagged ones; those beyond the axis stand at its edge.
+    labels : tuple of Annotation
+        Run, and the residual where it lies beyond the axis, beside each ring.
+    still, fastest : PolyCollection or None
+        Two standard deviations of the scatter to either side, at rest and in the fastest run.
+    legend_rows : int
+        Rows of the legend above the axes.
+    """
+
+    used: dict[str, Line2D]
+    left_out: Line2D | None
+    flagged: Line2D | None
+    labels: tuple[Annotation, ...]
+    still: PolyCollection | None
+    fastest: PolyCollection | None
+    legend_rows: int
+
+
+def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISPLAY) -> ResidualArtists:
+    """Draw measured minus fitted energy head for every reading, the taps in order from left to right.
+
+    Parameters
+    ----------
+    ax : Axes
+        Where to draw.
+    reduction : Reduction
+        Its tables ``heads``, ``runs``, ``scatter`` and ``layout`` are read.
+    display : Display
+        Units of the axes.
+
+    Returns
+    -------
+    ResidualArtists
+    """
+    heads, runs = reduction.heads, reduction.runs
+    labels_in_order = list(dict.fromkeys(_names(heads)))
+    order = {name: n for n, name in enumerate(labels_in_order)}
+    run_names = list(dict.fromkeys(runs["run"]))
+    regimes = dict(zip(reversed(runs["run"].tolist()), reversed(runs["regime"].tolist()), strict=True))
+    spread = dict(zip(run_names, np.linspace(-0.3, 0.3, max(len(run_names), 2)), strict=False))
+
+    run_of = heads["run"].to_numpy(object)
+    x = np.array(
+        [order[name] + spread.get(run, 0.0) for name, run in zip(_names(heads), run_of, strict=True)], float
+    )
+    y = heads["residual"].to_numpy(float, na_value=np.nan) * display.factor("small head")
+    used = heads["used"].fillna(False).to_numpy(bool) & np.isfinite(y)
+    flags = heads["flag"].to_numpy(object)
+    outlying = np.array([flag == "outlier" for flag in flags], bool) & np.isfinite(y)
+    regime = np.array([regimes.get(run, "static") for run in run_of], object)
+
+    still, fastest, two_sigma = _scatter_bands(ax, reduction, labels_in_order, display)
+    near = np.isfinite(y) & ~outlying & (used | (np.abs(y) < 3 * two_sigma))
+    sound = np.abs(y[near])
+    limit = 1.35 * max([two_sigma, *sound.tolist()], default=1.0) or 1.0
+    shown = np.clip(y, -limit * 0.9, limit * 0.9)
+
+    raster = len(heads) > _MANY_MARKS
+    drawn: dict[str, Line2D] = {}
+    for name, marker in REGIME_MARKERS.items():
+        mask = used & (regime == name)
+        if mask.any():
+            (drawn[name],) = ax.plot(
+                x[mask],
+                shown[mask],
+                marker,
+                color=REGIME_COLOURS[name],
+                markersize=4.2,
+                linestyle="none",
+                label=name,
+                rasterized=raster,
+                zorder=3,
+            )
+    left_out = flagged = None
+    out = ~used & np.isfinite(y)
+    if out.any():
+        (left_out,) = ax.plot(
+            x[out],
+            shown[out],
+            "o",
+            color=INK,
+            markerfacecolor="white",
+            markersize=4.6,
+            label="left out",
+            zorder=3,
+        )
+    labels: list[Annotation] = []
+    if outlying.any():
+        (flagged,) = ax.plot(
+            x[outlying],
+            shown[outlying],
+            "o",
+            markersize=10,
+            markerfacecolor="none",
+            markeredgecolor=COLOURS["vermilion"],
+            markeredgewidth=1.6,
+            label="flagged",
+            zorder=4,
+        )
+        rows = np.flatnonzero(outlying)
+        for n, row in enumerate(rows[:_NAMED_RINGS]):
+            at = (float(x[row]), float(shown[row]))
+            to_right = x[row] < 0.7 * len(order)
+            labels.append(
+                _ring_label(
+                    ax, shorten(run_of[row], 16), at, y[row], row=n, to_right=to_right, display=display
+                )
+            )
+    ax.vlines(np.arange(len(order) - 1) + 0.5, -limit, limit, color="#d5dadd", linewidth=0.7, zorder=0.8)
+    ax.axhline(0, color=MUTED, linewidth=0.9, zorder=2)
+    ax.set_ylim(-limit, limit)
+    ax.set_xlim(-0.6, max(len(order) - 0.4, 0.6))
+    step = max(1, -(-len(order) // _NAMED_TAPS))
+    ax.set_xticks(range(0, len(order), step), [shorten(name, 10) for name in labels_in_order[::step]])
+    longest = max((len(name) for name in labels_in_order[::step]), default=0)
+    if longest * min(len(order), _NAMED_TAPS) > 70:
+        ax.tick_params(axis="x", labelrotation=90)
+    ax.grid(visible=False, axis="x")
+    beyond = (np.abs(y[np.isfinite(y)]) > limit).any()
+    ax.set_xlabel(
+        "tap, in order of chainage (within a tap: runs in order)"
+        + ("\nmarks at the edge lie beyond it" if beyond else "")
+    )
+    ax.set_ylabel(display.head("measured − fitted energy head", "small head"))
+    handles = [
+        artist for artist in (*drawn.values(), left_out, flagged, still, fastest) if artist is not None
+    ]
+    rows_of_legend = legend_above(ax, handles, columns=4)
+    return ResidualArtists(drawn, left_out, flagged, tuple(labels), still, fastest, rows_of_legend)
+
+
+def _names(heads: object) -> list[str]:
+    """The tap of each row, or the gauge of a differential reading."""
+    taps, second, gauges = heads["tap"], heads["tap_2"], heads["gauge"]  # type: ignore[index]
+    return [
+        str(gauge) if isinstance(other, str) else str(tap)
+        for tap, other, gauge in zip(taps, second, gauges, strict=True)
+    ]
+
+
+def _ring_label(
+    ax: Axes, run: str, at: tuple[float, float], value: float, *, row: int, to_right: bool, display: Display
+) -> Annotation:
+    x, shown = at
+    beyond = abs(value) > abs(shown) * 1.0001
+    text = run
+    if beyond:
+        unit = display.unit("small head")
+        text = (
+            f"{run}: {'+' if value > 0 else ''}{format_number(value, 3)} {unit} {'↑' if value > 0 else '↓'}"
+        )
+    return ax.annotate(
+        text,
+        (x, shown),
+        xytext=(9 if to_right else -9, 0 if not beyond else (-9 * (row % 3)) * (1 if value > 0 else -1)),
+        textcoords="offset points",
+        ha="left" if to_right else "right",
+        va="center",
+        fontsize=8.5,
+        color=INK,
+        bbox={"boxstyle": "square,pad=0.1", "facecolor": "white", "edgecolor": "none", "alpha": 0.85},
+        zorder=5,
+    )
+
+
+def _scatter_bands(
+    ax: Axes, reduction: Reduction, labels: list[str], display: Display
+) -> tuple[PolyCollection | None, PolyCollection | None, float]:
+    """Two standard deviations of the pooled scatter at each tap, at rest and in the fastest run."""
+    heads, scatter = reduction.heads, reduction.scatter
+    gauge_of = dict(zip(_names(heads), heads["gauge"].tolist(), strict=True))
+    base = dict(zip(scatter["gauge"], scatter["base"].to_numpy(float), strict=True))
+    surge = dict(zip(scatter["gauge"], scatter["surge"].to_numpy(float), strict=True))
+    velocity = reduction.runs["velocity"].to_numpy(float, na_value=np.nan)
+    velocity = velocity[np.isfinite(velocity)]
+    head = float(velocity.max()) ** 2 / (2 * reduction.gravity) if velocity.size else 0.0
+    scale = 2 * display.factor("small head")
+    low: npt.NDArray[np.float64] = np.array(
+        [base.get(gauge_of.get(name, ""), np.nan) for name in labels], float
+    )
+    moving = np.array([surge.get(gauge_of.get(name, ""), np.nan) for name in labels], float)
+    if not np.isfinite(low).any():
+        return None, None, 0.0
+    high = scale * np.hypot(low, np.nan_to_num(moving) * head)
+    low = scale * low
+    places = np.concatenate([[n - 0.5, n + 0.5] for n in range(len(labels))])
+
+    def band(half: npt.NDArray[np.float64], alpha: float, label: str) -> PolyCollection:
+        both = np.repeat(half, 2)
+        return ax.fill_between(
+            places, -both, both, color=COLOURS["sky blue"], alpha=alpha, linewidth=0, label=label, zorder=1
+        )
+
+    fastest = (
+        band(high, 0.18, "±2 scatter, fastest run") if np.nanmax(high - low) > 0.02 * np.nanmax(low) else None
+    )
+    still = band(low, 0.30, "±2 scatter, at rest" if fastest is not None else "±2 scatter")
+    return still, fastest, float(np.nanmax(high))

@@ -1,0 +1,134 @@
+"""How a table of text is laid out from rows of a result table."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import pandas as pd
+
+from gradeline.quantities.printing import MISSING
+
+__all__ = [
+    "PrintedTable",
+    "Row",
+    "TableColumn",
+    "count",
+    "known",
+    "lay_out",
+    "name_column",
+    "percent",
+    "records",
+    "truth",
+]
+
+Row = Mapping[str, Any]
+
+
+@dataclass(frozen=True)
+class PrintedTable:
+    """A table of text.
+
+    Parameters
+    ----------
+    caption : str
+        What it holds and how to read it.
+    heads : tuple of str
+        Column heads with units.
+    rows : tuple of tuple of str
+        The cells. The first column names the row.
+    text_columns : frozenset of int
+        Columns that hold words, aligned on the left; the others hold numbers.
+    notes : tuple of str
+        What the numbers in the column "note" stand for, from 1 on.
+    """
+
+    caption: str
+    heads: tuple[str, ...]
+    rows: tuple[tuple[str, ...], ...]
+    text_columns: frozenset[int]
+    notes: tuple[str, ...] = ()
+
+
+def records(table: pd.DataFrame) -> list[dict[str, Any]]:
+    """Return the rows of a table as dicts, a missing value of any kind as None."""
+    columns = {
+        name: [
+            None if missing else value
+            for value, missing in zip(table[name].tolist(), table[name].isna(), strict=True)
+        ]
+        for name in table.columns
+    }
+    return [dict(zip(columns, row, strict=True)) for row in zip(*columns.values(), strict=True)]
+
+
+def percent(level: float) -> str:
+    """Return a level as a percentage.
+
+    Examples
+    --------
+    >>> percent(0.95)
+    '95 %'
+    """
+    return f"{100 * level:.4g} %"
+
+
+def known(value: float | None) -> bool:
+    """Return whether there is a finite value."""
+    return value is not None and math.isfinite(value)
+
+
+def truth(value: bool | None) -> str:
+    """Return yes, no or an en dash."""
+    return MISSING if value is None else "yes" if value else "no"
+
+
+def count(value: float | None) -> str:
+    """Return a whole number or an en dash."""
+    return MISSING if not known(value) else f"{value:.0f}"
+
+
+@dataclass(frozen=True)
+class TableColumn:
+    """A column of a printed table: its head, what makes a cell of a row, and whether it holds words.
+
+    One that is not `always` shown is left out where every cell is missing.
+    """
+
+    head: str
+    cell: Callable[[Row], str]
+    text: bool = False
+    always: bool = True
+
+
+def lay_out(
+    caption: str, rows: Sequence[Row], columns: Sequence[TableColumn], *, note: str | None = "reason"
+) -> PrintedTable:
+    """Lay out rows; equal notes share a number."""
+    cells = [[column.cell(row) for row in rows] for column in columns]
+    kept = [
+        n for n, column in enumerate(columns) if column.always or any(cell != MISSING for cell in cells[n])
+    ]
+    heads = [columns[n].head for n in kept]
+    body = [cells[n] for n in kept]
+    words = {place for place, n in enumerate(kept) if columns[n].text}
+    notes: dict[str, int] = {}
+    if note is not None and any(row.get(note) for row in rows):
+        marks = [
+            str(notes.setdefault(str(row[note]), len(notes) + 1)) if row.get(note) else "" for row in rows
+        ]
+        words.add(len(heads))
+        heads.append("note")
+        body.append(marks)
+    return PrintedTable(
+        caption, tuple(heads), tuple(zip(*body, strict=True)) if rows else (), frozenset(words), tuple(notes)
+    )
+
+
+def name_column(key: str, head: str | None = None, *, always: bool = True) -> TableColumn:
+    """Return the column of a text that stands in the table as it is."""
+    return TableColumn(
+        head or key, lambda row: MISSING if row[key] is None else str(row[key]), text=True, always=always
+    )

@@ -1,0 +1,128 @@
+"""The record for machines: ``reduction.json`` and one csv file a table, in SI units."""
+
+from __future__ import annotations
+
+import csv
+import io
+import json
+import math
+import re
+from typing import Any
+
+import pandas as pd
+
+from gradeline.reduction.tables import RESULT_TABLES, Column, Reduction
+from gradeline.report.printed import records
+
+__all__ = ["as_csv", "as_json"]
+
+#: Numbers that count something are written without a decimal point.
+_COUNTS = frozenset({"slope_dof", "observations_used", "runs_used"})
+_PLAIN_NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?")
+
+
+def as_json(reduction: Reduction, version: str) -> bytes:
+    """Return ``reduction.json``: survey, assumptions, cautions and the result tables, one row a line.
+
+    Parameters
+    ----------
+    reduction : Reduction
+        What is written; SI units.
+    version : str
+        Of the program.
+
+    Returns
+    -------
+    bytes
+        UTF-8. A missing value is null; NaN and Infinity never occur.
+    """
+    parts: dict[str, str] = {
+        "gradeline": _dump(version),
+        "survey": _dump(_jsonable(dict(reduction.survey))),
+        "assumptions": _dump(list(reduction.assumptions)),
+        "cautions": _dump(list(reduction.cautions)),
+    }
+    for table in RESULT_TABLES:
+        rows = [_dump(row) for row in _rows(table, getattr(reduction, table))]
+        parts[table] = "[\n  " + ",\n  ".join(rows) + "\n ]" if rows else "[]"
+    text = "{\n " + ",\n ".join(f'"{key}": {value}' for key, value in parts.items()) + "\n}\n"
+    # a file name that was not UTF-8 holds surrogates, which JSON may carry as \udcXX
+    return text.encode("utf-8", errors="backslashreplace")
+
+
+def as_csv(reduction: Reduction, table: str) -> bytes:
+    r"""Return a result table as csv: a heading row of the keys, SI units, empty cells for missing values.
+
+    Parameters
+    ----------
+    reduction : Reduction
+        What is written.
+    table : str
+        A key of ``RESULT_TABLES``.
+
+    Returns
+    -------
+    bytes
+        UTF-8 with ``\n`` line ends. A text cell that a spreadsheet could take for a formula (it begins with
+        ``= + - @`` and is no number) gets a leading apostrophe.
+    """
+    out = io.StringIO()
+    writer = csv.writer(out, lineterminator="\n")
+    columns = RESULT_TABLES[table]
+    writer.writerow(columns)
+    for row in _rows(table, getattr(reduction, table)):
+        writer.writerow([_cell(row[name], column) for name, column in columns.items()])
+    return out.getvalue().encode("utf-8", errors="backslashreplace")
+
+
+def _dump(value: object) -> str:
+    return json.dumps(value, ensure_ascii=False, allow_nan=False)
+
+
+def _rows(table: str, data: pd.DataFrame) -> list[dict[str, Any]]:
+    """The rows of a table with exactly its keys, values of plain Python types."""
+    columns = RESULT_TABLES[table]
+    return [
+        {name: _value(row[name], column, count=name in _COUNTS) for name, column in columns.items()}
+        for row in records(data[list(columns)])
+    ]
+
+
+def _value(value: Any, column: Column, *, count: bool) -> Any:
+    if value is None:
+        return None
+    if column.kind == "truth":
+        return bool(value)
+    if column.kind == "text":
+        return str(value)
+    number = float(value)
+    if not math.isfinite(number):
+        return None
+    return int(number) if count and number.is_integer() else number
+
+
+def _jsonable(value: Any) -> Any:
+    """A value of the survey's description as JSON can hold it."""
+    if isinstance(value, dict) or hasattr(value, "items"):
+        return {str(key): _jsonable(item) for key, item in value.items()}
+    if isinstance(value, (list, tuple)):
+        return [_jsonable(item) for item in value]
+    if value is None or isinstance(value, (bool, int, str)):
+        return value
+    if isinstance(value, float):
+        return value if math.isfinite(value) else None
+    return str(value)
+
+
+def _cell(value: Any, column: Column) -> str:
+    if value is None:
+        return ""
+    if column.kind == "truth":
+        return "true" if value else "false"
+    if column.kind == "number":
+        return repr(value)
+    text = str(value)
+    # tab and carriage return count too: spreadsheets skip them and see what follows
+    if text[:1] in ("=", "+", "-", "@", "\t", "\r") and not _PLAIN_NUMBER.fullmatch(text):
+        return "'" + text
+    return text

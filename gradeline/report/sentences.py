@@ -1,0 +1,371 @@
+"""The summary in sentences: what was found, how sure it is, what to look at, what is missing and why."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from gradeline.quantities.printing import (
+    SI_DISPLAY,
+    Display,
+    format_interval,
+    format_number,
+    rounded,
+    thousands,
+)
+from gradeline.reduction.tables import Reduction
+from gradeline.report.printed import known, percent, records
+from gradeline.report.tables import flagged_value, reading_quantity
+
+__all__ = ["JUDGEMENT", "Summary", "summarise"]
+
+#: Stands at the end of every summary.
+JUDGEMENT = (
+    "These results support a judgement; they do not replace local codes or licensed practice, and they say nothing "
+    "of what was not measured."
+)
+
+_MOST_NAMED = 6
+#: Of f with nothing stated, an agreement of the laminar runs within this share is still called one.
+_LAMINAR_ROOM = 0.02
+
+
+@dataclass(frozen=True)
+class Summary:
+    """The summary of a reduction, each entry one or two sentences.
+
+    Parameters
+    ----------
+    found : tuple of str
+        Results with how sure they are.
+    look : tuple of str
+        What deserves a look: flags, misfits, cautions.
+    missing : tuple of str
+        What could not be determined, with the reason.
+    close : str
+        What the results are good for.
+    """
+
+    found: tuple[str, ...]
+    look: tuple[str, ...]
+    missing: tuple[str, ...]
+    close: str = JUDGEMENT
+
+
+def summarise(reduction: Reduction, display: Display = SI_DISPLAY) -> Summary:
+    """Return the summary of a reduction, the same for page and terminal.
+
+    Parameters
+    ----------
+    reduction : Reduction
+        What was reduced.
+    display : Display
+        Units of the reader.
+
+    Returns
+    -------
+    Summary
+    """
+    walls, runs, fittings = (
+        records(table) for table in (reduction.walls, reduction.runs, reduction.fittings)
+    )
+    flags = records(reduction.flags)
+    found = [
+        _survey(reduction, runs),
+        *(_wall(wall, reduction.level, display) for wall in walls if known(wall["roughness"])),
+        *_friction(runs),
+        *_laminar(runs),
+        *_exponents(reduction),
+        *(_fitting(fitting, reduction.level) for fitting in fittings if known(fitting["loss_coefficient_u"])),
+    ]
+    look = [
+        *_law(walls, flags),
+        *_readings(reduction, flags, display),
+        *_runs(flags),
+        *_taps(flags),
+        *_crown(reduction, display),
+        *_cautions(reduction),
+    ]
+    if not flags:
+        look.insert(0, "No reading and no run was flagged.")
+    return Summary(tuple(filter(None, found)), tuple(look), tuple(_missing(walls, runs, fittings)))
+
+
+def _plural(count: int, one: str, many: str | None = None) -> str:
+    """Return a count with its noun.
+
+    Examples
+    --------
+    >>> _plural(1, "run"), _plural(3, "run")
+    ('1 run', '3 runs')
+    """
+    return f"{count} {one if count == 1 else many or one + 's'}"
+
+
+def _list(items: Iterable[str]) -> str:
+    """Return names as a list in words, long ones cut.
+
+    Examples
+    --------
+    >>> _list(["R1", "R2", "R3"])
+    'R1, R2 and R3'
+    """
+    names = list(items)
+    if len(names) > _MOST_NAMED + 1:
+        return f"{', '.join(names[:_MOST_NAMED])} and {len(names) - _MOST_NAMED} more"
+    return names[0] if len(names) == 1 else f"{', '.join(names[:-1])} and {names[-1]}"
+
+
+def _distinct(rows: Sequence[dict[str, Any]], key: str) -> list[str]:
+    return list(dict.fromkeys(str(row[key]) for row in rows))
+
+
+def _survey(reduction: Reduction, runs: Sequence[dict[str, Any]]) -> str:
+    flowing = _distinct([row for row in runs if row["regime"] != "static"], "run")
+    static = _distinct([row for row in runs if row["regime"] == "static"], "run")
+    heads = reduction.heads
+    used = int(heads["used"].fillna(False).to_numpy(bool).sum())
+    read = int(np.isfinite(heads["head"].to_numpy(float, na_value=np.nan)).sum())
+    parts = [_plural(len(flowing), "flowing run")]
+    if static:
+        parts.append(_plural(len(static), "static run"))
+    return f"{' and '.join(parts)} with {_plural(read, 'reading')} were reduced; {used} readings entered the fits."
+
+
+def _wall(wall: dict[str, Any], level: float, display: Display) -> str:
+    name = wall["wall"]
+    runs = (
+        f"from {_plural(int(wall['runs_used']), 'turbulent run')}"
+        if known(wall["runs_used"])
+        else "from all runs"
+    )
+    upper = display.text("roughness", wall["roughness_upper95"], digits=2, unit=True)
+    if wall["roughness_resolved"]:
+        value = display.text("roughness", wall["roughness"], digits=2, unit=True)
+        interval = display.interval("roughness", wall["roughness_low"], wall["roughness_high"], unit=True)
+        words = f"The roughness of the wall {name} is {value} ({percent(level)} interval {interval}), {runs}."
+    elif known(wall["roughness_upper95"]):
+        words = (
+            f"The roughness of the wall {name} is not resolved: it is smaller than {upper} (95 %), {runs}."
+        )
+    else:
+        words = f"The roughness of the wall {name} is not resolved, {runs}."
+    if wall["hydraulically_smooth"]:
+        words += " Even at that bound the wall is hydraulically smooth at every flow measured."
+    return words
+
+
+def _friction(runs: Sequence[dict[str, Any]]) -> Iterable[str]:
+    turbulent = [row for row in runs if row["regime"] == "turbulent" and known(row["friction_factor"])]
+    if not turbulent:
+        return
+    turbulent.sort(key=lambda row: row["reynolds"])
+
+    def at(row: dict[str, Any]) -> str:
+        return f"{rounded(row['friction_factor'], row['friction_factor_u'])} at Re {thousands(row['reynolds'], 3)}"
+
+    if len(turbulent) == 1:
+        yield f"The Darcy friction factor of the one turbulent run is {at(turbulent[0])}."
+        return
+    for reach in _distinct(turbulent, "reach"):
+        own = [row for row in turbulent if row["reach"] == reach]
+        where = f" in the reach {reach}" if len(_distinct(turbulent, "reach")) > 1 else ""
+        if len(own) > 1:
+            yield (
+                f"In turbulent flow the Darcy friction factor{where} goes from {at(own[0])} to {at(own[-1])} "
+                "(± one standard uncertainty)."
+            )
+        else:
+            yield f"In turbulent flow the Darcy friction factor{where} is {at(own[0])}."
+
+
+def _laminar(runs: Sequence[dict[str, Any]]) -> Iterable[str]:
+    laminar = [row for row in runs if row["regime"] == "laminar" and known(row["friction_factor"])]
+    if not laminar:
+        return
+    ratios = [(row["friction_factor"] * row["reynolds"] / 64, row) for row in laminar]
+    # u(f)/f stands for u(f Re)/(f Re): f goes as D⁵/Q² and f·Re as D⁴/Q, so it is rather too wide than too narrow
+    texts, off, unknown = [], [], False
+    for ratio, row in ratios:
+        u = (
+            ratio * row["friction_factor_u"] / row["friction_factor"]
+            if known(row["friction_factor_u"])
+            else None
+        )
+        texts.append(f"{rounded(ratio, u)} ({row['run']})")
+        if u is None:
+            unknown = True
+            if abs(ratio - 1) > _LAMINAR_ROOM:
+                off.append(str(row["run"]))
+        elif abs(ratio - 1) > 2 * u:
+            off.append(str(row["run"]))
+    words = f"In laminar flow f·Re/64, which is 1 for the true bore and flow, is {_list(texts)}"
+    if off:
+        yield (
+            f"{words}. In {_list(off)} that is not 1 within "
+            f"{'2 %' if unknown else 'two standard uncertainties'}: check the bore (it enters as D⁴), the flow and "
+            "the temperature."
+        )
+    else:
+        yield f"{words}: no contradiction to the stated bore."
+
+
+def _exponents(reduction: Reduction) -> Iterable[str]:
+    rows = [row for row in records(reduction.exponents) if known(row["exponent"])]
+    several = len(_distinct(rows, "reach")) > 1
+    texts = [
+        f"{rounded(row['exponent'], row['exponent_u'])} ({row['regime']}{', ' + row['reach'] if several else ''})"
+        for row in rows
+    ]
+    if texts:
+        yield f"The friction slope grows as Vⁿ with n = {_list(texts)}."
+
+
+def _fitting(fitting: dict[str, Any], level: float) -> str:
+    value = rounded(fitting["loss_coefficient"], fitting["loss_coefficient_u"])
+    words = f"The loss coefficient of {fitting['fitting']} is K = {value}"
+    if known(fitting["loss_coefficient_low"]) and known(fitting["loss_coefficient_high"]):
+        interval = format_interval(fitting["loss_coefficient_low"], fitting["loss_coefficient_high"])
+        words += f" ({percent(level)} interval {interval})"
+    return words + "."
+
+
+def _law(walls: Sequence[dict[str, Any]], flags: Sequence[dict[str, Any]]) -> Iterable[str]:
+    flagged = [flag for flag in flags if flag["kind"] == "law"]
+    if not flagged:
+        return
+    trends = [
+        wall
+        for wall in walls
+        if known(wall["law_trend"])
+        and known(wall["law_trend_u"])
+        and abs(wall["law_trend"]) > 2 * wall["law_trend_u"]
+    ]
+    for wall in trends:
+        trend = rounded(100 * wall["law_trend"], 100 * wall["law_trend_u"])
+        direction = "falls" if wall["law_trend"] < 0 else "rises"
+        yield (
+            f"The friction law does not describe the wall {wall['wall']}: against it f {direction} with Re, by "
+            f"({trend}) % per decade. Its roughness is to be read with that in mind."
+        )
+    for flag in flagged:
+        if flag["suggestion"] and not trends:
+            yield f"The friction law does not fit: {flag['suggestion']}."
+        elif flag["suggestion"]:
+            yield f"On the misfit of the law: {flag['suggestion']}."
+
+
+def _readings(reduction: Reduction, flags: Sequence[dict[str, Any]], display: Display) -> Iterable[str]:
+    flagged = [flag for flag in flags if flag["kind"] == "reading"]
+    if not flagged:
+        return
+    quantities = reading_quantity(reduction)
+    heads = reduction.heads
+    wanted = {(flag["run"], flag["tap"]) for flag in flagged}
+    kept = {
+        (run, tap)
+        for run, tap, used in zip(heads["run"], heads["tap"], heads["used"].fillna(False), strict=True)
+        if used and (run, tap) in wanted
+    }
+    flagged.sort(key=lambda flag: -abs(flag["score"]) if known(flag["score"]) else 0.0)
+    for flag in flagged[:_MOST_NAMED]:
+        read, expected = (flagged_value(flag, key, quantities, display) for key in ("reading", "expected"))
+        fate = (
+            "it was kept in the fit" if (flag["run"], flag["tap"]) in kept else "it was left out of the fit"
+        )
+        score = f" (score {format_number(flag['score'], 2)})" if known(flag["score"]) else ""
+        words = f"Run {flag['run']}, tap {flag['tap']}: {read} was read, {expected} expected{score}; {fate}."
+        yield words + (f" {_sentence(flag['suggestion'])}" if flag["suggestion"] else "")
+    if len(flagged) > _MOST_NAMED:
+        yield f"{_plural(len(flagged) - _MOST_NAMED, 'more reading')} were flagged; the table of flags names them."
+
+
+def _sentence(text: str) -> str:
+    """Return words as a sentence of their own."""
+    plain = text.strip()
+    return plain[:1].upper() + plain[1:] + ("" if plain.endswith((".", "?", "!")) else ".")
+
+
+def _runs(flags: Sequence[dict[str, Any]]) -> Iterable[str]:
+    flagged = [flag for flag in flags if flag["kind"] == "run"]
+    for flag in flagged[:_MOST_NAMED]:
+        score = f" (score {format_number(flag['score'], 2)})" if known(flag["score"]) else ""
+        suggestion = f" {_sentence(flag['suggestion'])}" if flag["suggestion"] else ""
+        yield f"Run {flag['run']} lies off the friction law that the other runs follow{score}.{suggestion}"
+    if len(flagged) > _MOST_NAMED:
+        rest = [str(flag["run"]) for flag in flagged[_MOST_NAMED:]]
+        yield f"So do {_list(rest)}."
+
+
+def _taps(flags: Sequence[dict[str, Any]]) -> Iterable[str]:
+    for flag in [flag for flag in flags if flag["kind"] == "tap"][:_MOST_NAMED]:
+        suggestion = (
+            f": {flag['suggestion']}"
+            if flag["suggestion"]
+            else " reads off the line in the same way in most runs"
+        )
+        yield _sentence(f"Tap {flag['tap']}{suggestion}")
+
+
+def _crown(reduction: Reduction, display: Display) -> Iterable[str]:
+    """Where a hydraulic grade line falls below the pipe's crown."""
+    lines = reduction.grade_lines
+    x, run_of = lines["chainage"].to_numpy(float), lines["run"].to_numpy(object)
+    margin = lines["piezometric_head"].to_numpy(float) - lines["crown"].to_numpy(float)
+    with np.errstate(invalid="ignore"):
+        below = margin < 0
+        # where a line crosses the crown between two of its places
+        crossing = (
+            (below[:-1] != below[1:]) & (run_of[:-1] == run_of[1:]) & np.isfinite(margin[:-1] + margin[1:])
+        )
+    if not below.any():
+        return
+    runs = list(dict.fromkeys(str(run) for run in run_of[below]))
+    at = np.flatnonzero(crossing)
+    ends = np.concatenate(
+        [x[below], x[at] + (x[at + 1] - x[at]) * margin[at] / (margin[at] - margin[at + 1])]
+    )
+    first, last = (display.text("chainage", end, digits=3) for end in (ends.min(), ends.max()))
+    unit = display.unit("chainage")
+    place = f"at chainage {first} {unit}" if first == last else f"between chainage {first} and {last} {unit}"
+    yield (
+        f"In {'run' if len(runs) == 1 else 'runs'} {_list(runs)} the hydraulic grade line lies below the pipe's crown "
+        f"{place}: the pressure there is below the atmosphere's, so that air or dirty water can be drawn in and the "
+        "water column can part."
+    )
+
+
+def _cautions(reduction: Reduction) -> Iterable[str]:
+    cautions, assumptions = len(reduction.cautions), len(reduction.assumptions)
+    parts = []
+    if cautions:
+        parts.append(_plural(cautions, "caution"))
+    if assumptions:
+        parts.append(_plural(assumptions, "assumption"))
+    if parts:
+        total = cautions + assumptions
+        yield f"{' and '.join(parts)} {'is' if total == 1 else 'are'} listed; read them before a number is used."
+
+
+def _missing(
+    walls: Sequence[dict[str, Any]], runs: Sequence[dict[str, Any]], fittings: Sequence[dict[str, Any]]
+) -> Iterable[str]:
+    for wall in walls:
+        if not known(wall["roughness"]):
+            yield _because(f"The roughness of the wall {wall['wall']}", wall["reason"])
+    for fitting in fittings:
+        if not known(fitting["loss_coefficient"]):
+            yield _because(f"The loss coefficient of {fitting['fitting']}", fitting["reason"])
+    without: dict[str | None, list[str]] = {}
+    for row in runs:
+        if not known(row["slope"]) and row["regime"] != "static":
+            without.setdefault(row["reason"], []).append(str(row["run"]))
+    for reason, names in without.items():
+        yield _because(f"The friction slope of {_list(dict.fromkeys(names))}", reason)
+
+
+def _because(what: str, reason: str | None) -> str:
+    return f"{what} could not be determined" + (f": {reason.rstrip('.')}." if reason else ".")

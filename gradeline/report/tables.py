@@ -1,0 +1,353 @@
+"""The tables of a reduction as a reader sees them: rounded, with units, and a note where a value is missing."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Mapping
+
+from gradeline.quantities.printing import (
+    MISSING,
+    SI_DISPLAY,
+    Display,
+    format_interval,
+    format_number,
+    rounded,
+    thousands,
+)
+from gradeline.reduction.tables import Reduction
+from gradeline.report.printed import (
+    PrintedTable,
+    Row,
+    TableColumn,
+    count,
+    known,
+    lay_out,
+    name_column,
+    percent,
+    records,
+    truth,
+)
+
+__all__ = [
+    "bore_table",
+    "budget_table",
+    "exponent_table",
+    "fitting_table",
+    "flag_table",
+    "flagged_value",
+    "reach_table",
+    "reading_quantity",
+    "run_table",
+    "scatter_table",
+    "tap_table",
+    "wall_table",
+]
+
+
+def run_table(
+    reduction: Reduction, display: Display = SI_DISPLAY, *, limit: int | None = None
+) -> PrintedTable:
+    """Return the run table: flow, Re, regime, friction slope, friction factor, roughness of each run and reach."""
+    rows = records(reduction.runs if limit is None else reduction.runs.iloc[:limit])
+    level = percent(reduction.level)
+    several = len(reduction.reaches) > 1
+    return lay_out(
+        "Runs. ± is one standard uncertainty, shared inputs included. Roughness is that of the run alone; the "
+        "wall's, below, comes from all runs together.",
+        rows,
+        [
+            name_column("run"),
+            *([name_column("reach")] if several else []),
+            TableColumn(display.head("flow", "flow"), lambda row: display.text("flow", row["flow"])),
+            TableColumn(display.head("V", "velocity"), lambda row: display.text("velocity", row["velocity"])),
+            TableColumn(
+                display.head("temperature", "temperature"),
+                lambda row: _temperature(row, display),
+                always=False,
+            ),
+            TableColumn("Re", lambda row: thousands(row["reynolds"])),
+            name_column("regime"),
+            TableColumn(
+                display.head("friction slope S", "slope"),
+                lambda row: display.text("slope", row["slope"], row["slope_u"]),
+            ),
+            TableColumn(
+                "friction factor f", lambda row: rounded(row["friction_factor"], row["friction_factor_u"])
+            ),
+            TableColumn(
+                display.head("roughness ε", "roughness"),
+                lambda row: display.text("roughness", row["roughness"], digits=2),
+                always=False,
+            ),
+            TableColumn(
+                display.head(f"ε, {level} interval", "roughness"),
+                lambda row: display.interval("roughness", row["roughness_low"], row["roughness_high"]),
+                always=False,
+            ),
+            TableColumn("readings used", lambda row: count(row["observations_used"])),
+            TableColumn("straightness p", lambda row: _probability(row["straightness_p"]), always=False),
+        ],
+    )
+
+
+def _temperature(row: Row, display: Display) -> str:
+    if not known(row["temperature"]):
+        return MISSING
+    return f"{display.value('temperature', row['temperature']):.1f}".replace("-", "−")
+
+
+def _probability(value: float | None) -> str:
+    if value is None or not math.isfinite(value):
+        return MISSING
+    return "< 0.001" if value < 1e-3 else f"{value:.2g}"
+
+
+def wall_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return the walls: roughness with interval and bound, resolved or not, smooth or not, misfit of the law."""
+    level = percent(reduction.level)
+    return lay_out(
+        "Walls, from all turbulent runs together. ε⁺ is the roughness Reynolds number of the fastest run; the trend "
+        "is that of f against the friction law.",
+        records(reduction.walls),
+        [
+            name_column("wall"),
+            TableColumn(
+                display.head("roughness ε", "roughness"),
+                lambda row: display.text("roughness", row["roughness"], digits=2),
+            ),
+            TableColumn(
+                display.head(f"{level} interval", "roughness"),
+                lambda row: display.interval("roughness", row["roughness_low"], row["roughness_high"]),
+            ),
+            TableColumn(
+                display.head("95 % upper bound", "roughness"),
+                lambda row: display.text("roughness", row["roughness_upper95"], digits=2),
+            ),
+            TableColumn("resolved", lambda row: truth(row["roughness_resolved"]), text=True),
+            TableColumn("hydraulically smooth", lambda row: truth(row["hydraulically_smooth"]), text=True),
+            TableColumn("ε⁺", lambda row: format_number(row["roughness_reynolds"], 3)),
+            TableColumn(
+                "trend of f (%/decade of Re)", lambda row: _hundredfold(row["law_trend"], row["law_trend_u"])
+            ),
+            TableColumn("runs used", lambda row: count(row["runs_used"])),
+            TableColumn(
+                "Hazen–Williams C", lambda row: format_number(row["hazen_williams_c"], 3), always=False
+            ),
+            TableColumn("Manning n", lambda row: format_number(row["manning_n"], 3), always=False),
+        ],
+    )
+
+
+def _hundredfold(value: float | None, u: float | None) -> str:
+    return rounded(None if value is None else 100 * value, None if u is None else 100 * u, digits=2)
+
+
+def fitting_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return the fittings with their loss coefficients."""
+    level = percent(reduction.level)
+    return lay_out(
+        "Fittings. K refers to the velocity head that the survey names, the smaller bore's otherwise.",
+        records(reduction.fittings),
+        [
+            name_column("fitting"),
+            TableColumn(
+                "loss coefficient K", lambda row: rounded(row["loss_coefficient"], row["loss_coefficient_u"])
+            ),
+            TableColumn(
+                f"K, {level} interval",
+                lambda row: format_interval(row["loss_coefficient_low"], row["loss_coefficient_high"]),
+            ),
+            TableColumn(
+                display.head("equivalent length", "length"),
+                lambda row: display.text("length", row["equivalent_length"], digits=2),
+                always=False,
+            ),
+        ],
+    )
+
+
+def budget_table(reduction: Reduction) -> PrintedTable:
+    """Return the uncertainty budget: what each input adds."""
+    return lay_out(
+        "Uncertainty budget, SI units: each input's share of the variance.",
+        records(reduction.budget),
+        [
+            name_column("quantity"),
+            name_column("subject"),
+            name_column("input"),
+            TableColumn("contribution", lambda row: format_number(row["contribution_u"], 2)),
+            TableColumn("share of variance (%)", lambda row: _hundredfold(row["variance_share"], None)),
+        ],
+        note=None,
+    )
+
+
+def reach_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return the reaches with their bores and walls."""
+    return lay_out(
+        "Reaches, in flow order. p of a curve that all runs share: a small one speaks against a straight grade line.",
+        records(reduction.reaches),
+        [
+            name_column("reach"),
+            name_column("wall"),
+            TableColumn(display.head("length", "length"), lambda row: display.text("length", row["length"])),
+            TableColumn(
+                display.head("bore", "diameter"),
+                lambda row: display.text("diameter", row["diameter"], digits=5),
+            ),
+            TableColumn("shared curve p", lambda row: _probability(row["shared_curve_p"]), always=False),
+        ],
+    )
+
+
+def exponent_table(reduction: Reduction) -> PrintedTable:
+    """Return the exponents n of S ∝ Vⁿ."""
+    level = percent(reduction.level)
+    return lay_out(
+        "Exponent n of S ∝ Vⁿ: 1 in laminar flow, about 1.75 where the wall is smooth, 2 where it is fully rough.",
+        records(reduction.exponents),
+        [
+            name_column("reach"),
+            name_column("regime"),
+            TableColumn("exponent n", lambda row: rounded(row["exponent"], row["exponent_u"])),
+            TableColumn(
+                f"n, {level} interval", lambda row: format_interval(row["exponent_low"], row["exponent_high"])
+            ),
+            TableColumn("runs used", lambda row: count(row["runs_used"])),
+        ],
+    )
+
+
+def scatter_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return the scatter of the readings by gauge."""
+    return lay_out(
+        "Scatter of one reading, pooled over all runs: σ² = σ₀² + (c V²/2g)².",
+        records(reduction.scatter),
+        [
+            name_column("gauge"),
+            TableColumn(
+                display.head("σ₀", "small head"),
+                lambda row: display.text("small head", row["base"], digits=2),
+            ),
+            TableColumn("c", lambda row: format_number(row["surge"], 2)),
+            TableColumn(
+                display.head("stated", "small head"),
+                lambda row: display.text("small head", row["stated"], digits=2),
+            ),
+            TableColumn("degrees of freedom", lambda row: count(row["dof"])),
+        ],
+        note="note",
+    )
+
+
+def tap_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return the taps: offsets from static runs, ailments where they were looked for."""
+    unit = "small head"
+    return lay_out(
+        "Taps. The offset is what a tap reads too high when nothing flows; it was taken off where a static run gave it.",
+        records(reduction.taps),
+        [
+            name_column("tap"),
+            TableColumn(
+                display.head("offset", unit),
+                lambda row: display.text(unit, row["offset"], row["offset_u"], digits=2),
+            ),
+            TableColumn(
+                "edge coefficient",
+                lambda row: rounded(row["edge_coefficient"], row["edge_coefficient_u"]),
+                always=False,
+            ),
+            name_column("diagnosis", always=False),
+        ],
+    )
+
+
+def bore_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return what a slightly different bore would make of f and of the roughness."""
+    return lay_out(
+        "If the bore were a little different: f grows as D⁵, and the roughness follows.",
+        records(reduction.bore_sensitivity),
+        [
+            name_column("wall"),
+            TableColumn("bore (%)", lambda row: _signed(row["diameter_change"])),
+            TableColumn("friction factor f (%)", lambda row: _signed(row["friction_factor_change"])),
+            TableColumn(
+                display.head("roughness ε", "roughness"),
+                lambda row: display.text("roughness", row["roughness"], digits=2),
+            ),
+        ],
+    )
+
+
+def _signed(fraction: float | None) -> str:
+    if fraction is None or not math.isfinite(fraction):
+        return MISSING
+    text = format_number(100 * fraction, 2)
+    return f"+{text}" if fraction > 0 else text
+
+
+def flag_table(
+    reduction: Reduction, display: Display = SI_DISPLAY, *, limit: int | None = None
+) -> PrintedTable:
+    """Return the flags with what was read and what was expected."""
+    rows = records(reduction.flags if limit is None else reduction.flags.iloc[:limit])
+    quantities = reading_quantity(reduction)
+
+    def reading(key: str) -> Callable[[Row], str]:
+        return lambda row: flagged_value(row, key, quantities, display)
+
+    return lay_out(
+        "Flags. The score is the studentised residual with the reading itself left out. A flag is a question to the "
+        "record, not a verdict.",
+        rows,
+        [
+            name_column("kind"),
+            name_column("run"),
+            name_column("tap"),
+            TableColumn("read", reading("reading")),
+            TableColumn("expected", reading("expected")),
+            TableColumn("score", lambda row: format_number(row["score"], 2)),
+            name_column("suggestion", always=False),
+        ],
+        note=None,
+    )
+
+
+def reading_quantity(reduction: Reduction) -> dict[tuple[str, str], str]:
+    """Return whether each flagged reading, by run and tap, is a pressure or a length (as ``head``).
+
+    A reading in pascals lies about ρg times as far from what was expected as its head from the line; one in metres
+    about as far, or a few times where the tube is inclined.
+    """
+    flags = [row for row in records(reduction.flags) if row["kind"] == "reading"]
+    wanted = {(row["run"], row["tap"]): row for row in flags}
+    found: dict[tuple[str, str], str] = {}
+    if not wanted:
+        return found
+    heads = reduction.heads
+    for run, tap, gauge, residual in zip(
+        heads["run"], heads["tap"], heads["gauge"], heads["residual"], strict=True
+    ):
+        row = wanted.get((run, tap)) or wanted.get((run, gauge))
+        if row is None or not known(row["reading"]) or not known(row["expected"]) or not residual:
+            continue
+        ratio = abs((row["reading"] - row["expected"]) / residual)
+        if math.isfinite(ratio):
+            found[row["run"], row["tap"]] = "pressure" if ratio > 300 else "head"
+    return found
+
+
+def flagged_value(
+    row: Row, key: str, quantities: Mapping[tuple[str, str], str], display: Display = SI_DISPLAY
+) -> str:
+    """Print the reading or what was expected of a flag, with its unit where that is known."""
+    value = row[key]
+    quantity = quantities.get((row["run"], row["tap"]))
+    if quantity is None:
+        return format_number(value)
+    other = row["expected" if key == "reading" else "reading"]
+    digits = 4
+    if known(value) and known(other) and value and value != other:
+        # enough digits to tell the two apart
+        digits = min(max(4, math.ceil(math.log10(abs(value / (value - other)))) + 2), 8)
+    return display.text(quantity, value, digits=digits, unit=True)
