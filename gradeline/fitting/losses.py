@@ -75,8 +75,12 @@ def fit_loss_coefficient(
     weight /= weight.sum()
     coefficient = float(weight @ np.where(known, values, 0.0))
     random = float((weight**2) @ np.where(known, variance, 0.0))
-    shared = float((weight @ np.where(known[:, None], effect, 0.0)) @ (weight @ np.where(known[:, None], effect, 0.0)))
+    shared = float(
+        (weight @ np.where(known[:, None], effect, 0.0)) @ (weight @ np.where(known[:, None], effect, 0.0))
+    )
     u = float(np.sqrt(random + shared))
-    freedom = 1e9 if not np.isfinite(dof) or random == 0 else min(dof * ((random + shared) / random) ** 2, 1e9)
+    freedom = (
+        1e9 if not np.isfinite(dof) or random == 0 else min(dof * ((random + shared) / random) ** 2, 1e9)
+    )
     half = float(stdtrit(max(freedom, 1.0), 0.5 + level / 2.0)) * u
     return LossFit(coefficient, u, coefficient - half, coefficient + half, int(known.sum()))

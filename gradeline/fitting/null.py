@@ -8,6 +8,7 @@ gross outliers: then the larger of the points with k − 1 and with fewer of the
 
 from __future__ import annotations
 
+import itertools
 from dataclasses import dataclass
 from functools import lru_cache
 
@@ -61,7 +62,7 @@ def _typical_design(n: int, p: int) -> Array:
     """Return evenly spaced taps on p − 1 reaches of equal length: a line that bends, continuous."""
     x = np.linspace(0.0, 1.0, n)
     bounds = np.linspace(0.0, 1.0, max(p, 2))
-    passed = [np.clip(x - low, 0.0, high - low) for low, high in zip(bounds[:-1], bounds[1:], strict=True)]
+    passed = [np.clip(x - low, 0.0, high - low) for low, high in itertools.pairwise(bounds)]
     return np.column_stack([np.ones(n), *passed])[:, :p]
 
 
@@ -160,7 +161,9 @@ def critical_falls(
             else:
                 # The sum over the other runs, by the gamma distribution of its mean and variance.
                 freedom = (runs - 1) * null.shape
-                others = rng.gamma(freedom / 2.0, 2.0, len(own)) * null.expected / null.shape if runs > 1 else 0.0
+                others = (
+                    rng.gamma(freedom / 2.0, 2.0, len(own)) * null.expected / null.shape if runs > 1 else 0.0
+                )
                 scale = (own + others) / (runs * null.expected)
             scale = np.maximum(scale, 1.0 if stated else 1e-12)
         for k in range(bad, most):

@@ -14,7 +14,15 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["MOST_OUTLIERS", "Outliers", "deletion_residuals", "most_removable", "search_outliers", "subset_falls", "trimming"]
+__all__ = [
+    "MOST_OUTLIERS",
+    "Outliers",
+    "deletion_residuals",
+    "most_removable",
+    "search_outliers",
+    "subset_falls",
+    "trimming",
+]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -61,7 +69,9 @@ class Outliers:
     falls: Falls
 
 
-def most_removable(observations: int | NDArray[np.intp], parameters: int | NDArray[np.intp]) -> NDArray[np.intp]:
+def most_removable(
+    observations: int | NDArray[np.intp], parameters: int | NDArray[np.intp]
+) -> NDArray[np.intp]:
     """How many readings may be taken from a run: never fewer than p + 2 left, nor half removed.
 
     Parameters
@@ -83,7 +93,7 @@ def most_removable(observations: int | NDArray[np.intp], parameters: int | NDArr
     """
     left = np.asarray(observations) - np.asarray(parameters) - 2
     half = (np.asarray(observations) - 1) // 2
-    return np.clip(np.minimum(left, half), 0, MOST_OUTLIERS)
+    return np.asarray(np.clip(np.minimum(left, half), 0, MOST_OUTLIERS))
 
 
 def trimming(most: int | NDArray[np.intp]) -> NDArray[np.intp]:
@@ -108,7 +118,7 @@ def trimming(most: int | NDArray[np.intp]) -> NDArray[np.intp]:
     array([0, 1, 1, 2])
     """
     most = np.asarray(most)
-    return np.clip(most - 1, np.minimum(most, 1), 2)
+    return np.asarray(np.clip(most - 1, np.minimum(most, 1), 2))
 
 
 @lru_cache(maxsize=256)
@@ -170,7 +180,7 @@ def subset_falls(weighted: Array, weight: Array, used: Mask, most: int) -> Falls
     >>> best.members[0, 1].tolist()
     [6, 7, -1]
     """
-    count, n = weighted.shape
+    count = len(weighted)
     falls = Falls(np.full((count, MOST_OUTLIERS), np.nan), np.full((count, MOST_OUTLIERS, MOST_OUTLIERS), -1))
     candidates = np.flatnonzero(used)
     if most < 1 or len(candidates) == 0 or count == 0:
@@ -190,7 +200,9 @@ def subset_falls(weighted: Array, weight: Array, used: Mask, most: int) -> Falls
         coefficients = np.zeros((len(first), len(sets)))
         for a in range(k):
             for b in range(k):
-                np.add.at(coefficients, (position[sets[:, a], sets[:, b]], np.arange(len(sets))), inverse[:, a, b])
+                np.add.at(
+                    coefficients, (position[sets[:, a], sets[:, b]], np.arange(len(sets))), inverse[:, a, b]
+                )
         for start in range(0, count, _CHUNK):
             part = slice(start, start + _CHUNK)
             fall = (q[part][:, first] * q[part][:, second]) @ coefficients
@@ -328,7 +340,9 @@ def search_outliers(
     return Outliers(flagged, falls)
 
 
-def deletion_residuals(weighted: Array, weights: Array, index: NDArray[np.intp], flagged: Mask) -> tuple[Array, Array]:
+def deletion_residuals(
+    weighted: Array, weights: Array, index: NDArray[np.intp], flagged: Mask
+) -> tuple[Array, Array]:
     """How far each reading lies from the line through the others, and that in its standard deviations.
 
     Flagged readings of a run are taken out together with the one looked at.
@@ -371,7 +385,9 @@ def deletion_residuals(weighted: Array, weights: Array, index: NDArray[np.intp],
     diagonal = np.einsum("unn->un", weights)
     plain = ~flagged.any(axis=1)
     if plain.any():
-        own = diagonal[index[plain]] if len(diagonal) > 1 else np.broadcast_to(diagonal, weighted[plain].shape)
+        own = (
+            diagonal[index[plain]] if len(diagonal) > 1 else np.broadcast_to(diagonal, weighted[plain].shape)
+        )
         sound = own > _SINGULAR
         safe = np.where(sound, own, 1.0)
         error[plain] = np.where(sound, weighted[plain] / safe, np.nan)

@@ -134,9 +134,11 @@ class RunFits:
         """Return the (R, p, p) covariance of the parameters from the scatter of the readings."""
         shared = self.lines.projectors
         if self.variance.shape[1] == 1 and len(shared.gain) == 1:
-            return shared.covariance[0][None] * self.variance[:, 0][:, None, None]
+            return np.asarray(shared.covariance[0] * self.variance[:, 0][:, None, None])
         gain = shared.gain[shared.index]
-        return np.asarray(np.einsum("rpn,rn,rqn->rpq", gain, np.broadcast_to(self.variance, gain.shape[::2]), gain))
+        return np.asarray(
+            np.einsum("rpn,rn,rqn->rpq", gain, np.broadcast_to(self.variance, gain.shape[::2]), gain)
+        )
 
 
 def fit_runs(
@@ -203,7 +205,9 @@ def fit_runs(
     every = _renew(every, observations, known, variance, renewed, model)
     if verdict.done and _FEW_RUNS <= len(observations) <= MANY_RUNS:
         # Once more, each run by the scatter of the others: its own outliers no longer pass for scatter.
-        scale = _scale_of_others(_renew(kept, observations, known & ~flagged, variance, renewed, model), model)
+        scale = _scale_of_others(
+            _renew(kept, observations, known & ~flagged, variance, renewed, model), model
+        )
         verdict, flagged = _search(every, verdict, model, scale, independent=True)
         kept = _without(every, observations, known & ~flagged, flagged, renewed, model)
         scatter = _final_scatter(kept, known & ~flagged, renewed, model)
@@ -217,7 +221,9 @@ def fit_runs(
     if details:
         shared = every.projectors
         unit = np.sqrt(shared.scale)[:, None]
-        error, score = deletion_residuals(every.weighted_residuals * unit, shared.weight, shared.index, flagged)
+        error, score = deletion_residuals(
+            every.weighted_residuals * unit, shared.weight, shared.index, flagged
+        )
         error = error * unit
     return RunFits(
         lines=kept,
@@ -328,7 +334,9 @@ def _pooled_scatter(observations: Array, known: Mask, model: Model) -> tuple[Sca
         if cut == 0:
             continue
         runs = np.flatnonzero(shared.index == pattern)
-        best = subset_falls(lines.weighted_residuals[runs], shared.weight[pattern], shared.used[pattern], int(cut))
+        best = subset_falls(
+            lines.weighted_residuals[runs], shared.weight[pattern], shared.used[pattern], int(cut)
+        )
         removed[runs[:, None], best.members[:, cut - 1, :cut]] = True
         null = null_runs(int(counts[pattern]), int(shared.rank[pattern]))
         ratio[runs] = null.expected / (counts[pattern] - shared.rank[pattern] - cut)
@@ -394,16 +402,22 @@ def _misfit(lines: LineFits, variance: Array, model: Model) -> SharedMisfit:
         np.sqrt(np.maximum(redundancy, 0.0) * variance[pick]),
         np.nan_to_num(lines.parameters[pick, model.slope_column]),
         part.velocity_head,
-        np.zeros(used.shape) if part.persistent is None else part.persistent * np.sqrt(np.maximum(redundancy, 0.0)),
+        np.zeros(used.shape)
+        if part.persistent is None
+        else part.persistent * np.sqrt(np.maximum(redundancy, 0.0)),
     )
 
 
-def _may_search(scatter: tuple[Scatter, ...], misfit: SharedMisfit | None, model: Model, lines: LineFits) -> Search:
+def _may_search(
+    scatter: tuple[Scatter, ...], misfit: SharedMisfit | None, model: Model, lines: LineFits
+) -> Search:
     """Whether single readings can be judged in this survey, and if not, why."""
     shared = lines.projectors
     most = most_removable(shared.used.sum(axis=1), shared.rank)
     if int(most.max(initial=0)) == 0:
-        return Search(False, "too few readings a run: at least two more than the line's parameters must be left")
+        return Search(
+            False, "too few readings a run: at least two more than the line's parameters must be left"
+        )
     if misfit is not None and misfit.shared:
         return Search(False, "most runs share a misfit, and single readings cannot be told from it")
     for kind, part in enumerate(scatter):
@@ -422,7 +436,7 @@ def _scale_of_others(kept: LineFits, model: Model) -> Array:
     squares, dof = kept.sum_of_squares, kept.dof
     others = np.maximum(dof.sum() - dof, 1)
     scale = (squares.sum() - squares) / others
-    return np.maximum(scale, 1.0 if (model.floor > 0).all() else 1e-12)
+    return np.asarray(np.maximum(scale, 1.0 if (model.floor > 0).all() else 1e-12))
 
 
 def _search(
@@ -435,7 +449,11 @@ def _search(
     critical = np.full((len(counts), MOST_OUTLIERS), np.inf)
     for pattern in np.flatnonzero(most > 0):
         critical[pattern] = critical_falls(
-            int(counts[pattern]), int(shared.rank[pattern]), len(scale), stated=stated, independent=independent
+            int(counts[pattern]),
+            int(shared.rank[pattern]),
+            len(scale),
+            stated=stated,
+            independent=independent,
         )
     found = search_outliers(
         lines.weighted_residuals * np.sqrt(shared.scale / scale)[:, None],

@@ -104,7 +104,11 @@ def estimate_scatter(
         gains = _gains(variance, freedom, steep[0] + steep[1] * head**2 + given, base2 + given)
         # One run is no evidence: a surge must show without the run that speaks loudest for it.
         rest = np.arange(len(variance)) != int(gains.argmax())
-        if steep[1] > 0 and 2 * gains.sum() > _SURGE_EVIDENCE and _surges(variance, freedom, head, given, rest):
+        if (
+            steep[1] > 0
+            and 2 * gains.sum() > _SURGE_EVIDENCE
+            and _surges(variance, freedom, head, given, rest)
+        ):
             base2, surge2 = float(steep[0]), float(steep[1])
     pooled = float(np.sqrt(base2))
     return Scatter(base=max(pooled, floor), surge=float(np.sqrt(surge2)), pooled=pooled, dof=dof)

@@ -157,7 +157,9 @@ def project(
     values, vectors = np.linalg.eigh(normal / (unit[:, :, None] * unit[:, None, :]))
     kept = values > _RANK_TOLERANCE
     inverted = np.where(kept, 1.0 / np.where(kept, values, 1.0), 0.0)
-    covariance = np.einsum("upk,uk,uqk->upq", vectors, inverted, vectors) / (unit[:, :, None] * unit[:, None, :])
+    covariance = np.einsum("upk,uk,uqk->upq", vectors, inverted, vectors) / (
+        unit[:, :, None] * unit[:, None, :]
+    )
     null_part = np.einsum("upk,uk->up", vectors**2, ~kept)
     gain = covariance @ half
     return Projectors(
@@ -172,7 +174,9 @@ def project(
     )
 
 
-def _patterns(relative: NDArray[np.float64 | np.bool_], effect: Array | None) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
+def _patterns(
+    relative: NDArray[np.float64 | np.bool_], effect: Array | None
+) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
     """Tell which runs share a pattern: (index of the pattern per run, a run that has it)."""
     key = relative if effect is None else np.hstack([relative, effect])
     if len(key) == 0:
@@ -242,7 +246,7 @@ def fit_lines(observations: Array, design: Array, projectors: Projectors) -> Lin
 def _each(matrices: Array, index: NDArray[np.intp], vectors: Array) -> Array:
     """Multiply each row of `vectors` by the matrix of its pattern."""
     if len(matrices) == 1:
-        return vectors @ matrices[0].T
+        return np.asarray(vectors @ matrices[0].T)
     product = np.empty((len(vectors), matrices.shape[1]))
     for start in range(0, len(vectors), _CHUNK):
         part = slice(start, start + _CHUNK)

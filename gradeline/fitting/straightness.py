@@ -51,7 +51,11 @@ def run_straightness(lines: LineFits, curve: Array, dof: float) -> Array:
     shared = lines.projectors
     along = lines.weighted_residuals @ curve
     size = np.einsum("n,unm,m->u", curve, shared.weight, curve)
-    scale = float(np.einsum("n,unn,n->u", curve, np.abs(shared.weight), curve).max(initial=0.0)) if len(size) else 0.0
+    scale = (
+        float(np.einsum("n,unn,n->u", curve, np.abs(shared.weight), curve).max(initial=0.0))
+        if len(size)
+        else 0.0
+    )
     size = np.where(size > 1e-9 * max(scale, 1e-300), size, np.nan)[shared.index] / shared.scale
     statistic = np.abs(along) / np.sqrt(size)
     freedom = max(dof, 1.0) if np.isfinite(dof) else 1e9

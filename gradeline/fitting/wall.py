@@ -16,7 +16,7 @@ from scipy.special import stdtrit
 
 from gradeline.hydraulics.friction import colebrook_white, colebrook_white_sensitivities
 
-__all__ = ["WallData", "WallFit", "fit_wall", "law_log_slope"]
+__all__ = ["WallData", "WallFit", "best_roughness", "fit_wall", "law_log_slope"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -238,7 +238,9 @@ def _minimum(squares: Callable[[float], float], at_grid: Array, grid: Array) -> 
     best = int(np.argmin(at_grid))
     if best == 0:
         # Between 0 and the first step the slope decides.
-        inside = minimize_scalar(squares, bounds=(0.0, float(grid[1])), method="bounded", options={"xatol": 1e-16})
+        inside = minimize_scalar(
+            squares, bounds=(0.0, float(grid[1])), method="bounded", options={"xatol": 1e-16}
+        )
         return float(inside.x) if inside.fun < at_grid[0] - 1e-12 else 0.0
     low, high = float(grid[best - 1]), float(grid[min(best + 1, len(grid) - 1)])
     found = minimize_scalar(squares, bounds=(low, high), method="bounded", options={"xatol": 1e-9 * high})
@@ -291,7 +293,9 @@ def fit_wall(data: WallData, usable: Mask, *, level: float = 0.95, dof: float = 
         nothing = np.full(data.slope.shape, np.nan)
         gone = np.zeros(data.slope.shape, dtype=bool)
         nan = float("nan")
-        return WallFit(nan, nan, nan, nan, level, gone, gone, nothing, nothing, nan, dof, nan, nan, nan, nan, nan)
+        return WallFit(
+            nan, nan, nan, nan, level, gone, gone, nothing, nothing, nan, dof, nan, nan, nan, nan, nan
+        )
     candidates = used
     unknown = not np.isfinite(data.slope_covariance[candidates]).all()
     roughness = _robust_start(data, used, grid)
@@ -307,7 +311,9 @@ def fit_wall(data: WallData, usable: Mask, *, level: float = 0.95, dof: float = 
         if unknown:
             scatter = _scatter_off_law(data, used, covariance, roughness)
             roughness, covariance = _settle(data, used, grid, roughness, scatter)
-            critical = stdtrit(_freedom(dof, used, unknown), 1.0 - _RUN_FALSE_ALARM / (2.0 * candidates.sum()))
+            critical = stdtrit(
+                _freedom(dof, used, unknown), 1.0 - _RUN_FALSE_ALARM / (2.0 * candidates.sum())
+            )
         score, shift = _scores(data, candidates, used, covariance, roughness)
         # Never more than half off the law: then it is the law that is off.
         now = candidates & (np.abs(score) <= critical)
@@ -342,6 +348,33 @@ def fit_wall(data: WallData, usable: Mask, *, level: float = 0.95, dof: float = 
         offset_u=float(weight**-0.5),
         chi_square=float(_squares(covariance, residual)),
     )
+
+
+def best_roughness(data: WallData, fit: WallFit) -> float:
+    """Return the roughness that fits changed data, the slopes in use and the scatter left as they were.
+
+    Parameters
+    ----------
+    data : WallData
+        Such as with another bore.
+    fit : WallFit
+        Of the original data.
+
+    Returns
+    -------
+    float
+        ε, m; NaN where the original has none.
+
+    Examples
+    --------
+    >>> data = _example()
+    >>> fit = fit_wall(data, np.isfinite(data.slope))
+    >>> abs(best_roughness(data, fit) - fit.roughness) < 1e-9
+    True
+    """
+    if not fit.used.any():
+        return float("nan")
+    return _settle(data, fit.used, _grid(data), fit.roughness, fit.relative_scatter)[0]
 
 
 def _freedom(dof: float, used: Mask, unknown: bool) -> float:
@@ -409,7 +442,9 @@ def _scores(
     outside = candidates & ~used
     if outside.any():
         ahead = _residual(data, candidates, roughness) - shift
-        variance = covariance.variance + np.einsum("rkp,pq,rkq->rk", covariance.effect, covariance.core, covariance.effect)
+        variance = covariance.variance + np.einsum(
+            "rkp,pq,rkq->rk", covariance.effect, covariance.core, covariance.effect
+        )
         if information > 0:
             whole = _law_gradient(data, candidates, roughness)
             rest = whole - np.einsum("rkq,q->rk", covariance.effect, covariance.shared(gradient))
@@ -419,7 +454,13 @@ def _scores(
 
 
 def _interval(
-    data: WallData, used: Mask, covariance: _Covariance, roughness: float, grid: Array, dof: float, level: float
+    data: WallData,
+    used: Mask,
+    covariance: _Covariance,
+    roughness: float,
+    grid: Array,
+    dof: float,
+    level: float,
 ) -> tuple[float, float, float]:
     """Likelihood interval at `level` and the one-sided 95 % upper bound; NaN where the data set no bound."""
 
@@ -427,20 +468,28 @@ def _interval(
         return float(_squares(covariance, _residual(data, used, value))) - least
 
     least = float(_squares(covariance, _residual(data, used, roughness)))
-    two_sided = float(stdtrit(dof, 0.5 + level / 2.0)) ** 2 if np.isfinite(dof) else _normal(0.5 + level / 2.0) ** 2
+    two_sided = (
+        float(stdtrit(dof, 0.5 + level / 2.0)) ** 2 if np.isfinite(dof) else _normal(0.5 + level / 2.0) ** 2
+    )
     one_sided = float(stdtrit(dof, 0.95)) ** 2 if np.isfinite(dof) else _normal(0.95) ** 2
     low = 0.0
     if roughness > 0 and above(0.0) > two_sided:
         low = float(brentq(lambda value: above(value) - two_sided, 0.0, roughness, xtol=1e-15))
     highs = []
-    top = float(data.diameter.min())
+    beyond = grid[grid > roughness]
+    climb = _squares(covariance, _residual(data, used, beyond[:, None, None])) - least
     for rise in (two_sided, one_sided):
-        steps = [value for value in grid if roughness < value <= top]
-        end = next((value for value in steps if above(float(value)) > rise), None)
+        over = np.flatnonzero(climb > rise)
+        if not len(over):
+            highs.append(float("nan"))
+            continue
+        start = roughness if over[0] == 0 else float(beyond[over[0] - 1])
         highs.append(
-            float("nan")
-            if end is None
-            else float(brentq(lambda value, rise=rise: above(value) - rise, roughness, float(end), xtol=1e-15))
+            float(
+                brentq(
+                    lambda value, rise=rise: above(value) - rise, start, float(beyond[over[0]]), xtol=1e-15
+                )
+            )
         )
     return low, highs[0], highs[1]
 

@@ -66,10 +66,11 @@ def rounded(value: float | None, u: float | None = None, *, digits: int = 4) -> 
     if not _finite(u) or u is None or u <= 0:
         return format_number(value, digits)
     largest = max(abs(value), u)
-    place = _place(u, 2)
+    # a float has no more than some sixteen digits, however small the uncertainty
+    place = max(_place(u, 2), _place(largest, 16))
     if _SMALLEST_FIXED <= largest < _LARGEST_FIXED and place >= -8:
         return f"{_fixed(value, place)} ± {_fixed(u, place)}"
-    power = math.floor(math.log10(largest))
+    power = _place(largest, 1)
     shown, shown_u = (_fixed(number, place - power, shift=power) for number in (value, u))
     return f"({shown} ± {shown_u})×10{str(power).translate(_SUPERSCRIPT)}"
 
@@ -155,7 +156,7 @@ def format_interval(low: float | None, high: float | None) -> str:
     if half == 0:
         return f"{format_number(low)} to {format_number(high)}"
     largest = max(abs(low), abs(high))
-    place = _place(half, 2)
+    place = max(_place(half, 2), _place(largest, 16)) if math.isfinite(half) else 0
     if not (_SMALLEST_FIXED <= largest < _LARGEST_FIXED):
         return f"{format_number(low, 2)} to {format_number(high, 2)}"
     ends = []
@@ -174,9 +175,10 @@ def _finite(value: float | None) -> bool:
 
 def _place(value: float, digits: int) -> int:
     """The power of ten of the last of `digits` significant digits, after rounding."""
-    place = math.floor(math.log10(value)) - digits + 1
+    exact = abs(Decimal(repr(float(value))))
+    place = exact.adjusted() - digits + 1
     # 0.0997 to two digits is 0.10, not 0.100
-    return place + 1 if round(value / 10.0**place) >= 10**digits else place
+    return place + 1 if exact.scaleb(-place).to_integral_value(ROUND_HALF_EVEN) >= 10**digits else place
 
 
 def _fixed(value: float, place: int, *, shift: int = 0) -> str:

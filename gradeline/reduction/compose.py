@@ -100,14 +100,14 @@ def reduce(
         assumptions=assumptions_of(
             survey, media, line, corrections, flowing, level=level, correct=correct, keep_all=keep_all
         ),
-        cautions=cautions_of(survey, line, corrections, flowing, walls, piezometric, crown),
+        cautions=cautions_of(survey, line, flowing, walls, piezometric, crown),
         reaches=tabulate.reach_table(survey, line, flowing),
         runs=tabulate.run_table(survey, media, line, flowing, friction),
         walls=tabulate.wall_table(walls),
-        fittings=tabulate.fitting_table(survey, line, media, flowing, friction, level=level),
+        fittings=tabulate.fitting_table(line, media, flowing, friction, level=level),
         taps=tabulate.tap_table(survey, corrections, base),
         heads=tabulate.head_table(survey, line, corrections, flowing, excluded),
-        flags=flag_table(survey, line, corrections, flowing, friction, walls, keep_all=keep_all),
+        flags=flag_table(survey, corrections, flowing, friction, walls, keep_all=keep_all),
         budget=tabulate.frame("budget", {name: [] for name in RESULT_TABLES["budget"]}),
         grade_lines=grade_lines,
         layout=tabulate.layout_table(survey, line),

@@ -40,7 +40,9 @@ class Corrections:
     heads: Heads
 
 
-def static_corrections(heads: Heads, static: Mask, repeats: Array, *, apply: bool, excluded: Mask) -> Corrections:
+def static_corrections(
+    heads: Heads, static: Mask, repeats: Array, *, apply: bool, excluded: Mask
+) -> Corrections:
     """Work out the offsets from the static runs and take them off.
 
     Parameters
@@ -92,7 +94,9 @@ def static_corrections(heads: Heads, static: Mask, repeats: Array, *, apply: boo
             heads,
             observed=heads.observed - np.where(known, offset, 0.0),
             inputs=tuple(
-                one if one.heads is None else replace(one, heads=one.heads - np.where(known, offset_of(one.heads), 0.0))
+                one
+                if one.heads is None
+                else replace(one, heads=one.heads - np.where(known, offset_of(one.heads), 0.0))
                 for one in heads.inputs
             ),
         )

@@ -12,7 +12,6 @@ from scipy.special import stdtrit
 
 from gradeline.reduction.corrections import Corrections
 from gradeline.reduction.friction import Friction
-from gradeline.reduction.line import Line
 from gradeline.reduction.runs import Flowing
 from gradeline.reduction.tables import RESULT_TABLES
 from gradeline.reduction.tabulate import frame
@@ -40,7 +39,6 @@ class _Flag:
 
 def flag_table(
     survey: Survey,
-    line: Line,
     corrections: Corrections,
     flowing: Flowing,
     friction: Friction,
@@ -52,7 +50,7 @@ def flag_table(
 
     Parameters
     ----------
-    survey, line, corrections, flowing, friction, walls
+    survey, corrections, flowing, friction, walls
         What the fits say.
     keep_all : bool
         Whether flagged readings entered the fits all the same.
@@ -64,11 +62,13 @@ def flag_table(
     """
     found = [
         *_readings(survey, corrections, flowing, keep_all=keep_all),
-        *_runs(survey, flowing, friction, walls),
-        *_laminar(survey, line, flowing, friction),
+        *_runs(survey, flowing, walls),
+        *_laminar(survey, flowing, friction),
         *(flag for wall in walls for flag in _law(wall)),
     ]
-    columns: dict[str, list[Any]] = {name: [getattr(flag, name) for flag in found] for name in RESULT_TABLES["flags"]}
+    columns: dict[str, list[Any]] = {
+        name: [getattr(flag, name) for flag in found] for name in RESULT_TABLES["flags"]
+    }
     return frame("flags", columns)
 
 
@@ -94,14 +94,19 @@ def _readings(survey: Survey, corrections: Corrections, flowing: Flowing, *, kee
     return found
 
 
-def _runs(survey: Survey, flowing: Flowing, friction: Friction, walls: tuple[Wall, ...]) -> list[_Flag]:
+def _runs(survey: Survey, flowing: Flowing, walls: tuple[Wall, ...]) -> list[_Flag]:
     found = []
     for wall in walls:
         for row, k in np.argwhere(wall.fit.off_law):
             slope, expected = wall.data.slope[row, k], wall.fit.expected_slope[row, k]
             ratio = slope / expected
-            # S goes almost as Q²; the factor on the flow that would bring this run onto the law.
-            flow = ratio**0.5 - 1
+            # S goes almost as Q²: the factor on the flow that would bring this run onto the law.
+            flow = ratio**0.5
+            other = (
+                f"{flow:.3g} times as large"
+                if not 0.5 < flow < 2
+                else f"{abs(100 * (flow - 1)):.2g} % {'larger' if flow > 1 else 'smaller'}"
+            )
             reach = survey.reaches[wall.reaches[k]].name
             found.append(
                 _Flag(
@@ -111,7 +116,7 @@ def _runs(survey: Survey, flowing: Flowing, friction: Friction, walls: tuple[Wal
                     score=float(wall.fit.score[row, k]),
                     suggestion=(
                         f"in reach {reach!r} S is {ratio:.3g} times what the other runs' law gives: "
-                        f"look up the readings, or a flow {abs(100 * flow):.2g} % {'larger' if flow > 0 else 'smaller'}; "
+                        f"look up its readings and its flow (one {other} would fit); "
                         "left out of the wall's fit"
                     ),
                 )
@@ -119,7 +124,7 @@ def _runs(survey: Survey, flowing: Flowing, friction: Friction, walls: tuple[Wal
     return found
 
 
-def _laminar(survey: Survey, line: Line, flowing: Flowing, friction: Friction) -> list[_Flag]:
+def _laminar(survey: Survey, flowing: Flowing, friction: Friction) -> list[_Flag]:
     """Laminar runs whose f Re / 64 is not 1 within its uncertainty: a check of the bore's fourth power."""
     found = []
     for k, reach in enumerate(survey.reaches):
@@ -149,7 +154,8 @@ def _laminar(survey: Survey, line: Line, flowing: Flowing, friction: Friction) -
 
 
 def _law(wall: Wall) -> list[_Flag]:
-    fit, found = wall.fit, []
+    fit = wall.fit
+    found: list[_Flag] = []
     if not np.isfinite(fit.roughness):
         return found
     beyond = float(stdtrit(fit.dof if np.isfinite(fit.dof) else 1e9, 1 - _LAW_FALSE_ALARM / 2))

@@ -56,7 +56,9 @@ class Friction:
     regime: NDArray[np.str_]
 
 
-def friction_of(line: Line, media: Media, flowing: Flowing, walls: tuple[Wall, ...], *, level: float) -> Friction:
+def friction_of(
+    line: Line, media: Media, flowing: Flowing, walls: tuple[Wall, ...], *, level: float
+) -> Friction:
     """Work out friction factor and roughness of every run and reach.
 
     Parameters
@@ -97,11 +99,15 @@ def friction_of(line: Line, media: Media, flowing: Flowing, walls: tuple[Wall, .
     scatter = _scatter_variance(random, flowing, line)
     relative = np.sqrt(scatter / safe**2 + own**2 + _squared(effect))
     factor_dof = _effective_dof(relative, np.sqrt(scatter) / np.abs(safe), base)
-    factor_times = stdtrit(np.where(np.isfinite(factor_dof), factor_dof, 1e9), 0.5 + level / 2.0)
+    factor_times = np.asarray(
+        stdtrit(np.where(np.isfinite(factor_dof), factor_dof, 1e9), 0.5 + level / 2.0), float
+    )
     reynolds = flowing.reynolds
     kind = regime(reynolds)
     turbulent = (kind == "turbulent") & positive
-    signed = np.where(turbulent, relative_roughness(np.where(positive, factor, 1.0), reynolds) * line.diameter, np.nan)
+    signed = np.where(
+        turbulent, relative_roughness(np.where(positive, factor, 1.0), reynolds) * line.diameter, np.nan
+    )
     low, high = _roughness_interval(
         line, flowing, factor, signed, scatter / safe**2, effect, own, factor_times, turbulent
     )
@@ -167,14 +173,15 @@ def _roughness_interval(
     _, by_reynolds, by_roughness = colebrook_white_sensitivities(reynolds, np.clip(at, 0.0, 0.1))
     relative = by_roughness * at
     bore = [np.zeros(len(line.diameter)) if one.diameter is None else one.diameter for one in flowing.inputs]
-    viscosity = [np.zeros(len(reynolds)) if one.viscosity is None else one.viscosity for one in flowing.inputs]
+    viscosity = [
+        np.zeros(len(reynolds)) if one.viscosity is None else one.viscosity for one in flowing.inputs
+    ]
     flow = np.array([one.flow for one in flowing.inputs])
     if flowing.inputs:
         # At a given flow Re falls with the bore; ε/D does too.
-        along = (
-            by_reynolds[:, :, None] * (flow - np.stack(bore, axis=1) - np.stack(viscosity, axis=1)[:, None, :])
-            - relative[:, :, None] * np.stack(bore, axis=1)
-        )
+        along = by_reynolds[:, :, None] * (
+            flow - np.stack(bore, axis=1) - np.stack(viscosity, axis=1)[:, None, :]
+        ) - relative[:, :, None] * np.stack(bore, axis=1)
         effect = effect - along
     rest = own - by_reynolds * flowing.flow_u[:, None]
     u = np.sqrt(scatter + rest**2 + _squared(effect))

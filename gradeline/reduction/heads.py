@@ -151,7 +151,9 @@ def _head_function(
 
     given: dict[str, object] = {
         "tap_elevation": elevation,
-        "gauge_elevation": np.array([t.elevation if t.gauge_elevation is None else t.gauge_elevation for t in tap]),
+        "gauge_elevation": np.array(
+            [t.elevation if t.gauge_elevation is None else t.gauge_elevation for t in tap]
+        ),
         "density": media.density[:, None],
         "air_density": media.air,
         "gravity": media.gravity,
@@ -163,12 +165,18 @@ def _head_function(
 
     def head(steps: dict[str, object]) -> NDArray[np.complex128]:
         stepped = {
-            name: np.asarray(value) + 1j * _STEP * np.asarray(steps.get(name, 0.0)) for name, value in given.items()
+            name: np.asarray(value, complex) + 1j * _STEP * np.asarray(steps.get(name, 0.0))
+            for name, value in given.items()
         }
         # What is filled with the flowing fluid goes with it.
-        stepped |= {name: stepped["density"] if value is None else value for name, value in apart.items()}
+        stepped |= {
+            name: stepped["density"] if value is None else np.asarray(value, complex)
+            for name, value in apart.items()
+        }
         reading = readings + 1j * _STEP * np.asarray(steps.get("reading", 0.0))
-        return np.asarray(function(reading, **{name: v for name, v in stepped.items() if name in wanted}), complex)
+        return np.asarray(
+            function(reading, **{name: v for name, v in stepped.items() if name in wanted}), complex
+        )
 
     return head
 
@@ -185,12 +193,16 @@ def _inputs(survey: Survey, media: Media, readings: Array, gain: Array, effects:
         if gauge.zero_u:
             found.append(Input("gauge zero", gauge.name, heads=np.where(mine, gain * gauge.zero_u, 0.0)))
         if gauge.scale_u:
-            found.append(Input("gauge scale", gauge.name, heads=np.where(mine, gain * readings * gauge.scale_u, 0.0)))
+            found.append(
+                Input("gauge scale", gauge.name, heads=np.where(mine, gain * readings * gauge.scale_u, 0.0))
+            )
     for tap in survey.taps:
         size = stated.elevation if tap.elevation_u is None else tap.elevation_u
         mine = np.array([name == tap.name for name in tap_of])
         if size and np.any(effects.elevation[:, mine]):
-            found.append(Input("tap elevation", tap.name, heads=np.where(mine, effects.elevation * size, 0.0)))
+            found.append(
+                Input("tap elevation", tap.name, heads=np.where(mine, effects.elevation * size, 0.0))
+            )
     if stated.temperature:
         found.append(
             Input(
@@ -216,8 +228,15 @@ def _inputs(survey: Survey, media: Media, readings: Array, gain: Array, effects:
     if media.gravity_u:
         found.append(Input("gravity", heads=effects.gravity * media.gravity_u, gravity=media.gravity_u))
     return [
-        Input(one.name, one.subject, None if one.heads is None else np.nan_to_num(one.heads), one.diameter, one.flow,
-              one.viscosity, one.gravity)
+        Input(
+            one.name,
+            one.subject,
+            None if one.heads is None else np.nan_to_num(one.heads),
+            one.diameter,
+            one.flow,
+            one.viscosity,
+            one.gravity,
+        )
         for one in found
     ]
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -77,7 +78,9 @@ def media_of(survey: Survey) -> Media:
     by_density, by_viscosity = np.zeros_like(density), np.zeros_like(density)
     tension = np.full_like(density, 0.0728)
     if survey.fluid.density is None:
-        (below, thin), (above, thick) = (_flowing(survey.fluid, temperature + step) for step in _sides(temperature))
+        (below, thin), (above, thick) = (
+            _flowing(survey.fluid, temperature + step) for step in _sides(temperature)
+        )
         width = np.subtract(*_sides(temperature)[::-1])
         by_density = (above - below) / width
         by_viscosity = np.log(thick / thin) / width
@@ -137,14 +140,18 @@ def fluid_density(name: str, temperature: Array) -> Array:
     ReductionError
         For another name.
     """
-    known = {
+    known: dict[str, Callable[[Array], Array]] = {
         "water": water_density,
         "mercury": mercury_density,
-        "air": lambda at: air_density(at, standard_atmosphere_pressure(0.0)),
+        "air": _air_density,
     }
     if name not in known:
         raise ReductionError(f"no density is known for the fluid {name!r}; known are {', '.join(known)}")
     return np.asarray(known[name](temperature))
+
+
+def _air_density(temperature: Array) -> Array:
+    return air_density(temperature, standard_atmosphere_pressure(0.0))
 
 
 def _gravity(site: Site) -> tuple[float, float]:

@@ -132,7 +132,9 @@ def fit_survey(
     out = excluded[rows]
     used = read & ~disturbed & ~out
     loss_head = plain_head[:, line.reference] if len(line.fittings) else np.zeros((len(rows), 0))
-    given_k = np.array([0.0 if one.loss_coefficient is None else one.loss_coefficient.value for one in line.fittings])
+    given_k = np.array(
+        [0.0 if one.loss_coefficient is None else one.loss_coefficient.value for one in line.fittings]
+    )
     given = (loss_head * given_k) @ (sight @ line.passed).T
     design = np.column_stack(
         [sight.sum(axis=1), -(sight @ line.lengths), -(sight @ line.passed)[:, line.fitted]]
@@ -222,7 +224,7 @@ def stated_floor(survey: Survey, corrections: Corrections) -> Array:
 
 
 def _law_factor(slopes: Array, velocity: Array, reynolds: Array, line: Line, media: Media) -> Array:
-    """f of the law at the roughness that the slopes of the first pass show."""
+    """Friction factor of the law at the roughness that the slopes of the first pass show."""
     turbulent = (reynolds > 4000) & (slopes > 0)
     factor = darcy_friction_factor(np.where(turbulent, slopes, 1.0), line.diameter, velocity, media.gravity)
     signed = np.where(turbulent, relative_roughness(factor, np.maximum(reynolds, 1.0)), np.nan)
@@ -241,8 +243,9 @@ def _is_level(effect: Array, sees_level: Array, used: Mask) -> bool:
     other = np.where(used & (sees_level == 0), effect, 0.0)
     if not np.isfinite(alike).any():
         return not other.any()
-    high, low = np.nanmax(np.where(np.isnan(alike), -np.inf, alike), axis=1), np.nanmin(
-        np.where(np.isnan(alike), np.inf, alike), axis=1
+    high, low = (
+        np.nanmax(np.where(np.isnan(alike), -np.inf, alike), axis=1),
+        np.nanmin(np.where(np.isnan(alike), np.inf, alike), axis=1),
     )
     seen = np.isfinite(high)
     return bool((high - low)[seen].max(initial=0.0) < 1e-12) and not other.any()
@@ -277,11 +280,20 @@ def _all_inputs(
         at_tap = heads[:, line.reach_of_tap] * (line.reach_of_tap == k)
         losses = (loss_head * given_k * (line.reference == k)) @ line.passed.T
         found.append(
-            Input("bore", reach.name, (at_tap + losses) @ sight.T * (-4.0 * size), size * (np.arange(count) == k))
+            Input(
+                "bore",
+                reach.name,
+                (at_tap + losses) @ sight.T * (-4.0 * size),
+                size * (np.arange(count) == k),
+            )
         )
     if stated.flow_scale:
         whole = heads[:, line.reach_of_tap] + (loss_head * given_k) @ line.passed.T
-        found.append(Input("flow calibration", heads=whole @ sight.T * (2.0 * stated.flow_scale), flow=stated.flow_scale))
+        found.append(
+            Input(
+                "flow calibration", heads=whole @ sight.T * (2.0 * stated.flow_scale), flow=stated.flow_scale
+            )
+        )
     local = np.nan_to_num(slopes)[:, line.reach_of_tap]
     for t, tap in enumerate(survey.taps):
         size = stated.chainage if tap.chainage_u is None else tap.chainage_u
@@ -290,7 +302,9 @@ def _all_inputs(
     for m, fitting in enumerate(line.fittings):
         if fitting.loss_coefficient is not None and fitting.loss_coefficient.u:
             head = loss_head[:, [m]] * fitting.loss_coefficient.u
-            found.append(Input("given loss coefficient", fitting.name, heads=head * (sight @ line.passed[:, m])))
+            found.append(
+                Input("given loss coefficient", fitting.name, heads=head * (sight @ line.passed[:, m]))
+            )
     if corrections.applied:
         times = np.maximum(corrections.times, 1.0)
         # The scatter of the first pass holds the static reading's share; taken apart here.
@@ -298,7 +312,9 @@ def _all_inputs(
         for i, observation in enumerate(survey.observations):
             if corrections.times[i] > 0 and alone[i] > 0:
                 effect = -corrections.spread[:, i] * alone[i] / np.sqrt(times[i])
-                found.append(Input("static reading", observation.label, heads=np.tile(effect, (len(rows), 1))))
+                found.append(
+                    Input("static reading", observation.label, heads=np.tile(effect, (len(rows), 1)))
+                )
     return tuple(found)
 
 

@@ -38,10 +38,14 @@ def assumptions_of(
             "Water: density by IAPWS-95 at 101.325 kPa and viscosity by IAPWS R12-08, at each run's temperature."
         )
     if survey.site.gravity is None and survey.site.latitude is not None:
-        said.append(f"Gravity {media.gravity:.5f} m/s² by the WGS 84 formula at the site's latitude and altitude.")
+        said.append(
+            f"Gravity {media.gravity:.5f} m/s² by the WGS 84 formula at the site's latitude and altitude."
+        )
     if media.gravity == STANDARD_GRAVITY and not any("9.80665" in text for text in said):
         said.append("Gravity 9.80665 m/s², since neither gravity nor latitude was given.")
-    said.append(f"Air beside columns and gauges: {media.air:.3f} kg/m³ (20 °C, 50 % humidity, standard atmosphere).")
+    said.append(
+        f"Air beside columns and gauges: {media.air:.3f} kg/m³ (20 °C, 50 % humidity, standard atmosphere)."
+    )
     said += line.assumptions
     if corrections.applied:
         runs = int((survey.runs["flow"] == 0).sum())
@@ -81,7 +85,6 @@ def _search_sentence(flowing: Flowing, *, keep_all: bool) -> str:
 def cautions_of(
     survey: Survey,
     line: Line,
-    corrections: Corrections,
     flowing: Flowing,
     walls: tuple[Wall, ...],
     piezometric: Array,
@@ -91,14 +94,14 @@ def cautions_of(
 
     Parameters
     ----------
-    survey, line, corrections, flowing, walls
+    survey, line, flowing, walls
         What the fits say.
     piezometric, crown : (F, m) array
         Hydraulic grade line and crown of the pipe at the places of the drawn line, m.
     """
     said = [*survey.cautions, *flowing.cautions]
     said += _misfit(survey, flowing)
-    said += _scatter(survey, flowing)
+    said += _scatter(flowing)
     said += _sub_atmospheric(survey, line, flowing, piezometric, crown)
     search, runs = flowing.fits.search, len(flowing.rows)
     if search.done and search.critical and runs <= 2 and not (flowing.fits.search.critical[0] < 10.5):
@@ -129,15 +132,18 @@ def _misfit(survey: Survey, flowing: Flowing) -> list[str]:
     ]
 
 
-def _scatter(survey: Survey, flowing: Flowing) -> list[str]:
+def _scatter(flowing: Flowing) -> list[str]:
     search = flowing.fits.search
     if search.done or search.reason is None or "stated" not in search.reason:
         return []
     return [f"The stated reading uncertainty is doubtful: {search.reason}. No single reading is flagged."]
 
 
-def _sub_atmospheric(survey: Survey, line: Line, flowing: Flowing, piezometric: Array, crown: Array) -> list[str]:
-    if not len(flowing.rows) or not np.any(line.elevation != line.elevation[0]) and not np.any(line.elevation):
+def _sub_atmospheric(
+    survey: Survey, line: Line, flowing: Flowing, piezometric: Array, crown: Array
+) -> list[str]:
+    # All axes at 0: nobody gave elevations, and nothing can be said of the pressure.
+    if not len(flowing.rows) or not np.any(line.elevation):
         return []
     with np.errstate(invalid="ignore"):
         below = piezometric < crown
@@ -149,5 +155,3 @@ def _sub_atmospheric(survey: Survey, line: Line, flowing: Flowing, piezometric: 
         f"The hydraulic grade line falls below the pipe's crown in run{'s' if len(runs) > 1 else ''} {names}: the pressure "
         "there is below that of the atmosphere, air or dirty water can be drawn in, and the column can part."
     ]
-
-

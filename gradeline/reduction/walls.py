@@ -7,8 +7,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from gradeline.fitting.wall import WallData, WallFit, fit_wall
-from gradeline.hydraulics.friction import LAMINAR_LIMIT, TURBULENT_LIMIT
+from gradeline.fitting.wall import WallData, WallFit, best_roughness, fit_wall
+from gradeline.hydraulics.friction import TURBULENT_LIMIT
 from gradeline.reduction.line import Line
 from gradeline.reduction.media import Media
 from gradeline.reduction.runs import Flowing
@@ -86,7 +86,9 @@ def walls_of(survey: Survey, line: Line, media: Media, flowing: Flowing, *, leve
         turbulent = flowing.reynolds[:, mine] > TURBULENT_LIMIT
         there = turbulent & np.isfinite(slopes[:, mine])
         with np.errstate(invalid="ignore"):
-            faint = there & ~(slopes[:, mine] > np.where(np.isfinite(total[:, mine]), _FAINT * total[:, mine], 0.0))
+            faint = there & ~(
+                slopes[:, mine] > np.where(np.isfinite(total[:, mine]), _FAINT * total[:, mine], 0.0)
+            )
         dof = flowing.fits.pooled_dof or np.inf
         fit = fit_wall(data, there & ~faint, level=level, dof=dof)
         found.append(Wall(name, mine, data, fit, faint, turbulent, dof))
@@ -126,10 +128,5 @@ def bore_variants(wall: Wall, changes: tuple[float, ...]) -> list[float]:
         diameter = wall.data.diameter * (1.0 + change)
         # The same flow through another bore.
         data = replace(wall.data, diameter=diameter, velocity=wall.data.velocity / (1.0 + change) ** 2)
-        found.append(fit_wall(data, wall.fit.used, level=wall.fit.level, dof=wall.dof).roughness)
+        found.append(best_roughness(data, wall.fit))
     return found
-
-
-def laminar(flowing: Flowing) -> Mask:
-    """Return which slopes are of laminar flow (F, K)."""
-    return np.asarray(flowing.reynolds < LAMINAR_LIMIT)

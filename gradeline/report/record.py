@@ -121,8 +121,9 @@ def _cell(value: Any, column: Column) -> str:
         return "true" if value else "false"
     if column.kind == "number":
         return repr(value)
-    text = str(value)
-    # tab and carriage return count too: spreadsheets skip them and see what follows
-    if text[:1] in ("=", "+", "-", "@", "\t", "\r") and not _PLAIN_NUMBER.fullmatch(text):
+    # a bare carriage return would end the row
+    text = str(value).replace("\r\n", "\n").replace("\r", "\n")
+    # tab and line end count too: spreadsheets skip them and see what follows
+    if text[:1] in ("=", "+", "-", "@", "\t", "\n") and not _PLAIN_NUMBER.fullmatch(text):
         return "'" + text
     return text

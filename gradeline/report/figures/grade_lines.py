@@ -226,7 +226,7 @@ def draw_grade_lines(
         handles: list[Artist | None] = [band, hgl, egl, *drawn.values(), below]
         if pipe is not None:
             handles += [pipe.axis, pipe.fittings]
-        _furnish(
+        rows = _furnish(
             ax, display, [artist for artist in handles if artist is not None], flowing=_flows(reduction, run)
         )
     return GradeLineArtists(

@@ -140,7 +140,7 @@ def _scatter_runs(
                 markerfacecolor=colour if regime == "turbulent" else "white",
                 markeredgewidth=1.2,
                 zorder=3,
-                rasterized=mask.sum() > 4000,
+                rasterized=bool(mask.sum() > 1500),
             )
     return drawn
 

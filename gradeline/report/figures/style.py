@@ -142,8 +142,13 @@ def one_two_five(low: float, high: float) -> list[float]:
         ticks = [float(f"{step}e{decade}") for decade in decades for step in steps]
         ticks = [tick for tick in ticks if low * (1 - 1e-9) <= tick <= high * (1 + 1e-9)]
         if len(ticks) >= 4:
-            break
-    return ticks
+            return ticks
+    # less than a twentieth of a decade: even steps do
+    step = 10.0 ** math.floor(math.log10(high - low) - 0.3)
+    while (high - low) / step > 8:
+        step *= 2 if (high - low) / step <= 16 else 5
+    first, last = math.ceil(low / step), math.floor(high / step)
+    return [round(n * step, 12) for n in range(first, last + 1)]
 
 
 def _tick_text(tick: float) -> str:
@@ -240,7 +245,7 @@ def legend_above(ax: Axes, handles: Sequence[Any], *, columns: int = 7) -> int:
         return 0
     size = 8.5
     room = ax.bbox.width * 72 / ax.figure.dpi
-    wide = [(0.56 * len(str(handle.get_label())) + 1.7 + 0.5 + 1.2) * size for handle in handles]
+    wide = [(0.53 * len(str(handle.get_label())) + 1.7 + 0.5 + 1.2) * size for handle in handles]
     columns = min(columns, len(handles))
     while columns > 1 and sum(max(part) for part in _split(wide, columns)) > room:
         columns -= 1

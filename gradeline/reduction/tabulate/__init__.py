@@ -1,0 +1,22 @@
+"""The tables of a reduction, filled from what the fits say."""
+
+from gradeline.reduction.tabulate.drawing import exponent_table, grade_line_table, layout_table
+from gradeline.reduction.tabulate.frames import frame
+from gradeline.reduction.tabulate.readings import head_table, scatter_table, tap_table
+from gradeline.reduction.tabulate.runs import reach_table, run_table
+from gradeline.reduction.tabulate.walls import bore_table, fitting_table, wall_table
+
+__all__ = [
+    "bore_table",
+    "exponent_table",
+    "fitting_table",
+    "frame",
+    "grade_line_table",
+    "head_table",
+    "layout_table",
+    "reach_table",
+    "run_table",
+    "scatter_table",
+    "tap_table",
+    "wall_table",
+]

@@ -1,0 +1,123 @@
+"""What figures need beside the results: grade lines, places along the line, exponents."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from gradeline.fitting.exponent import fit_exponent
+from gradeline.hydraulics.gradelines import grade_lines, stations
+from gradeline.reduction.friction import Friction
+from gradeline.reduction.line import Line
+from gradeline.reduction.media import Media
+from gradeline.reduction.runs import Flowing
+from gradeline.reduction.tables import DRAWING_TABLES
+from gradeline.reduction.tabulate.frames import frame
+from gradeline.survey import Survey
+
+__all__ = ["exponent_table", "grade_line_table", "layout_table"]
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+
+def grade_line_table(survey: Survey, line: Line, media: Media, flowing: Flowing) -> pd.DataFrame:
+    """Return the fitted lines of every flowing run at the places where they bend, and at the taps."""
+    at = np.array([fitting.at for fitting in line.fittings])
+    chainage, side = stations(line.bounds, at, line.chainage)
+    parameters = flowing.fits.lines.parameters
+    reaches = len(line.diameter)
+    loss_head = flowing.velocity[:, line.reference] ** 2 / (2 * media.gravity)
+    losses = np.zeros_like(loss_head)
+    column = 1 + reaches
+    for m, fitting in enumerate(line.fittings):
+        if fitting.loss_coefficient is not None:
+            losses[:, m] = fitting.loss_coefficient.value * loss_head[:, m]
+        else:
+            losses[:, m] = parameters[:, column]
+            column += 1
+    drawn = grade_lines(
+        chainage,
+        side,
+        start_energy=parameters[:, 0],
+        reach_bounds=line.bounds,
+        slopes=parameters[:, 1 : 1 + reaches],
+        velocity_heads=flowing.velocity_heads,
+        loss_chainages=at,
+        loss_heads=losses,
+    )
+    lengths = np.clip(chainage[:, None], line.bounds[:-1], line.bounds[1:]) - line.bounds[:-1]
+    past = (chainage[:, None] > at) | ((side[:, None] > 0) & (chainage[:, None] == at))
+    rows = np.column_stack([np.ones(len(chainage)), -lengths, -past[:, line.fitted].astype(float)])
+    random = np.nan_to_num(flowing.random, nan=0.0) + flowing.own[:, :, None] * flowing.own[:, None, :]
+    shared = np.einsum("mp,fpq->fmq", rows, flowing.effect)
+    variance = np.einsum("mp,fpr,mr->fm", rows, random, rows) + np.einsum("fmq,fmq->fm", shared, shared)
+    known = np.asarray(np.isfinite(flowing.random).all(axis=(1, 2)))[:, None]
+    axis = np.interp(chainage, line.chainage, line.elevation)
+    reach = np.clip(
+        np.where(
+            side < 0, np.searchsorted(line.bounds, chainage), np.searchsorted(line.bounds, chainage, "right")
+        )
+        - 1,
+        0,
+        reaches - 1,
+    )
+    count = len(flowing.rows)
+    names = survey.runs["run"].to_numpy(object)[flowing.rows]
+    return frame(
+        "grade_lines",
+        {
+            "run": np.repeat(names, len(chainage)),
+            "chainage": np.tile(chainage, count),
+            "energy_head": drawn.energy_head.ravel(),
+            "energy_head_u": np.where(known, np.sqrt(variance), np.nan).ravel(),
+            "piezometric_head": drawn.piezometric_head.ravel(),
+            "velocity_head": drawn.velocity_head.ravel(),
+            "elevation": np.tile(axis, count),
+            "crown": np.tile(axis + line.diameter[reach] / 2, count),
+        },
+    )
+
+
+def layout_table(survey: Survey, line: Line) -> pd.DataFrame:
+    """Return the places along the line: taps, fittings and the ends of reaches."""
+    rows: list[tuple[str, str, float, str]] = [
+        ("tap", tap.name, tap.chainage, tap.gauge or "") for tap in survey.taps
+    ]
+    rows += [
+        ("fitting", one.name, one.at, "change of bore" if one.change_of_bore else "") for one in line.fittings
+    ]
+    rows += [("reach", reach.name, reach.start, reach.wall) for reach in survey.reaches]
+    at = np.array([row[2] for row in rows])
+    return frame(
+        "layout",
+        {
+            "what": [row[0] for row in rows],
+            "name": [row[1] for row in rows],
+            "chainage": at,
+            "elevation": np.interp(at, line.chainage, line.elevation),
+            "note": [row[3] for row in rows],
+        },
+    )
+
+
+def exponent_table(survey: Survey, flowing: Flowing, friction: Friction, *, level: float) -> pd.DataFrame:
+    """Return the exponent of S against V for each reach, laminar and turbulent runs apart."""
+    rows: dict[str, list[Any]] = {name: [] for name in DRAWING_TABLES["exponents"]}
+    for k, reach in enumerate(survey.reaches):
+        for kind in ("laminar", "turbulent"):
+            mine = (friction.regime[:, k] == kind) & np.isfinite(friction.slope[:, k])
+            if not mine.any():
+                continue
+            slope = friction.slope[mine, k]
+            safe = np.where(slope > 0, slope, np.nan)
+            spread = np.hypot(friction.slope_u_random[mine, k] / safe, 2 * flowing.flow_u[mine])
+            fit = fit_exponent(flowing.velocity[mine, k], np.nan_to_num(safe), spread, level=level)
+            reason = None if np.isfinite(fit.exponent) else "fewer than two runs of different flow"
+            values = (reach.name, kind, fit.exponent, fit.u, fit.low, fit.high, fit.runs, reason)
+            for name, entry in zip(rows, values, strict=True):
+                rows[name].append(entry)
+    return frame("exponents", rows)

@@ -1,0 +1,50 @@
+"""Tables with exactly the columns that their specification names."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from gradeline.reduction.tables import DRAWING_TABLES, RESULT_TABLES, Column
+
+__all__ = ["frame"]
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+Values = Sequence[Any] | NDArray[Any]
+
+
+def frame(table: str, columns: Mapping[str, Values]) -> pd.DataFrame:
+    """Make a table with exactly the columns that its specification names, each of its kind.
+
+    Parameters
+    ----------
+    table : str
+        Name of a table in `RESULT_TABLES` or `DRAWING_TABLES`.
+    columns : mapping of str to values
+        One sequence a column, all of one length.
+
+    Returns
+    -------
+    DataFrame
+        Numbers as float with NaN, text as object with None, booleans nullable.
+
+    Examples
+    --------
+    >>> frame("flags", {name: [] for name in RESULT_TABLES["flags"]}).shape
+    (0, 7)
+    """
+    specification = RESULT_TABLES.get(table) or DRAWING_TABLES[table]
+    return pd.DataFrame({name: _column(columns[name], kind) for name, kind in specification.items()})
+
+
+def _column(values: Values, column: Column) -> pd.Series[Any]:
+    if column.kind == "number":
+        return pd.Series(np.asarray(values, dtype=float), dtype=float)
+    if column.kind == "truth":
+        return pd.Series(pd.array(list(values), dtype="boolean"))
+    return pd.Series([None if value in (None, "") else str(value) for value in values], dtype=object)

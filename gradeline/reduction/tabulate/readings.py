@@ -1,0 +1,139 @@
+"""Heads, taps and the scatter of the gauges."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from gradeline.reduction.corrections import Corrections
+from gradeline.reduction.heads import observation_kinds
+from gradeline.reduction.line import Line
+from gradeline.reduction.runs import Flowing
+from gradeline.reduction.tables import DRAWING_TABLES, RESULT_TABLES
+from gradeline.reduction.tabulate.frames import frame
+from gradeline.survey import Survey
+
+__all__ = ["head_table", "scatter_table", "tap_table"]
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+_LATER = "not estimated in this version"
+
+
+def head_table(
+    survey: Survey, line: Line, corrections: Corrections, flowing: Flowing, excluded: Mask
+) -> pd.DataFrame:
+    """Return the table of heads: a row for each run and observation, unread ones too."""
+    shape = corrections.heads.observed.shape
+    head = corrections.heads.observed
+    energy, fitted, score = head.copy(), np.full(shape, np.nan), np.full(shape, np.nan)
+    used = np.zeros(shape, dtype=bool)
+    flag, reason = np.full(shape, None, dtype=object), np.full(shape, None, dtype=object)
+    rows = flowing.rows
+    energy[rows] = flowing.energy - flowing.given
+    lines = flowing.fits.lines
+    fitted[rows] = energy[rows] - lines.residuals
+    whole = np.asarray(np.isfinite(lines.parameters).all(axis=1))
+    undetermined = ~whole[:, None] & (lines.dof == 0)[:, None] & ~flowing.used
+    fitted[rows] = np.where(undetermined, np.nan, fitted[rows])
+    score[rows] = flowing.fits.score if flowing.fits.score.size else np.nan
+    used[rows] = flowing.used
+    static = np.setdiff1d(np.arange(shape[0]), rows)
+    for run in static:
+        mine = np.isfinite(head[run]) & ~excluded[run]
+        sees = corrections.heads.taps.sum(axis=1)
+        fitted[run] = sees * (head[run][mine & (sees != 0)].mean() if (mine & (sees != 0)).any() else 0.0)
+        used[run] = mine
+    part = np.full((len(rows), shape[1]), None, dtype=object)
+    why = part.copy()
+    place = {tap.name: i for i, tap in enumerate(survey.taps)}
+    for i, one in enumerate(survey.observations):
+        both = [flowing.reasons[place[name]] for name in (one.tap, one.tap_2) if name is not None]
+        part[flowing.disturbed[:, i], i] = "disturbed"
+        why[flowing.disturbed[:, i], i] = "; ".join(filter(None, both))
+    part[flowing.excluded], why[flowing.excluded] = "excluded", "left out by hand"
+    part[flowing.fits.flagged] = "outlier"
+    why[flowing.fits.flagged] = "outlying against the other taps of the run"
+    flag[rows], reason[rows] = part, why
+    at_rest = np.isin(np.arange(shape[0]), static)[:, None]
+    flag[at_rest & excluded] = "excluded"
+    unread = ~np.isfinite(head)
+    flag[unread], reason[unread] = None, "not read"
+    chainage = [line.chainage[place[one.tap]] for one in survey.observations]
+    count = shape[0]
+    return frame(
+        "heads",
+        {
+            "run": np.repeat(survey.runs["run"].to_numpy(object), shape[1]),
+            "gauge": np.tile([one.gauge for one in survey.observations], count),
+            "tap": np.tile([one.tap for one in survey.observations], count),
+            "tap_2": np.tile(np.array([one.tap_2 for one in survey.observations], dtype=object), count),
+            "chainage": np.tile(chainage, count),
+            "head": head.ravel(),
+            "energy_head": energy.ravel(),
+            "fitted_head": fitted.ravel(),
+            "residual": (energy - fitted).ravel(),
+            "standardized_residual": score.ravel(),
+            "used": used.ravel(),
+            "flag": flag.ravel(),
+            "reason": reason.ravel(),
+        },
+    )
+
+
+def tap_table(survey: Survey, corrections: Corrections, base: Array) -> pd.DataFrame:
+    """Return the table of taps, with their offsets in the static runs."""
+    rows: dict[str, list[Any]] = {name: [] for name in RESULT_TABLES["taps"]}
+    noise = np.sqrt(
+        np.einsum(
+            "ij,j->i", corrections.spread**2, np.nan_to_num(base) ** 2 / np.maximum(corrections.times, 1.0)
+        )
+    )
+    own = {one.tap: i for i, one in enumerate(survey.observations) if one.tap_2 is None}
+    for tap in survey.taps:
+        i = own.get(tap.name)
+        offset = np.nan if i is None else corrections.offset[i]
+        known = i is not None and np.isfinite(offset) and base[i] > 0
+        why = (
+            "read only through differential gauges"
+            if i is None
+            else "no static run read this tap"
+            if not np.isfinite(offset)
+            else "offset against the mean of the taps in the static runs"
+            if corrections.applied
+            else "offset in the static runs, not taken off"
+        )
+        values = (
+            tap.name,
+            offset,
+            noise[i] if known else np.nan,
+            np.nan,
+            np.nan,
+            None,
+            f"{why}; edge coefficient and diagnosis: {_LATER}",
+        )
+        for name, entry in zip(rows, values, strict=True):
+            rows[name].append(entry)
+    return frame("taps", rows)
+
+
+def scatter_table(survey: Survey, flowing: Flowing, floor: Array) -> pd.DataFrame:
+    """Return how the readings of each gauge kind scatter."""
+    kind, names = observation_kinds(survey)
+    rows: dict[str, list[Any]] = {name: [] for name in DRAWING_TABLES["scatter"]}
+    for i, (name, part) in enumerate(zip(names, flowing.fits.scatter, strict=True)):
+        stated = float(floor[kind == i].min())
+        note = (
+            "no freedom left in the runs"
+            if not np.isfinite(part.pooled)
+            else f"found {1000 * part.pooled:.2g} mm over all runs; the stated one holds"
+            if stated > part.pooled
+            else "found over all runs"
+        )
+        values = (name, part.base, part.surge, stated or np.nan, part.dof, note)
+        for key, entry in zip(rows, values, strict=True):
+            rows[key].append(entry)
+    return frame("scatter", rows)

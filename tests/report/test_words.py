@@ -1,0 +1,317 @@
+"""Sentences, terminal and page: what they say, and what they never say."""
+
+from __future__ import annotations
+
+import dataclasses
+import os
+import re
+import subprocess
+import sys
+from html.parser import HTMLParser
+
+import pytest
+
+from gradeline.reduction.tables import Reduction
+from gradeline.report import summarise, terminal_summary
+from gradeline.report.figures import pictures
+from gradeline.report.page import page
+from gradeline.report.tables import flag_table, reading_quantity, run_table, wall_table
+
+NO_NUMBER = re.compile(r"\b(nan|inf|none|null|<na>)\b", re.IGNORECASE)
+
+
+def changed(reduction: Reduction, table: str, **cells: object) -> Reduction:
+    data = getattr(reduction, table).copy()
+    for column, value in cells.items():
+        data[column] = value
+    return dataclasses.replace(reduction, **{table: data})
+
+
+def flagged(reduction: Reduction, kind: str, **cells: object) -> Reduction:
+    data = reduction.flags.copy()
+    data.loc[0, ["kind", "run", "tap"]] = [kind, cells.pop("run", None), cells.pop("tap", None)]
+    for column, value in cells.items():
+        data[column] = value
+    return dataclasses.replace(reduction, flags=data)
+
+
+def test_an_unresolved_roughness_is_a_bound_not_a_value(bench: Reduction) -> None:
+    text = " ".join(summarise(bench).found)
+    # the invented bound is 2.6 × 1.2 µm
+    assert "copper is not resolved: it is smaller than 0.0031 mm (95 %), from 6 turbulent runs" in text
+    assert "hydraulically smooth" in text
+    assert "0.0012" not in text
+
+
+def test_a_resolved_roughness_has_its_interval(field: Reduction) -> None:
+    text = " ".join(summarise(field).found)
+    assert "cast iron is 0.40 mm (95 % interval 0.28 to 0.56 mm), from 4 turbulent runs" in text
+    assert "hydraulically smooth" not in text
+    assert "K = 2.400 ± 0.040 (95 % interval 2.310 to 2.490)" in text
+
+
+def test_the_level_is_named(field: Reduction) -> None:
+    assert "99 % interval" in " ".join(summarise(dataclasses.replace(field, level=0.99)).found)
+
+
+def test_a_given_loss_coefficient_is_not_told_as_found(field: Reduction) -> None:
+    given = changed(field, "fittings", loss_coefficient_u=float("nan"))
+    assert "K =" not in " ".join(summarise(given).found)
+
+
+def test_laminar_runs_check_the_bore(bench: Reduction) -> None:
+    assert "f·Re/64" in " ".join(summarise(bench).found)
+    assert "no contradiction to the stated bore" in " ".join(summarise(bench).found)
+    runs = bench.runs.copy()
+    runs.loc[runs["run"] == "R3", ["friction_factor", "friction_factor_u"]] = [1.2 * 64 / 1700, 0.0004]
+    text = " ".join(summarise(dataclasses.replace(bench, runs=runs)).found)
+    assert "1.200 ± 0.011 (R3)" in text
+    assert "In R3 that is not 1 within two standard uncertainties: check the bore (it enters as D⁴)" in text
+
+
+def test_a_flagged_reading_is_told_with_what_was_expected(bench: Reduction, field: Reduction) -> None:
+    row = bench.flags.iloc[0]
+    text = " ".join(summarise(bench).look)
+    assert f"Run R7, tap T4: {row['reading']:.3f} m was read, {row['expected']:.3f} m expected" in text
+    assert "it was left out of the fit" in text
+    heads = bench.heads.copy()
+    heads["used"] = True
+    assert "it was kept in the fit" in " ".join(summarise(dataclasses.replace(bench, heads=heads)).look)
+    row = field.flags.iloc[0]
+    assert f"{row['reading'] / 1e3:.1f} kPa was read" in " ".join(summarise(field).look)
+    assert set(reading_quantity(field).values()) == {"pressure"}
+    assert set(reading_quantity(bench).values()) == {"head"}
+
+
+def test_runs_off_the_law_and_no_flags(bench: Reduction) -> None:
+    run = flagged(bench, "run", run="R9", suggestion="a flow 4 % lower would bring it onto the law")
+    assert "Run R9 lies off the friction law that the other runs follow (score 20). A flow 4 %" in " ".join(
+        summarise(run).look
+    )
+    assert (
+        summarise(dataclasses.replace(bench, flags=bench.flags.iloc[:0])).look[0]
+        == "No reading and no run was flagged."
+    )
+
+
+def test_a_trend_is_a_misfit_only_where_it_was_flagged_and_is_beyond_chance(bench: Reduction) -> None:
+    strong = changed(bench, "walls", law_trend=-0.035, law_trend_u=0.008)
+    assert "does not describe" not in " ".join(summarise(strong).look)
+    law = flagged(strong, "law", suggestion="f falls faster than a rough wall allows")
+    text = " ".join(summarise(law).look)
+    assert "f falls with Re, by (−3.50 ± 0.80) % per decade" in text
+    weak = flagged(bench, "law", suggestion="f falls faster than a rough wall allows")
+    assert "does not describe" not in " ".join(summarise(weak).look)
+
+
+def test_what_is_missing_is_told_with_its_reason(field: Reduction) -> None:
+    bare = changed(field, "walls", roughness=float("nan"), reason="fewer than two turbulent runs")
+    bare = changed(
+        bare,
+        "fittings",
+        loss_coefficient=float("nan"),
+        loss_coefficient_u=float("nan"),
+        reason="one tap downstream only",
+    )
+    summary = summarise(bare)
+    assert (
+        "The roughness of the wall cast iron could not be determined: fewer than two turbulent runs."
+        in summary.missing
+    )
+    assert (
+        "The loss coefficient of gate valve could not be determined: one tap downstream only."
+        in summary.missing
+    )
+    assert "is not resolved" not in " ".join(summary.found)
+
+
+def test_a_static_run_is_no_failure(bench: Reduction) -> None:
+    assert summarise(bench).missing == ()
+
+
+def test_below_the_crown_is_told_with_its_place(bench: Reduction) -> None:
+    text = next(sentence for sentence in summarise(bench).look if "crown" in sentence)
+    lines = bench.grade_lines[bench.grade_lines["run"] == "R10"]
+    margin = (lines["piezometric_head"] - lines["crown"]).to_numpy()
+    # the crossing by hand: the line is straight between its first and last place
+    x = lines["chainage"].to_numpy()
+    crossing = x[0] + margin[0] / (margin[0] - margin[-1]) * (x[-1] - x[0])
+    assert (
+        f"In run R10 the hydraulic grade line lies below the pipe's crown between chainage {crossing:.2f} and 5.50 m"
+        in text
+    )
+    assert "drawn in" in text
+
+
+@pytest.mark.parametrize("name", ["bench", "field", "many", "hostile"])
+def test_nothing_is_overclaimed_and_no_nan_is_printed(name: str, request: pytest.FixtureRequest) -> None:
+    reduction = request.getfixturevalue(name)
+    text = terminal_summary(reduction)
+    assert "do not replace local codes or licensed practice" in text
+    assert not NO_NUMBER.search(text)
+    assert max(len(line) for line in text.splitlines()) <= 100
+    assert text.isprintable() or set(filter(lambda letter: not letter.isprintable(), text)) <= {
+        "\n",
+        "\u202f",
+    }
+
+
+def test_the_terminal_shows_the_numbers_of_the_page(bench: Reduction) -> None:
+    text = terminal_summary(bench)
+    assert text.splitlines()[0] == "Copper test length, invented bench, 2026-05-06"
+    assert (
+        text.index("Found")
+        < text.index("To look at")
+        < text.index("Runs")
+        < text.index("Walls")
+        < text.index("Cautions")
+    )
+    table = run_table(bench)
+    for row in table.rows:
+        line = next(line for line in text.splitlines() if re.match(rf"  {row[0]}\s", line))
+        assert row[table.heads.index("friction slope S (mm/m)")] in line
+        assert row[table.heads.index("friction factor f")] in line
+
+
+def test_the_terminal_holds_its_width_whatever_the_names(field: Reduction) -> None:
+    long = field.runs.copy()
+    long["run"] = long["run"] + " a very long label of a run that somebody typed 測定結果" * 2
+    long["reach"] = "the reach between the old works and the new reservoir " * 2
+    text = terminal_summary(dataclasses.replace(field, runs=long))
+    assert max(len(line) for line in text.splitlines()) <= 100
+
+
+def test_escape_sequences_do_not_reach_the_terminal(bench: Reduction) -> None:
+    text = terminal_summary(dataclasses.replace(bench, survey={**bench.survey, "title": "\x1b[31mred\x07"}))
+    assert "\x1b" not in text
+    assert "\x07" not in text
+
+
+def test_many_runs_are_cut_with_a_word(make) -> None:
+    text = terminal_summary(make["many"](60))
+    assert "and 20 more in runs.csv" in text
+
+
+def test_tables_round_to_two_digits_of_the_uncertainty_and_note_what_is_missing(bench: Reduction) -> None:
+    table = run_table(bench)
+    slope = table.heads.index("friction slope S (mm/m)")
+    assert table.rows[0][slope] == "–"
+    assert table.notes[int(table.rows[0][-1]) - 1] == "static run: no flow, no slope"
+    value, u = (float(part) for part in table.rows[6][slope].split(" ± "))
+    run = bench.runs.iloc[6]
+    assert value == pytest.approx(run["slope"] * 1e3, abs=0.005)
+    assert u == pytest.approx(run["slope_u"] * 1e3, rel=0.05)
+    walls = wall_table(bench)
+    assert "Hazen–Williams C" not in walls.heads  # nothing to show yet
+    assert flag_table(bench).rows[0][:3] == ("reading", "R7", "T4")
+
+
+class Reader(HTMLParser):
+    """What a page holds: its tags with their attributes, and its text."""
+
+    def __init__(self, text: str) -> None:
+        super().__init__()
+        self.tags: list[tuple[str, dict[str, str | None]]] = []
+        self.words: list[str] = []
+        self.feed(text)
+
+    def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
+        self.tags.append((tag, dict(attrs)))
+
+    def handle_data(self, data: str) -> None:
+        self.words.append(data)
+
+
+def made(reduction: Reduction) -> str:
+    return page(reduction, pictures(reduction, png=False), "1.2.3")
+
+
+@pytest.fixture(scope="module")
+def bench_page(bench: Reduction) -> str:
+    return made(bench)
+
+
+@pytest.mark.parametrize("name", ["field", "many", "hostile"])
+def test_the_page_prints_no_nan_and_runs_no_script(name: str, request: pytest.FixtureRequest) -> None:
+    text = made(request.getfixturevalue(name))
+    reader = Reader(text)
+    style = next(n for n, word in enumerate(reader.words) if ":root" in word)
+    words = " ".join(reader.words[:style] + reader.words[style + 1 :])
+    assert not re.search(r"\bnan\b|\binf\b|<NA>", words, re.IGNORECASE)
+    tags = {tag for tag, _ in reader.tags}
+    assert not tags & {"script", "img", "iframe", "link", "object", "embed", "form", "base"}
+    for _, attributes in reader.tags:
+        assert not [key for key in attributes if key.startswith("on")]
+        for key in ("href", "src", "xlink:href"):
+            assert (attributes.get(key) or "#").startswith("#")
+
+
+def test_hostile_names_are_shown_as_they_are(hostile: Reduction) -> None:
+    text = made(hostile)
+    assert "<script" not in text.lower()
+    assert "<img" not in text.lower()
+    assert "<script>alert('x')</script>" in "".join(Reader(text).words)
+
+
+def test_the_page_loads_nothing(bench_page: str) -> None:
+    outside = re.findall(r"""(?:src|href)\s*=\s*["'](?!#)|url\((?!#)|@import""", bench_page)
+    assert outside == []
+    assert "default-src 'none'" in bench_page
+
+
+def test_the_sections_stand_in_order(bench_page: str) -> None:
+    reader = Reader(bench_page)
+    order = [attributes["id"] for tag, attributes in reader.tags if tag == "h2"]
+    assert order == [
+        "summary",
+        "grade-lines",
+        "residuals-by-tap",
+        "laws",
+        "tables",
+        "flags",
+        "readings",
+        "assumptions",
+        "cautions",
+        "provenance",
+    ]
+    targets = {attributes["href"] for tag, attributes in reader.tags if tag == "a"}
+    ids = [attributes["id"] for _, attributes in reader.tags if attributes.get("id")]
+    assert {target.removeprefix("#") for target in targets if target} <= set(ids)
+    assert len(ids) == len(set(ids))
+
+
+def test_the_page_can_be_read_without_seeing_it(bench_page: str) -> None:
+    reader = Reader(bench_page)
+    assert ("html", {"lang": "en"}) in reader.tags
+    figures = [attributes for tag, attributes in reader.tags if tag == "figure"]
+    assert len(figures) == 13
+    assert all(figure["aria-label"] for figure in figures)
+    assert "flagged: T4" in str(figures[6]["aria-label"])
+    count = [tag for tag, _ in reader.tags].count
+    assert count("caption") == count("table") == count("thead")
+    heads = [attributes for tag, attributes in reader.tags if tag == "th"]
+    assert all(attributes["scope"] in ("col", "row") for attributes in heads)
+
+
+def test_the_page_tells_cautions_and_where_it_came_from(bench_page: str, bench: Reduction) -> None:
+    words = " ".join(Reader(bench_page).words)
+    for part in (
+        *bench.assumptions,
+        *bench.cautions,
+        "gradeline 1.2.3",
+        "ab" * 32,
+        "readings.csv",
+        "9.80665 m/s²",
+    ):
+        assert part in words
+    for danger in ("Mercury.", "Trapped pressure.", "below the pipe's crown"):
+        assert danger in words
+    assert words.count("do not replace local codes or licensed practice") == 2
+
+
+def test_asking_for_the_report_draws_nothing_yet() -> None:
+    code = "import sys, gradeline.report; print([m for m in ('pandas', 'matplotlib', 'jinja2', 'scipy') if m in sys.modules])"
+    done = subprocess.run(
+        [sys.executable, "-c", code], capture_output=True, text=True, check=True, env=os.environ
+    )
+    assert done.stdout.strip() == "[]"
