@@ -55,6 +55,9 @@ class Model:
         elevation, zero), m.
     flow_effect : (R, n) array, optional
         Change of each observation for one standard uncertainty of the run's own flow, m.
+    stated : bool or None
+        Whether an uncertainty of one reading was stated for every observation, and not its resolution alone; None:
+        wherever `floor` is above 0.
     slope_column : int
         Column of A whose parameter is the (first) friction slope.
     """
@@ -66,7 +69,13 @@ class Model:
     repeats: Array | None = None
     persistent: Array | None = None
     flow_effect: Array | None = None
+    stated: bool | None = None
     slope_column: int = 1
+
+    @property
+    def is_stated(self) -> bool:
+        """Whether the floor is a statement to hold the scatter against."""
+        return bool((self.floor > 0).all()) if self.stated is None else self.stated
 
 
 @dataclass(frozen=True)
@@ -413,6 +422,8 @@ def _may_search(
 ) -> Search:
     """Whether single readings can be judged in this survey, and if not, why."""
     shared = lines.projectors
+    if not len(shared.index):
+        return Search(False, "there is no flowing run")
     most = most_removable(shared.used.sum(axis=1), shared.rank)
     if int(most.max(initial=0)) == 0:
         return Search(
@@ -420,7 +431,7 @@ def _may_search(
         )
     if misfit is not None and misfit.shared:
         return Search(False, "most runs share a misfit, and single readings cannot be told from it")
-    for kind, part in enumerate(scatter):
+    for kind, part in enumerate(scatter if model.is_stated else ()):
         stated = float(model.floor[model.kind == kind].max(initial=0.0))
         if stated > 0 and part.pooled > _SUSPECT_SCATTER * stated:
             return Search(
@@ -436,7 +447,7 @@ def _scale_of_others(kept: LineFits, model: Model) -> Array:
     squares, dof = kept.sum_of_squares, kept.dof
     others = np.maximum(dof.sum() - dof, 1)
     scale = (squares.sum() - squares) / others
-    return np.asarray(np.maximum(scale, 1.0 if (model.floor > 0).all() else 1e-12))
+    return np.asarray(np.maximum(scale, 1.0 if model.is_stated else 1e-12))
 
 
 def _search(
@@ -445,7 +456,7 @@ def _search(
     shared = lines.projectors
     counts = shared.used.sum(axis=1)
     most = most_removable(counts, shared.rank)
-    stated = bool((model.floor > 0).all())
+    stated = model.is_stated
     critical = np.full((len(counts), MOST_OUTLIERS), np.inf)
     for pattern in np.flatnonzero(most > 0):
         critical[pattern] = critical_falls(

@@ -94,7 +94,8 @@ class WallFit:
     Parameters
     ----------
     roughness, low, high, upper95 : float
-        ε, its interval and its one-sided 95 % upper bound, m; NaN where it could not be had.
+        ε, its interval and its one-sided 95 % upper bound, m; NaN where it could not be had. A single slope of unknown
+        scatter gives ε alone.
     level : float
         Coverage of the interval, dimensionless.
     used : (R, K) bool array
@@ -228,9 +229,20 @@ def _residual(data: WallData, used: Mask, roughness: float | Array) -> Array:
     return np.where(used, safe - law_log_slope(data, roughness), 0.0)
 
 
-def _grid(data: WallData) -> Array:
-    bore = float(data.diameter.max())
-    return np.concatenate([[0.0], bore * np.geomspace(1e-9, _ROUGHEST, 161)])
+@dataclass(frozen=True)
+class _Grid:
+    """Roughnesses from 0 to the roughest, and ln S of the law at each, worked out once."""
+
+    roughness: Array  # (G,)
+    log_slope: Array  # (G, R, K)
+
+    def residual(self, data: WallData, used: Mask) -> Array:
+        return np.where(used, np.log(np.where(used, data.slope, 1.0)) - self.log_slope, 0.0)
+
+
+def _grid(data: WallData, steps: int = 81) -> _Grid:
+    roughness = np.concatenate([[0.0], float(data.diameter.max()) * np.geomspace(1e-9, _ROUGHEST, steps)])
+    return _Grid(roughness, law_log_slope(data, roughness[:, None, None]))
 
 
 def _minimum(squares: Callable[[float], float], at_grid: Array, grid: Array) -> float:
@@ -247,10 +259,10 @@ def _minimum(squares: Callable[[float], float], at_grid: Array, grid: Array) -> 
     return float(found.x)
 
 
-def _robust_start(data: WallData, used: Mask, grid: Array) -> float:
+def _robust_start(data: WallData, used: Mask, grid: _Grid) -> float:
     """ε of the least sum of absolute deviations of ln S: a slip of a decade counts once, not a hundred times."""
-    residual = _residual(data, used, grid[:, None, None])
-    return float(grid[int(np.abs(residual).sum(axis=(1, 2)).argmin())])
+    residual = grid.residual(data, used)
+    return float(grid.roughness[int(np.abs(residual).sum(axis=(1, 2)).argmin())])
 
 
 def fit_wall(data: WallData, usable: Mask, *, level: float = 0.95, dof: float = np.inf) -> WallFit:
@@ -299,6 +311,7 @@ def fit_wall(data: WallData, usable: Mask, *, level: float = 0.95, dof: float = 
     candidates = used
     unknown = not np.isfinite(data.slope_covariance[candidates]).all()
     roughness = _robust_start(data, used, grid)
+    lone = unknown and used.sum() < 2
     scatter = _first_scatter(_residual(data, used, roughness), used) if unknown else float("nan")
     critical = stdtrit(_freedom(dof, used, unknown), 1.0 - _RUN_FALSE_ALARM / (2.0 * candidates.sum()))
     if unknown and used.sum() >= 4:
@@ -325,7 +338,12 @@ def fit_wall(data: WallData, usable: Mask, *, level: float = 0.95, dof: float = 
         seen.append(used.tobytes())
         used = now
     freedom = _freedom(dof, used, unknown)
-    low, high, upper = _interval(data, used, covariance, roughness, grid, freedom, level)
+    low = high = upper = float("nan")
+    if lone:
+        # A single slope of unknown scatter: a value, and nothing to say how sure it is.
+        scatter = float("nan")
+    else:
+        low, high, upper = _interval(data, used, covariance, roughness, grid, freedom, level)
     residual = _residual(data, used, roughness)
     trend, trend_u = _trend(data, used, covariance, roughness, residual)
     ones = used.astype(float)
@@ -374,7 +392,7 @@ def best_roughness(data: WallData, fit: WallFit) -> float:
     """
     if not fit.used.any():
         return float("nan")
-    return _settle(data, fit.used, _grid(data), fit.roughness, fit.relative_scatter)[0]
+    return _settle(data, fit.used, _grid(data, 41), fit.roughness, fit.relative_scatter)[0]
 
 
 def _freedom(dof: float, used: Mask, unknown: bool) -> float:
@@ -395,18 +413,19 @@ def _scatter_off_law(data: WallData, used: Mask, covariance: _Covariance, roughn
 
 
 def _settle(
-    data: WallData, used: Mask, grid: Array, roughness: float, scatter: float
+    data: WallData, used: Mask, grid: _Grid, roughness: float, scatter: float
 ) -> tuple[float, _Covariance]:
     """Minimise with the covariance at the fitted slopes, renewed until ε stands."""
     covariance = _covariance(data, roughness, used, scatter)
+    residual = grid.residual(data, used)
     for _ in range(_SETTLED):
-        at_grid = _squares(covariance, _residual(data, used, grid[:, None, None]))
+        at_grid = _squares(covariance, residual)
         fixed = covariance
 
         def squares(value: float, fixed: _Covariance = fixed) -> float:
             return float(_squares(fixed, _residual(data, used, value)))
 
-        new = _minimum(squares, at_grid, grid)
+        new = _minimum(squares, at_grid, grid.roughness)
         covariance = _covariance(data, new, used, scatter)
         done = abs(new - roughness) <= 1e-6 * max(new, roughness)
         roughness = new
@@ -458,7 +477,7 @@ def _interval(
     used: Mask,
     covariance: _Covariance,
     roughness: float,
-    grid: Array,
+    grid: _Grid,
     dof: float,
     level: float,
 ) -> tuple[float, float, float]:
@@ -476,8 +495,9 @@ def _interval(
     if roughness > 0 and above(0.0) > two_sided:
         low = float(brentq(lambda value: above(value) - two_sided, 0.0, roughness, xtol=1e-15))
     highs = []
-    beyond = grid[grid > roughness]
-    climb = _squares(covariance, _residual(data, used, beyond[:, None, None])) - least
+    rougher = grid.roughness > roughness
+    beyond = grid.roughness[rougher]
+    climb = _squares(covariance, grid.residual(data, used)[rougher]) - least
     for rise in (two_sided, one_sided):
         over = np.flatnonzero(climb > rise)
         if not len(over):

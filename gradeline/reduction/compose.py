@@ -100,7 +100,7 @@ def reduce(
         assumptions=assumptions_of(
             survey, media, line, corrections, flowing, level=level, correct=correct, keep_all=keep_all
         ),
-        cautions=cautions_of(survey, line, flowing, walls, piezometric, crown),
+        cautions=cautions_of(survey, line, flowing, walls, piezometric, crown, friction.slope_u),
         reaches=tabulate.reach_table(survey, line, flowing),
         runs=tabulate.run_table(survey, media, line, flowing, friction),
         walls=tabulate.wall_table(walls),

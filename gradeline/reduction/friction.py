@@ -85,6 +85,7 @@ def friction_of(
             shared = np.einsum("fpq,fpq->fp", flowing.effect, flowing.effect)[:, 1 + wall.reaches]
             total[:, wall.reaches] = np.sqrt(part**2 + shared)
             base[:, wall.reaches] = wall.fit.dof
+    total, random = (np.where(np.isfinite(slope), values, np.nan) for values in (total, random))
     effective = _effective_dof(total, random, base)
     times = stdtrit(np.where(np.isfinite(effective), effective, 1e9), 0.5 + level / 2.0)
     positive = slope > 0

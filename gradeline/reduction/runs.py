@@ -26,6 +26,8 @@ __all__ = ["Flowing", "fit_survey", "stated_floor"]
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
+#: A slope this small is rounding of the heads.
+_NO_SLOPE = 1e-12
 #: Inputs that move single taps, and so the residuals.
 _TAP_INPUTS = frozenset({"tap chainage", "tap elevation", "static reading"})
 _PRESSURE_KINDS = frozenset(name for name, kind in GAUGE_KINDS.items() if kind.reading == "pressure")
@@ -89,7 +91,9 @@ class Flowing:
 
     def slopes(self) -> Array:
         """S of each run and reach (F, K), NaN where the taps do not determine it."""
-        return self.fits.lines.parameters[:, 1 : 1 + self.velocity.shape[1]]
+        slopes = self.fits.lines.parameters[:, 1 : 1 + self.velocity.shape[1]]
+        # What is left of equal readings is rounding, not a slope.
+        return np.where(np.abs(slopes) < _NO_SLOPE, 0.0, slopes)
 
 
 def fit_survey(
@@ -147,6 +151,7 @@ def fit_survey(
         velocity_head=plain_head.max(axis=1) if len(rows) else np.zeros(0),
         kind=kind,
         floor=floor,
+        stated=bool((stated_floor(survey, corrections, resolution=False) > 0).all()),
         repeats=repeats if (repeats > 1).any() else None,
     )
     factor = np.asarray(colebrook_white(np.maximum(reynolds, 1.0), 0.0))
@@ -174,7 +179,7 @@ def fit_survey(
     gain = shared.gain[shared.index]
     columns = [np.zeros(energy.shape) if one.heads is None else one.heads for one in inputs]
     stacked = np.stack(columns, axis=2) if columns else np.zeros((*energy.shape, 0))
-    known = fits.pooled_dof > 0 or bool((floor > 0).all())
+    known = fits.pooled_dof > 0 or model.is_stated
     random = fits.random_covariance() if known else np.full((len(rows), *[design.shape[1]] * 2), np.nan)
     return Flowing(
         rows=rows,
@@ -207,8 +212,8 @@ def _flow_uncertainty(survey: Survey, rows: NDArray[np.intp], flow: Array) -> Ar
     return np.nan_to_num(survey.runs["flow_u"].to_numpy(float)[rows] / flow)
 
 
-def stated_floor(survey: Survey, corrections: Corrections) -> Array:
-    """Stated uncertainty of one reading of each observation as head, its resolution included, m; 0 where unstated."""
+def stated_floor(survey: Survey, corrections: Corrections, *, resolution: bool = True) -> Array:
+    """Stated uncertainty of one reading of each observation as head, with its resolution, m; 0 where unstated."""
     gain = np.abs(corrections.heads.gain)
     known = np.isfinite(gain)
     size = np.where(known, gain, 0.0).sum(axis=0) / np.maximum(known.sum(axis=0), 1)
@@ -219,7 +224,7 @@ def stated_floor(survey: Survey, corrections: Corrections) -> Array:
         stated = gauge.reading_u if tap.reading_u is None or observation.tap_2 else tap.reading_u
         if stated is None:
             stated = general["Pa" if gauge.kind in _PRESSURE_KINDS else "m"]
-        floors.append(np.hypot(stated or 0.0, (gauge.resolution or 0.0) / np.sqrt(12.0)))
+        floors.append(np.hypot(stated or 0.0, (gauge.resolution or 0.0) * resolution / np.sqrt(12.0)))
     return np.asarray(np.array(floors) * size)
 
 

@@ -77,8 +77,8 @@ def _search_sentence(flowing: Flowing, *, keep_all: bool) -> str:
     kept = " Flagged readings were kept in the fits, as asked." if keep_all else ""
     return (
         f"Up to {search.most} outlying readings a run were looked for among all sets of readings. In a sound run one is "
-        f"flagged by chance in about {100 * FALSE_ALARM:.0f} of 100 runs; over the {search.runs} runs of this survey at "
-        f"least one false flag is to be expected with a probability of {100 * whole:.0f} %.{kept}"
+        f"flagged by chance in about {100 * FALSE_ALARM:.0f} of 100 runs; over the {search.runs} flowing run{'' if search.runs == 1 else 's'} the "
+        f"probability of at least one false flag is {100 * whole:.0f} %.{kept}"
     )
 
 
@@ -89,6 +89,7 @@ def cautions_of(
     walls: tuple[Wall, ...],
     piezometric: Array,
     crown: Array,
+    slope_u: Array,
 ) -> tuple[str, ...]:
     """List what a reader must know, after what the loader says.
 
@@ -98,10 +99,13 @@ def cautions_of(
         What the fits say.
     piezometric, crown : (F, m) array
         Hydraulic grade line and crown of the pipe at the places of the drawn line, m.
+    slope_u : (F, K) array
+        Standard uncertainty of the friction slopes, dimensionless.
     """
     said = [*survey.cautions, *flowing.cautions]
     said += _misfit(survey, flowing)
     said += _scatter(flowing)
+    said += _rising(survey, flowing, slope_u)
     said += _sub_atmospheric(survey, line, flowing, piezometric, crown)
     search, runs = flowing.fits.search, len(flowing.rows)
     if search.done and search.critical and runs <= 2 and not (flowing.fits.search.critical[0] < 10.5):
@@ -137,6 +141,21 @@ def _scatter(flowing: Flowing) -> list[str]:
     if search.done or search.reason is None or "stated" not in search.reason:
         return []
     return [f"The stated reading uncertainty is doubtful: {search.reason}. No single reading is flagged."]
+
+
+def _rising(survey: Survey, flowing: Flowing, slope_u: Array) -> list[str]:
+    """Heads that rise downstream, beyond what scatter can do: most often chainages or limbs the wrong way round."""
+    with np.errstate(invalid="ignore"):
+        rising = flowing.slopes() < -3.0 * np.where(np.isfinite(slope_u), slope_u, np.inf)
+    found = []
+    for k, reach in enumerate(survey.reaches):
+        count = int(rising[:, k].sum())
+        if count:
+            found.append(
+                f"In {count} of {len(rising)} runs the head rises downstream in reach {reach.name!r}, which friction cannot "
+                "do: look whether chainages, tap labels or the direction of the flow are the wrong way round."
+            )
+    return found
 
 
 def _sub_atmospheric(

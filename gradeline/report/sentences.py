@@ -31,6 +31,8 @@ JUDGEMENT = (
 _MOST_NAMED = 6
 #: Of f with nothing stated, an agreement of the laminar runs within this share is still called one.
 _LAMINAR_ROOM = 0.02
+#: An exponent less certain than this tells no regime from another; it stands in the table alone.
+_VAGUE_EXPONENT = 0.25
 
 
 @dataclass(frozen=True)
@@ -127,12 +129,16 @@ def _survey(reduction: Reduction, runs: Sequence[dict[str, Any]]) -> str:
     flowing = _distinct([row for row in runs if row["regime"] != "static"], "run")
     static = _distinct([row for row in runs if row["regime"] == "static"], "run")
     heads = reduction.heads
-    used = int(heads["used"].fillna(False).to_numpy(bool).sum())
+    still = set(static)
+    used = sum(
+        bool(one) and str(run) not in still
+        for one, run in zip(heads["used"].fillna(False), heads["run"], strict=True)
+    )
     read = int(np.isfinite(heads["head"].to_numpy(float, na_value=np.nan)).sum())
     parts = [_plural(len(flowing), "flowing run")]
     if static:
         parts.append(_plural(len(static), "static run"))
-    return f"{' and '.join(parts)} with {_plural(read, 'reading')} were reduced; {used} readings entered the fits."
+    return f"{' and '.join(parts)} with {_plural(read, 'reading')} in all; {used} of them entered the fits of the grade lines."
 
 
 def _wall(wall: dict[str, Any], level: float, display: Display) -> str:
@@ -195,7 +201,7 @@ def _laminar(runs: Sequence[dict[str, Any]]) -> Iterable[str]:
             if known(row["friction_factor_u"])
             else None
         )
-        texts.append(f"{rounded(ratio, u)} ({row['run']})")
+        texts.append(f"{rounded(ratio, u)} (run {row['run']})")
         if u is None:
             unknown = True
             if abs(ratio - 1) > _LAMINAR_ROOM:
@@ -205,7 +211,7 @@ def _laminar(runs: Sequence[dict[str, Any]]) -> Iterable[str]:
     words = f"In laminar flow f·Re/64, which is 1 for the true bore and flow, is {_list(texts)}"
     if off:
         yield (
-            f"{words}. In {_list(off)} that is not 1 within "
+            f"{words}. In run {_list(off)} that is not 1 within "
             f"{'2 %' if unknown else 'two standard uncertainties'}: check the bore (it enters as D⁴), the flow and "
             "the temperature."
         )
@@ -214,7 +220,11 @@ def _laminar(runs: Sequence[dict[str, Any]]) -> Iterable[str]:
 
 
 def _exponents(reduction: Reduction) -> Iterable[str]:
-    rows = [row for row in records(reduction.exponents) if known(row["exponent"])]
+    rows = [
+        row
+        for row in records(reduction.exponents)
+        if known(row["exponent"]) and not (known(row["exponent_u"]) and row["exponent_u"] > _VAGUE_EXPONENT)
+    ]
     several = len(_distinct(rows, "reach")) > 1
     texts = [
         f"{rounded(row['exponent'], row['exponent_u'])} ({row['regime']}{', ' + row['reach'] if several else ''})"
@@ -273,12 +283,17 @@ def _readings(reduction: Reduction, flags: Sequence[dict[str, Any]], display: Di
     flagged.sort(key=lambda flag: -abs(flag["score"]) if known(flag["score"]) else 0.0)
     for flag in flagged[:_MOST_NAMED]:
         read, expected = (flagged_value(flag, key, quantities, display) for key in ("reading", "expected"))
+        suggestion = flag["suggestion"] or ""
         fate = (
-            "it was kept in the fit" if (flag["run"], flag["tap"]) in kept else "it was left out of the fit"
+            "; it was kept in the fit"
+            if (flag["run"], flag["tap"]) in kept
+            else "; it was left out of the fit"
         )
+        if "left out" in suggestion or "kept" in suggestion:
+            fate = ""
         score = f" (score {format_number(flag['score'], 2)})" if known(flag["score"]) else ""
-        words = f"Run {flag['run']}, tap {flag['tap']}: {read} was read, {expected} expected{score}; {fate}."
-        yield words + (f" {_sentence(flag['suggestion'])}" if flag["suggestion"] else "")
+        words = f"Run {flag['run']}, tap {flag['tap']}: {read} was read, {expected} expected{score}{fate}."
+        yield f"{words} {_sentence(suggestion)}" if suggestion else words
     if len(flagged) > _MOST_NAMED:
         yield f"{_plural(len(flagged) - _MOST_NAMED, 'more reading')} were flagged; the table of flags names them."
 

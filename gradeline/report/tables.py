@@ -61,7 +61,7 @@ def run_table(
             TableColumn(display.head("flow", "flow"), lambda row: display.text("flow", row["flow"])),
             TableColumn(display.head("V", "velocity"), lambda row: display.text("velocity", row["velocity"])),
             TableColumn(
-                display.head("temperature", "temperature"),
+                display.head("t", "temperature"),
                 lambda row: _temperature(row, display),
                 always=False,
             ),
@@ -99,7 +99,9 @@ def _temperature(row: Row, display: Display) -> str:
 def _probability(value: float | None) -> str:
     if value is None or not math.isfinite(value):
         return MISSING
-    return "< 0.001" if value < 1e-3 else f"{value:.2g}"
+    if value < 1e-3:
+        return "< 0.001"
+    return f"{value:.2f}" if value >= 0.095 else f"{value:.2g}"
 
 
 def wall_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:

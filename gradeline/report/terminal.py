@@ -47,7 +47,7 @@ def terminal_summary(reduction: Reduction, display: Display = SI_DISPLAY) -> str
         if sentences:
             blocks.append("\n".join([head, *_bullets(sentences)]))
     runs = len(reduction.runs)
-    drop = {"temperature", "straightness p", "readings used", "roughness ε", "ε,"}
+    drop = {"t (", "straightness p", "readings used", "roughness ε", "ε,"}
     blocks.append(
         _table("Runs", run_table(reduction, display, limit=_MOST_RUNS), drop, "runs.csv", runs - _MOST_RUNS)
     )
@@ -136,20 +136,21 @@ def _table(title: str, table: PrintedTable, drop: set[str], more_in: str = "", m
 
 
 def _heads(heads: Sequence[str]) -> list[list[str]]:
-    """Column heads on two lines: the words, and the unit or the second half of long words."""
-    first, second = [], []
+    """Column heads on up to three lines, those with fewer standing at the bottom; the unit has its own."""
+    stacks: list[list[str]] = []
     for head in heads:
         words, bracket, unit = head.partition(" (")
-        if bracket:
-            first.append(words)
-            second.append("(" + unit)
-        elif " " in head and len(head) > 10:
-            middle = min(
-                (n for n, letter in enumerate(head) if letter == " "), key=lambda n: abs(n - len(head) / 2)
-            )
-            first.append(head[:middle])
-            second.append(head[middle + 1 :])
-        else:
-            first.append(head)
-            second.append("")
-    return [first, second] if any(second) else [first]
+        stack = _halves(words)
+        stacks.append([*stack, bracket.strip() + unit] if bracket else stack)
+    lines = max((len(stack) for stack in stacks), default=1)
+    stacks = [[""] * (lines - len(stack)) + stack for stack in stacks]
+    return [[stack[line] for stack in stacks] for line in range(lines)]
+
+
+def _halves(words: str) -> list[str]:
+    """Words on two lines of about the same length, on one where they are short."""
+    gaps = [n for n, letter in enumerate(words) if letter == " "]
+    if len(words) <= 11 or not gaps:
+        return [words]
+    middle = min(gaps, key=lambda n: abs(n - len(words) / 2))
+    return [words[:middle], words[middle + 1 :]]

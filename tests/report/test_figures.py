@@ -86,7 +86,7 @@ def test_a_static_run_has_no_flow_arrow_and_a_sane_height(ax, bench: Reduction) 
     draw_grade_lines(ax, bench, "S0")
     assert "flow" not in [text.get_text() for text in ax.texts]
     assert np.ptp(ax.get_ylim()) >= 0.01
-    assert run_title(bench, "S0") == "Run S0: static"
+    assert run_title(bench, "S0") == "Run S0: no flow"
 
 
 def test_the_pipe_with_taps_and_fittings(ax, field: Reduction) -> None:
@@ -116,7 +116,7 @@ def test_residuals_are_in_millimetres_and_ring_the_flagged(ax, bench: Reduction)
     assert set(drawn.used) == {"laminar", "critical", "turbulent", "static"}
     assert len(drawn.flagged.get_xdata()) == 1
     assert round(float(drawn.flagged.get_xdata()[0])) == 3  # T4 is the fourth tap
-    assert drawn.labels[0].get_text().startswith("R7: +11.")
+    assert drawn.labels[0].get_text().startswith("run R7: +11.")
     assert abs(drawn.flagged.get_ydata()[0]) < ax.get_ylim()[1]
     assert ax.get_ylabel() == "measured − fitted energy head (mm)"
     assert [label.get_text() for label in ax.get_xticklabels()] == [f"T{n}" for n in range(1, 11)]

@@ -65,8 +65,10 @@ def test_laminar_runs_check_the_bore(bench: Reduction) -> None:
     runs = bench.runs.copy()
     runs.loc[runs["run"] == "R3", ["friction_factor", "friction_factor_u"]] = [1.2 * 64 / 1700, 0.0004]
     text = " ".join(summarise(dataclasses.replace(bench, runs=runs)).found)
-    assert "1.200 ± 0.011 (R3)" in text
-    assert "In R3 that is not 1 within two standard uncertainties: check the bore (it enters as D⁴)" in text
+    assert "1.200 ± 0.011 (run R3)" in text
+    assert (
+        "In run R3 that is not 1 within two standard uncertainties: check the bore (it enters as D⁴)" in text
+    )
 
 
 def test_a_flagged_reading_is_told_with_what_was_expected(bench: Reduction, field: Reduction) -> None:

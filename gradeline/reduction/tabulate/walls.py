@@ -31,13 +31,13 @@ def wall_table(walls: tuple[Wall, ...]) -> pd.DataFrame:
     """Return the table of walls."""
     rows: dict[str, list[Any]] = {name: [] for name in RESULT_TABLES["walls"]}
     for wall in walls:
-        fit, known = wall.fit, np.isfinite(wall.fit.roughness)
+        fit = wall.fit
         rows["wall"].append(wall.name)
         rows["roughness"].append(fit.roughness)
         rows["roughness_low"].append(fit.low)
         rows["roughness_high"].append(fit.high)
         rows["roughness_upper95"].append(fit.upper95)
-        rows["roughness_resolved"].append(fit.low > 0 if known else None)
+        rows["roughness_resolved"].append(bool(fit.low > 0) if np.isfinite(fit.low) else None)
         plus, plus_upper = _fastest(wall)
         rows["hydraulically_smooth"].append(bool(plus_upper < 5.0) if np.isfinite(plus_upper) else None)
         rows["roughness_reynolds"].append(plus)
@@ -58,7 +58,9 @@ def _wall_reasons(wall: Wall) -> list[str]:
         if wall.faint.any():
             return ["in no turbulent run does the slope exceed twice its uncertainty"]
         return ["no turbulent run has a slope above zero"]
-    if not np.isfinite(fit.high):
+    if not np.isfinite(fit.low):
+        reasons.append("one slope and no stated reading uncertainty: nothing tells how sure the roughness is")
+    elif not np.isfinite(fit.high):
         reasons.append("the readings set no upper bound to the roughness")
     if fit.roughness == 0:
         reasons.append("f lies at or below that of a smooth wall: the roughness is not told from zero")

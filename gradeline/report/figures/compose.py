@@ -36,6 +36,9 @@ def single(
     bottom = below / height
     ax = figure.add_axes((_LEFT, bottom, _BREADTH, 0.9 - bottom))
     drawn = draw(ax)
+    if any(label.get_rotation() == 90 for label in ax.get_xticklabels()):  # long names need room below
+        bottom += 0.6 / height
+        ax.set_position((_LEFT, bottom, _BREADTH, 0.9 - bottom))
     _head(figure, ax, title, drawn.legend_rows if not isinstance(drawn, SlopeVelocityArtists) else 0)
     return figure
 
@@ -96,13 +99,14 @@ def grade_line_figure(
     pipe = draw_pipe(below, reduction, run, display=display)
     low, high = below.get_ylim()
     span = max(high - low, 1e-3 * display.factor("elevation"))
-    below.set_ylim(low - 1.05 * span, high + 0.55 * span)
+    below.set_ylim(low - (1.05 if pipe.name_rows < 2 else 1.6) * span, high + 0.55 * span)
     below.grid(visible=False, axis="y")
     below.locator_params(axis="y", nbins=2)
     below.set_xlabel(display.head("chainage x", "chainage"))
     below.set_ylabel(display.head("pipe's\naxis", "elevation"))
     ends = np.asarray(pipe.crown.get_xydata(), float)
-    if len(ends) and np.isfinite(ends[-1]).all():
+    rise = np.asarray(pipe.crown.get_ydata(), float) - np.asarray(pipe.axis.get_ydata(), float)
+    if len(ends) and np.isfinite(ends[-1]).all() and rise[-1] > 0.2 * span:
         below.annotate(
             "crown",
             tuple(ends[-1]),

@@ -80,7 +80,7 @@ def run_title(reduction: Reduction, run: str, display: Display = SI_DISPLAY) -> 
     if len(rows):
         first = rows.iloc[0]
         if first["regime"] == "static":
-            return f"{parts[0]}: static"
+            return f"{parts[0]}: no flow"
         parts.append(display.text("flow", first["flow"], unit=True))
         if np.isfinite(first["reynolds"]):
             parts.append("Re " + thousands(first["reynolds"]))
@@ -215,8 +215,20 @@ def draw_grade_lines(
     pipe = draw_pipe(ax, reduction, run, display=display) if with_pipe else None
     if pipe is not None:  # room for the names of the taps under the lowest part of the pipe
         low, high = ax.get_ylim()
-        ax.set_ylim(low - 0.07 * (high - low), high)
-    _least_height(ax, 0.01 * scale)
+        ax.set_ylim(low - (0.08 if pipe.name_rows < 2 else 0.13) * (high - low), high)
+    at_rest = not _flows(reduction, run)
+    span = float(np.ptp(x)) if x.size else 0.0
+    _least_height(ax, max(0.01 * scale, 2e-4 * span / along * scale))
+    if at_rest and not small and np.isfinite(y).any() and np.nanmax(y) - np.nanmin(y) < 1e-6 * scale:
+        ax.text(
+            0.5,
+            0.08,
+            "the offsets were taken from this run: its levels agree by construction",
+            transform=ax.transAxes,
+            ha="center",
+            fontsize=8.5,
+            color=MUTED,
+        )
     if outlying.any():
         labels = _ring_labels(
             ax, heads[outlying], x[outlying], y[outlying], lines=(hgl, egl), small=small, with_pipe=with_pipe
@@ -239,11 +251,11 @@ def _flows(reduction: Reduction, run: str) -> bool:
 
 
 def _least_height(ax: Axes, least: float) -> None:
-    """Widen the axis to a least height, so that a line at rest does not look like a storm."""
-    low, high = ax.get_ylim()
-    if high - low < least:
+    """Give the axis a least height, so that a line at rest looks neither like a storm nor like a dot."""
+    low, high = ax.dataLim.intervaly
+    if np.isfinite([low, high]).all() and high - low < least:
         middle = (low + high) / 2
-        ax.set_ylim(middle - least / 2, middle + least / 2)
+        ax.set_ylim(middle - 0.6 * least, middle + 0.6 * least)
 
 
 def _ring_labels(

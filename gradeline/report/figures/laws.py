@@ -175,7 +175,7 @@ def draw_slope_velocity(
         if key not in drawn or not math.isfinite(row["exponent"]):
             continue
         velocity, slope = (np.asarray(data, float) for data in drawn[key].lines[0].get_data())
-        ends = np.array([velocity.min() / 1.12, velocity.max() * 1.12])
+        ends = np.array([velocity.min() / 1.05, velocity.max() * 1.05])
         middle = (np.log(velocity).mean(), np.log(slope).mean())
         (powers[key],) = ax.plot(
             ends,

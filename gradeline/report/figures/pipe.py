@@ -14,7 +14,7 @@ from matplotlib.text import Text
 
 from gradeline.quantities.printing import SI_DISPLAY, Display
 from gradeline.reduction.tables import Reduction
-from gradeline.report.figures.style import COLOURS, INK, clean, rows_for_labels, shorten
+from gradeline.report.figures.style import COLOURS, INK, rows_for_labels, shorten
 
 __all__ = ["Array", "PipeArtists", "column", "draw_pipe", "of_run"]
 
@@ -35,6 +35,8 @@ class PipeArtists:
         A mark for each fitting.
     names : tuple of Text
         Names of taps and fittings.
+    name_rows : int
+        In how many rows the names of the taps stand.
     """
 
     axis: Line2D
@@ -42,6 +44,7 @@ class PipeArtists:
     taps: Line2D
     fittings: PathCollection | None
     names: tuple[Text, ...]
+    name_rows: int
 
 
 def of_run(table: pd.DataFrame, run: str) -> pd.DataFrame:
@@ -76,9 +79,10 @@ def draw_pipe(
     """
     scale, along = display.factor("elevation"), display.factor("chainage")
     lines = reduction.grade_lines
-    if run is None and len(lines):
-        run = str(lines["run"].iloc[0])
-    lines = of_run(lines, run) if run is not None else lines
+    known = set(lines["run"])
+    if known:
+        # a static run has no grade line of its own; the pipe is the same
+        lines = of_run(lines, run if run is not None and run in known else str(lines["run"].iloc[0]))
     layout = reduction.layout
     what = layout["what"].to_numpy(object)
     taps, fittings = layout[what == "tap"], layout[(what == "fitting") | (what == "change of bore")]
@@ -133,10 +137,13 @@ def draw_pipe(
             zorder=4,
             label="fitting",
         )
-        for place, elevation, name in zip(at, high, fittings["name"], strict=True):
+        bore = (fittings["note"] == "change of bore").to_numpy(bool) | (
+            fittings["what"] != "fitting"
+        ).to_numpy(bool)
+        for place, elevation, name, change in zip(at, high, fittings["name"], bore, strict=True):
             names.append(
                 ax.annotate(
-                    shorten(clean(name), 22),
+                    "change of bore" if change else shorten(name, 24),
                     (place, elevation),
                     xytext=(0, 7),
                     textcoords="offset points",
@@ -144,6 +151,14 @@ def draw_pipe(
                     va="bottom",
                     fontsize=size,
                     color=INK,
+                    bbox={
+                        "boxstyle": "square,pad=0.1",
+                        "facecolor": "white",
+                        "edgecolor": "none",
+                        "alpha": 0.8,
+                    },
                 )
             )
-    return PipeArtists(axis, crown, marks, drawn, tuple(names))
+    return PipeArtists(
+        axis, crown, marks, drawn, tuple(names), 1 + max((row or 0 for row in rows), default=0)
+    )

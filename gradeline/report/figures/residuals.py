@@ -87,6 +87,10 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
         [order[name] + spread.get(run, 0.0) for name, run in zip(_names(heads), run_of, strict=True)], float
     )
     y = heads["residual"].to_numpy(float, na_value=np.nan) * display.factor("small head")
+    # static runs from which the offsets were taken lie on the line by construction
+    at_rest = np.array([regimes.get(run) == "static" for run in run_of], bool)
+    if not (np.abs(y[at_rest]) > 1e-6).any():
+        y = np.where(at_rest, np.nan, y)
     used = heads["used"].fillna(False).to_numpy(bool) & np.isfinite(y)
     flags = heads["flag"].to_numpy(object)
     outlying = np.array([flag == "outlier" for flag in flags], bool) & np.isfinite(y)
@@ -152,24 +156,28 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
     ax.vlines(np.arange(len(order) - 1) + 0.5, -limit, limit, color="#d5dadd", linewidth=0.7, zorder=0.8)
     ax.axhline(0, color=MUTED, linewidth=0.9, zorder=2)
     ax.set_ylim(-limit, limit)
-    ax.set_xlim(-0.6, max(len(order) - 0.4, 0.6))
-    step = max(1, -(-len(order) // _NAMED_TAPS))
-    ax.set_xticks(range(0, len(order), step), [shorten(name, 10) for name in labels_in_order[::step]])
-    longest = max((len(name) for name in labels_in_order[::step]), default=0)
-    if longest * min(len(order), _NAMED_TAPS) > 70:
-        ax.tick_params(axis="x", labelrotation=90)
-    ax.grid(visible=False, axis="x")
-    beyond = (np.abs(y[np.isfinite(y)]) > limit).any()
-    ax.set_xlabel(
-        "tap, in order of chainage (within a tap: runs in order)"
-        + ("\nmarks at the edge lie beyond it" if beyond else "")
-    )
+    _tap_axis(ax, labels_in_order, beyond=bool((np.abs(y[np.isfinite(y)]) > limit).any()))
     ax.set_ylabel(display.head("measured − fitted energy head", "small head"))
     handles = [
         artist for artist in (*drawn.values(), left_out, flagged, still, fastest) if artist is not None
     ]
     rows_of_legend = legend_above(ax, handles, columns=4)
     return ResidualArtists(drawn, left_out, flagged, tuple(labels), still, fastest, rows_of_legend)
+
+
+def _tap_axis(ax: Axes, labels: list[str], *, beyond: bool) -> None:
+    """Name the taps along the axis, on end where the names are long."""
+    ax.set_xlim(-0.6, max(len(labels) - 0.4, 0.6))
+    step = max(1, -(-len(labels) // _NAMED_TAPS))
+    names = [shorten(name, 10) for name in labels[::step]]
+    ax.set_xticks(range(0, len(labels), step), names)
+    if sum(max(len(name), 2) for name in names) > 66:
+        ax.tick_params(axis="x", labelrotation=90)
+    ax.grid(visible=False, axis="x")
+    ax.set_xlabel(
+        "tap, in order of chainage (within a tap: runs in order)"
+        + ("\nmarks at the edge lie beyond it" if beyond else "")
+    )
 
 
 def _names(heads: object) -> list[str]:
@@ -186,7 +194,7 @@ def _ring_label(
 ) -> Annotation:
     x, shown = at
     beyond = abs(value) > abs(shown) * 1.0001
-    text = run
+    text = f"run {run}"
     if beyond:
         unit = display.unit("small head")
         text = (
@@ -212,16 +220,18 @@ def _scatter_bands(
     """Two standard deviations of the pooled scatter at each tap, at rest and in the fastest run."""
     heads, scatter = reduction.heads, reduction.scatter
     gauge_of = dict(zip(_names(heads), heads["gauge"].tolist(), strict=True))
-    base = dict(zip(scatter["gauge"], scatter["base"].to_numpy(float), strict=True))
-    surge = dict(zip(scatter["gauge"], scatter["surge"].to_numpy(float), strict=True))
+    row_of = {gauge: _scatter_row(reduction, gauge) for gauge in set(gauge_of.values())}
     velocity = reduction.runs["velocity"].to_numpy(float, na_value=np.nan)
     velocity = velocity[np.isfinite(velocity)]
     head = float(velocity.max()) ** 2 / (2 * reduction.gravity) if velocity.size else 0.0
     scale = 2 * display.factor("small head")
-    low: npt.NDArray[np.float64] = np.array(
-        [base.get(gauge_of.get(name, ""), np.nan) for name in labels], float
-    )
-    moving = np.array([surge.get(gauge_of.get(name, ""), np.nan) for name in labels], float)
+    rows = [row_of.get(gauge_of.get(name)) for name in labels]
+
+    def of_taps(column: str) -> npt.NDArray[np.float64]:
+        values = scatter[column].to_numpy(float, na_value=np.nan)
+        return np.array([np.nan if row is None else values[row] for row in rows], float)
+
+    low, moving = of_taps("base"), of_taps("surge")
     if not np.isfinite(low).any():
         return None, None, 0.0
     high = scale * np.hypot(low, np.nan_to_num(moving) * head)
@@ -239,3 +249,14 @@ def _scatter_bands(
     )
     still = band(low, 0.30, "±2 scatter, at rest" if fastest is not None else "±2 scatter")
     return still, fastest, float(np.nanmax(high))
+
+
+def _scatter_row(reduction: Reduction, gauge: object) -> int | None:
+    """The row of the scatter table for a gauge: by its name, by its kind, or the only one."""
+    names = reduction.scatter["gauge"].tolist()
+    layout = reduction.layout
+    kinds = layout["note"][((layout["what"] == "gauge") & (layout["name"] == gauge)).to_numpy(bool)].tolist()
+    for name in (gauge, *kinds):
+        if name in names:
+            return names.index(name)
+    return 0 if len(names) == 1 else None
