@@ -206,6 +206,21 @@ def test_log_axes_always_have_ticks_enough(low: float, high: float) -> None:
     assert low <= ticks[0] < ticks[-1] <= high
 
 
+def test_labels_of_flagged_neighbours_do_not_cover_each_other(ax, bench: Reduction) -> None:
+    heads = bench.heads.copy()
+    for run, tap in (("R5", "T3"), ("R6", "T3"), ("R8", "T4"), ("R5", "T10"), ("R6", "T10")):
+        row = (heads["run"] == run) & (heads["tap"] == tap)
+        heads.loc[row, ["residual", "flag", "used"]] = [0.02, "outlier", False]
+    drawn = draw_residuals(ax, dataclasses.replace(bench, heads=heads))
+    renderer = ax.figure.canvas.get_renderer()
+    boxes = [label.get_window_extent(renderer) for label in drawn.labels]
+    assert len(boxes) == 6
+    for n, one in enumerate(boxes):
+        assert one.x0 >= ax.bbox.x0
+        assert one.x1 <= ax.bbox.x1
+        assert not [other for other in boxes[:n] if one.overlaps(other)]
+
+
 def test_drawing_leaves_the_users_settings_alone(bench: Reduction) -> None:
     before = dict(mpl.rcParams)
     with mpl.rc_context({"font.size": 22, "axes.grid": False}):

@@ -239,7 +239,7 @@ def draw_grade_lines(
         if pipe is not None:
             handles += [pipe.axis, pipe.fittings]
         rows = _furnish(
-            ax, display, [artist for artist in handles if artist is not None], flowing=_flows(reduction, run)
+            ax, display, [artist for artist in handles if artist is not None], flowing=not at_rest
         )
     return GradeLineArtists(
         hgl, egl, band, below, drawn["used"], drawn["left_out"], drawn["flagged"], tuple(labels), pipe, rows

@@ -14,7 +14,7 @@ from matplotlib.text import Text
 
 from gradeline.quantities.printing import SI_DISPLAY, Display
 from gradeline.reduction.tables import Reduction
-from gradeline.report.figures.style import COLOURS, INK, rows_for_labels, shorten
+from gradeline.report.figures.style import COLOURS, INK, rows_for_labels, short_names, shorten
 
 __all__ = ["Array", "PipeArtists", "column", "draw_pipe", "of_run"]
 
@@ -107,7 +107,7 @@ def draw_pipe(
     width = ax.bbox.width * 72 / ax.figure.dpi
     size = 8.0
     names: list[Text] = []
-    labels = [shorten(name, 12) for name in taps["name"]]
+    labels = short_names(taps["name"].tolist(), 10)
     rows = rows_for_labels(at, labels, width=width, low=limits[0], high=limits[1], size=size, rows=2)
     for place, elevation, label, row in zip(at, high, labels, rows, strict=True):
         if row is not None and np.isfinite(elevation):

@@ -20,6 +20,7 @@ from gradeline.report.figures.style import (
     REGIME_COLOURS,
     REGIME_MARKERS,
     legend_above,
+    short_names,
     shorten,
 )
 
@@ -145,12 +146,21 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
             zorder=4,
         )
         rows = np.flatnonzero(outlying)
-        for n, row in enumerate(rows[:_NAMED_RINGS]):
+        named: list[tuple[float, bool, int]] = []
+        for row in rows[:_NAMED_RINGS]:
             at = (float(x[row]), float(shown[row]))
-            to_right = x[row] < 0.7 * len(order)
+            # a label goes a line further in where a neighbour's stands on the same side
+            taken = {
+                level
+                for place, up, level in named
+                if up == (y[row] > 0) and abs(place - at[0]) < 0.4 * len(order)
+            }
+            level = min(set(range(_NAMED_RINGS)) - taken)
+            named.append((at[0], bool(y[row] > 0), level))
+            to_right = x[row] < 0.6 * len(order)
             labels.append(
                 _ring_label(
-                    ax, shorten(run_of[row], 16), at, y[row], row=n, to_right=to_right, display=display
+                    ax, shorten(run_of[row], 16), at, y[row], level=level, to_right=to_right, display=display
                 )
             )
     ax.vlines(np.arange(len(order) - 1) + 0.5, -limit, limit, color="#d5dadd", linewidth=0.7, zorder=0.8)
@@ -169,7 +179,7 @@ def _tap_axis(ax: Axes, labels: list[str], *, beyond: bool) -> None:
     """Name the taps along the axis, on end where the names are long."""
     ax.set_xlim(-0.6, max(len(labels) - 0.4, 0.6))
     step = max(1, -(-len(labels) // _NAMED_TAPS))
-    names = [shorten(name, 10) for name in labels[::step]]
+    names = short_names(labels, 10)[::step]
     ax.set_xticks(range(0, len(labels), step), names)
     if sum(max(len(name), 2) for name in names) > 66:
         ax.tick_params(axis="x", labelrotation=90)
@@ -190,20 +200,18 @@ def _names(heads: object) -> list[str]:
 
 
 def _ring_label(
-    ax: Axes, run: str, at: tuple[float, float], value: float, *, row: int, to_right: bool, display: Display
+    ax: Axes, run: str, at: tuple[float, float], value: float, *, level: int, to_right: bool, display: Display
 ) -> Annotation:
     x, shown = at
     beyond = abs(value) > abs(shown) * 1.0001
     text = f"run {run}"
     if beyond:
         unit = display.unit("small head")
-        text = (
-            f"{run}: {'+' if value > 0 else ''}{format_number(value, 3)} {unit} {'↑' if value > 0 else '↓'}"
-        )
+        text = f"run {run}: {'+' if value > 0 else ''}{format_number(value, 3)} {unit} {'↑' if value > 0 else '↓'}"
     return ax.annotate(
         text,
         (x, shown),
-        xytext=(9 if to_right else -9, 0 if not beyond else (-9 * (row % 3)) * (1 if value > 0 else -1)),
+        xytext=(9 if to_right else -9, 0 if not beyond else (-11 * level) * (1 if value > 0 else -1)),
         textcoords="offset points",
         ha="left" if to_right else "right",
         va="center",

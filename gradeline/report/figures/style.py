@@ -25,6 +25,7 @@ __all__ = [
     "log_ticks",
     "one_two_five",
     "rows_for_labels",
+    "short_names",
     "shorten",
     "styled",
 ]
@@ -124,6 +125,27 @@ def shorten(text: object, length: int) -> str:
     """
     plain = clean(text)
     return plain if len(plain) <= length else plain[: length - 1].rstrip() + "…"
+
+
+def short_names(names: Sequence[str], length: int) -> list[str]:
+    """Return names of at most `length` letters, first by dropping the words that all of them share.
+
+    Examples
+    --------
+    >>> short_names(["chamber 7 east", "chamber 12 east"], 8), short_names(["T1", "T2"], 8)
+    (['7', '12'], ['T1', 'T2'])
+    """
+    plain = [clean(name) for name in names]
+    if len(plain) > 1 and max(map(len, plain)) > length:
+        words = [name.split() for name in plain]
+        fewest = min(map(len, words))
+        front = back = 0
+        while front < fewest - 1 and len({one[front] for one in words}) == 1:
+            front += 1
+        while back < fewest - 1 - front and len({one[-1 - back] for one in words}) == 1:
+            back += 1
+        plain = [" ".join(one[front : len(one) - back]) for one in words]
+    return [shorten(name, length) for name in plain]
 
 
 def one_two_five(low: float, high: float) -> list[float]:
