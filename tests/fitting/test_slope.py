@@ -208,3 +208,15 @@ def test_all_runs_at_once_are_the_runs_one_by_one():
         np.sqrt(np.diag(covariance)),
         rtol=1e-9,
     )
+
+
+def test_runs_with_different_gaps_never_share_a_projector():
+    """17 taps: √2 + √8 = √18, so sums of square roots of whole numbers do not tell these gaps apart."""
+    x = np.arange(17.0)
+    design = np.column_stack([np.ones(17), -x])
+    y = np.vstack([5.0 - 0.1 * x] * 2)
+    y[0, [0, 1, 6]] = np.nan
+    y[1, [1, 16]] = np.nan
+    fits = fit(y, design)
+    assert fits.dof.tolist() == [12, 13]
+    np.testing.assert_allclose(fits.parameters, [[5.0, 0.1]] * 2, atol=1e-12)
