@@ -15,7 +15,15 @@ Array = NDArray[np.float64]
 
 @dataclass(frozen=True)
 class ExponentFit:
-    """The exponent n, its standard uncertainty and interval, dimensionless, and the runs that entered."""
+    """The exponent n of S proportional to V^n.
+
+    Parameters
+    ----------
+    exponent, u, low, high : float
+        n, its standard uncertainty and its interval, dimensionless; NaN where the runs do not tell it.
+    runs : int
+        Runs that entered.
+    """
 
     exponent: float
     u: float

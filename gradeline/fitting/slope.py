@@ -37,9 +37,10 @@ class Projectors:
     gain : (U, p, n) array
         Estimates from observations, θ = gain @ y; unit of θ per m.
     covariance : (U, p, p) array
-        Covariance of θ relative to `scale` when the stated variances are the true ones.
+        Covariance of θ for unit `scale` when the variances are the true ones, in units of θ²/m².
     weight : (U, n, n) array
-        Q = W − W A (A'WA)⁺ A'W with W the inverse covariance, relative: y'Qy is the weighted sum of squares.
+        Q = W − W A (A'WA)⁺ A'W with W the inverse covariance for unit `scale`, dimensionless: y'Qy / scale is the
+        weighted sum of squares.
     estimable : (U, p) bool array
         Whether the pattern determines each parameter.
     used : (U, n) bool array

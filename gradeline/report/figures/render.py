@@ -181,7 +181,7 @@ def _render(
         figure.set_dpi(_DPI)
         canvas = FigureCanvasAgg(figure)
         canvas.print_png(  # type: ignore[no-untyped-call]
-            as_png, metadata={"Software": None}, pil_kwargs={"compress_level": 3}
+            as_png, metadata={"Software": None}, pil_kwargs={"compress_level": 1}
         )
     return Picture(name, title, alt, group, as_svg.getvalue(), as_png.getvalue())
 

@@ -79,6 +79,7 @@ RC: dict[str, Any] = {
     "path.simplify": True,
     "svg.fonttype": "none",
     "text.color": INK,
+    "text.hinting": "none",
     "text.parse_math": False,
     "xtick.color": MUTED,
     "xtick.labelcolor": INK,
