@@ -122,7 +122,7 @@ def _formats(value: str) -> str:
 
 
 @app.command(short_help="Reduce surveys and write their reports.")
-def reduce(  # noqa: PLR0917 (each is an option of the command line)
+def reduce(
     surveys: Annotated[list[Path], typer.Argument(metavar="SURVEY...", help="Folders of surveys.")],
     out: Annotated[
         Path | None,

@@ -11,6 +11,7 @@ from __future__ import annotations
 import itertools
 from dataclasses import dataclass
 from functools import lru_cache
+from importlib import resources
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,7 +19,16 @@ from numpy.typing import NDArray
 from gradeline.fitting.outliers import MOST_OUTLIERS, most_removable, subset_falls, trimming
 from gradeline.fitting.slope import fit_lines, project
 
-__all__ = ["FALSE_ALARM", "MANY_RUNS", "NullRuns", "critical_falls", "null_runs"]
+__all__ = [
+    "FALSE_ALARM",
+    "MANY_RUNS",
+    "TABLED_RUNS",
+    "NullRuns",
+    "critical_falls",
+    "null_runs",
+    "scale_moments",
+    "simulated_critical_falls",
+]
 
 Array = NDArray[np.float64]
 
@@ -26,6 +36,8 @@ Array = NDArray[np.float64]
 FALSE_ALARM = 0.01
 #: From so many runs on, the pooled scatter counts as known.
 MANY_RUNS = 50
+#: Numbers of runs for which critical values are tabled; between them they go as 1/runs.
+TABLED_RUNS = (1, 2, 3, 4, 5, 6, 8, 10, 12, 15, 20, 30, 50)
 _SEED = 20260506
 _GROSS = (15.0, 60.0)
 
@@ -66,8 +78,8 @@ def _typical_design(n: int, p: int) -> Array:
     return np.column_stack([np.ones(n), *passed])[:, :p]
 
 
-@lru_cache(maxsize=128)
-def null_runs(observations: int, parameters: int) -> NullRuns:
+@lru_cache(maxsize=8)
+def null_runs(observations: int, parameters: int, count: int | None = None) -> NullRuns:
     """Simulate the search on runs of equal variance with evenly spaced taps.
 
     Parameters
@@ -76,6 +88,8 @@ def null_runs(observations: int, parameters: int) -> NullRuns:
         Readings of a run, dimensionless count.
     parameters : int
         Free parameters of its line, dimensionless count.
+    count : int, optional
+        Runs to simulate, dimensionless; 40,000, or 8,000 of more than 14 observations, when left out.
 
     Returns
     -------
@@ -89,7 +103,8 @@ def null_runs(observations: int, parameters: int) -> NullRuns:
     True
     """
     most = int(most_removable(observations, parameters))
-    count = 40_000 if observations <= 14 else 8_000
+    if count is None:
+        count = 40_000 if observations <= 14 else 8_000
     rng = np.random.default_rng([_SEED, observations, parameters])
     design = _typical_design(observations, parameters)
     used = np.ones((1, observations), dtype=bool)
@@ -111,6 +126,51 @@ def null_runs(observations: int, parameters: int) -> NullRuns:
         trimmed[bad] = np.maximum(fits.sum_of_squares - falls[:, int(trimming(most)) - 1], 0.0)
         added[bad] = np.diff(falls, axis=1, prepend=0.0).T
     return NullRuns(trimmed, added)
+
+
+@lru_cache(maxsize=1)
+def _tables() -> tuple[dict[tuple[int, int], tuple[float, float]], dict[tuple[int, ...], Array]]:
+    """Simulated once and kept: (mean and freedom of the trimmed sums, critical values over `TABLED_RUNS`)."""
+    folder = resources.files(__package__) / "tables"
+    with (folder / "scale_moments.csv").open(encoding="utf-8") as file:
+        rows = np.loadtxt(file, delimiter=",", skiprows=1)
+    moments = {(int(n), int(p)): (float(mean), float(freedom)) for n, p, mean, freedom in rows}
+    with (folder / "critical_falls.csv").open(encoding="utf-8") as file:
+        rows = np.loadtxt(file, delimiter=",", skiprows=1)
+    critical = {}
+    for key in np.unique(rows[:, :4], axis=0):
+        mine = rows[(rows[:, :4] == key).all(axis=1)]
+        critical[tuple(int(part) for part in key)] = mine[np.argsort(mine[:, 4]), 4:]
+    return moments, critical
+
+
+def scale_moments(observations: int, parameters: int) -> tuple[float, float]:
+    """Return mean and freedom of a sound run's trimmed sum of squares.
+
+    Parameters
+    ----------
+    observations : int
+        Readings of a run, dimensionless count.
+    parameters : int
+        Free parameters of its line, dimensionless count.
+
+    Returns
+    -------
+    tuple of float
+        The mean for unit variance, and the degrees of freedom of the chi-square with the same relative spread,
+        dimensionless: from the table, or simulated for a shape that is not in it.
+
+    Examples
+    --------
+    >>> mean, freedom = scale_moments(10, 2)
+    >>> 2.2 < mean < 2.5, 4.5 < freedom < 5.5
+    (True, True)
+    """
+    tabled = _tables()[0].get((observations, parameters))
+    if tabled is not None:
+        return tabled
+    null = null_runs(observations, parameters)
+    return null.expected, null.shape
 
 
 @lru_cache(maxsize=512)
@@ -139,15 +199,73 @@ def critical_falls(
 
     Notes
     -----
+    From a table that `simulated_critical_falls` made (``tests/calibration/make_tables.py``), between its numbers of
+    runs by 1/runs; simulated on the spot for a shape of run that is not in it.
+
+    Examples
+    --------
+    >>> [round(value) for value in critical_falls(10, 2, 1000, stated=False, independent=True)]
+    [11, 10, 10]
+    """
+    rows = _tables()[1].get((observations, parameters, int(stated), int(independent)))
+    if rows is None:
+        return simulated_critical_falls(
+            observations, parameters, runs, stated=stated, independent=independent
+        )
+    # 0 stands for runs so many that the scatter is known.
+    inverse = np.where(rows[:, 0] > 0, 1.0 / np.maximum(rows[:, 0], 1.0), 0.0)
+    order = np.argsort(inverse)
+    at = 0.0 if runs > MANY_RUNS else 1.0 / runs
+    first, second, third = (
+        float(np.interp(at, inverse[order], column[order])) if np.isfinite(column).all() else float("inf")
+        for column in rows[:, 1:].T
+    )
+    return first, second, third
+
+
+def simulated_critical_falls(
+    observations: int,
+    parameters: int,
+    runs: int,
+    *,
+    stated: bool,
+    independent: bool,
+    count: int | None = None,
+) -> tuple[float, float, float]:
+    """Simulate the critical value of the added fall for the first, second and third reading.
+
+    Parameters
+    ----------
+    observations : int
+        Readings of a run, dimensionless count.
+    parameters : int
+        Free parameters of its line, dimensionless count.
+    runs : int
+        Runs over which the scatter is pooled, dimensionless count.
+    stated : bool
+        Whether a stated reading uncertainty is a floor under the scatter.
+    independent : bool
+        Whether a run is judged by the scatter of the other runs alone, their outliers removed.
+    count : int, optional
+        Runs to simulate, dimensionless, as in `null_runs`.
+
+    Returns
+    -------
+    tuple of float
+        In units of σ², dimensionless; infinite where so many readings may not be removed.
+
+    Notes
+    -----
     The scale is the one that the run would be judged by: the mean trimmed sum of squares over the runs, the run with
     the outliers among them, or, independent of it, the chi-square of the other runs' degrees of freedom.
 
     Examples
     --------
-    >>> [round(value) for value in critical_falls(10, 2, 1000, stated=False, independent=True)]
-    [11, 11, 10]
+    >>> first, _, _ = simulated_critical_falls(8, 2, 1000, stated=False, independent=True, count=2000)
+    >>> 8.0 < first < 13.0
+    True
     """
-    null = null_runs(observations, parameters)
+    null = null_runs(observations, parameters, count)
     most = int(most_removable(observations, parameters))
     critical = [np.inf] * MOST_OUTLIERS
     rng = np.random.default_rng([_SEED, observations, parameters, runs, stated, independent])

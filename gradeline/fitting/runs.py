@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gradeline.fitting.misfit import SharedMisfit, shared_misfit
-from gradeline.fitting.null import MANY_RUNS, critical_falls, null_runs
+from gradeline.fitting.null import MANY_RUNS, critical_falls, scale_moments
 from gradeline.fitting.outliers import (
     MOST_OUTLIERS,
     deletion_residuals,
@@ -347,9 +347,9 @@ def _pooled_scatter(observations: Array, known: Mask, model: Model) -> tuple[Sca
             lines.weighted_residuals[runs], shared.weight[pattern], shared.used[pattern], int(cut)
         )
         removed[runs[:, None], best.members[:, cut - 1, :cut]] = True
-        null = null_runs(int(counts[pattern]), int(shared.rank[pattern]))
-        ratio[runs] = null.expected / (counts[pattern] - shared.rank[pattern] - cut)
-        shape[runs] = null.shape
+        expected, freedom = scale_moments(int(counts[pattern]), int(shared.rank[pattern]))
+        ratio[runs] = expected / (counts[pattern] - shared.rank[pattern] - cut)
+        shape[runs] = freedom
     trimmed = _fit(y, used & ~removed, variance, plain) if removed.any() else lines
     return _by_kind(trimmed, used & ~removed, variance, ratio, shape, part)
 

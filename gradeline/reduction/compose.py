@@ -111,6 +111,8 @@ def reduce(
         budget=tabulate.frame("budget", {name: [] for name in RESULT_TABLES["budget"]}),
         grade_lines=grade_lines,
         layout=tabulate.layout_table(survey, line),
+        laminar=tabulate.laminar_table(survey, flowing, friction),
+        reading_units=tabulate.reading_unit_table(survey),
         exponents=tabulate.exponent_table(survey, flowing, friction, level=level),
         scatter=tabulate.scatter_table(survey, flowing, stated_floor(survey, corrections)),
         bore_sensitivity=tabulate.bore_table(walls),

@@ -128,11 +128,10 @@ def _laminar(survey: Survey, flowing: Flowing, friction: Friction) -> list[_Flag
     """Laminar runs whose f Re / 64 is not 1 within its uncertainty: a check of the bore's fourth power."""
     found = []
     for k, reach in enumerate(survey.reaches):
-        mine = np.flatnonzero((friction.regime[:, k] == "laminar") & np.isfinite(friction.factor_u[:, k]))
+        mine = np.flatnonzero(np.isfinite(friction.laminar_ratio_u[:, k]))
         if not len(mine):
             continue
-        ratio = friction.factor[mine, k] * flowing.reynolds[mine, k] / 64
-        u = friction.factor_u[mine, k] / friction.factor[mine, k] * ratio
+        ratio, u = friction.laminar_ratio[mine, k], friction.laminar_ratio_u[mine, k]
         weight = 1 / u**2 / (1 / u**2).sum()
         # Shared errors do not average out: the mean is known no better than the mean of the uncertainties.
         mean, spread = float(weight @ ratio), float(weight @ u)

@@ -36,6 +36,8 @@ class Friction:
         f, dimensionless.
     roughness_signed, roughness_low, roughness_high : array
         ε of the run alone, m; turbulent runs only. The signed value may be negative.
+    laminar_ratio, laminar_ratio_u : array
+        f Re / 64 of laminar runs, dimensionless: 1 for the true bore (its fourth power) and flow.
     regime : array of str
         Of each run and reach.
     """
@@ -53,6 +55,8 @@ class Friction:
     roughness_signed: Array
     roughness_low: Array
     roughness_high: Array
+    laminar_ratio: Array
+    laminar_ratio_u: Array
     regime: NDArray[np.str_]
 
 
@@ -112,6 +116,9 @@ def friction_of(
     low, high = _roughness_interval(
         line, flowing, factor, signed, scatter / safe**2, effect, own, factor_times, turbulent
     )
+    ratio = np.where(kind == "laminar", factor * reynolds / 64.0, np.nan)
+    # f Re goes as D⁴ g S / (Q ν).
+    drag = effect + _reynolds_effects(flowing, line)
     return Friction(
         slope=slope,
         slope_u=total,
@@ -126,6 +133,9 @@ def friction_of(
         roughness_signed=signed,
         roughness_low=low,
         roughness_high=high,
+        laminar_ratio=ratio,
+        laminar_ratio_u=ratio
+        * np.sqrt(scatter / safe**2 + (own + flowing.flow_u[:, None]) ** 2 + _squared(drag)),
         regime=kind,
     )
 
@@ -157,6 +167,16 @@ def _factor_effects(flowing: Flowing, slope: Array) -> Array:
     return np.asarray(effect)
 
 
+def _reynolds_effects(flowing: Flowing, line: Line) -> Array:
+    """Change of ln Re with each shared input (F, K, q): Re goes as Q / (D ν)."""
+    effect = np.zeros((*flowing.reynolds.shape, len(flowing.inputs)))
+    for q, one in enumerate(flowing.inputs):
+        effect[:, :, q] += one.flow - (np.zeros(len(line.diameter)) if one.diameter is None else one.diameter)
+        if one.viscosity is not None:
+            effect[:, :, q] -= one.viscosity[:, None]
+    return effect
+
+
 def _roughness_interval(
     line: Line,
     flowing: Flowing,
@@ -173,17 +193,13 @@ def _roughness_interval(
     at = np.where(turbulent, np.maximum(np.nan_to_num(signed), 0.0), 0.0) / line.diameter
     _, by_reynolds, by_roughness = colebrook_white_sensitivities(reynolds, np.clip(at, 0.0, 0.1))
     relative = by_roughness * at
-    bore = [np.zeros(len(line.diameter)) if one.diameter is None else one.diameter for one in flowing.inputs]
-    viscosity = [
-        np.zeros(len(reynolds)) if one.viscosity is None else one.viscosity for one in flowing.inputs
-    ]
-    flow = np.array([one.flow for one in flowing.inputs])
     if flowing.inputs:
         # At a given flow Re falls with the bore; ε/D does too.
-        along = by_reynolds[:, :, None] * (
-            flow - np.stack(bore, axis=1) - np.stack(viscosity, axis=1)[:, None, :]
-        ) - relative[:, :, None] * np.stack(bore, axis=1)
-        effect = effect - along
+        bore = [
+            np.zeros(len(line.diameter)) if one.diameter is None else one.diameter for one in flowing.inputs
+        ]
+        along = by_reynolds[:, :, None] * _reynolds_effects(flowing, line)
+        effect = effect - along + relative[:, :, None] * np.stack(bore, axis=1)
     rest = own - by_reynolds * flowing.flow_u[:, None]
     u = np.sqrt(scatter + rest**2 + _squared(effect))
     low = relative_roughness(np.where(turbulent, factor * np.exp(-times * u), 1.0), reynolds) * line.diameter

@@ -160,6 +160,10 @@ DRAWING_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
         },
         # taps in order, with the pipe's axis and where their gauge refers
         "layout": {"what": _TEXT, "name": _TEXT, "chainage": _M, "elevation": _M, "note": _TEXT},
+        # f Re / 64 of the laminar runs: 1 for the true bore and flow
+        "laminar": {"run": _TEXT, "reach": _TEXT, "ratio": _NUMBER, "ratio_u": _NUMBER},
+        # the unit in which each column of readings was read, and how many SI units it has
+        "reading_units": {"tap": _TEXT, "gauge": _TEXT, "kind": _TEXT, "unit": _TEXT, "si_per_unit": _NUMBER},
         # S proportional to V^n, per reach and regime
         "exponents": {
             "reach": _TEXT,
@@ -205,7 +209,7 @@ class Reduction:
         Every default and choice made; what a reader must know.
     reaches, runs, walls, fittings, taps, heads, flags, budget : DataFrame
         The tables of `RESULT_TABLES`, with exactly those columns.
-    grade_lines, layout, exponents, scatter, bore_sensitivity : DataFrame
+    grade_lines, layout, laminar, reading_units, exponents, scatter, bore_sensitivity : DataFrame
         The tables of `DRAWING_TABLES`.
     level : float
         Coverage of the intervals, 0.95 unless asked otherwise.
@@ -228,6 +232,8 @@ class Reduction:
     budget: pd.DataFrame
     grade_lines: pd.DataFrame
     layout: pd.DataFrame
+    laminar: pd.DataFrame
+    reading_units: pd.DataFrame
     exponents: pd.DataFrame
     scatter: pd.DataFrame
     bore_sensitivity: pd.DataFrame

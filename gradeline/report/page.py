@@ -132,7 +132,7 @@ def _tables(reduction: Reduction, display: Display) -> dict[str, PrintedTable]:
         "runs": run_table(reduction, display, limit=_MOST_ROWS),
         "walls": wall_table(reduction, display),
         "fittings": fitting_table(reduction, display),
-        "flags": flag_table(reduction, display, limit=_MOST_ROWS),
+        "flags": flag_table(reduction, limit=_MOST_ROWS),
         "reaches": reach_table(reduction, display),
         "exponents": exponent_table(reduction),
         "scatter": scatter_table(reduction, display),

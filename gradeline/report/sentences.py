@@ -18,7 +18,7 @@ from gradeline.quantities.printing import (
 )
 from gradeline.reduction.tables import Reduction
 from gradeline.report.printed import known, percent, records
-from gradeline.report.tables import flagged_value, reading_quantity
+from gradeline.report.tables import flagged_value, reading_units
 
 __all__ = ["JUDGEMENT", "Summary", "summarise"]
 
@@ -79,13 +79,13 @@ def summarise(reduction: Reduction, display: Display = SI_DISPLAY) -> Summary:
         _survey(reduction, runs),
         *(_wall(wall, reduction.level, display) for wall in walls if known(wall["roughness"])),
         *_friction(runs),
-        *_laminar(runs),
+        *_laminar(reduction),
         *_exponents(reduction),
         *(_fitting(fitting, reduction.level) for fitting in fittings if known(fitting["loss_coefficient_u"])),
     ]
     look = [
         *_law(walls, flags),
-        *_readings(reduction, flags, display),
+        *_readings(reduction, flags),
         *_runs(flags),
         *_taps(flags),
         *_crown(reduction, display),
@@ -188,21 +188,15 @@ def _friction(runs: Sequence[dict[str, Any]]) -> Iterable[str]:
             yield f"In turbulent flow the Darcy friction factor{where} is {at(own[0])}."
 
 
-def _laminar(runs: Sequence[dict[str, Any]]) -> Iterable[str]:
-    laminar = [row for row in runs if row["regime"] == "laminar" and known(row["friction_factor"])]
-    if not laminar:
+def _laminar(reduction: Reduction) -> Iterable[str]:
+    rows = records(reduction.laminar)
+    if not rows:
         return
-    ratios = [(row["friction_factor"] * row["reynolds"] / 64, row) for row in laminar]
-    # u(f)/f stands for u(f Re)/(f Re): f goes as D⁵/Q² and f·Re as D⁴/Q, so it is rather too wide than too narrow
     texts, off, unknown = [], [], False
-    for ratio, row in ratios:
-        u = (
-            ratio * row["friction_factor_u"] / row["friction_factor"]
-            if known(row["friction_factor_u"])
-            else None
-        )
+    for row in rows:
+        ratio, u = row["ratio"], row["ratio_u"]
         texts.append(f"{rounded(ratio, u)} (run {row['run']})")
-        if u is None:
+        if not known(u):
             unknown = True
             if abs(ratio - 1) > _LAMINAR_ROOM:
                 off.append(str(row["run"]))
@@ -268,11 +262,11 @@ def _law(walls: Sequence[dict[str, Any]], flags: Sequence[dict[str, Any]]) -> It
             yield f"On the misfit of the law: {flag['suggestion']}."
 
 
-def _readings(reduction: Reduction, flags: Sequence[dict[str, Any]], display: Display) -> Iterable[str]:
+def _readings(reduction: Reduction, flags: Sequence[dict[str, Any]]) -> Iterable[str]:
     flagged = [flag for flag in flags if flag["kind"] == "reading"]
     if not flagged:
         return
-    quantities = reading_quantity(reduction)
+    units = reading_units(reduction)
     heads = reduction.heads
     wanted = {(flag["run"], flag["tap"]) for flag in flagged}
     kept = {
@@ -282,7 +276,7 @@ def _readings(reduction: Reduction, flags: Sequence[dict[str, Any]], display: Di
     }
     flagged.sort(key=lambda flag: -abs(flag["score"]) if known(flag["score"]) else 0.0)
     for flag in flagged[:_MOST_NAMED]:
-        read, expected = (flagged_value(flag, key, quantities, display) for key in ("reading", "expected"))
+        read, expected = (flagged_value(flag, key, units) for key in ("reading", "expected"))
         suggestion = flag["suggestion"] or ""
         fate = (
             "; it was kept in the fit"

@@ -36,7 +36,7 @@ __all__ = [
     "flag_table",
     "flagged_value",
     "reach_table",
-    "reading_quantity",
+    "reading_units",
     "run_table",
     "scatter_table",
     "tap_table",
@@ -288,15 +288,13 @@ def _signed(fraction: float | None) -> str:
     return f"+{text}" if fraction > 0 else text
 
 
-def flag_table(
-    reduction: Reduction, display: Display = SI_DISPLAY, *, limit: int | None = None
-) -> PrintedTable:
+def flag_table(reduction: Reduction, *, limit: int | None = None) -> PrintedTable:
     """Return the flags with what was read and what was expected."""
     rows = records(reduction.flags if limit is None else reduction.flags.iloc[:limit])
-    quantities = reading_quantity(reduction)
+    units = reading_units(reduction)
 
     def reading(key: str) -> Callable[[Row], str]:
-        return lambda row: flagged_value(row, key, quantities, display)
+        return lambda row: flagged_value(row, key, units)
 
     return lay_out(
         "Flags. The score is the studentised residual with the reading itself left out. A flag is a question to the "
@@ -315,41 +313,24 @@ def flag_table(
     )
 
 
-def reading_quantity(reduction: Reduction) -> dict[tuple[str, str], str]:
-    """Return whether each flagged reading, by run and tap, is a pressure or a length (as ``head``).
-
-    A reading in pascals lies about ρg times as far from what was expected as its head from the line; one in metres
-    about as far, or a few times where the tube is inclined.
-    """
-    flags = [row for row in records(reduction.flags) if row["kind"] == "reading"]
-    wanted = {(row["run"], row["tap"]): row for row in flags}
-    found: dict[tuple[str, str], str] = {}
-    if not wanted:
-        return found
-    heads = reduction.heads
-    for run, tap, gauge, residual in zip(
-        heads["run"], heads["tap"], heads["gauge"], heads["residual"], strict=True
-    ):
-        row = wanted.get((run, tap)) or wanted.get((run, gauge))
-        if row is None or not known(row["reading"]) or not known(row["expected"]) or not residual:
-            continue
-        ratio = abs((row["reading"] - row["expected"]) / residual)
-        if math.isfinite(ratio):
-            found[row["run"], row["tap"]] = "pressure" if ratio > 300 else "head"
-    return found
+def reading_units(reduction: Reduction) -> dict[str, tuple[str, float]]:
+    """Return the unit of each tap's readings as it was read, and how many SI units it has."""
+    table = reduction.reading_units
+    return {
+        tap: (unit, scale)
+        for tap, unit, scale in zip(table["tap"], table["unit"], table["si_per_unit"], strict=True)
+    }
 
 
-def flagged_value(
-    row: Row, key: str, quantities: Mapping[tuple[str, str], str], display: Display = SI_DISPLAY
-) -> str:
-    """Print the reading or what was expected of a flag, with its unit where that is known."""
+def flagged_value(row: Row, key: str, units: Mapping[str, tuple[str, float]]) -> str:
+    """Print the reading or what was expected of a flag, in the unit in which it was read."""
     value = row[key]
-    quantity = quantities.get((row["run"], row["tap"]))
-    if quantity is None:
+    if row["tap"] not in units or not known(value):
         return format_number(value)
+    unit, scale = units[row["tap"]]
     other = row["expected" if key == "reading" else "reading"]
     digits = 4
-    if known(value) and known(other) and value and value != other:
+    if known(other) and value and value != other:
         # enough digits to tell the two apart
         digits = min(max(4, math.ceil(math.log10(abs(value / (value - other)))) + 2), 8)
-    return display.text(quantity, value, digits=digits, unit=True)
+    return f"{format_number(value / scale, digits)} {unit}"

@@ -57,7 +57,7 @@ def terminal_summary(reduction: Reduction, display: Display = SI_DISPLAY) -> str
         blocks.append(_table("Fittings", fitting_table(reduction, display), set()))
     if len(reduction.flags):
         flags = len(reduction.flags)
-        table = flag_table(reduction, display, limit=_MOST_FLAGS)
+        table = flag_table(reduction, limit=_MOST_FLAGS)
         blocks.append(_table("Flags", table, {"suggestion"}, "flags.csv", flags - _MOST_FLAGS))
     if reduction.cautions:
         shown = list(reduction.cautions[:_MOST_CAUTIONS])

@@ -91,9 +91,7 @@ def two_bores_case(name: str, taps: int = TAPS) -> Case:
     return Case(name, truth @ design.T, np.full((RUNS, taps), SIGMA), told)
 
 
-def after_static_run(
-    rng: np.random.Generator, heads: np.ndarray, told: Model
-) -> tuple[np.ndarray, Model]:
+def after_static_run(rng: np.random.Generator, heads: np.ndarray, told: Model) -> tuple[np.ndarray, Model]:
     """Take a static reading off all runs: its own error is then common to them, and the fit is told of it."""
     static = SIGMA * rng.standard_normal(TAPS)
     heads = heads - (static - static.mean())
@@ -105,9 +103,7 @@ def after_static_run(
     return heads, replace(told, persistent=np.broadcast_to(persistent, heads.shape))
 
 
-def taps_out_of_place(
-    rng: np.random.Generator, heads: np.ndarray, told: Model
-) -> tuple[np.ndarray, Model]:
+def taps_out_of_place(rng: np.random.Generator, heads: np.ndarray, told: Model) -> tuple[np.ndarray, Model]:
     """Chainages wrong by 2 mm, and stated so: an error that grows with S and is the same in all runs."""
     slope = (heads[:, :1] - heads[:, -1:]) / (CHAINAGE[-1] - CHAINAGE[0])
     heads = heads - slope * 2e-3 * rng.standard_normal(TAPS)
@@ -196,9 +192,7 @@ CASES = (
         deviation=np.where(np.arange(TAPS) % 2, 3e-3, 1e-3),
         kind=np.arange(TAPS) % 2,
     ),
-    line_case(
-        "one kind, stated 0.5 to 3 mm by tap", stated=True, deviation=np.linspace(0.5e-3, 3e-3, TAPS)
-    ),
+    line_case("one kind, stated 0.5 to 3 mm by tap", stated=True, deviation=np.linspace(0.5e-3, 3e-3, TAPS)),
     two_bores_case("two bores and a fitted K"),
     line_case("two runs", runs=2),
     line_case("four runs", runs=4),

@@ -33,31 +33,28 @@ SMALL = 0.02
 STATED = Uncertainties(reading=READING)
 
 
-def shared(reduction, random):
-    """What the stated input adds to u(S) and u(f)."""
-    with_input, without = reduction.runs, random.runs
-    return (
-        np.sqrt(np.maximum(with_input["slope_u"] ** 2 - with_input["slope_u_random"] ** 2, 0)).to_numpy(float),
-        np.sqrt(
-            np.maximum(with_input["friction_factor_u"] ** 2 - without["friction_factor_u"] ** 2, 0)
-        ).to_numpy(float),
-    )
+def shared(reduction):
+    """What the shared inputs add to u(S)/S and u(f)/f; the scatter of the readings is the same part of both."""
+    runs = reduction.runs
+    random = runs["slope_u_random"] / runs["slope"]
+    parts = (runs["slope_u"] / runs["slope"], runs["friction_factor_u"] / runs["friction_factor"])
+    return tuple(np.sqrt(np.maximum(part**2 - random**2, 0)).to_numpy(float) for part in parts)
 
 
-def hold(survey, stated, shift, *, tolerance=0.01, slope_only=False):
-    """Hold u(S) and u(f) of `stated(survey)` against what `shift` of the stated value by a little does to S and f."""
+def hold(survey, stated, shift, *, tolerance=0.01):
+    """Hold u(S) and u(f) of `stated(survey)` against what a small `shift` of the stated value does to S and f.
+
+    Returns the relative changes for one standard uncertainty.
+    """
     uncertain = stated(survey)
     there = reduce(uncertain)
-    moved = reduce(shift(uncertain, SMALL))
-    change_s = np.abs(moved.runs["slope"] - there.runs["slope"]).to_numpy(float) / SMALL
-    change_f = np.abs(moved.runs["friction_factor"] - there.runs["friction_factor"]).to_numpy(float) / SMALL
-    slope, factor = shared(there, reduce(survey))
-    scale = there.runs["slope"].to_numpy(float)
-    np.testing.assert_allclose(slope / scale, change_s / scale, rtol=tolerance, atol=2e-6)
-    if not slope_only:
-        scale = there.runs["friction_factor"].to_numpy(float)
-        np.testing.assert_allclose(factor / scale, change_f / scale, rtol=tolerance, atol=2e-6)
-    return change_s, change_f, there
+    moved = reduce(shift(uncertain, SMALL)).runs
+    changes = []
+    for column, found in zip(("slope", "friction_factor"), shared(there), strict=True):
+        change = (np.abs(moved[column] / there.runs[column] - 1) / SMALL).to_numpy(float)
+        np.testing.assert_allclose(found, change, rtol=tolerance, atol=2e-6)
+        changes.append(change)
+    return changes
 
 
 def scaled_flow(survey, share):
@@ -66,19 +63,21 @@ def scaled_flow(survey, share):
 
 def test_the_bore_of_a_tube():
     survey, _ = tube(FAST, stated=STATED)
-    _, change_f, there = hold(
+    _, change_f = hold(
         survey,
         lambda s: with_bore(s, 0, TUBE.diameter, 3e-5),
         lambda s, part: with_bore(s, 0, TUBE.diameter + part * 3e-5, 3e-5),
     )
     # f = 2 g D S / V² goes as D⁵ at a given flow
-    expected = 5 * 3e-5 / TUBE.diameter
-    np.testing.assert_allclose(change_f / there.runs["friction_factor"].to_numpy(float), expected, rtol=0.005)
+    np.testing.assert_allclose(change_f, 5 * 3e-5 / TUBE.diameter, rtol=0.005)
 
 
 @pytest.mark.parametrize("place", [0, 1])
 def test_each_bore_of_a_main(place):
-    """A contraction of given K, so that its loss moves with the bores as well."""
+    """A contraction of given K, so that its loss moves with the bores as well.
+
+    First order with α held: that α = 1 + 2.7 f follows the bore too takes off up to a tenth.
+    """
     given = [NominalFitting(430, 0.18, Measured(0.18), change_of_bore=True), NominalFitting(800, 4.0)]
     survey, _ = main(stated=Uncertainties(reading=5e-3), fittings=given)
     bore = survey.reaches[place].diameter.value
@@ -86,25 +85,26 @@ def test_each_bore_of_a_main(place):
         survey,
         lambda s: with_bore(s, place, bore, 5e-4),
         lambda s, part: with_bore(s, place, bore + part * 5e-4, 5e-4),
-        tolerance=0.03,
+        tolerance=0.12,
     )
 
 
 def test_the_calibration_of_the_flow():
     survey, _ = tube(FAST, stated=STATED)
-    _, change_f, there = hold(
+    _, change_f = hold(
         survey, lambda s: with_stated(s, flow_scale=3e-3), lambda s, part: scaled_flow(s, part * 3e-3)
     )
-    np.testing.assert_allclose(change_f / there.runs["friction_factor"].to_numpy(float), 6e-3, rtol=0.005)
+    np.testing.assert_allclose(change_f, 6e-3, rtol=0.005)
 
 
 def test_the_calibration_of_the_flow_over_two_bores():
+    """As for the bores: α is held."""
     survey, _ = main(stated=Uncertainties(reading=5e-3))
     hold(
         survey,
         lambda s: with_stated(s, flow_scale=1e-2),
         lambda s, part: scaled_flow(s, part * 1e-2),
-        tolerance=0.02,
+        tolerance=0.12,
     )
 
 
@@ -123,10 +123,9 @@ def test_the_chainages_of_all_taps_add_up():
     """One uncertainty for every tap: S u(x) at each, independent, so that u(S) = S u(x) / √Σ(x − x̄)² by hand."""
     survey, _ = tube(FAST, stated=STATED)
     there = reduce(with_stated(survey, chainage=1e-3))
-    slope, _ = shared(there, reduce(survey))
+    slope, _ = shared(there)
     x = np.array([tap.chainage for tap in survey.taps])
-    by_hand = there.runs["slope"] * 1e-3 / np.sqrt(((x - x.mean()) ** 2).sum())
-    np.testing.assert_allclose(slope, by_hand.to_numpy(float), rtol=0.005)
+    np.testing.assert_allclose(slope, 1e-3 / np.sqrt(((x - x.mean()) ** 2).sum()), rtol=0.005)
 
 
 @pytest.mark.parametrize("place", [0, 6])
@@ -166,14 +165,13 @@ def test_gravity_in_the_friction_factor():
     def shift(s, part):
         return replace(s, site=Site(gravity=Measured(g * (1 + part * 1e-3), 1e-3 * g)))
 
-    change_s, change_f, there = hold(columns, stated, shift)
-    assert np.abs(change_s).max() < 1e-9
-    np.testing.assert_allclose(change_f / there.runs["friction_factor"].to_numpy(float), 1e-3, rtol=0.005)
+    change_s, change_f = hold(columns, stated, shift)
+    assert change_s.max() < 1e-6
+    np.testing.assert_allclose(change_f, 1e-3, rtol=0.005)
     gauges, _ = hilly(FAST)
-    change_s, _, there = hold(with_stated(gauges, reading_pressure=2.0), stated, shift, slope_only=True)
-    slope = there.runs["slope"].to_numpy(float)
-    # gauges at different heights: the part of the height does not scale with 1/g
-    assert (np.abs(change_s / slope) > 1e-4).all()
+    # of the slowest run: the pressures hold the height of the line, 1e-3 of which is much against its loss of head
+    change_s, _ = hold(with_stated(gauges, reading_pressure=2.0), stated, shift)
+    assert change_s[0] > 0.01
 
 
 def test_the_temperature_at_pressure_gauges():
@@ -219,10 +217,9 @@ def test_the_flow_of_a_run_is_its_own():
     """Over one bore the flow error of a run is felt in f alone, twice: f = 2 g D S / V²."""
     survey, _ = tube(FAST, stated=STATED)
     there = reduce(with_stated(survey, flow=Stated(4e-3, relative=True)))
-    plain = reduce(survey)
-    slope, factor = shared(there, plain)
-    assert (slope < 1e-3 * there.runs["slope_u"]).all()
-    np.testing.assert_allclose(factor / there.runs["friction_factor"].to_numpy(float), 8e-3, rtol=1e-3)
+    slope, factor = shared(there)
+    assert (slope < 1e-6).all()
+    np.testing.assert_allclose(factor, 8e-3, rtol=1e-3)
 
 
 def test_the_flow_of_a_run_over_two_bores():
@@ -283,16 +280,16 @@ def test_the_roughness_of_a_run_follows_its_inputs(what):
         (reduce(side).runs["roughness_signed"].to_numpy(float) for side in sides), key=lambda one: one[0]
     )
     centre = found["roughness"].to_numpy(float)
-    # first order in ln f: the width is held, not each side's curvature
+    # first order in ln f: the width is held, not each side's curvature; t of 32 degrees of freedom, as f has, is 2.04
     width = (found["roughness_high"] - found["roughness_low"]).to_numpy(float)
-    np.testing.assert_allclose(width / centre, (limits[1] - limits[0]) / centre, rtol=0.02)
+    np.testing.assert_allclose(width / centre, (limits[1] - limits[0]) / centre, rtol=0.05)
 
 
-@pytest.mark.parametrize("what", ["bore", "flow scale", "chainage", "flow", "temperature"])
+@pytest.mark.parametrize("what", ["bore", "flow scale", "flow"])
 def test_the_loss_coefficient_of_one_run_follows_its_inputs(what):
     """With one flowing run K is that run's, and its uncertainty what the only uncertain input makes of it."""
     survey, _ = tube(FAST[-1:], stated=Uncertainties(reading=1e-4), fittings=[NominalFitting(2.9, 1.5)])
-    share = {"bore": 3e-5, "flow scale": 3e-3, "chainage": 1e-3, "flow": 4e-3, "temperature": 0.5}[what]
+    share = {"bore": 3e-5, "flow scale": 3e-3, "flow": 4e-3}[what]
     stated, shift = {
         "bore": (
             lambda s: with_bore(s, 0, TUBE.diameter, share),
@@ -300,21 +297,29 @@ def test_the_loss_coefficient_of_one_run_follows_its_inputs(what):
         ),
         "flow scale": (lambda s: with_stated(s, flow_scale=share), scaled_flow),
         "flow": (lambda s: with_stated(s, flow=Stated(share, relative=True)), scaled_flow),
-        "chainage": (
-            lambda s: with_tap(s, 3, chainage_u=share),
-            lambda s, d: with_tap(s, 3, chainage=s.taps[3].chainage + d),
-        ),
-        "temperature": (
-            lambda s: with_stated(s, temperature=share),
-            lambda s, d: with_runs(s, temperature=s.runs["temperature"] + d),
-        ),
     }[what]
     plain, there = reduce(survey).fittings.iloc[0], reduce(stated(survey)).fittings.iloc[0]
     moved = reduce(shift(stated(survey), SMALL * share)).fittings.iloc[0]
     change = abs(moved["loss_coefficient"] - there["loss_coefficient"]) / SMALL
-    # at one chainage uncertain its reading has less weight, and the scatter's share is not that of the plain survey
-    found = np.sqrt(max(there["loss_coefficient_u"] ** 2 - plain["loss_coefficient_u"] ** 2, 0.0))
-    assert found == pytest.approx(change, rel=0.02, abs=0.05 * plain["loss_coefficient_u"])
+    found = np.sqrt(there["loss_coefficient_u"] ** 2 - plain["loss_coefficient_u"] ** 2)
+    assert found == pytest.approx(change, rel=0.01)
+    # K goes with V², so with D⁴ and 1/Q²
+    power = {"bore": 4 / TUBE.diameter, "flow scale": 2, "flow": 2}[what]
+    assert change / there["loss_coefficient"] == pytest.approx(power * share, rel=0.01)
+
+
+def test_the_loss_coefficient_of_one_run_follows_the_chainages():
+    """One uncertainty for all taps: the changes by each tap add up as squares."""
+    survey, _ = tube(FAST[-1:], stated=Uncertainties(reading=1e-4), fittings=[NominalFitting(2.9, 1.5)])
+    uncertain = with_stated(survey, chainage=1e-3)
+    plain, there = reduce(survey).fittings.iloc[0], reduce(uncertain).fittings.iloc[0]
+    changes = [
+        reduce(with_tap(uncertain, i, chainage=tap.chainage + SMALL * 1e-3)).fittings.iloc[0]["loss_coefficient"]
+        - there["loss_coefficient"]
+        for i, tap in enumerate(survey.taps)
+    ]
+    found = np.sqrt(there["loss_coefficient_u"] ** 2 - plain["loss_coefficient_u"] ** 2)
+    assert found == pytest.approx(np.sqrt(np.sum(np.square(changes))) / SMALL, rel=0.01)
 
 
 def test_what_nobody_stated_contributes_nothing():

@@ -303,6 +303,26 @@ def reduction_of(
             }
             for f in fittings
         ],
+        "laminar": [
+            {
+                "run": row["run"],
+                "reach": row["reach"],
+                "ratio": row["friction_factor"] * row["reynolds"] / 64,
+                "ratio_u": row["friction_factor_u"] * row["reynolds"] / 64,
+            }
+            for row in runs
+            if row["regime"] == "laminar"
+        ],
+        "reading_units": [
+            {
+                "tap": t[0],
+                "gauge": gauge,
+                "kind": "pressure gauge" if unit == "pressure" else "piezometer",
+                "unit": "kPa" if unit == "pressure" else "mm",
+                "si_per_unit": 1e3 if unit == "pressure" else 1e-3,
+            }
+            for t in taps
+        ],
         "exponents": exponents,
         "scatter": [{"gauge": gauge, "base": sigma, "surge": 0.002, "stated": NAN, "dof": 61, "note": None}],
         "bore_sensitivity": sensitivity,

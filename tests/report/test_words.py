@@ -15,7 +15,7 @@ from gradeline.reduction.tables import Reduction
 from gradeline.report import summarise, terminal_summary
 from gradeline.report.figures import pictures
 from gradeline.report.page import page
-from gradeline.report.tables import flag_table, reading_quantity, run_table, wall_table
+from gradeline.report.tables import flag_table, reading_units, run_table, wall_table
 
 NO_NUMBER = re.compile(r"\b(nan|inf|none|null|<na>)\b", re.IGNORECASE)
 
@@ -62,9 +62,9 @@ def test_a_given_loss_coefficient_is_not_told_as_found(field: Reduction) -> None
 def test_laminar_runs_check_the_bore(bench: Reduction) -> None:
     assert "f·Re/64" in " ".join(summarise(bench).found)
     assert "no contradiction to the stated bore" in " ".join(summarise(bench).found)
-    runs = bench.runs.copy()
-    runs.loc[runs["run"] == "R3", ["friction_factor", "friction_factor_u"]] = [1.2 * 64 / 1700, 0.0004]
-    text = " ".join(summarise(dataclasses.replace(bench, runs=runs)).found)
+    laminar = bench.laminar.copy()
+    laminar.loc[laminar["run"] == "R3", ["ratio", "ratio_u"]] = [1.2, 0.011]
+    text = " ".join(summarise(dataclasses.replace(bench, laminar=laminar)).found)
     assert "1.200 ± 0.011 (run R3)" in text
     assert (
         "In run R3 that is not 1 within two standard uncertainties: check the bore (it enters as D⁴)" in text
@@ -74,15 +74,18 @@ def test_laminar_runs_check_the_bore(bench: Reduction) -> None:
 def test_a_flagged_reading_is_told_with_what_was_expected(bench: Reduction, field: Reduction) -> None:
     row = bench.flags.iloc[0]
     text = " ".join(summarise(bench).look)
-    assert f"Run R7, tap T4: {row['reading']:.3f} m was read, {row['expected']:.3f} m expected" in text
+    assert (
+        f"Run R7, tap T4: {1e3 * row['reading']:.0f} mm was read, {1e3 * row['expected']:.0f} mm expected"
+        in text
+    )
     assert "it was left out of the fit" in text
     heads = bench.heads.copy()
     heads["used"] = True
     assert "it was kept in the fit" in " ".join(summarise(dataclasses.replace(bench, heads=heads)).look)
     row = field.flags.iloc[0]
     assert f"{row['reading'] / 1e3:.1f} kPa was read" in " ".join(summarise(field).look)
-    assert set(reading_quantity(field).values()) == {"pressure"}
-    assert set(reading_quantity(bench).values()) == {"head"}
+    assert set(reading_units(field).values()) == {("kPa", 1e3)}
+    assert set(reading_units(bench).values()) == {("mm", 1e-3)}
 
 
 def test_runs_off_the_law_and_no_flags(bench: Reduction) -> None:

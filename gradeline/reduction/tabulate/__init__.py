@@ -1,6 +1,12 @@
 """The tables of a reduction, filled from what the fits say."""
 
-from gradeline.reduction.tabulate.drawing import exponent_table, grade_line_table, layout_table
+from gradeline.reduction.tabulate.drawing import (
+    exponent_table,
+    grade_line_table,
+    laminar_table,
+    layout_table,
+    reading_unit_table,
+)
 from gradeline.reduction.tabulate.frames import frame
 from gradeline.reduction.tabulate.readings import head_table, scatter_table, tap_table
 from gradeline.reduction.tabulate.runs import reach_table, run_table
@@ -13,8 +19,10 @@ __all__ = [
     "frame",
     "grade_line_table",
     "head_table",
+    "laminar_table",
     "layout_table",
     "reach_table",
+    "reading_unit_table",
     "run_table",
     "scatter_table",
     "tap_table",

@@ -10,15 +10,16 @@ from numpy.typing import NDArray
 
 from gradeline.fitting.exponent import fit_exponent
 from gradeline.hydraulics.gradelines import grade_lines, stations
+from gradeline.quantities import parse_unit
 from gradeline.reduction.friction import Friction
 from gradeline.reduction.line import Line
 from gradeline.reduction.media import Media
 from gradeline.reduction.runs import Flowing
 from gradeline.reduction.tables import DRAWING_TABLES
 from gradeline.reduction.tabulate.frames import frame
-from gradeline.survey import Survey
+from gradeline.survey import GAUGE_KINDS, Survey
 
-__all__ = ["exponent_table", "grade_line_table", "layout_table"]
+__all__ = ["exponent_table", "grade_line_table", "laminar_table", "layout_table", "reading_unit_table"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -102,6 +103,34 @@ def layout_table(survey: Survey, line: Line) -> pd.DataFrame:
             "note": [row[3] for row in rows],
         },
     )
+
+
+def laminar_table(survey: Survey, flowing: Flowing, friction: Friction) -> pd.DataFrame:
+    """Return f Re / 64 of each laminar run and reach."""
+    at = np.argwhere(np.isfinite(friction.laminar_ratio))
+    names = survey.runs["run"].to_numpy(object)[flowing.rows]
+    return frame(
+        "laminar",
+        {
+            "run": [names[run] for run, _ in at],
+            "reach": [survey.reaches[k].name for _, k in at],
+            "ratio": [friction.laminar_ratio[run, k] for run, k in at],
+            "ratio_u": [friction.laminar_ratio_u[run, k] for run, k in at],
+        },
+    )
+
+
+def reading_unit_table(survey: Survey) -> pd.DataFrame:
+    """Return the unit in which each observation was read: as the file gave it, else SI."""
+    rows: dict[str, list[Any]] = {name: [] for name in DRAWING_TABLES["reading_units"]}
+    for one in survey.observations:
+        kind = survey.gauge(one.gauge).kind
+        dimension = GAUGE_KINDS[kind].reading
+        text = survey.units.get(one.label, "m" if dimension == "length" else "Pa")
+        scale = parse_unit(text, dimension).difference_to_si(1.0)
+        for name, entry in zip(rows, (one.label, one.gauge, kind, text, scale), strict=True):
+            rows[name].append(entry)
+    return frame("reading_units", rows)
 
 
 def exponent_table(survey: Survey, flowing: Flowing, friction: Friction, *, level: float) -> pd.DataFrame:

@@ -68,7 +68,7 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
     ax : Axes
         Where to draw.
     reduction : Reduction
-        Its tables ``heads``, ``runs``, ``scatter`` and ``layout`` are read.
+        Its tables ``heads``, ``runs``, ``scatter`` and ``reading_units`` are read.
     display : Display
         Units of the axes.
 
@@ -262,8 +262,8 @@ def _scatter_bands(
 def _scatter_row(reduction: Reduction, gauge: object) -> int | None:
     """The row of the scatter table for a gauge: by its name, by its kind, or the only one."""
     names = reduction.scatter["gauge"].tolist()
-    layout = reduction.layout
-    kinds = layout["note"][((layout["what"] == "gauge") & (layout["name"] == gauge)).to_numpy(bool)].tolist()
+    units = reduction.reading_units
+    kinds = units["kind"][(units["gauge"] == gauge).to_numpy(bool)].tolist()
     for name in (gauge, *kinds):
         if name in names:
             return names.index(name)

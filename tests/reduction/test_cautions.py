@@ -1,0 +1,132 @@
+"""Cautions stand where they belong, and nowhere else."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from gradeline.reduction import reduce
+from tests.reduction.benches import FAST, TAPS, hilly, main, on_pressure_gauges, tube, with_gauge
+from tests.simulate.surveys import NominalFitting, Uncertainties
+
+HILL = np.array([0.3, 1.2, 2.1, 2.6, 2.0, 1.1, 0.4, -0.3, -0.8, 0.1])
+
+
+def said(reduction, text):
+    return [one for one in reduction.cautions if text in one]
+
+
+def test_a_sound_survey_has_no_caution():
+    for survey, _ in (tube(FAST, sigma=1e-3, seed=4), hilly(FAST), main(sigma=5e-3, seed=2)):
+        assert not reduce(survey).cautions or all("bores" in text for text in reduce(survey).cautions)
+
+
+def test_a_grade_line_below_the_crown_is_told_with_its_runs():
+    """The line's highest point lies 2.6 m over the datum; in the fastest run the head there is made 1 cm lower."""
+    survey, truth = tube(FAST)
+    gauged = on_pressure_gauges(survey, truth, HILL, np.zeros(10), lift=0.0)
+    # the piezometric heads in the middle of the line, by the truth
+    crown = HILL + 0.02664 / 2
+    lowest = (truth.heads - crown).min(axis=1)
+    raised = -lowest + 0.05
+    raised[1] = -lowest[1] - 0.01
+    pressure = gauged.readings + 999.0 * 9.80665 * raised[:, None]
+    found = reduce(replace(gauged, readings=pressure))
+    cautions = said(found, "falls below the pipe's crown")
+    assert len(cautions) == 1
+    assert "crown in run 2: the pressure there is below that of the atmosphere" in cautions[0]
+    safe = gauged.readings + 999.0 * 9.80665 * (-lowest + 0.05)[:, None]
+    assert not said(reduce(replace(gauged, readings=safe)), "crown")
+
+
+def test_without_elevations_nothing_is_said_of_the_pressure():
+    """Columns below a pipe whose axis nobody gave: all elevations are 0, and that says nothing."""
+    survey, _ = tube(FAST)
+    low = replace(survey, readings=survey.readings - 5.0)
+    assert not said(reduce(low), "crown")
+
+
+def test_heads_that_rise_are_told():
+    """The columns of the taps the other way round, as where chainages were counted from the wrong end."""
+    survey, _ = tube(FAST)
+    turned = survey.readings.copy()
+    turned[:] = survey.readings.to_numpy()[:, ::-1]
+    found = reduce(replace(survey, readings=turned))
+    assert said(found, "In 4 of 4 runs the head rises downstream in reach 'reach 1'")
+    assert found.runs["friction_factor"].isna().all()
+    assert (found.runs["reason"] == "no loss of head could be measured: S is not above zero").all()
+    assert not said(reduce(survey), "rises downstream")
+
+
+def test_a_head_that_rises_within_the_scatter_is_not_told():
+    survey, _ = tube((0.5e-5,), sigma=2e-3, seed=2)
+    found = reduce(survey)
+    assert found.runs["slope"].item() < 0
+    assert not said(found, "rises downstream")
+
+
+@pytest.mark.parametrize("seed", range(3))
+def test_an_unlisted_loss_is_no_set_of_outliers(seed):
+    """An unlisted K = 1 in the middle of the line: its step is shared by all runs, and no reading is flagged."""
+    flows = np.linspace(3e-4, 1.4e-3, 9)
+    survey, _ = tube(flows, sigma=1e-3, seed=seed, fittings=[NominalFitting(2.75, 1.0, None)])
+    found = reduce(survey)
+    cautions = said(found, "Most runs share a misfit, growing with the")
+    assert len(cautions) == 1
+    assert "No single reading is flagged in this survey" in cautions[0]
+    assert not (found.flags["kind"] == "reading").any()
+    assert not (found.heads["flag"] == "outlier").any()
+    assert any(text.startswith("Single readings were not judged") for text in found.assumptions)
+
+
+def test_a_listed_loss_is_no_misfit():
+    flows = np.linspace(3e-4, 1.4e-3, 9)
+    survey, _ = tube(flows, sigma=1e-3, seed=1, fittings=[NominalFitting(2.75, 1.0)])
+    found = reduce(survey)
+    assert not said(found, "share a misfit")
+    row = found.fittings.squeeze()
+    assert row["loss_coefficient_low"] < 1.0 < row["loss_coefficient_high"]
+
+
+def test_scatter_far_above_the_stated_is_doubted():
+    """Columns that scatter by 2 mm where 0.2 mm was stated."""
+    survey, _ = tube(np.linspace(3e-4, 1.4e-3, 9), sigma=2e-3, seed=6, stated=Uncertainties(reading=2e-4))
+    found = reduce(survey)
+    cautions = said(found, "The stated reading uncertainty is doubtful: the readings scatter")
+    assert len(cautions) == 1
+    assert not (found.flags["kind"] == "reading").any()
+    # σ of 2 mm within its own uncertainty of 1/√(2 · 72)
+    assert found.scatter["base"].item() == pytest.approx(2e-3, rel=0.3)
+
+
+def test_a_coarse_scale_adds_its_own_scatter():
+    """Readings to 5 mm scatter by 5/√12 mm however steady the columns."""
+    survey, _ = tube(FAST)
+    found = reduce(with_gauge(survey, resolution=5e-3)).runs
+    by_hand = 5e-3 / np.sqrt(12) * (1 - 1.1992 / 999) / np.sqrt(((TAPS - TAPS.mean()) ** 2).sum())
+    np.testing.assert_allclose(found["slope_u_random"], by_hand, rtol=1e-6)
+
+
+def test_one_run_can_find_only_gross_errors():
+    survey, _ = tube(FAST[-1:], sigma=1e-3, seed=1)
+    cautions = said(reduce(survey), "the search for outlying readings can find only errors above about")
+    assert len(cautions) == 1
+    assert cautions[0].startswith("With 1 flowing run and no stated reading uncertainty")
+
+
+def test_a_run_off_the_law_is_flagged():
+    """One flow written down with a digit wrong: 1.4 L/s as 1.2. f is then 36 % too high in that run alone."""
+    flows = np.linspace(3e-4, 1.4e-3, 9)
+    survey, _ = tube(flows, sigma=5e-4, seed=3, stated=Uncertainties(flow=4e-3))
+    wrong = survey.runs.copy()
+    wrong.loc[8, "flow"] = 1.2e-3
+    found = reduce(replace(survey, runs=wrong))
+    flagged = found.flags[found.flags["kind"] == "run"]
+    assert flagged["run"].tolist() == ["9"]
+    assert "look up its readings and its flow" in flagged["suggestion"].item()
+    assert found.walls["runs_used"].item() == 8
+    sound = reduce(survey)
+    assert not (sound.flags["kind"] == "run").any()
+    assert found.walls["roughness"].item() == pytest.approx(sound.walls["roughness"].item(), rel=0.05)
