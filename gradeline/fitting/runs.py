@@ -30,6 +30,8 @@ _SCATTER_RUNS = 2000
 #: Pooled scatter above this many times the stated one is not a scale to judge single readings by.
 _SUSPECT_SCATTER = 3.0
 
+#: Passes at most to tell the scatter of several gauge kinds apart.
+_KIND_PASSES = 8
 #: From so many runs on, each is judged by the others.
 _FEW_RUNS = 4
 
@@ -76,6 +78,15 @@ class Model:
     def is_stated(self) -> bool:
         """Whether the floor is a statement to hold the scatter against."""
         return bool((self.floor > 0).all()) if self.stated is None else self.stated
+
+    def multiplier(self) -> Array:
+        """Standard deviation of each observation relative to the best of its kind, (n,): as stated tap by tap."""
+        relative = np.ones(len(self.floor))
+        for kind in np.unique(self.kind):
+            mine = self.kind == kind
+            if (self.floor[mine] > 0).all():
+                relative[mine] = self.floor[mine] / self.floor[mine].min()
+        return relative
 
 
 @dataclass(frozen=True)
@@ -301,12 +312,10 @@ def _variances(scatter: tuple[Scatter, ...], model: Model, runs: int) -> Array:
     ]
     if not parts:
         return np.ones((runs, 1))
-    alike = all(np.ptp(model.floor[model.kind == kind]) == 0 for kind in range(len(parts)))
-    if len(parts) == 1 and model.repeats is None and alike:
+    relative = model.multiplier()
+    if len(parts) == 1 and model.repeats is None and (relative == 1.0).all():
         return parts[0][:, None]
-    variance = np.column_stack(parts)[:, model.kind]
-    if not alike:
-        variance = np.maximum(variance, model.floor**2)
+    variance = np.column_stack(parts)[:, model.kind] * relative**2
     return np.asarray(variance if model.repeats is None else variance / np.maximum(model.repeats, 1))
 
 
@@ -328,13 +337,31 @@ def _pooled_scatter(observations: Array, known: Mask, model: Model) -> tuple[Sca
     y, used = observations[pick], known[pick]
     # Before the scatter is known: readings of one kind alike, of several as they were stated.
     several = len(np.unique(model.kind)) > 1
-    start = np.where(model.floor > 0, model.floor, 1e-3) if several else np.full(len(model.kind), 1e-3)
-    variance = np.broadcast_to(start**2, used.shape) if several else np.full((len(y), 1), 1e-6)
+    start = np.where(model.floor > 0, model.floor, 1e-3) if several else 1e-3 * model.multiplier()
+    alike = not several and (start == start[0]).all()
+    variance = np.full((len(y), 1), 1e-6) if alike else np.broadcast_to(start**2, used.shape)
     if part.repeats is not None:
         variance = np.broadcast_to(variance, used.shape) / np.maximum(part.repeats, 1)
-    plain = replace(part, persistent=None)
+    found: tuple[Scatter, ...] = ()
+    for _ in range(_KIND_PASSES if several else 1):
+        new = _trimmed_scatter(y, used, variance, part)
+        settled = bool(found) and all(
+            abs(one.base - other.base) <= 0.01 * other.base for one, other in zip(new, found, strict=True)
+        )
+        found = new
+        if settled:
+            break
+        # The scatter of one kind is only seen apart from the other's once the weights are about right.
+        variance = _variances(found, part, len(y))
+    return found
+
+
+def _trimmed_scatter(y: Array, used: Mask, variance: Array, model: Model) -> tuple[Scatter, ...]:
+    """Scatter of each kind by the fits with these variances, each run trimmed of its worst readings."""
+    plain = replace(model, persistent=None)
     lines = _fit(y, used, variance, plain)
     shared = lines.projectors
+    unit = np.sqrt(shared.scale)[:, None]
     counts = shared.used.sum(axis=1)
     most = most_removable(counts, shared.rank)
     removed = np.zeros(used.shape, dtype=bool)
@@ -343,15 +370,14 @@ def _pooled_scatter(observations: Array, known: Mask, model: Model) -> tuple[Sca
         if cut == 0:
             continue
         runs = np.flatnonzero(shared.index == pattern)
-        best = subset_falls(
-            lines.weighted_residuals[runs], shared.weight[pattern], shared.used[pattern], int(cut)
-        )
+        weighted = (lines.weighted_residuals * unit)[runs]
+        best = subset_falls(weighted, shared.weight[pattern], shared.used[pattern], int(cut))
         removed[runs[:, None], best.members[:, cut - 1, :cut]] = True
         expected, freedom = scale_moments(int(counts[pattern]), int(shared.rank[pattern]))
         ratio[runs] = expected / (counts[pattern] - shared.rank[pattern] - cut)
         shape[runs] = freedom
     trimmed = _fit(y, used & ~removed, variance, plain) if removed.any() else lines
-    return _by_kind(trimmed, used & ~removed, variance, ratio, shape, part)
+    return _by_kind(trimmed, used & ~removed, variance, ratio, shape, model)
 
 
 def _final_scatter(lines: LineFits, used: Mask, variance: Array, model: Model) -> tuple[Scatter, ...]:
@@ -378,7 +404,9 @@ def _by_kind(
 ) -> tuple[Scatter, ...]:
     """Split the runs' sums of squares over the kinds and fit each kind's scatter."""
     redundancy = _redundancy(lines, used, variance)
-    times = np.ones(used.shape) if model.repeats is None else np.maximum(model.repeats, 1)
+    times = (
+        np.ones(used.shape) if model.repeats is None else np.maximum(model.repeats, 1)
+    ) / model.multiplier() ** 2
     squares = np.where(used, np.nan_to_num(lines.residuals) ** 2 * times, 0.0)
     known = np.zeros(used.shape) if model.persistent is None else redundancy * model.persistent**2 * times
     total = np.maximum(redundancy.sum(axis=1), 1e-12)

@@ -26,6 +26,8 @@ _ROUGHEST = 0.1
 #: Probability, over all runs of a sound wall, that one is called off the law.
 _RUN_FALSE_ALARM = 0.05
 _SETTLED = 12
+#: A slope this many scatters from the others stays out of the first fit.
+_FAR = 5.0
 
 
 @dataclass(frozen=True)
@@ -314,9 +316,13 @@ def fit_wall(data: WallData, usable: Mask, *, level: float = 0.95, dof: float = 
     lone = unknown and used.sum() < 2
     scatter = _first_scatter(_residual(data, used, roughness), used) if unknown else float("nan")
     critical = stdtrit(_freedom(dof, used, unknown), 1.0 - _RUN_FALSE_ALARM / (2.0 * candidates.sum()))
-    if unknown and used.sum() >= 4:
-        start = np.abs(_residual(data, used, roughness) - np.median(_residual(data, used, roughness)[used]))
-        used = candidates & (start < 5.0 * scatter)
+    if used.sum() >= 4:
+        # Gross slips stay out of the first fit; shared errors move all alike, which the median takes up.
+        away = _residual(data, used, roughness)
+        if not unknown:
+            away = away / np.sqrt(np.where(used, _covariance(data, roughness, used, scatter).variance, 1.0))
+        room = _FAR * max(_first_scatter(away, used), 0.0 if unknown else 1.0)
+        used = candidates & (np.abs(away - np.median(away[used])) < room)
     score = np.full(data.slope.shape, np.nan)
     seen: list[bytes] = []
     while True:

@@ -165,7 +165,7 @@ def fit_survey(
     slopes = first.lines.parameters[:, 1 : 1 + len(line.diameter)]
     heads, energy = energy_of(_law_factor(slopes, velocity, reynolds, line, media))
     base = np.array([part.base for part in first.scatter])[kind] if len(kind) else np.zeros(0)
-    inputs = _all_inputs(survey, line, corrections, rows, slopes, heads, loss_head, given_k, base)
+    inputs = _all_inputs(survey, line, corrections, rows, slopes, heads, loss_head, given_k, base, floor)
     flow_effect = 2.0 * flow_u[:, None] * (heads[:, line.reach_of_tap] @ sight.T + given)
     if _is_level(flow_effect, sight.sum(axis=1), used):
         flow_effect = np.zeros_like(flow_effect)
@@ -266,6 +266,7 @@ def _all_inputs(
     loss_head: Array,
     given_k: Array,
     base: Array,
+    floor: Array,
 ) -> tuple[Input, ...]:
     """The shared inputs of the readings, of the line and of the static runs, for the flowing runs."""
     sight, stated = corrections.heads.taps, survey.stated
@@ -313,7 +314,7 @@ def _all_inputs(
     if corrections.applied:
         times = np.maximum(corrections.times, 1.0)
         # The scatter of the first pass holds the static reading's share; taken apart here.
-        alone = np.nan_to_num(base) / np.sqrt(1.0 + 1.0 / times)
+        alone = np.maximum(np.nan_to_num(base) / np.sqrt(1.0 + 1.0 / times), floor)
         for i, observation in enumerate(survey.observations):
             if corrections.times[i] > 0 and alone[i] > 0:
                 effect = -corrections.spread[:, i] * alone[i] / np.sqrt(times[i])

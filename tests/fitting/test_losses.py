@@ -32,7 +32,9 @@ def test_effective_degrees_of_freedom_of_welch_and_satterthwaite():
 
 
 def test_scatter_alone_keeps_its_own_degrees_of_freedom():
-    fit = fit_loss_coefficient(np.array([2.0, 2.2]), np.array([0.01, 0.01]), np.zeros((2, 0)), dof=5.0, level=0.9)
+    fit = fit_loss_coefficient(
+        np.array([2.0, 2.2]), np.array([0.01, 0.01]), np.zeros((2, 0)), dof=5.0, level=0.9
+    )
     assert (fit.high - fit.coefficient) / fit.u == pytest.approx(student.ppf(0.95, 5), rel=1e-9)
 
 

@@ -15,7 +15,7 @@ SLOPE = np.geomspace(0.01, 1.0, RUNS)
 VELOCITY_HEAD = SLOPE * 0.025 / 0.02
 
 
-def survey(rng, loss=0.0, slope=SLOPE, **more):
+def survey(rng, loss=0.0, slope=SLOPE):
     heads = 5.0 - slope[:, None] * X - loss * VELOCITY_HEAD[:, None] * (X > 2.75)
     heads = heads + SIGMA * rng.standard_normal(heads.shape)
     model = Model(np.column_stack([np.ones(TAPS), -X]), VELOCITY_HEAD, np.zeros(TAPS, int), np.zeros(TAPS))

@@ -87,9 +87,7 @@ def test_forward_backward_is_rarely_short_of_the_best_on_pure_noise():
     design, y = straight(n), rng.standard_normal((runs, n))
     shared = project(design, np.ones((1, 1)), np.ones((1, n), dtype=bool))
     spread = project(design, np.ones((runs, 1)), np.ones((runs, n), dtype=bool))
-    found = subset_falls(
-        fit_lines(y, design, spread).weighted_residuals, shared.weight[0], shared.used[0], 3
-    )
+    found = subset_falls(fit_lines(y, design, spread).weighted_residuals, shared.weight[0], shared.used[0], 3)
     weight, q = shared.weight[0], y @ shared.weight[0]
     sets = np.array(list(itertools.combinations(range(n), 3)))
     inverse = np.linalg.inv(weight[sets[:, :, None], sets[:, None, :]])
@@ -196,13 +194,13 @@ def test_deletion_residuals_are_distances_from_the_line_through_the_others():
 
 
 # B. Rosner, Technometrics 25 (1983) 165-172, the 54 values as in the NIST/SEMATECH e-Handbook, 1.3.5.17.3.
-ROSNER = np.array(
+ROSNER = np.fromstring(
     """
     -.25 .68 .94 1.15 1.20 1.26 1.26 1.34 1.38 1.43 1.49 1.49 1.55 1.56 1.58 1.65 1.69 1.70 1.76 1.77 1.81 1.91 1.94
     1.96 1.99 2.06 2.09 2.10 2.14 2.15 2.23 2.24 2.26 2.35 2.37 2.40 2.47 2.54 2.62 2.64 2.90 2.92 2.92 2.93 3.21 3.26
     3.30 3.59 3.68 4.30 4.64 5.34 5.42 6.01
-    """.split(),
-    dtype=float,
+    """,
+    sep=" ",
 )
 
 

@@ -130,9 +130,7 @@ def test_two_taps_leave_no_scatter_and_no_search():
     heads = survey(11)[:, [0, 9]]
     told = Model(DESIGN[[0, 9]], SLOPE, np.zeros(2, dtype=int), np.zeros(2))
     fits = fit_runs(heads, np.isfinite(heads), told)
-    np.testing.assert_allclose(
-        fits.lines.parameters[:, 1], (heads[:, 0] - heads[:, 1]) / 4.5, rtol=1e-9
-    )
+    np.testing.assert_allclose(fits.lines.parameters[:, 1], (heads[:, 0] - heads[:, 1]) / 4.5, rtol=1e-9)
     assert fits.pooled_dof == 0
     assert not fits.search.done
     assert np.isnan(fits.scatter[0].base)

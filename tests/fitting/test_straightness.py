@@ -22,7 +22,9 @@ def rss(columns, y):
 
 @pytest.mark.parametrize("dof", [20.0, np.inf])
 def test_p_of_a_quadratic_term_is_that_of_the_regression_with_it(dof):
-    heads = 2.0 - 0.1 * X + 1e-3 * RNG.standard_normal((6, 9)) + np.linspace(0, 2e-3, 6)[:, None] * (X - 2) ** 2
+    heads = (
+        2.0 - 0.1 * X + 1e-3 * RNG.standard_normal((6, 9)) + np.linspace(0, 2e-3, 6)[:, None] * (X - 2) ** 2
+    )
     fits = fit_lines(heads, DESIGN, project(DESIGN, np.full((6, 1), 1e-6), np.ones((6, 9), dtype=bool)))
     found = run_straightness(fits, X**2, dof)
     bent = np.column_stack([DESIGN, X**2])

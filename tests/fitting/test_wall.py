@@ -31,7 +31,14 @@ def log_slope(roughness, flow, diameter, viscosity, gravity=GRAVITY):
 
 
 # Standard uncertainties of the shared inputs: two bores, flow calibration, viscosity, gravity, and a chainage.
-SHARED = {"bore 1": 0.002, "bore 2": 0.001, "flow": 0.003, "viscosity": 0.005, "gravity": 1e-4, "chainage": 0.004}
+SHARED = {
+    "bore 1": 0.002,
+    "bore 2": 0.001,
+    "flow": 0.003,
+    "viscosity": 0.005,
+    "gravity": 1e-4,
+    "chainage": 0.004,
+}
 
 
 def make(rng, *, roughness=5e-5, runs=10, flow_u=0.004, reading_u=2e-5, draw=True):

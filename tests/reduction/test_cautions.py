@@ -19,8 +19,10 @@ def said(reduction, text):
 
 
 def test_a_sound_survey_has_no_caution():
-    for survey, _ in (tube(FAST, sigma=1e-3, seed=4), hilly(FAST), main(sigma=5e-3, seed=2)):
-        assert not reduce(survey).cautions or all("bores" in text for text in reduce(survey).cautions)
+    for survey, _ in (tube(FAST, sigma=1e-3, seed=4), hilly(FAST)):
+        assert reduce(survey).cautions == ()
+    # the taps next downstream of the contraction and of the valve stand 15 m behind them, 74 bores
+    assert reduce(main(sigma=5e-3, seed=2)[0]).cautions == ()
 
 
 def test_a_grade_line_below_the_crown_is_told_with_its_runs():

@@ -63,7 +63,9 @@ def test_the_friction_factor_is_that_of_another_library():
 def test_the_columns_of_a_run_are_what_they_say():
     survey, _ = tube()
     found = reduce(survey).runs
-    np.testing.assert_allclose(found["velocity"], np.array(FLOWS) / (np.pi / 4 * TUBE.diameter**2), rtol=1e-12)
+    np.testing.assert_allclose(
+        found["velocity"], np.array(FLOWS) / (np.pi / 4 * TUBE.diameter**2), rtol=1e-12
+    )
     np.testing.assert_allclose(found["density"], float(density(KELVIN)), rtol=1e-7)
     np.testing.assert_allclose(found["kinematic_viscosity"], float(kinematic_viscosity(KELVIN)), rtol=1e-6)
     assert (found["temperature"] == KELVIN).all()
@@ -135,7 +137,9 @@ def test_the_velocity_head_carries_its_coefficient():
     np.testing.assert_allclose(above[0], 2 * plain[0], rtol=1e-6)
     for run in range(2, 6):
         # f of the second pass is that of the first pass's slope: exact to its own small error
-        np.testing.assert_allclose(above[run], (1 + 2.7 * truth.friction_factor[run, 0]) * plain[run], rtol=1e-5)
+        np.testing.assert_allclose(
+            above[run], (1 + 2.7 * truth.friction_factor[run, 0]) * plain[run], rtol=1e-5
+        )
 
 
 def test_without_the_coefficient_the_loss_of_the_contraction_would_be_off():
@@ -164,7 +168,10 @@ def test_two_walls_stand_apart_and_one_wall_is_shared():
 
 
 def test_two_walls_of_different_roughness_do_not_mix():
-    rough, smooth = replace(TUBE, end=2.75, wall="rough"), replace(TUBE, start=2.75, roughness=5e-6, wall="smooth")
+    rough, smooth = (
+        replace(TUBE, end=2.75, wall="rough"),
+        replace(TUBE, start=2.75, roughness=5e-6, wall="smooth"),
+    )
     survey, _ = tube(reaches=[rough, smooth])
     found = reduce(survey).walls.set_index("wall")["roughness"]
     assert found["rough"] == pytest.approx(1e-4, rel=1e-4)

@@ -253,9 +253,7 @@ def test_the_friction_factor_of_a_bench_by_hand():
     by_chainage = slope * 1e-3 / spread
     relative_s = np.sqrt(by_reading**2 + by_chainage**2 + (slope * 5e-4) ** 2) / slope
     assert row["slope_u"] / slope == pytest.approx(relative_s, rel=0.005)
-    relative_f = np.sqrt(
-        relative_s**2 + (5 * 3e-5 / TUBE.diameter) ** 2 + (2 * 4e-3) ** 2 + (2 * 3e-3) ** 2
-    )
+    relative_f = np.sqrt(relative_s**2 + (5 * 3e-5 / TUBE.diameter) ** 2 + (2 * 4e-3) ** 2 + (2 * 3e-3) ** 2)
     assert row["friction_factor_u"] / row["friction_factor"] == pytest.approx(relative_f, rel=0.005)
 
 
@@ -314,7 +312,9 @@ def test_the_loss_coefficient_of_one_run_follows_the_chainages():
     uncertain = with_stated(survey, chainage=1e-3)
     plain, there = reduce(survey).fittings.iloc[0], reduce(uncertain).fittings.iloc[0]
     changes = [
-        reduce(with_tap(uncertain, i, chainage=tap.chainage + SMALL * 1e-3)).fittings.iloc[0]["loss_coefficient"]
+        reduce(with_tap(uncertain, i, chainage=tap.chainage + SMALL * 1e-3)).fittings.iloc[0][
+            "loss_coefficient"
+        ]
         - there["loss_coefficient"]
         for i, tap in enumerate(survey.taps)
     ]

@@ -71,9 +71,7 @@ def test_the_zeros_of_two_boards_cancel_by_the_static_run():
     first = replace(survey.gauges[0], zero_u=5e-3)
     second = replace(first, name="second")
     taps = tuple(replace(tap, gauge="board" if i < 5 else "second") for i, tap in enumerate(survey.taps))
-    both = tuple(
-        replace(one, gauge=tap.gauge) for one, tap in zip(survey.observations, taps, strict=True)
-    )
+    both = tuple(replace(one, gauge=tap.gauge) for one, tap in zip(survey.observations, taps, strict=True))
     apart = replace(survey, gauges=(first, second), taps=taps, observations=both)
     without = replace(apart, gauges=(survey.gauges[0], replace(survey.gauges[0], name="second")))
     np.testing.assert_allclose(

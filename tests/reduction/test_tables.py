@@ -161,9 +161,8 @@ def test_the_reason_is_the_right_one(name, table, reason):
 
 def test_two_taps_are_a_difference_of_heads():
     """Nothing stated, two taps: S is the fall between them, and the scatter that of S about the law (Student, runs − 1)."""
-    survey, truth = tube(FAST)
-    pair = few(taps=2)
-    found = reduce(pair).runs
+    _, truth = tube(FAST)
+    found = reduce(few(taps=2)).runs
     np.testing.assert_allclose(found["slope"], truth.slope[:, 0], rtol=1e-5)
     assert (found["slope_dof"] == len(FAST) - 1).all()
     assert (found["slope_u"] > 0).all()
@@ -181,13 +180,17 @@ def test_intervals_are_students():
         np.testing.assert_allclose(runs["slope_high"] - runs["slope"], times * runs["slope_u"], rtol=1e-6)
         np.testing.assert_allclose(runs["slope"] - runs["slope_low"], times * runs["slope_u"], rtol=1e-6)
         np.testing.assert_allclose(
-            runs["friction_factor_high"] - runs["friction_factor"], times * runs["friction_factor_u"], rtol=1e-6
+            runs["friction_factor_high"] - runs["friction_factor"],
+            times * runs["friction_factor_u"],
+            rtol=1e-6,
         )
     dof = by_level[0.95]["slope_dof"]
     ratio = student.ppf(0.995, dof) / student.ppf(0.975, dof)
     narrow, wide = by_level[0.95], by_level[0.99]
     np.testing.assert_allclose(
-        (wide["slope_high"] - wide["slope_low"]) / (narrow["slope_high"] - narrow["slope_low"]), ratio, rtol=1e-6
+        (wide["slope_high"] - wide["slope_low"]) / (narrow["slope_high"] - narrow["slope_low"]),
+        ratio,
+        rtol=1e-6,
     )
     np.testing.assert_allclose(wide["slope_u"], narrow["slope_u"], rtol=1e-12)
 
