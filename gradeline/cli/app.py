@@ -28,6 +28,8 @@ app = typer.Typer(
     name="gradeline",
     help="From manometer and gauge readings along a pipe to head loss, friction factor and wall roughness, each "
     "with its uncertainty.\n\nExample: gradeline reduce data_demo/copper_bench",
+    epilog="Exit codes: 0 done (flags are results, not failures), 1 an error that gradeline does not know, 2 wrong "
+    "use, 3 the survey has problems, 4 output could not be written; of several surveys the highest.",
     no_args_is_help=True,
     add_completion=False,
     pretty_exceptions_enable=False,
@@ -68,24 +70,28 @@ def _tell_problems(source: Path, error: GradelineError) -> None:
         _say(f"{source}: {error}")
 
 
-@app.command(short_help="Tell every problem of a survey, and what was understood.")
+@app.command(short_help="Tell every problem of surveys, and what was understood.")
 def check(
-    survey: Annotated[Path, typer.Argument(metavar="SURVEY", help="Folder of the survey.")],
+    surveys: Annotated[list[Path], typer.Argument(metavar="SURVEY...", help="Folders of surveys.")],
 ) -> None:
-    """Load a survey, tell every problem at once, and say what was understood.
+    """Load surveys, tell every problem at once, and say what was understood.
 
     Example: gradeline check data_demo/copper_bench
     """
-    from gradeline.cli.understood import understood  # noqa: PLC0415
-    from gradeline.loader import read_survey  # noqa: PLC0415
 
-    try:
-        read = read_survey(survey)
-    except GradelineError as error:
-        _tell_problems(survey, error)
-        raise typer.Exit(_SURVEY_PROBLEMS) from None
-    typer.echo(understood(read))
-    _say(f"{survey}: no problems")
+    def one(source: Path) -> None:
+        from gradeline.cli.understood import understood  # noqa: PLC0415
+        from gradeline.loader import read_survey  # noqa: PLC0415
+
+        read = read_survey(source)
+        if source != surveys[0]:
+            typer.echo()
+        typer.echo(understood(read))
+        _say(f"{source}: no problems")
+
+    code = max(_attempt(one, source) for source in surveys)
+    if code:
+        raise typer.Exit(code)
 
 
 @app.command(short_help="Write a commented survey to fill in.")
@@ -141,7 +147,10 @@ def reduce(
     formats: Annotated[
         str,
         typer.Option(
-            "--formats", metavar="LIST", callback=_formats, help="What to write, set apart by commas."
+            "--formats",
+            metavar="LIST",
+            callback=_formats,
+            help=f"What to write, set apart by commas: any of {', '.join(FORMATS)}.",
         ),
     ] = ",".join(FORMATS),
     correct: Annotated[
@@ -180,10 +189,10 @@ def reduce(
         raise typer.Exit(code)
 
 
-def _attempt(action: Callable[[Path, Path], None], source: Path, target: Path) -> int:
+def _attempt(action: Callable[..., None], source: Path, *targets: Path) -> int:
     """Do one survey; return the exit code that its errors ask for."""
     try:
-        action(source, target)
+        action(source, *targets)
     except typer.BadParameter as error:
         _say(f"{source}: {error.message}")
         return _WRONG_USE

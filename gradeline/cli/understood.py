@@ -2,20 +2,30 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 
-from gradeline.quantities import Measured
-from gradeline.survey import GAUGE_KINDS, Fluid, Gauge, Stated, StatedUncertainties, Survey
+from gradeline.quantities import Measured, Unit, parse_unit
+from gradeline.survey import GAUGE_KINDS, Fluid, Gauge, Stated, Survey
 
 __all__ = ["understood"]
 
 _RUNS_SHOWN = 40
 
+# Units of values and of uncertainties where nobody wrote one.
+_SETTINGS = {"length": "m", "pressure": "kPa", "angle": "deg", "temperature": "degC"}
+_UNCERTAINTIES = {
+    "length": "mm",
+    "pressure": "kPa",
+    "flow": "L/s",
+    "temperature difference": "K",
+    "dimensionless": "%",
+}
+
 
 def understood(survey: Survey) -> str:
-    """Return what a survey says, in SI units but for the bore (mm) and the flow (L/s)."""
+    """Return what a survey says: SI units but for the bore (mm) and the flow (L/s), what is stated as stated."""
     flows = survey.runs["flow"].to_numpy(float)
     parts = [
         f"{survey.title}" + (f" ({survey.date})" if survey.date else ""),
@@ -53,14 +63,14 @@ def understood(survey: Survey) -> str:
             "Gauges",
             ("gauge", "kind", "settings", "stated"),
             [
-                (gauge.name, gauge.kind, _settings(gauge), _gauge_uncertainties(gauge))
+                (gauge.name, gauge.kind, _settings(survey, gauge), _gauge_uncertainties(survey, gauge))
                 for gauge in survey.gauges
             ],
         ),
         _taps(survey),
         _runs(survey, flows),
         f"Units as found: {_units(survey)}",
-        "Stated uncertainties: " + (_stated(survey.stated) or "none in [uncertainty]"),
+        "Stated uncertainties: " + (_stated(survey) or "none in [uncertainty]"),
         _bullets("Assumptions", survey.assumptions),
         _bullets("Cautions", survey.cautions),
     ]
@@ -84,24 +94,43 @@ def _fluid(fluid: Fluid) -> str:
     return f"{fluid.name}, {', '.join(given)}"
 
 
-def _settings(gauge: Gauge) -> str:
+def _settings(survey: Survey, gauge: Gauge) -> str:
     dimensions = {name: key.dimension for name, key in GAUGE_KINDS[gauge.kind].keys.items()}
-    units = {"length": " m", "angle": " rad", "temperature": " K"}
-    return ", ".join(
-        f"{name} {value if isinstance(value, str) else _measured(value) + units.get(dimensions[name], '')}"
-        for name, value in gauge.settings.items()
-    )
+    found: list[str] = []
+    for name, value in gauge.settings.items():
+        if isinstance(value, str):
+            found.append(f"{name} {value}")
+            continue
+        unit = _unit(survey, f"survey.toml gauge.{gauge.name}.{name}", dimensions[name], _SETTINGS)
+        u = None if value.u is None else unit.difference_from_si(value.u)
+        found.append(f"{name} {_measured(Measured(unit.from_si(value.value), u))} {unit.text}")
+    return ", ".join(found)
 
 
-def _gauge_uncertainties(gauge: Gauge) -> str:
-    unit = "m" if GAUGE_KINDS[gauge.kind].reading == "length" else "Pa"
+def _unit(survey: Survey, place: str, dimension: str, usual: Mapping[str, str]) -> Unit:
+    """The unit in which a value was stated, the usual one where a survey was not read from files."""
+    return parse_unit(survey.units.get(place, usual[dimension]), dimension)
+
+
+def _uncertainty(survey: Survey, place: str, dimension: str, value: float) -> str:
+    """A stated uncertainty in the unit in which it was stated."""
+    unit = _unit(survey, place, dimension, _UNCERTAINTIES)
+    return f"{unit.difference_from_si(value):.6g} {unit.text}"
+
+
+def _gauge_uncertainties(survey: Survey, gauge: Gauge) -> str:
+    reading = GAUGE_KINDS[gauge.kind].reading
     named = (
-        ("uncertainty", gauge.reading_u, unit),
-        ("resolution", gauge.resolution, unit),
-        ("u_zero", gauge.zero_u, unit),
-        ("u_scale", None if gauge.scale_u is None else 100 * gauge.scale_u, "%"),
+        ("uncertainty", gauge.reading_u, reading),
+        ("resolution", gauge.resolution, reading),
+        ("u_zero", gauge.zero_u, reading),
+        ("u_scale", gauge.scale_u, "dimensionless"),
     )
-    return ", ".join(f"{name} {value:g} {unit}" for name, value, unit in named if value is not None)
+    return ", ".join(
+        f"{name} {_uncertainty(survey, f'survey.toml gauge.{gauge.name}.{name}', dimension, value)}"
+        for name, value, dimension in named
+        if value is not None
+    )
 
 
 def _taps(survey: Survey) -> str:
@@ -110,11 +139,12 @@ def _taps(survey: Survey) -> str:
         for name in ("gauge_elevation", "reading_u", "chainage_u", "elevation_u")
         if any(getattr(tap, name) is not None for tap in survey.taps)
     ]
+    units = {name: _tap_unit(survey, name) for name in own}
     titles = {
-        "gauge_elevation": "gauge elevation, m",
-        "reading_u": "u(reading), m or Pa",
-        "chainage_u": "u(chainage), m",
-        "elevation_u": "u(elevation), m",
+        "gauge_elevation": "gauge elevation",
+        "reading_u": "u(reading)",
+        "chainage_u": "u(chainage)",
+        "elevation_u": "u(elevation)",
     }
     taken = survey.readings.notna().sum()
     rows = [
@@ -124,12 +154,37 @@ def _taps(survey: Survey) -> str:
             f"{tap.elevation:g}",
             tap.gauge or "",
             f"{taken[tap.name]} of {len(survey.runs)}",
-            *("" if (value := getattr(tap, name)) is None else f"{value:g}" for name in own),
+            *(
+                ""
+                if (value := getattr(tap, name)) is None
+                else f"{units[name].difference_from_si(value):.6g}"
+                for name in own
+            ),
         )
         for tap in survey.taps
     ]
-    headings = ("tap", "chainage, m", "elevation, m", "gauge", "runs read", *(titles[name] for name in own))
+    headings = (
+        "tap",
+        "chainage, m",
+        "elevation, m",
+        "gauge",
+        "runs read",
+        *(f"{titles[name]}, {units[name].text}" for name in own),
+    )
     return _table("Taps", headings, rows)
+
+
+def _tap_unit(survey: Survey, name: str) -> Unit:
+    """The unit of a column of taps."""
+    column = name.removesuffix("_u").replace("_", " ") + (" uncertainty" if name.endswith("_u") else "")
+    place = f"taps.csv {column}"
+    if name == "gauge_elevation":
+        return _unit(survey, place, "length", _SETTINGS)
+    if name != "reading_u":
+        return _unit(survey, place, "length", _UNCERTAINTIES)
+    kinds = {gauge.name: GAUGE_KINDS[gauge.kind].reading for gauge in survey.gauges}
+    reads = next(kinds[tap.gauge] for tap in survey.taps if tap.reading_u is not None and tap.gauge in kinds)
+    return _unit(survey, place, reads, _UNCERTAINTIES)
 
 
 def _runs(survey: Survey, flows: np.ndarray) -> str:
@@ -165,6 +220,8 @@ def _units(survey: Survey) -> str:
     """Every unit with the columns that have it; taps of one unit as a span."""
     columns: dict[str, list[str]] = {}
     for name, unit in survey.units.items():
+        if name.startswith("survey.toml "):
+            continue  # shown with its value
         columns.setdefault(unit, []).append(name)
     taps = {tap.name for tap in survey.taps}
     found: list[str] = []
@@ -177,28 +234,27 @@ def _units(survey: Survey) -> str:
     return ", ".join(found)
 
 
-def _stated(stated: StatedUncertainties) -> str:
-    units = {
-        "reading": "m",
-        "reading_pressure": "Pa",
-        "chainage": "m",
-        "elevation": "m",
-        "flow": "m³/s",
-        "temperature": "K",
-        "temperature_run": "K",
+def _stated(survey: Survey) -> str:
+    dimensions = {
+        "reading": "length",
+        "reading_pressure": "pressure",
+        "chainage": "length",
+        "elevation": "length",
+        "flow": "flow",
+        "temperature": "temperature difference",
+        "temperature_run": "temperature difference",
     }
     found: list[str] = []
-    for name, value in vars(stated).items():
+    for name, value in vars(survey.stated).items():
         if value is None:
             continue
+        number, dimension = (
+            (value.value, "flow") if isinstance(value, Stated) else (value, dimensions.get(name))
+        )
+        if dimension is None or (isinstance(value, Stated) and value.relative):
+            dimension = "dimensionless"
         label = "reading" if name == "reading_pressure" else name
-        if name in {"flow_scale", "friction_law"}:
-            found.append(f"{label} {100 * value:g} %")
-        elif isinstance(value, Stated):
-            number = f"{100 * value.value:g} %" if value.relative else f"{value.value:g} {units[name]}"
-            found.append(f"{label} {number}")
-        else:
-            found.append(f"{label} {value:g} {units[name]}")
+        found.append(f"{label} {_uncertainty(survey, f'survey.toml uncertainty.{label}', dimension, number)}")
     return ", ".join(found)
 
 

@@ -8,85 +8,29 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gradeline.fitting.misfit import SharedMisfit, shared_misfit
-from gradeline.fitting.null import MANY_RUNS, critical_falls, scale_moments
-from gradeline.fitting.outliers import (
-    MOST_OUTLIERS,
-    deletion_residuals,
-    most_removable,
-    search_outliers,
-    subset_falls,
-    trimming,
+from gradeline.fitting.model import Model
+from gradeline.fitting.null import MANY_RUNS, critical_falls
+from gradeline.fitting.outliers import MOST_OUTLIERS, deletion_residuals, most_removable, search_outliers
+from gradeline.fitting.pooled import (
+    fit_model,
+    reading_variance,
+    redundancy,
+    robust_scatter,
+    sample_of,
+    scatter_of,
 )
-from gradeline.fitting.scatter import Scatter, estimate_scatter, scatter_variance
-from gradeline.fitting.slope import LineFits, fit_lines, project, replace_runs
+from gradeline.fitting.scatter import Scatter
+from gradeline.fitting.slope import LineFits, replace_runs
 
 __all__ = ["Model", "RunFits", "Search", "fit_runs"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
-#: The scatter is judged on at most so many runs, evenly spread over them: it is then known to 1 %.
-_SCATTER_RUNS = 2000
 #: Pooled scatter above this many times the stated one is not a scale to judge single readings by.
 _SUSPECT_SCATTER = 3.0
-
-#: Passes at most to tell the scatter of several gauge kinds apart.
-_KIND_PASSES = 8
 #: From so many runs on, each is judged by the others.
 _FEW_RUNS = 4
-
-
-@dataclass(frozen=True)
-class Model:
-    """What is known of the observations before any is judged.
-
-    Parameters
-    ----------
-    design : (n, p) array
-        A of y = A θ; unit of y per unit of θ.
-    velocity_head : (R,) array
-        V²/2g of each run (of the narrowest bore), m.
-    kind : (n,) int array
-        Group whose scatter an observation shares.
-    floor : (n,) array
-        Stated uncertainty of one reading with its resolution, m; 0 where nothing was stated.
-    repeats : (R, n) array, optional
-        How many readings each observation is the mean of, dimensionless.
-    persistent : (R, n) array, optional
-        Standard uncertainty of each observation from stated errors that are the same in all runs (position,
-        elevation, zero), m.
-    flow_effect : (R, n) array, optional
-        Change of each observation for one standard uncertainty of the run's own flow, m.
-    stated : bool or None
-        Whether an uncertainty of one reading was stated for every observation, and not its resolution alone; None:
-        wherever `floor` is above 0.
-    slope_column : int
-        Column of A whose parameter is the (first) friction slope.
-    """
-
-    design: Array
-    velocity_head: Array
-    kind: NDArray[np.intp]
-    floor: Array
-    repeats: Array | None = None
-    persistent: Array | None = None
-    flow_effect: Array | None = None
-    stated: bool | None = None
-    slope_column: int = 1
-
-    @property
-    def is_stated(self) -> bool:
-        """Whether the floor is a statement to hold the scatter against."""
-        return bool((self.floor > 0).all()) if self.stated is None else self.stated
-
-    def multiplier(self) -> Array:
-        """Standard deviation of each observation relative to the best of its kind, (n,): as stated tap by tap."""
-        relative = np.ones(len(self.floor))
-        for kind in np.unique(self.kind):
-            mine = self.kind == kind
-            if (self.floor[mine] > 0).all():
-                relative[mine] = self.floor[mine] / self.floor[mine].min()
-        return relative
 
 
 @dataclass(frozen=True)
@@ -137,7 +81,10 @@ class RunFits:
     search : Search
         How single readings were judged.
     pooled_dof : float
-        Degrees of freedom behind the scatter, dimensionless; 0 where the readings of a run leave none.
+        Degrees of freedom behind the scatter, dimensionless; infinite where statements stand that the readings do not
+        contradict, 0 where there is neither.
+    known : (n,) bool array
+        Observations whose scatter is known.
     """
 
     lines: LineFits
@@ -149,16 +96,22 @@ class RunFits:
     misfit: SharedMisfit | None
     search: Search
     pooled_dof: float
+    known: Mask
 
     def random_covariance(self) -> Array:
-        """Return the (R, p, p) covariance of the parameters from the scatter of the readings."""
+        """Return the (R, p, p) covariance of the parameters from the scatter of the readings, NaN where not known."""
         shared = self.lines.projectors
-        if self.variance.shape[1] == 1 and len(shared.gain) == 1:
-            return np.asarray(shared.covariance[0] * self.variance[:, 0][:, None, None])
-        gain = shared.gain[shared.index]
-        return np.asarray(
-            np.einsum("rpn,rn,rqn->rpq", gain, np.broadcast_to(self.variance, gain.shape[::2]), gain)
-        )
+        if self.variance.shape[1] == 1:
+            square = np.einsum("upn,uqn->upq", shared.gain, shared.gain)
+            covariance = square[shared.index] * self.variance[:, 0][:, None, None]
+        else:
+            gain = shared.gain[shared.index]
+            covariance = np.einsum("rpn,rn,rqn->rpq", gain, self.variance, gain)
+        if self.known.all():
+            return np.asarray(covariance)
+        # A parameter that leans on a reading of unknown scatter is not known itself.
+        unknown = np.asarray((np.abs(shared.gain[:, :, ~self.known]) > 1e-12).any(axis=2))[shared.index]
+        return np.where(unknown[:, :, None] | unknown[:, None, :], np.nan, covariance)
 
 
 def fit_runs(
@@ -209,29 +162,32 @@ def fit_runs(
     [[1, 4]]
     """
     known = used & np.isfinite(observations)
-    first = _pooled_scatter(observations, known, model)
-    variance = _variances(first, model, len(observations))
-    every = _fit(observations, known, variance, model)
+    runs = len(observations)
+    first = robust_scatter(observations, known, model)
+    variance = reading_variance(first, model)
+    # What persists over the runs is still in that scatter: not counted twice.
+    plain = replace(model, persistent=None)
+    every = fit_model(observations, known, variance, plain)
     misfit, verdict, flagged = None, Search(False, "not asked for"), np.zeros(known.shape, dtype=bool)
     if search or details:
         misfit = _misfit(every, variance, model)
     if search:
         verdict = _may_search(first, misfit, model, every)
         if verdict.done:
-            verdict, flagged = _search(every, verdict, model, np.ones(len(observations)), independent=False)
-    kept = _without(every, observations, known & ~flagged, flagged, variance, model)
-    scatter = _final_scatter(kept, known & ~flagged, variance, model)
-    renewed = _variances(scatter, model, len(observations))
+            verdict, flagged = _search(every, verdict, model, np.ones(runs), independent=False)
+    kept = _without(every, observations, known & ~flagged, flagged, variance, plain)
+    scatter = scatter_of(kept, known & ~flagged, variance, plain, first)
+    renewed = reading_variance(scatter, model)
     every = _renew(every, observations, known, variance, renewed, model)
-    if verdict.done and _FEW_RUNS <= len(observations) <= MANY_RUNS:
+    if verdict.done and _FEW_RUNS <= runs <= MANY_RUNS:
         # Once more, each run by the scatter of the others: its own outliers no longer pass for scatter.
         scale = _scale_of_others(
             _renew(kept, observations, known & ~flagged, variance, renewed, model), model
         )
         verdict, flagged = _search(every, verdict, model, scale, independent=True)
         kept = _without(every, observations, known & ~flagged, flagged, renewed, model)
-        scatter = _final_scatter(kept, known & ~flagged, renewed, model)
-        variance, renewed = renewed, _variances(scatter, model, len(observations))
+        scatter = scatter_of(kept, known & ~flagged, renewed, model, first)
+        variance, renewed = renewed, reading_variance(scatter, model)
         every = _renew(every, observations, known, variance, renewed, model)
     if keep_all or not flagged.any():
         kept = every
@@ -254,26 +210,22 @@ def fit_runs(
         score=score,
         misfit=misfit,
         search=verdict,
-        pooled_dof=float(sum(part.dof for part in scatter)),
+        pooled_dof=_pooled_dof(scatter),
+        known=np.array([part.is_known for part in scatter], dtype=bool)[model.kind],
     )
 
 
-def _fit(observations: Array, used: Mask, variance: Array, model: Model) -> LineFits:
-    total = variance if model.persistent is None else variance + model.persistent**2
-    return fit_lines(observations, model.design, project(model.design, total, used, model.flow_effect))
-
-
-def _weights_settled(model: Model, variance: Array) -> bool:
-    """Whether a new scatter only rescales a run's variances, so that its estimates stay."""
-    return variance.shape[1] == 1 and model.persistent is None and model.flow_effect is None
+def _pooled_dof(scatter: tuple[Scatter, ...]) -> float:
+    judged = [part.dof for part in scatter if not part.stands]
+    return float(sum(judged)) if judged else float("inf")
 
 
 def _renew(
     lines: LineFits, observations: Array, used: Mask, variance: Array, renewed: Array, model: Model
 ) -> LineFits:
     """Fit again with the final variances, or rescale where that is all they do."""
-    if not _weights_settled(model, variance):
-        return _fit(observations, used, renewed, model)
+    if variance.shape[1] > 1 or model.persistent is not None or model.common is not None:
+        return fit_model(observations, used, renewed, model)
     ratio = variance[:, 0] / renewed[:, 0]
     if (ratio == 1.0).all():
         return lines
@@ -292,156 +244,32 @@ def _without(
     runs = np.flatnonzero(flagged.any(axis=1))
     if len(runs) == 0:
         return lines
-    part = Model(
-        design=model.design,
-        velocity_head=model.velocity_head[runs],
-        kind=model.kind,
-        floor=model.floor,
-        persistent=None if model.persistent is None else model.persistent[runs],
-        flow_effect=None if model.flow_effect is None else model.flow_effect[runs],
+    return replace_runs(
+        lines, runs, fit_model(observations[runs], used[runs], variance[runs], model.of_runs(runs))
     )
-    return replace_runs(lines, runs, _fit(observations[runs], used[runs], variance[runs], part))
-
-
-def _variances(scatter: tuple[Scatter, ...], model: Model, runs: int) -> Array:
-    """Variance of each observation, in one column where a run's observations share it."""
-    # Without scatter and without a statement the size does not matter: uncertainties are then not given.
-    parts = [
-        scatter_variance(part if np.isfinite(part.base) else replace(part, base=1e-3), model.velocity_head)
-        for part in scatter
-    ]
-    if not parts:
-        return np.ones((runs, 1))
-    relative = model.multiplier()
-    if len(parts) == 1 and model.repeats is None and (relative == 1.0).all():
-        return parts[0][:, None]
-    variance = np.column_stack(parts)[:, model.kind] * relative**2
-    return np.asarray(variance if model.repeats is None else variance / np.maximum(model.repeats, 1))
-
-
-def _sample(model: Model, runs: int) -> tuple[slice, Model]:
-    """Evenly spread runs to judge the scatter on."""
-    pick = slice(None, None, max(1, -(-runs // _SCATTER_RUNS)))
-    return pick, replace(
-        model,
-        velocity_head=model.velocity_head[pick],
-        repeats=None if model.repeats is None else model.repeats[pick],
-        persistent=None if model.persistent is None else model.persistent[pick],
-        flow_effect=None if model.flow_effect is None else model.flow_effect[pick],
-    )
-
-
-def _pooled_scatter(observations: Array, known: Mask, model: Model) -> tuple[Scatter, ...]:
-    """Scatter of each kind over the runs, each run trimmed of its worst readings."""
-    pick, part = _sample(model, len(observations))
-    y, used = observations[pick], known[pick]
-    # Before the scatter is known: readings of one kind alike, of several as they were stated.
-    several = len(np.unique(model.kind)) > 1
-    start = np.where(model.floor > 0, model.floor, 1e-3) if several else 1e-3 * model.multiplier()
-    alike = not several and (start == start[0]).all()
-    variance = np.full((len(y), 1), 1e-6) if alike else np.broadcast_to(start**2, used.shape)
-    if part.repeats is not None:
-        variance = np.broadcast_to(variance, used.shape) / np.maximum(part.repeats, 1)
-    found: tuple[Scatter, ...] = ()
-    for _ in range(_KIND_PASSES if several else 1):
-        new = _trimmed_scatter(y, used, variance, part)
-        settled = bool(found) and all(
-            abs(one.base - other.base) <= 0.01 * other.base for one, other in zip(new, found, strict=True)
-        )
-        found = new
-        if settled:
-            break
-        # The scatter of one kind is only seen apart from the other's once the weights are about right.
-        variance = _variances(found, part, len(y))
-    return found
-
-
-def _trimmed_scatter(y: Array, used: Mask, variance: Array, model: Model) -> tuple[Scatter, ...]:
-    """Scatter of each kind by the fits with these variances, each run trimmed of its worst readings."""
-    plain = replace(model, persistent=None)
-    lines = _fit(y, used, variance, plain)
-    shared = lines.projectors
-    unit = np.sqrt(shared.scale)[:, None]
-    counts = shared.used.sum(axis=1)
-    most = most_removable(counts, shared.rank)
-    removed = np.zeros(used.shape, dtype=bool)
-    ratio, shape = np.ones(len(y)), lines.dof.astype(float)
-    for pattern, cut in enumerate(trimming(most)):
-        if cut == 0:
-            continue
-        runs = np.flatnonzero(shared.index == pattern)
-        weighted = (lines.weighted_residuals * unit)[runs]
-        best = subset_falls(weighted, shared.weight[pattern], shared.used[pattern], int(cut))
-        removed[runs[:, None], best.members[:, cut - 1, :cut]] = True
-        expected, freedom = scale_moments(int(counts[pattern]), int(shared.rank[pattern]))
-        ratio[runs] = expected / (counts[pattern] - shared.rank[pattern] - cut)
-        shape[runs] = freedom
-    trimmed = _fit(y, used & ~removed, variance, plain) if removed.any() else lines
-    return _by_kind(trimmed, used & ~removed, variance, ratio, shape, model)
-
-
-def _final_scatter(lines: LineFits, used: Mask, variance: Array, model: Model) -> tuple[Scatter, ...]:
-    """Scatter of each kind of the readings that stand."""
-    pick, part = _sample(model, len(used))
-    shared = replace(lines.projectors, index=lines.projectors.index[pick], scale=lines.projectors.scale[pick])
-    sample = replace(lines, residuals=lines.residuals[pick], dof=lines.dof[pick], projectors=shared)
-    total = variance[pick] if part.persistent is None else variance[pick] + part.persistent**2
-    found = _by_kind(sample, used[pick], total, np.ones(len(used[pick])), sample.dof.astype(float), part)
-    if len(sample.dof) == len(used):
-        return found
-    return tuple(replace(scatter, dof=scatter.dof * len(used) / len(sample.dof)) for scatter in found)
-
-
-def _redundancy(lines: LineFits, used: Mask, variance: Array) -> Array:
-    """1 − leverage of each observation, zero where it did not enter."""
-    shared = lines.projectors
-    own = np.einsum("unn->un", shared.weight)[shared.index]
-    return np.where(used, own * variance / shared.scale[:, None], 0.0)
-
-
-def _by_kind(
-    lines: LineFits, used: Mask, variance: Array, ratio: Array, shape: Array, model: Model
-) -> tuple[Scatter, ...]:
-    """Split the runs' sums of squares over the kinds and fit each kind's scatter."""
-    redundancy = _redundancy(lines, used, variance)
-    times = (
-        np.ones(used.shape) if model.repeats is None else np.maximum(model.repeats, 1)
-    ) / model.multiplier() ** 2
-    squares = np.where(used, np.nan_to_num(lines.residuals) ** 2 * times, 0.0)
-    known = np.zeros(used.shape) if model.persistent is None else redundancy * model.persistent**2 * times
-    total = np.maximum(redundancy.sum(axis=1), 1e-12)
-    found = []
-    for kind in range(int(model.kind.max(initial=-1)) + 1):
-        mine = model.kind == kind
-        part = redundancy[:, mine].sum(axis=1)
-        found.append(
-            estimate_scatter(
-                squares[:, mine].sum(axis=1),
-                part * ratio,
-                shape * part / total,
-                model.velocity_head,
-                known=known[:, mine].sum(axis=1) / np.maximum(part, 1e-12),
-                floor=float(model.floor[mine].min()),
-            )
-        )
-    return tuple(found)
 
 
 def _misfit(lines: LineFits, variance: Array, model: Model) -> SharedMisfit:
-    pick, part = _sample(model, len(lines.residuals))
+    """Whether most runs share a misfit beyond what stated errors of taps and gauges may do."""
+    pick, part = sample_of(model, len(lines.residuals))
     shared = replace(lines.projectors, index=lines.projectors.index[pick], scale=lines.projectors.scale[pick])
     used = shared.used[shared.index]
-    total = variance[pick] if part.persistent is None else variance[pick] + part.persistent**2
     sample = replace(lines, residuals=lines.residuals[pick], projectors=shared)
-    redundancy = _redundancy(sample, used, total)
+    free = redundancy(sample, used, variance[pick])
+    # What is left of an error when the lines have taken their share of it.
+    left = (np.eye(used.shape[1]) - model.design @ shared.gain)[shared.index]
+    persistent = np.zeros(used.shape)
+    if part.persistent is not None:
+        persistent += np.einsum("rij,rj->ri", left**2, np.where(used, part.persistent, 0.0) ** 2)
+    if part.common is not None:
+        rest = np.einsum("rij,rjk->rik", left, np.where(used[:, :, None], part.common, 0.0))
+        persistent += (rest**2).sum(axis=2)
     return shared_misfit(
         np.where(used, sample.residuals, np.nan),
-        np.sqrt(np.maximum(redundancy, 0.0) * variance[pick]),
+        np.sqrt(free * variance[pick]),
         np.nan_to_num(lines.parameters[pick, model.slope_column]),
         part.velocity_head,
-        np.zeros(used.shape)
-        if part.persistent is None
-        else part.persistent * np.sqrt(np.maximum(redundancy, 0.0)),
+        np.sqrt(persistent),
     )
 
 
@@ -459,8 +287,8 @@ def _may_search(
         )
     if misfit is not None and misfit.shared:
         return Search(False, "most runs share a misfit, and single readings cannot be told from it")
-    for kind, part in enumerate(scatter if model.is_stated else ()):
-        stated = float(model.floor[model.kind == kind].max(initial=0.0))
+    for kind, part in enumerate(scatter):
+        stated = float(model.floor[model.kind == kind].min(initial=np.inf))
         if stated > 0 and part.pooled > _SUSPECT_SCATTER * stated:
             return Search(
                 False,
@@ -486,11 +314,14 @@ def _search(
     most = most_removable(counts, shared.rank)
     stated = model.is_stated
     critical = np.full((len(counts), MOST_OUTLIERS), np.inf)
+    # Of several kinds the one with the fewest readings is known the least: it sets how many runs the scale rests on.
+    readings = np.bincount(model.kind[shared.used.any(axis=0)]) if len(counts) else np.ones(1)
+    share = 1.0 if stated else readings[readings > 0].min() / readings.sum()
     for pattern in np.flatnonzero(most > 0):
         critical[pattern] = critical_falls(
             int(counts[pattern]),
             int(shared.rank[pattern]),
-            len(scale),
+            max(round(len(scale) * share), 1),
             stated=stated,
             independent=independent,
         )

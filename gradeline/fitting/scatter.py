@@ -10,13 +10,18 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import chdtri
 
 __all__ = ["Scatter", "estimate_scatter", "scatter_variance"]
 
 Array = NDArray[np.float64]
 
+#: Smallest scatter that is believed, m.
+_ROUNDING = 1e-6
 #: A surge is taken up only where it improves twice the log-likelihood by this much (5 %, one-sided).
 _SURGE_EVIDENCE = 2.71
+#: The same where one run may be the only witness (1 %).
+_LONE_EVIDENCE = 6.63
 #: No run's scatter counts for more than this many times what the model expects.
 _MOST_RATIO = 6.0
 
@@ -34,13 +39,21 @@ class Scatter:
     pooled : float
         σ₀ from the readings alone, before a stated floor, m; NaN where the readings leave no freedom.
     dof : float
-        Degrees of freedom of the pooled scatter, dimensionless.
+        Degrees of freedom of the pooled scatter, dimensionless; 0 where there are none.
+    stands : bool
+        Whether a stated uncertainty holds that the readings do not contradict: the scatter then counts as known.
     """
 
     base: float
     surge: float
     pooled: float
     dof: float
+    stands: bool = False
+
+    @property
+    def is_known(self) -> bool:
+        """Whether there is a scatter to judge by at all."""
+        return self.stands or self.dof > 0
 
 
 def estimate_scatter(
@@ -49,8 +62,9 @@ def estimate_scatter(
     shape: Array,
     velocity_head: Array,
     *,
-    known: Array | None = None,
-    floor: float = 0.0,
+    stated: float = 0.0,
+    resolution: float = 0.0,
+    trimmed: bool = False,
 ) -> Scatter:
     """Fit σ₀ and c to the runs' sums of squares.
 
@@ -64,19 +78,23 @@ def estimate_scatter(
         Degrees of freedom of the chi-square of the same relative spread, dimensionless.
     velocity_head : (R,) array
         V²/2g of each run, m.
-    known : (R,) array, optional
-        Variance from sources that are accounted for elsewhere, m²: taken out of the scatter.
-    floor : float
-        Stated uncertainty of one reading, with its resolution, m; 0 where nothing was stated.
+    stated : float
+        Stated uncertainty of one reading, m; 0 where none was stated. A floor under the base.
+    resolution : float
+        What the resolution of a reading adds to it, d/√12, m.
+    trimmed : bool
+        Whether the sums are trimmed of each run's worst readings. A single run's is then evidence for a surge; else
+        the surge must show without it, or an outlying reading in the fastest run would pass for one.
 
     Returns
     -------
     Scatter
-        With `base` at least `floor`.
+        With `base` at least `stated` and `resolution` together, and at least a micrometre: below that, what is left of
+        the readings is rounding.
 
     Notes
     -----
-    The variances s² = squares / expected are taken as gamma distributed about σ₀² + c² (V²/2g)² + known, and σ₀², c²
+    The variances s² = squares / expected are taken as gamma distributed about σ₀² + c² (V²/2g)², and σ₀², c²
     are found by iterated weighted least squares, which is the maximum likelihood of that model (P. McCullagh and
     J. A. Nelder, *Generalized Linear Models*, 2nd ed. 1989, ch. 8). c is kept only where the likelihood asks for it.
 
@@ -91,40 +109,39 @@ def estimate_scatter(
     """
     sound = np.isfinite(squares) & (expected > 1e-6)
     dof = float(shape[sound].sum())
+    floor = float(np.hypot(stated, resolution))
     if not sound.any():
-        base = floor if floor > 0 else np.nan
-        return Scatter(base=base, surge=0.0, pooled=np.nan, dof=0.0)
+        base = floor if stated > 0 else np.nan
+        return Scatter(base=base, surge=0.0, pooled=np.nan, dof=0.0, stands=stated > 0)
     variance = squares[sound] / expected[sound]
     freedom, head = shape[sound], velocity_head[sound]
-    given = np.zeros_like(variance) if known is None else known[sound]
-    flat = _fit(variance, freedom, np.zeros((len(head), 0)), given)
+    flat = _fit(variance, freedom, np.zeros((len(head), 0)))
     base2, surge2 = float(flat[0]), 0.0
     if len(variance) >= 4 and np.ptp(head) > 0:
-        steep = _fit(variance, freedom, (head**2)[:, None], given)
-        gains = _gains(variance, freedom, steep[0] + steep[1] * head**2 + given, base2 + given)
-        # One run is no evidence: a surge must show without the run that speaks loudest for it.
+        steep = _fit(variance, freedom, (head**2)[:, None])
+        gains = _gains(variance, freedom, steep[0] + steep[1] * head**2, np.full_like(head, base2))
         rest = np.arange(len(variance)) != int(gains.argmax())
-        if (
-            steep[1] > 0
-            and 2 * gains.sum() > _SURGE_EVIDENCE
-            and _surges(variance, freedom, head, given, rest)
-        ):
+        witnessed = trimmed and 2 * gains.sum() > _LONE_EVIDENCE
+        shown = 2 * gains.sum() > _SURGE_EVIDENCE and _surges(variance, freedom, head, rest)
+        if steep[1] > 0 and (witnessed or shown):
             base2, surge2 = float(steep[0]), float(steep[1])
     pooled = float(np.sqrt(base2))
-    return Scatter(base=max(pooled, floor), surge=float(np.sqrt(surge2)), pooled=pooled, dof=dof)
+    # No contradiction: the pooled variance lies below the 95 % point of its chi-square about the stated one.
+    stands = stated > 0 and dof * base2 <= float(chdtri(dof, 0.05)) * floor**2
+    return Scatter(max(pooled, floor, _ROUNDING), float(np.sqrt(surge2)), pooled, dof, stands)
 
 
-def _fit(variance: Array, freedom: Array, extra: Array, given: Array) -> Array:
+def _fit(variance: Array, freedom: Array, extra: Array) -> Array:
     """Non-negative weighted least squares of the variances, weights renewed until they settle."""
     columns = np.column_stack([np.ones(len(variance)), extra])
     tiny = max(float(np.median(variance)), 1e-30) * 1e-9
     estimate = np.zeros(columns.shape[1])
-    estimate[0] = max(float(np.median(variance - given)), tiny)
+    estimate[0] = max(float(np.median(variance)), tiny)
     for _ in range(30):
-        model = columns @ estimate + given
+        model = columns @ estimate
         bounded = np.minimum(variance, _MOST_RATIO * model)
         weight = freedom / model**2
-        new = _non_negative(columns, bounded - given, weight)
+        new = _non_negative(columns, bounded, weight)
         new[0] = max(float(new[0]), tiny)
         done = bool(np.all(np.abs(new - estimate) <= 1e-10 * np.abs(estimate) + 1e-300))
         estimate = new
@@ -152,12 +169,12 @@ def _non_negative(columns: Array, values: Array, weight: Array) -> Array:
     return edge
 
 
-def _surges(variance: Array, freedom: Array, head: Array, given: Array, runs: NDArray[np.bool_]) -> bool:
+def _surges(variance: Array, freedom: Array, head: Array, runs: NDArray[np.bool_]) -> bool:
     """Whether the likelihood of these runs asks for a surge."""
-    part = [values[runs] for values in (variance, freedom, head, given)]
-    flat = _fit(part[0], part[1], np.zeros((len(part[0]), 0)), part[3])
-    steep = _fit(part[0], part[1], (part[2] ** 2)[:, None], part[3])
-    gains = _gains(part[0], part[1], steep[0] + steep[1] * part[2] ** 2 + part[3], flat[0] + part[3])
+    part = [values[runs] for values in (variance, freedom, head)]
+    flat = _fit(part[0], part[1], np.zeros((len(part[0]), 0)))
+    steep = _fit(part[0], part[1], (part[2] ** 2)[:, None])
+    gains = _gains(part[0], part[1], steep[0] + steep[1] * part[2] ** 2, np.full_like(part[0], flat[0]))
     return bool(steep[1] > 0 and 2 * gains.sum() > _SURGE_EVIDENCE)
 
 

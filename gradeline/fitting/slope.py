@@ -25,8 +25,8 @@ _CHUNK = 4096
 class Projectors:
     """What depends on a run's pattern alone, one entry for each distinct pattern.
 
-    Variances are relative: the variance of observation i in run r is ``scale[r] * variance[u, i]`` plus the rank-one
-    part of the flow error, with ``u = index[r]``.
+    Variances are relative: the variance of observation i in run r is ``scale[r] * variance[u, i]`` plus the
+    low-rank part of the common errors, with ``u = index[r]``.
 
     Parameters
     ----------
@@ -96,7 +96,7 @@ def project(
     design: Array,
     variance: Array,
     used: NDArray[np.bool_],
-    flow_effect: Array | None = None,
+    common: Array | None = None,
 ) -> Projectors:
     """Work out the projectors of all runs.
 
@@ -108,9 +108,9 @@ def project(
         Variance of each observation, m², > 0 where used; one column where a run's observations share it.
     used : (R, n) bool array
         Which observations enter.
-    flow_effect : (R, n) array, optional
-        Change of each observation for one standard uncertainty of the run's flow, m: a nuisance common to the run's
-        observations, marginalised (its covariance is ``flow_effect ⊗ flow_effect``).
+    common : (R, n, k) array, optional
+        Change of each observation for one standard uncertainty of k errors that several observations of a run share
+        (the run's flow, the zero of a gauge), m: nuisances, marginalised (their covariance is B B').
 
     Returns
     -------
@@ -119,8 +119,8 @@ def project(
 
     Notes
     -----
-    Generalised least squares, θ = (A'WA)⁺ A'W y with W = (diag(variance) + b b')⁻¹ and b the flow effect; the
-    inverse of the rank-one update by Sherman and Morrison. The normal matrix is scaled to a unit diagonal before its
+    Generalised least squares, θ = (A'WA)⁺ A'W y with W = (diag(variance) + B B')⁻¹ and B the common errors; the
+    inverse of the low-rank update by Woodbury. The normal matrix is scaled to a unit diagonal before its
     rank is judged, and a parameter is estimable where it has no part in the null space (Å. Björck, *Numerical
     Methods for Least Squares Problems*, SIAM 1996, ch. 1 and 2).
 
@@ -141,16 +141,16 @@ def project(
         scale[~np.isfinite(scale)] = 1.0
         relative = masked / scale[:, None]
     effect = None
-    if flow_effect is not None and np.any(flow_effect):
-        effect = np.where(used, flow_effect, 0.0) / np.sqrt(scale)[:, None]
+    if common is not None and np.any(common):
+        effect = np.where(used[:, :, None], common, 0.0) / np.sqrt(scale)[:, None, None]
     index, first = _patterns(relative, effect)
     inverse = relative[first].astype(float) if variance.shape[1] == 1 else 1.0 / relative[first]
     weight = np.zeros((len(first), n, n))
     weight[:, np.arange(n), np.arange(n)] = inverse
     if effect is not None:
-        turned = inverse * effect[first]
-        lost = 1.0 + np.einsum("un,un->u", turned, effect[first])
-        weight -= turned[:, :, None] * turned[:, None, :] / lost[:, None, None]
+        turned = inverse[:, :, None] * effect[first]
+        core = np.eye(effect.shape[2]) + np.einsum("unk,unl->ukl", turned, effect[first])
+        weight -= np.einsum("unk,ukl,uml->unm", turned, np.linalg.inv(core), turned)
     half = np.einsum("np,unm->upm", design, weight)
     normal = half @ design
     diagonal = np.sqrt(np.maximum(np.einsum("upp->up", normal), 0.0))
@@ -179,7 +179,7 @@ def _patterns(
     relative: NDArray[np.float64 | np.bool_], effect: Array | None
 ) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
     """Tell which runs share a pattern: (index of the pattern per run, a run that has it)."""
-    key = relative if effect is None else np.hstack([relative, effect])
+    key = relative if effect is None else np.hstack([relative, effect.reshape(len(effect), -1)])
     if len(key) == 0:
         return np.zeros(0, dtype=np.intp), np.zeros(0, dtype=np.intp)
     if (key == key[0]).all():

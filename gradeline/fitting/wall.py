@@ -109,7 +109,8 @@ class WallFit:
     expected_slope : (R, K) array
         S by the fitted law, the shared errors as the other runs show them, dimensionless.
     relative_scatter : float
-        Scatter of S from run to run off the law, dimensionless, where the readings of a run leave none; else NaN.
+        Scatter of S from run to run off the law beyond the runs' own stated flow and temperature errors,
+        dimensionless, where the readings of a run leave none; else NaN.
     dof : float
         Degrees of freedom of the interval, dimensionless; infinite where the scatter is known.
     trend, trend_u : float
@@ -218,7 +219,7 @@ def _covariance(data: WallData, roughness: float, used: Mask, relative_scatter: 
     inverse = np.where(both, np.linalg.inv(block), 0.0)
     effect = np.where(np.isfinite(effect), effect, 0.0)
     turned = np.einsum("rkl,rlq->rkq", inverse, effect)
-    core = np.linalg.inv(np.eye(effect.shape[2]) + np.einsum("rkp,rkq->pq", effect, turned))
+    core = np.linalg.pinv(np.eye(effect.shape[2]) + np.einsum("rkp,rkq->pq", effect, turned), hermitian=True)
     return _Covariance(inverse, variance, effect, core)
 
 
@@ -412,10 +413,12 @@ def _first_scatter(residual: Array, used: Mask) -> float:
 
 
 def _scatter_off_law(data: WallData, used: Mask, covariance: _Covariance, roughness: float) -> float:
-    """Scale of the slopes off the law once ε and the shared errors are taken out."""
+    """Scale of the slopes off the law once ε and the shared errors are taken out, beyond the runs' own errors."""
     residual = _residual(data, used, roughness)
     rest = residual - np.einsum("rkq,q->rk", covariance.effect, covariance.shared(residual))
-    return max(float(np.sqrt((rest[used] ** 2).sum() / max(used.sum() - 1, 1))), 1e-6)
+    own = _covariance(data, roughness, used, 1e-6).variance
+    excess = (rest[used] ** 2).sum() / max(used.sum() - 1, 1) - own[used].mean()
+    return float(np.sqrt(max(excess, 1e-12)))
 
 
 def _settle(

@@ -18,7 +18,17 @@ from gradeline.errors import QuantityError
 from gradeline.loader.ledger import PLACEHOLDER, Ledger
 from gradeline.quantities import Unit, parse_number
 
-__all__ = ["Cells", "Heading", "Hints", "column_index", "nearest", "numbers", "parse_heading", "read_cells"]
+__all__ = [
+    "Cells",
+    "Heading",
+    "Hints",
+    "column_index",
+    "nearest",
+    "numbers",
+    "parse_heading",
+    "read_cells",
+    "round_brackets",
+]
 
 _NOT_NUMERIC = re.compile(r"[^0-9eE.+\-\n]")
 _TO_FILL_IN = "the value is still to be filled in"
@@ -55,6 +65,8 @@ class Cells:
         The line of each row as an editor shows it.
     heading_line : int
         The line of the heading.
+    doubled : frozenset of str
+        Names that more than one heading has; the first of them is kept.
     """
 
     file: str
@@ -62,6 +74,7 @@ class Cells:
     columns: tuple[list[str], ...]
     lines: list[int]
     heading_line: int = 1
+    doubled: frozenset[str] = frozenset()
 
     def __len__(self) -> int:
         return len(self.lines)
@@ -80,6 +93,23 @@ def parse_heading(text: str) -> Heading:
     stripped = " ".join(text.split())
     found = re.fullmatch(r"(.*?)\s*\[([^\[\]]*)\]", stripped)
     return Heading(stripped, found[1], found[2].strip()) if found else Heading(stripped, stripped, None)
+
+
+def round_brackets(heading: Heading, known: Iterable[str]) -> tuple[str, str] | None:
+    """Return the known name and the unit of a heading whose unit stands in round brackets, None otherwise.
+
+    Examples
+    --------
+    >>> round_brackets(parse_heading("T3 (mm)"), ["T3"])
+    ('T3', 'mm')
+    >>> round_brackets(parse_heading("T3 (top)"), ["T3 (top)"]) is None
+    True
+    """
+    found = re.fullmatch(r"(.+?)\s*[({]\s*([^(){}]*?)\s*[)}]", heading.text)
+    names = set(known)
+    if heading.unit is not None or heading.name in names or found is None or found[1] not in names:
+        return None
+    return found[1], found[2]
 
 
 def nearest(name: str, known: Iterable[str]) -> str:
@@ -201,6 +231,8 @@ def _named_columns(ledger: Ledger, cells: Cells) -> Cells:
     line = cells.heading_line
     kept: list[int] = []
     seen: set[str] = set()
+    doubled: set[str] = set()
+    listed = any(heading.name == "tap" for heading in cells.headings)
     for index, heading in enumerate(cells.headings):
         if heading.name.casefold().startswith("note"):
             continue
@@ -209,9 +241,14 @@ def _named_columns(ledger: Ledger, cells: Cells) -> Cells:
                 ledger.problem(cells.file, line, None, f"column {index + 1} has no heading; name it")
             continue
         if heading.name in seen:
-            ledger.problem(
-                cells.file, line, heading.text, f"two columns are called {heading.name!r}; keep one of them"
-            )
+            rule = "keep one of them"
+            if listed and heading.name == "reading":
+                rule = (
+                    "readings listed one a row have one column 'reading [unit]', or a column 'reading' beside a "
+                    "column 'unit'"
+                )
+            ledger.problem(cells.file, line, heading.text, f"two columns are called {heading.name!r}; {rule}")
+            doubled.add(heading.name)
             continue
         seen.add(heading.name)
         kept.append(index)
@@ -221,6 +258,7 @@ def _named_columns(ledger: Ledger, cells: Cells) -> Cells:
         tuple(cells.columns[index] for index in kept),
         cells.lines,
         line,
+        frozenset(doubled),
     )
 
 

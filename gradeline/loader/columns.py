@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from gradeline.errors import QuantityError
-from gradeline.loader.cells import Cells, column_index, nearest, numbers
+from gradeline.loader.cells import Cells, Heading, column_index, nearest, numbers, round_brackets
 from gradeline.loader.ledger import PLACEHOLDER, Ledger
 from gradeline.quantities import DIMENSIONS, Unit, parse_unit
 
@@ -61,7 +61,20 @@ class Columns:
         self.ledger, self.cells, self.known = ledger, cells, known
         self.units: dict[str, Unit | None] = {}
         self._values: dict[str, np.ndarray] = {}
-        present = {heading.name for heading in cells.headings}
+        #: Headings of known columns whose unit stands in round brackets: a problem each, and no column.
+        self.misnamed: dict[str, Heading] = {}
+        measured = [name for name, column in known.items() if column.dimensions]
+        for heading in cells.headings:
+            found = round_brackets(heading, measured)
+            if found is not None:
+                self.misnamed[found[0]] = heading
+                ledger.problem(
+                    cells.file,
+                    cells.heading_line,
+                    heading.text,
+                    f"units stand in square brackets; write {f'{found[0]} [{found[1]}]'!r}",
+                )
+        present = {heading.name for heading in cells.headings} | set(self.misnamed)
         for name, column in known.items():
             if column.required and name not in present:
                 unit = f" [{DIMENSIONS[column.dimensions[0]].units[0]}]" if column.dimensions else ""
@@ -71,7 +84,7 @@ class Columns:
         for heading in cells.headings:
             if heading.name in known:
                 self.units[heading.name] = self._unit(heading.name)
-            elif not others:
+            elif not others and heading not in self.misnamed.values():
                 ledger.problem(
                     cells.file,
                     cells.heading_line,

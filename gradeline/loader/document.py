@@ -32,6 +32,7 @@ from gradeline.loader.keys import (
 )
 from gradeline.loader.ledger import PLACEHOLDER, Ledger
 from gradeline.quantities import Measured
+from gradeline.quantities.parsing import unit_of
 from gradeline.survey import GAUGE_KINDS, Stated
 
 __all__ = ["LINE_FLUIDS", "NAME", "Document", "FittingTable", "GaugeTable", "ReachTable", "read_document"]
@@ -139,7 +140,10 @@ class GaugeTable:
 
 @dataclass(frozen=True)
 class Document:
-    """What ``survey.toml`` says, table by table; None stands for a table at fault."""
+    """What ``survey.toml`` says, table by table; None stands for a table at fault.
+
+    `units` has the unit of each value of the gauges and of ``[uncertainty]`` as written, by its key.
+    """
 
     survey: SurveyTable | None
     fluid: FluidTable | None
@@ -148,6 +152,7 @@ class Document:
     reaches: tuple[ReachTable | None, ...]
     fittings: tuple[FittingTable | None, ...]
     gauges: Mapping[str, GaugeTable] = field(default_factory=dict)
+    units: Mapping[str, str] = field(default_factory=dict)
 
 
 @functools.cache
@@ -238,7 +243,24 @@ def read_document(ledger: Ledger) -> Document | None:
         reaches=lists["reach"],  # type: ignore[arg-type]
         fittings=lists["fitting"],  # type: ignore[arg-type]
         gauges=_gauges(ledger, data.get("gauge")),
+        units=_units(data),
     )
+
+
+def _units(data: Mapping[str, Any]) -> dict[str, str]:
+    """The unit of every value of the gauges and of ``[uncertainty]``."""
+    gauges = data.get("gauge")
+    tables = {"uncertainty": data.get("uncertainty")}
+    tables |= (
+        {f"gauge.{name.strip()}": table for name, table in gauges.items()} if isinstance(gauges, dict) else {}
+    )
+    return {
+        f"{path}.{key}": unit
+        for path, table in tables.items()
+        if isinstance(table, dict)
+        for key, value in table.items()
+        if isinstance(value, str) and (unit := unit_of(value))
+    }
 
 
 def _paths(value: object, path: str = "", depth: int = 0) -> Iterator[str]:

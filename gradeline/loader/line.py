@@ -6,7 +6,7 @@ import itertools
 from collections.abc import Sequence
 from typing import Any, Literal, cast
 
-from gradeline.loader.document import LINE_FLUIDS, NAME, Document, FittingTable, GaugeTable
+from gradeline.loader.document import LINE_FLUIDS, NAME, Document, FittingTable, GaugeTable, ReachTable
 from gradeline.loader.ledger import Ledger
 from gradeline.quantities import Measured
 from gradeline.survey import GAUGE_KINDS, Fitting, Fluid, Gauge, Reach, Site, Stated, StatedUncertainties
@@ -19,11 +19,13 @@ __all__ = [
     "build_site",
     "build_stated",
     "check_gauge_temperatures",
+    "check_given_fluid",
     "within_line",
 ]
 
 _SAME_PLACE = 1e-6
 _ROUNDING = 1e-9
+_SMALLEST_BORE, _LARGEST_BORE = 1e-4, 20.0
 
 
 def within_line(chainage: float, reaches: Sequence[Reach]) -> float | None:
@@ -114,6 +116,7 @@ def build_reaches(ledger: Ledger, document: Document) -> tuple[Reach, ...] | Non
                 f"the reach ends at {table.end:g} m, not after its start at {table.start:g} m; "
                 "chainage increases downstream",
             )
+        _check_bore(ledger, document, table, path)
         if any(table.name == other.name for other in reaches):
             sound = False
             ledger.problem(
@@ -133,6 +136,21 @@ def build_reaches(ledger: Ledger, document: Document) -> tuple[Reach, ...] | Non
                 "reaches follow each other without a gap or overlap",
             )
     return tuple(reaches) if sound and reaches else None
+
+
+def _check_bore(ledger: Ledger, document: Document, table: ReachTable, path: str) -> None:
+    """Note a bore that no pipe has, most often one in the wrong unit."""
+    bore, length = table.diameter.value, table.end - table.start
+    on_plan = document.survey is not None and document.survey.chainage_is == "plan"  # a steep pipe is longer
+    if bore > _LARGEST_BORE:
+        fault = f"a bore of {bore:g} m is above {_LARGEST_BORE:g} m"
+    elif bore < _SMALLEST_BORE:
+        fault = f"a bore of {1000 * bore:g} mm is below {1000 * _SMALLEST_BORE:g} mm"
+    elif bore > length > 0 and not on_plan:
+        fault = f"a bore of {bore:g} m is larger than the reach's length of {length:g} m"
+    else:
+        return
+    ledger.problem(NAME, None, f"{path}.diameter", f"{fault}; is the unit right? Mend the value or the unit")
 
 
 def build_fittings(
@@ -265,10 +283,28 @@ def check_gauge_temperatures(
                 NAME,
                 None,
                 f"gauge.{gauge.name}.{key}",
-                f"{whose} is missing or lies outside {low - 273.15:g} to {high - 273.15:g} degC, where the density "
-                f"of {name} is known; "
+                f"{whose} is missing or does not lie above {low - 273.15:g} degC and up to {high - 273.15:g} degC, "
+                f"where the density of {name} is known; "
                 + ("mend the value or the unit" if stated is not None else f"add {key}"),
             )
+
+
+def check_given_fluid(ledger: Ledger, document: Document, fluid: Fluid) -> None:
+    """Note the temperatures of columns and lines that change nothing, since the fluid's density is given."""
+    if fluid.density is None:
+        return
+    for gauge in document.gauges.values():
+        values = gauge.values or {}
+        idle = ["column_temperature"] + ([] if values.get("line_fluid") else ["line_temperature"])
+        for key in idle:
+            if values.get(key) is not None:
+                ledger.problem(
+                    NAME,
+                    None,
+                    f"gauge.{gauge.name}.{key}",
+                    f"the key has no effect, as [fluid] gives one density of {fluid.name} for all temperatures; "
+                    "take it away",
+                )
 
 
 def _value(stated: Stated | None) -> Any:

@@ -17,8 +17,10 @@ from gradeline.loader.line import (
     build_site,
     build_stated,
     check_gauge_temperatures,
+    check_given_fluid,
 )
-from gradeline.loader.readings import RunTable, read_runs
+from gradeline.loader.readings import read_runs
+from gradeline.loader.repeats import RunTable
 from gradeline.loader.statements import state_assumptions, state_cautions
 from gradeline.loader.taps import TapTable, read_taps
 from gradeline.survey import Fitting, Fluid, Observation, Reach, StatedUncertainties, Survey
@@ -64,6 +66,8 @@ def read_survey(path: str | os.PathLike[str]) -> Survey:
     stated = StatedUncertainties()
     if document is not None:
         fluid = build_fluid(ledger, document)
+        if fluid is not None:
+            check_given_fluid(ledger, document, fluid)
         reaches = build_reaches(ledger, document)
         fittings = build_fittings(ledger, document, reaches)
         stated = build_stated(ledger, document)
@@ -113,8 +117,8 @@ def _compose(
             "Chainages are measured on the plan: they are made true lengths with the elevations of the taps, "
             "straight between taps and level before the first and after the last."
         )
-    state_assumptions(ledger, document, taps=table, gauges=gauges, runs=runs.runs)
-    state_cautions(ledger, stated, fluid=fluid, reaches=reaches, taps=taps, gauges=gauges, runs=runs.runs)
+    state_assumptions(ledger, document, taps=table, gauges=gauges, fluid=fluid, runs=runs)
+    state_cautions(ledger, stated, fluid=fluid, reaches=reaches, taps=taps, gauges=gauges, runs=runs)
     return Survey(
         title=(header.title if header is not None else None) or ledger.folder.resolve().name,
         source=str(ledger.folder),
@@ -134,5 +138,9 @@ def _compose(
         assumptions=tuple(ledger.assumptions),
         cautions=tuple(ledger.cautions),
         date=header.date if header is not None else None,
-        units={**{f"taps.csv {k}": v for k, v in table.units.items()}, **runs.units},
+        units={
+            **{f"{NAME} {key}": unit for key, unit in document.units.items()},
+            **{f"{table.file} {column}": unit for column, unit in table.units.items()},
+            **runs.units,
+        },
     )

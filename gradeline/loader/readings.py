@@ -3,15 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
 
 import numpy as np
-import pandas as pd
 
 from gradeline.errors import QuantityError
-from gradeline.loader.cells import Cells, Hints, column_index, numbers, read_cells
+from gradeline.loader.cells import Cells, Hints, column_index, nearest, numbers, read_cells, round_brackets
 from gradeline.loader.columns import Columns, Known, read_unit
+from gradeline.loader.grouped import TOLD_SINGLY, by_name, quoted, rows_phrase
 from gradeline.loader.ledger import Ledger
+from gradeline.loader.repeats import Rows, RunTable, averaged, check_repeated_flows
 from gradeline.loader.taps import TapTable
 from gradeline.quantities import Unit, parse_unit
 from gradeline.survey import Stated
@@ -30,35 +30,8 @@ _LONG_COLUMNS: Mapping[str, Known] = {
     "unit": Known(),
 }
 _NOT_READ = "leave the cell empty if the tap was not read"
+_EMPTY_SINGLY = 10
 _ZERO_CELSIUS, _BOILING = 273.15, 373.15
-_FLOWS_APART = 0.02
-
-
-@dataclass(frozen=True)
-class RunTable:
-    """Runs and readings as `gradeline.survey.Survey` holds them, with the units they came in."""
-
-    runs: pd.DataFrame
-    readings: pd.DataFrame
-    repeats: pd.DataFrame
-    spreads: pd.DataFrame
-    units: Mapping[str, str]
-
-
-@dataclass
-class _Rows:
-    """Rows of runs and single readings, before they are averaged: one reading is (run, tap, value, given)."""
-
-    labels: list[str]
-    lines: list[int]
-    flow: np.ndarray
-    temperature: np.ndarray
-    columns: Columns
-    run_codes: dict[str, int] = field(default_factory=dict)
-    reading_runs: np.ndarray = field(default_factory=lambda: np.empty(0, int))
-    reading_taps: np.ndarray = field(default_factory=lambda: np.empty(0, int))
-    values: np.ndarray = field(default_factory=lambda: np.empty(0))
-    given: np.ndarray = field(default_factory=lambda: np.empty(0, bool))
 
 
 def read_runs(
@@ -108,18 +81,21 @@ def read_runs(
     if rows is None:
         return None
     _check_runs(ledger, rows, is_water=is_water)
-    _check_repeated_flows(rows, flow_u)
+    check_repeated_flows(rows, flow_u)
     if taps is None:
         return None
     _check_taken(rows)
     table_units = {name: unit.text for name, unit in rows.columns.units.items() if unit is not None}
-    return _averaged(rows, taps.distinct, table_units | units)
+    gauges = {tap.name: tap.gauge for tap in taps.taps}
+    return averaged(
+        rows, taps.distinct, [gauges.get(name) for name in taps.distinct], table_units | units, listed=long
+    )
 
 
-def _run_rows(ledger: Ledger, cells: Cells, *, others: bool) -> _Rows:
+def _run_rows(ledger: Ledger, cells: Cells, *, others: bool) -> Rows:
     columns = Columns(ledger, cells, _RUN_COLUMNS, others=others)
     labels = columns.labels("run")
-    return _Rows(
+    return Rows(
         labels=labels,
         lines=cells.lines,
         flow=columns.values("flow"),
@@ -132,7 +108,7 @@ def _run_rows(ledger: Ledger, cells: Cells, *, others: bool) -> _Rows:
 def _wide_readings(
     ledger: Ledger,
     cells: Cells,
-    rows: _Rows,
+    rows: Rows,
     taps: TapTable | None,
 ) -> dict[str, str]:
     """Add a column for each tap to `rows`; return the units."""
@@ -143,9 +119,18 @@ def _wide_readings(
     codes = {name: code for code, name in enumerate(names)}
     blocks: list[tuple[int, np.ndarray, np.ndarray]] = []
     read = set()
+    misnamed: list[tuple[str, str, str]] = []
+    places: list[int] = []
     hints = Hints([*_RUN_COLUMNS, *names])
     for index, heading in enumerate(cells.headings):
-        if heading.name in _RUN_COLUMNS:
+        if heading.name in _RUN_COLUMNS or heading in rows.columns.misnamed.values():
+            continue
+        bracketed = round_brackets(heading, codes)
+        if bracketed is not None:
+            misnamed.append((heading.text, *bracketed))
+            read.add(bracketed[0])
+            given = np.array([bool(cell) for cell in cells.columns[index]])
+            blocks.append((codes[bracketed[0]], np.full(len(cells), np.nan), given))
             continue
         if heading.name not in codes:
             hint = hints(heading.name)
@@ -165,6 +150,15 @@ def _wide_readings(
             units[heading.name] = unit.text
             values = numbers(ledger, cells, index, unit, remedy=_NOT_READ)
         blocks.append((codes[heading.name], values, np.array([bool(cell) for cell in cells.columns[index]])))
+        places.append(index)
+    for heading_text, name, unit_text in misnamed[: 1 if len(misnamed) > TOLD_SINGLY else None]:
+        others = f", and so on for {len(misnamed) - 1} more taps" if len(misnamed) > TOLD_SINGLY else ""
+        ledger.problem(
+            cells.file,
+            cells.heading_line,
+            heading_text,
+            f"units stand in square brackets; write {f'{name} [{unit_text}]'!r}{others}",
+        )
     for name in names:
         if name not in read:
             _unread(ledger, taps, name, f"has no column in {cells.file}; add one headed '{name} [unit]'")
@@ -173,6 +167,13 @@ def _wide_readings(
     rows.reading_taps = np.repeat(np.array([code for code, _, _ in blocks], dtype=int), len(cells))
     rows.values = np.concatenate([values for _, values, _ in blocks]) if blocks else np.empty(0)
     rows.given = np.concatenate([given for _, _, given in blocks]) if blocks else np.empty(0, bool)
+
+    def told(reading: int) -> str:
+        block, row = divmod(reading, len(cells))
+        column, unit = cells.columns[places[block]], cells.headings[places[block]].unit
+        return f"{column[row]} {unit} ({cells.file} row {cells.lines[row]})"
+
+    rows.told = told
     return units
 
 
@@ -183,7 +184,7 @@ def _unread(ledger: Ledger, taps: TapTable, name: str, message: str) -> None:
 def _long_readings(
     ledger: Ledger,
     cells: Cells,
-    rows: _Rows | None,
+    rows: Rows | None,
     taps: TapTable | None,
 ) -> dict[str, str]:
     """Add readings listed by run and tap to `rows`; return the units."""
@@ -191,13 +192,11 @@ def _long_readings(
     run_labels, tap_labels = columns.labels("run"), columns.labels("tap")
     known_runs = rows.run_codes if rows is not None else None
     known_taps = {name: code for code, name in enumerate(taps.distinct)} if taps is not None else None
-    run_hints, tap_hints = Hints(known_runs or ()), Hints(known_taps or ())
-    for row, (run, tap) in enumerate(zip(run_labels, tap_labels, strict=True)):
-        if known_runs is not None and run and run not in known_runs:
-            columns.problem(row, "run", f"there is no run {run!r} in runs.csv; {run_hints(run)}")
-        if known_taps is not None and tap and tap not in known_taps:
-            columns.problem(row, "tap", f"there is no tap {tap!r} in taps.csv; {tap_hints(tap)}")
-    if "reading" not in columns or taps is None or known_taps is None:
+    if known_runs is not None:
+        _unknown_labels(columns, "run", run_labels, known_runs, "runs.csv")
+    if known_taps is not None:
+        _unknown_labels(columns, "tap", tap_labels, known_taps, "taps.csv")
+    if "reading" not in columns or "reading" in cells.doubled or taps is None or known_taps is None:
         return {}
     given = np.array([bool(cell) for cell in columns.raw("reading")])
     values, units = _long_values(ledger, columns, tap_labels, given, taps)
@@ -212,7 +211,40 @@ def _long_readings(
     sound = (runs >= 0) & (of_taps >= 0)
     rows.reading_runs, rows.reading_taps = runs[sound], of_taps[sound]
     rows.values, rows.given = values[sound], given[sound]
+    places = np.flatnonzero(sound)
+    unit_texts = columns.raw("unit") if "unit" in columns else None
+    own = cells.headings[column_index(cells, "reading") or 0].unit
+
+    def told(reading: int) -> str:
+        row = int(places[reading])
+        unit = unit_texts[row] if unit_texts is not None else own
+        return f"{columns.raw('reading')[row]} {unit} ({cells.file} row {cells.lines[row]})"
+
+    rows.told = told
     return units
+
+
+def _unknown_labels(
+    columns: Columns, name: str, labels: Sequence[str], known: Mapping[str, int], file: str
+) -> None:
+    """Note the labels that another file does not have: each once, many as one."""
+    unknown = {label: places for label, places in by_name(labels).items() if label and label not in known}
+    lines = columns.cells.lines
+    if len(unknown) > TOLD_SINGLY:
+        rows = [place for places in unknown.values() for place in places]
+        first = next(iter(unknown))
+        columns.problem(
+            rows[0],
+            name,
+            f"there are {len(unknown)} {name}s that are not in {file}: {quoted(unknown)}, in "
+            f"{rows_phrase(lines[row] for row in rows)}; {nearest(first, known)}",
+        )
+        return
+    for label, places in unknown.items():
+        also = f" (nor for {rows_phrase(lines[row] for row in places[1:])})" if len(places) > 1 else ""
+        columns.problem(
+            places[0], name, f"there is no {name} {label!r} in {file}{also}; {nearest(label, known)}"
+        )
 
 
 def _long_values(
@@ -283,7 +315,7 @@ def _raw_numbers(ledger: Ledger, cells: Cells, index: int) -> np.ndarray:
     return numbers(ledger, cells, index, Unit("", "dimensionless", 1.0), remedy=_NOT_READ)
 
 
-def _check_runs(ledger: Ledger, rows: _Rows, *, is_water: bool | None) -> None:
+def _check_runs(ledger: Ledger, rows: Rows, *, is_water: bool | None) -> None:
     """Flows at or above zero, and temperatures at which the fluid flows."""
     columns = rows.columns
     if "flow" in columns:
@@ -295,7 +327,7 @@ def _check_runs(ledger: Ledger, rows: _Rows, *, is_water: bool | None) -> None:
                 row, "flow", f"{raw[row]} is negative; chainage increases downstream, so turn the line round"
             )
     if "temperature" not in columns:
-        if is_water:
+        if is_water and "temperature" not in columns.misnamed:
             ledger.problem(
                 columns.cells.file,
                 columns.cells.heading_line,
@@ -312,7 +344,7 @@ def _check_runs(ledger: Ledger, rows: _Rows, *, is_water: bool | None) -> None:
                 "the cell is empty; water has its density and viscosity from the temperature",
             )
         outside = (rows.temperature <= _ZERO_CELSIUS) | (rows.temperature > _BOILING)
-        rule = "lies outside 0 to 100 degC, where water is a liquid; mend the value or the unit"
+        rule = "does not lie above 0 degC and up to 100 degC, where water is a liquid; mend the value or the unit"
     else:
         outside = rows.temperature <= 0
         rule = "lies below absolute zero; mend the value or the unit"
@@ -321,76 +353,24 @@ def _check_runs(ledger: Ledger, rows: _Rows, *, is_water: bool | None) -> None:
         columns.problem(row, "temperature", f"{raw[row]} {unit.text if unit else ''} {rule}")
 
 
-def _check_repeated_flows(rows: _Rows, flow_u: Stated | None) -> None:
-    """Repeats of a run are one flow: apart by no more than 2 % or three stated uncertainties."""
-    if len(rows.run_codes) == len(rows.labels) or "flow" not in rows.columns:
-        return
-    members: dict[str, list[int]] = {}
-    for row, label in enumerate(rows.labels):
-        members.setdefault(label, []).append(row)
-    for label, places in members.items():
-        flows = rows.flow[places]
-        if len(places) < 2 or not label or np.isnan(flows).any():
-            continue
-        mean = float(flows.mean())
-        allowed = max(_FLOWS_APART * mean, 3 * flow_u.of(mean) if flow_u is not None else 0.0)
-        if np.ptp(flows) > allowed:
-            raw = rows.columns.raw("flow")
-            listed = ", ".join(f"{raw[row]} (row {rows.lines[row]})" for row in places[:6])
-            rows.columns.problem(
-                places[-1],
-                "flow",
-                f"the repeats of run {label!r} have the flows {listed}, further apart than 2 % or three times "
-                "the stated uncertainty; give runs at different flows their own labels",
-            )
-
-
-def _check_taken(rows: _Rows) -> None:
+def _check_taken(rows: Rows) -> None:
     """Every run has at least one reading."""
     taken = np.bincount(rows.reading_runs, weights=rows.given, minlength=len(rows.run_codes)) > 0
     if not len(rows.values):
         return
-    for label, code in rows.run_codes.items():
-        if label and not taken[code]:
-            row = rows.labels.index(label)
-            rows.columns.problem(
-                row, "run", f"all readings of run {label!r} are empty; enter them or take the run away"
-            )
-
-
-def _averaged(rows: _Rows, names: Sequence[str], units: Mapping[str, str]) -> RunTable:
-    """Means, counts and spreads over the repeats of each run."""
-    run_of_row = np.array([rows.run_codes[label] for label in rows.labels], dtype=int)
-    n_runs, n_taps = len(rows.run_codes), len(names)
-    flow, flow_count, flow_spread = _statistics(run_of_row, rows.flow, n_runs)
-    temperature, _, _ = _statistics(run_of_row, rows.temperature, n_runs)
-    runs = pd.DataFrame(
-        {
-            "run": pd.Series(list(rows.run_codes), dtype=object),
-            "flow": flow + 0.0,
-            "flow_u": flow_spread / np.sqrt(np.maximum(flow_count, 1)),
-            "temperature": temperature,
-            "repeats": np.bincount(run_of_row, minlength=n_runs),
-        }
-    )
-    place = rows.reading_runs * n_taps + rows.reading_taps
-    tables = _statistics(place, rows.values, n_runs * n_taps)
-    index = pd.Index(list(rows.run_codes), dtype=object, name="run")
-    readings, repeats, spreads = (
-        pd.DataFrame(table.reshape(n_runs, n_taps), index=index, columns=list(names)) for table in tables
-    )
-    return RunTable(runs, readings, repeats, spreads, units)
-
-
-def _statistics(
-    groups: np.ndarray, values: np.ndarray, size: int
-) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-    """Mean, count and standard deviation (n − 1; NaN below two) of the values of each group, NaN left out."""
-    taken = ~np.isnan(values)
-    groups, values = groups[taken], values[taken]
-    count = np.bincount(groups, minlength=size)
-    with np.errstate(invalid="ignore", divide="ignore"):
-        mean = np.bincount(groups, weights=values, minlength=size) / count
-        squares = np.bincount(groups, weights=(values - mean[groups]) ** 2, minlength=size)
-        spread = np.where(count > 1, np.sqrt(squares / (count - 1)), np.nan)
-    return mean, count, spread
+    first = {label: places[0] for label, places in by_name(rows.labels).items()}
+    empty = [label for label, code in rows.run_codes.items() if label and not taken[code]]
+    if len(empty) > _EMPTY_SINGLY:
+        shown = empty[:_EMPTY_SINGLY]
+        more = [rows.lines[first[label]] for label in empty[_EMPTY_SINGLY:]]
+        rows.columns.problem(
+            first[empty[0]],
+            "run",
+            f"all readings are empty of the {len(empty)} runs {', '.join(map(repr, shown))} and {len(more)} more in "
+            f"{rows_phrase(more)}; enter them or take the runs away",
+        )
+        return
+    for label in empty:
+        rows.columns.problem(
+            first[label], "run", f"all readings of run {label!r} are empty; enter them or take the run away"
+        )

@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 import numpy as np
-import pandas as pd
 
 from gradeline.loader.document import Document
 from gradeline.loader.ledger import Ledger
+from gradeline.loader.repeats import RunTable
 from gradeline.loader.taps import TapTable
+from gradeline.quantities import Measured
 from gradeline.survey import GAUGE_KINDS, Fluid, Gauge, Reach, StatedUncertainties, Tap
 
 __all__ = ["state_assumptions", "state_cautions"]
+
+_SHORT_SPAN = 0.05
 
 
 def _listed(names: list[str]) -> str:
@@ -27,19 +30,32 @@ def _listed(names: list[str]) -> str:
 
 
 def state_assumptions(
-    ledger: Ledger, document: Document, *, taps: TapTable, gauges: tuple[Gauge, ...], runs: pd.DataFrame
+    ledger: Ledger,
+    document: Document,
+    *,
+    taps: TapTable,
+    gauges: tuple[Gauge, ...],
+    fluid: Fluid,
+    runs: RunTable,
 ) -> None:
     """Note every default that the loader put in place of a value that is not in the files."""
     note = ledger.assumptions.append
     if "fluid" not in ledger.order:
         note("The survey names no fluid: it is taken as water.")
+    if fluid.density is not None:
+        note(
+            f"The density and the viscosity of {fluid.name} are taken as constant: run temperatures do not change them."
+        )
     site = document.site
     if site is not None and site.gravity is None and site.latitude is None:
         note("Neither latitude nor gravity is given: gravity is taken as 9.80665 m/s².")
     elif site is not None and site.gravity is not None and site.latitude is not None:
         note("Gravity is given as well as the latitude: the given gravity is used.")
     if "elevation" not in taps.columns:
-        note("No elevation of the taps is given: the pipe's axis is taken as level, at the datum.")
+        note(
+            "The elevation of the taps is not given: the pipe's axis is taken as level at the datum, so pressures "
+            "below atmospheric are not looked for."
+        )
     pressure = {gauge.name for gauge in gauges if GAUGE_KINDS[gauge.kind].reading == "pressure"}
     at_axis = [tap.name for tap in taps.taps if tap.gauge in pressure and tap.gauge_elevation is None]
     if at_axis:
@@ -58,14 +74,30 @@ def state_assumptions(
             note(f"The tube bore of gauge {gauge.name!r} is not given: no capillary rise is taken off.")
     if len(gauges) == 1 and ("gauge" not in taps.columns):
         note(f"The gauge {gauges[0].name!r} is the only one: it is taken to read every tap.")
-    repeated = runs.loc[runs["repeats"] > 1]
+    _state_repeats(ledger, runs)
+    if document.survey is not None and document.survey.date is None:
+        note("The survey states no date.")
+
+
+def _state_repeats(ledger: Ledger, runs: RunTable) -> None:
+    """Note what was averaged: runs of several rows, and readings listed more than once."""
+    note = ledger.assumptions.append
+    repeated = runs.runs.loc[runs.runs["repeats"] > 1]
     if len(repeated):
         listed = _listed(
             [f"{run} ({n} rows)" for run, n in zip(repeated["run"], repeated["repeats"], strict=True)]
         )
         note(f"Rows with one run label are averaged as repeats: run {listed}.")
-    if document.survey is not None and document.survey.date is None:
-        note("The survey states no date.")
+    if runs.listed:
+        counts = runs.repeats.to_numpy()
+        listed = _listed(
+            [
+                f"run {runs.repeats.index[run]} at {runs.repeats.columns[tap]} ({counts[run, tap]} rows)"
+                for run, tap in np.argwhere(counts > 1)
+            ]
+        )
+        if listed:
+            note(f"Rows of readings with one run and one tap are averaged as repeats: {listed}.")
 
 
 def state_cautions(
@@ -76,7 +108,7 @@ def state_cautions(
     reaches: tuple[Reach, ...],
     taps: tuple[Tap, ...],
     gauges: tuple[Gauge, ...],
-    runs: pd.DataFrame,
+    runs: RunTable,
 ) -> None:
     """Note every uncertainty that matters and that nobody stated, and what is dangerous or of no use."""
     note = ledger.cautions.append
@@ -105,9 +137,9 @@ def state_cautions(
                 f"The uncertainty of a reading of gauge {gauge.name!r} is not stated: it is estimated from the "
                 "scatter where there are taps and runs enough, and otherwise contributes nothing."
             )
-        unstated = [
-            word for word, value in (("zero", gauge.zero_u), ("scale", gauge.scale_u)) if value is None
-        ]
+        zero = gauge.settings.get("zero")  # its own ± states the uncertainty as well
+        zero_u = zero.u if isinstance(zero, Measured) and zero.u is not None else gauge.zero_u
+        unstated = [word for word, value in (("zero", zero_u), ("scale", gauge.scale_u)) if value is None]
         if unstated:
             one = len(unstated) == 1
             noun, verb = ("uncertainty", "is") if one else ("uncertainties", "are")
@@ -116,12 +148,28 @@ def state_cautions(
                 f"The {noun} of the {' and the '.join(unstated)} of gauge {gauge.name!r} {verb} not stated: "
                 f"{they} nothing to the results."
             )
+        if "bore" in gauge.settings and fluid.density is not None:
+            note(
+                f"The capillary rise in gauge {gauge.name!r} is taken with the surface tension of water, 0.0728 N/m, "
+                f"since that of {fluid.name} is not known."
+            )
         if gauge.name not in pressure and any(tap.gauge_elevation is not None for tap in read):
             note(
                 f"A gauge elevation is given for taps of gauge {gauge.name!r}, which has its elevation from "
                 "its zero: it is not used."
             )
-    has_temperature = bool(np.isfinite(runs["temperature"].to_numpy(float)).any())
+    for reach in reaches:
+        inside = [tap.chainage for tap in taps if reach.start <= tap.chainage <= reach.end]
+        span = max(inside, default=0.0) - min(inside, default=0.0)
+        if len(inside) > 1 and span < _SHORT_SPAN * reach.length:
+            counted = "both" if len(inside) == 2 else f"all {len(inside)}"
+            shown = f"{1000 * span:.3g} mm" if span < 1 else f"{span:.3g} m"
+            note(
+                f"In reach {reach.name!r} {counted} taps lie within {shown} of a reach of {reach.length:g} m: is the unit "
+                "of chainage right?"
+            )
+    ledger.cautions.extend(runs.doubtful)
+    has_temperature = bool(np.isfinite(runs.runs["temperature"].to_numpy(float)).any())
     if has_temperature and fluid.density is None and stated.temperature is None:
         note(f"The uncertainty of the temperature is not stated: {nothing}.")
     if "mercury" in fluid.name.casefold() or any(

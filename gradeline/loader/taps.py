@@ -10,6 +10,7 @@ import numpy as np
 from gradeline.loader.cells import nearest, parse_heading, read_cells
 from gradeline.loader.columns import Columns, Known
 from gradeline.loader.document import GaugeTable
+from gradeline.loader.grouped import TOLD_SINGLY, rows_phrase
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.line import within_line
 from gradeline.survey import GAUGE_KINDS, Reach, Tap
@@ -189,26 +190,41 @@ def _check_chainages(columns: Columns, names: Sequence[str], reaches: Sequence[R
     unit = columns.units["chainage"]
     assert unit is not None
     previous: int | None = None
+    outside: list[int] = []
+    unsorted: list[tuple[int, int]] = []
     for row, chainage in enumerate(chainages):
         if not raw[row]:
             columns.problem(row, "chainage", "the cell is empty; give the tap's chainage")
         if np.isnan(chainage):
             continue
         if reaches is not None and within_line(chainage, reaches) is None:
+            outside.append(row)
+        if previous is not None and chainage <= chainages[previous]:
+            unsorted.append((row, previous))
+        previous = row
+    lines = columns.cells.lines
+    if outside and reaches is not None:
+        many = len(outside) > TOLD_SINGLY
+        others = rows_phrase(lines[row] for row in outside[1:]) if many else ""
+        for row in outside[: 1 if many else None]:
+            also = f", and so do {len(outside) - 1} more taps ({others})" if many else ""
+            mend = "mend the chainages or their unit" if many else "mend the chainage"
             columns.problem(
                 row,
                 "chainage",
                 f"{raw[row]} {unit.text} lies outside every reach ({reaches[0].start:g} m to "
-                f"{reaches[-1].end:g} m); mend the chainage or extend a reach",
+                f"{reaches[-1].end:g} m){also}; {mend} or extend a reach",
             )
-        if previous is not None and chainage <= chainages[previous]:
-            columns.problem(
-                row,
-                "chainage",
-                f"{raw[row]} {unit.text} does not come after {raw[previous]} {unit.text} of tap "
-                f"{names[previous]!r}; list the taps in order of chainage, each at its own",
-            )
-        previous = row
+    if unsorted:
+        row, before = unsorted[0]
+        others = rows_phrase(lines[row] for row, _ in unsorted[1:]) if len(unsorted) > 1 else ""
+        also = f", and {len(unsorted) - 1} more not after the tap above ({others})" if others else ""
+        columns.problem(
+            row,
+            "chainage",
+            f"{raw[row]} {unit.text} does not come after {raw[before]} {unit.text} of tap "
+            f"{names[before]!r}{also}; list the taps in order of chainage, each at its own",
+        )
 
 
 def _check_reading_uncertainty(

@@ -15,12 +15,13 @@ from gradeline.errors import QuantityError
 from gradeline.quantities.measured import Measured
 from gradeline.quantities.units import DIMENSIONS, Unit, offer, parse_unit
 
-__all__ = ["parse_number", "parse_quantity", "parse_uncertainty"]
+__all__ = ["parse_number", "parse_quantity", "parse_uncertainty", "unit_of"]
 
 _NUMBER = r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)"
 _EXPONENT = r"(?:[eE][+-]?[0-9]+)?"
 _LEADING = re.compile(rf"({_NUMBER}(?:\([0-9]+(?:\.[0-9]*)?\))?{_EXPONENT})(?![0-9.,(])\s*(.*)", re.DOTALL)
 _BRACKETED = re.compile(r"\(\s*([^()]+?)\s*\)\s*(.*)", re.DOTALL)
+_THOUSANDS = re.compile(r"[+-]?[0-9]{1,3}(?:[\s'’][0-9]{3})+(?:\.[0-9]*)?(?![0-9.,(])")
 _LONGEST = 200
 
 
@@ -58,6 +59,9 @@ def parse_number(text: str) -> float:
         raise QuantityError(
             f"{stripped!r} has a comma; write decimals with a point and no mark between thousands"
         )
+    if _THOUSANDS.fullmatch(stripped):
+        joined = re.sub(r"[\s'’]", "", stripped)
+        raise QuantityError(f"{stripped!r} has a gap; write no space between thousands, such as {joined}")
     if stripped.casefold().lstrip("+-") in {"inf", "infinity", "nan"}:
         raise QuantityError(f"{stripped!r} is not a finite number")
     raise QuantityError(f"{_shorten(stripped)!r} is not a number")
@@ -75,6 +79,9 @@ def _shorten(text: str) -> str:
 
 def _split(text: str, dimension: str) -> tuple[str, str]:
     """A text as its number (with a shorthand uncertainty perhaps) and its unit."""
+    thousands = _THOUSANDS.match(text)
+    if thousands:
+        parse_number(thousands[0])  # says what is wrong with it
     found = _LEADING.fullmatch(text)
     if found is None:
         first = text.split(maxsplit=1)[0] if text.split() else text
@@ -104,6 +111,37 @@ def _ufloat(text: str) -> tuple[float, float]:
         )  # "may give unexpected results": for a stated ± 0 it does not
         number = ufloat_fromstr(text)
     return _finite(number.nominal_value, text), _finite(number.std_dev, text)
+
+
+def _signs(text: str) -> str:
+    """A text with one sign for ±, minus and space."""
+    return text.strip().replace("+/-", "±").replace("−", "-").replace("\u00a0", " ").replace("\u202f", " ")
+
+
+def unit_of(text: str) -> str:
+    """Return the unit of a text that `parse_quantity` or `parse_uncertainty` takes, as written; empty without one.
+
+    Parameters
+    ----------
+    text : str
+        Such as ``"0.15 kPa"``.
+
+    Returns
+    -------
+    str
+        The unit of the value.
+
+    Examples
+    --------
+    >>> unit_of("0.15 kPa"), unit_of("0.8 m +/- 20 mm"), unit_of("(26.64 ± 0.03) mm"), unit_of("0.4 %")
+    ('kPa', 'm', 'mm', '%')
+    """
+    plain = _signs(text)
+    bracketed = _BRACKETED.fullmatch(plain)
+    if bracketed and "±" in bracketed[1]:
+        return bracketed[2].strip()
+    units = (found[2].strip() for part in plain.split("±") if (found := _LEADING.fullmatch(part.strip())))
+    return next((unit for unit in units if unit), "")
 
 
 @functools.lru_cache(maxsize=4096)
@@ -142,7 +180,7 @@ def parse_quantity(text: str, dimension: str) -> Measured:
     """
     if len(text) > _LONGEST:
         raise QuantityError(f"{_shorten(text)!r} is too long for a number with a unit")
-    plain = text.strip().replace("+/-", "±").replace("−", "-").replace("\u00a0", " ").replace("\u202f", " ")
+    plain = _signs(text)
     if plain.count("±") > 1:
         raise QuantityError(f"{text!r} has more than one ±; state one uncertainty")
     bracketed = _BRACKETED.fullmatch(plain)

@@ -13,8 +13,10 @@ __all__ = [
     "SI_DISPLAY",
     "Display",
     "DisplayUnit",
+    "format_change",
     "format_interval",
     "format_number",
+    "format_within",
     "rounded",
     "thousands",
 ]
@@ -152,21 +154,68 @@ def format_interval(low: float | None, high: float | None) -> str:
         return f"at least {format_number(low)}"
     assert low is not None
     assert high is not None
-    half = abs(high - low) / 2
-    if half == 0:
+    if low == high:
         return f"{format_number(low)} to {format_number(high)}"
+    return f"{format_within(low, low, high)} to {format_within(high, low, high)}"
+
+
+def format_within(value: float | None, low: float | None, high: float | None) -> str:
+    """Print a value rounded as the ends of its interval are: to two digits of half the interval's width.
+
+    Parameters
+    ----------
+    value : float or None
+        In the unit that is printed beside it; an en dash where it is missing.
+    low, high : float or None
+        Its interval. Where an end is missing or both are the same the value has two significant digits.
+
+    Examples
+    --------
+    >>> format_within(0.15291, 0.13412, 0.17203), format_interval(0.13412, 0.17203)
+    ('0.153', '0.134 to 0.172')
+    >>> format_within(0.0021, 0.0, 0.0047), format_within(0.91, None, None)
+    ('0.0021', '0.91')
+    """
+    if not _finite(value):
+        return MISSING
+    assert value is not None
+    if value == 0:
+        return "0"
+    if not _finite(low) or not _finite(high) or low == high:
+        return format_number(value, 2)
+    assert low is not None
+    assert high is not None
+    half = abs(high - low) / 2
     largest = max(abs(low), abs(high))
+    if not (_SMALLEST_FIXED <= largest < _LARGEST_FIXED) or abs(value) < _SMALLEST_FIXED:
+        return format_number(value, 2)
     place = max(_place(half, 2), _place(largest, 16)) if math.isfinite(half) else 0
-    if not (_SMALLEST_FIXED <= largest < _LARGEST_FIXED):
-        return f"{format_number(low, 2)} to {format_number(high, 2)}"
-    ends = []
-    for end in (low, high):
-        own = min(place, _place(abs(end), 2)) if end else 0
-        if end and abs(end) < _SMALLEST_FIXED:
-            ends.append(format_number(end, 2))
-        else:
-            ends.append(_fixed(end, own) if end else "0")
-    return " to ".join(ends)
+    # a value much smaller than its interval is wide keeps two digits of its own
+    return _fixed(value, min(place, _place(abs(value), 2)))
+
+
+def format_change(fraction: float | None) -> str:
+    """Print by how much something is larger or smaller: a percentage, or a factor where it more than doubles.
+
+    Parameters
+    ----------
+    fraction : float or None
+        The relative change; its sign is left to the sentence around it. A fall of more than half is told as the
+        percentage, since a fall has no more than 100 of them.
+
+    Examples
+    --------
+    >>> format_change(0.0352), format_change(-0.4), format_change(7.1), format_change(1e4)
+    ('3.5 %', '40 %', 'a factor of 8.1', 'a factor of 10000')
+    >>> format_change(None)
+    '–'
+    """
+    if not _finite(fraction):
+        return MISSING
+    assert fraction is not None
+    if fraction > 1:
+        return f"a factor of {format_number(1 + fraction, 2)}"
+    return f"{format_number(100 * abs(fraction), 2)} %"
 
 
 def _finite(value: float | None) -> bool:
@@ -227,6 +276,10 @@ _SI_UNITS: Mapping[str, DisplayUnit] = MappingProxyType(
         "pressure": DisplayUnit("kPa", 1e-3),
         "slope": DisplayUnit("mm/m", 1e3),
         "gravity": DisplayUnit("m/s²"),
+        "viscosity": DisplayUnit("mPa s", 1e3),
+        "temperature difference": DisplayUnit("K"),
+        "angle": DisplayUnit("°", 180 / math.pi),
+        "relative": DisplayUnit("%", 100.0),
         "number": DisplayUnit(""),
     }
 )
@@ -240,7 +293,8 @@ class Display:
     ----------
     units : mapping of str to DisplayUnit
         By quantity: chainage, elevation, head, small head, length, diameter, roughness, flow, velocity,
-        temperature, density, kinematic viscosity, pressure, slope, gravity, number.
+        temperature, density, kinematic viscosity, pressure, slope, gravity, viscosity, temperature difference, angle,
+        relative, number.
 
     Examples
     --------
@@ -293,6 +347,25 @@ class Display:
             self.value(quantity, end) if end is not None and _finite(end) else None for end in (low, high)
         ]
         shown = format_interval(*ends)
+        label = self.unit(quantity)
+        return f"{shown} {label}" if unit and label and shown != MISSING else shown
+
+    def within(
+        self,
+        quantity: str,
+        value: float | None,
+        low: float | None,
+        high: float | None,
+        *,
+        unit: bool = False,
+    ) -> str:
+        """Print a value in SI in the shown unit, rounded as the ends of its interval are."""
+        shown = format_within(
+            *(
+                self.value(quantity, one) if one is not None and _finite(one) else None
+                for one in (value, low, high)
+            )
+        )
         label = self.unit(quantity)
         return f"{shown} {label}" if unit and label and shown != MISSING else shown
 

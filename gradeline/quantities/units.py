@@ -92,6 +92,26 @@ _AMBIGUOUS = {
     "gph": "say US_gal/h or imp_gal/h",
     "mgd": "give the flow in m^3/d, or a million US_gal/d or imp_gal/d",
 }
+# Further units for "did you mean", and spellings of the trade that name something else, or nothing, as written.
+_FURTHER = {
+    "length": ("km", "µm", "inch"),
+    "pressure": ("MPa", "mbar", "mmH2O", "inHg", "atm", "kgf/cm^2"),
+    "flow": ("L/h", "m^3/min", "m^3/d", "ft^3/min", "imp_gal/min"),
+}
+_CELSIUS = {"c": "degC", "oc": "degC", "ºc": "degC", "f": "degF", "of": "degF", "ºf": "degF"}
+_SPELLINGS: Mapping[str, Mapping[str, str]] = {
+    "temperature": _CELSIUS,
+    "temperature difference": _CELSIUS,
+    "pressure": {
+        "kg/cm2": "kgf/cm^2",
+        "kgcm2": "kgf/cm^2",
+        "kg/cm²": "kgf/cm^2",
+        "mwc": "mH2O",
+        "mwg": "mH2O",
+    },
+    "flow": {"lps": "L/s", "lpm": "L/min", "lph": "L/h", "cumec": "m^3/s", "cumecs": "m^3/s"},
+    "dynamic viscosity": {"mpa.s": "mPa s", "pa.s": "Pa s"},
+}
 _OFFSETS = {"degree_Celsius": (1.0, 273.15), "degree_Fahrenheit": (5 / 9, 459.67)}
 
 _LONGEST = 64
@@ -148,6 +168,20 @@ class Unit:
         """Return differences or uncertainties in SI units: scaled, without the offset of the zero."""
         return self._scale(values)
 
+    def from_si(self, value: float) -> float:
+        """Return a value in SI units in this unit.
+
+        Examples
+        --------
+        >>> parse_unit("mm", "length").from_si(0.0007)
+        0.7
+        """
+        return self.difference_from_si(value) - self.offset
+
+    def difference_from_si(self, value: float) -> float:
+        """Return a difference or an uncertainty in SI units in this unit."""
+        return value * self.divisor / self.factor
+
     def _scale(self, values: T) -> T:
         scaled: Any = values
         scaled = scaled * self.factor / self.divisor
@@ -168,6 +202,19 @@ def _registry() -> Any:
 def offer(dimension: str) -> str:
     """Usual units of a dimension as a phrase for a remedy."""
     return "give a unit such as " + ", ".join(DIMENSIONS[dimension].units)
+
+
+def _plain(text: str) -> str:
+    """A unit without what does not matter for a near miss: case, spaces and signs of powers."""
+    return re.sub(r"[\s^]|\*\*", "", text).casefold()
+
+
+def _remedy(text: str, dimension: str) -> str:
+    """The unit of the dimension that was meant perhaps, or its usual units."""
+    spelling = _SPELLINGS.get(dimension, {}).get(_plain(text))
+    units = (*DIMENSIONS[dimension].units, *_FURTHER.get(dimension, ()))
+    meant = spelling or next((unit for unit in units if _plain(unit) == _plain(text)), None)
+    return f"did you mean {meant!r}?" if meant else offer(dimension)
 
 
 @functools.lru_cache(maxsize=4096)
@@ -216,7 +263,9 @@ def parse_unit(text: str, dimension: str) -> Unit:
     found = _dimension_of(unit)
     if found != dimension and not (dimension == "temperature difference" and found == "temperature"):
         what = f"is {DIMENSIONS[found].noun}" if found else "is of another dimension"
-        raise QuantityError(f"the unit {stripped!r} {what}, not {wanted.noun}; {offer(dimension)}")
+        raise QuantityError(
+            f"the unit {stripped!r} {what}, not {wanted.noun}; {_remedy(stripped, dimension)}"
+        )
     if found == "temperature":
         (name,) = names
         if name.startswith("delta_") and dimension == "temperature":
@@ -231,7 +280,8 @@ def parse_unit(text: str, dimension: str) -> Unit:
 
 def _pint_unit(text: str, dimension: str) -> Any:
     """The unit as pint reads it, refusing what pint would guess or compute."""
-    unknown = f"{text!r} is not a unit that is known; {offer(dimension)}"
+    remedy = _remedy(text, dimension)
+    unknown = f"{text!r} is not a unit that is known; {remedy}"
     if text.casefold() in _AMBIGUOUS or text.casefold().split("/")[0].rstrip("s") in _AMBIGUOUS:
         key = text.casefold() if text.casefold() in _AMBIGUOUS else text.casefold().split("/")[0].rstrip("s")
         raise QuantityError(f"the unit {text!r} is ambiguous; {_AMBIGUOUS[key]}")
@@ -243,10 +293,12 @@ def _pint_unit(text: str, dimension: str) -> Any:
     try:
         unit = _registry().parse_units(tidy)
     except Exception as error:  # pint raises many kinds, some of them bare assertions
+        if remedy != offer(dimension):
+            raise QuantityError(unknown) from error
         usual = [name for known in DIMENSIONS.values() for name in known.units]
         near = difflib.get_close_matches(text, usual, n=1, cutoff=0.7)
-        hint = f"; did you mean {near[0]!r}?" if near else f"; {offer(dimension)}"
-        raise QuantityError(f"{text!r} is not a unit that is known{hint}") from error
+        hint = f"did you mean {near[0]!r}?" if near else remedy
+        raise QuantityError(f"{text!r} is not a unit that is known; {hint}") from error
     for name in dict(unit._units):
         for ambiguous, remedy in _AMBIGUOUS.items():
             if name.endswith(ambiguous) and not name.endswith(("imperial_" + ambiguous, "_" + ambiguous)):

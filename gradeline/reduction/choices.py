@@ -37,6 +37,8 @@ def excluded_readings(survey: Survey, exclude: Sequence[str]) -> NDArray[np.bool
     ReductionError
         For a run or tap that the survey does not have; the nearest known one is named.
     """
+    if isinstance(exclude, str):
+        raise ReductionError(f"to exclude: give a list of readings, such as [{exclude!r}], not a bare text")
     labels = [observation.label for observation in survey.observations]
     runs = list(survey.runs["run"])
     excluded = np.zeros((len(runs), len(labels)), dtype=bool)

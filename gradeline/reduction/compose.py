@@ -15,7 +15,7 @@ from gradeline.reduction.friction import friction_of
 from gradeline.reduction.heads import heads_of, observation_kinds
 from gradeline.reduction.line import line_of
 from gradeline.reduction.media import media_of
-from gradeline.reduction.runs import fit_survey, stated_floor
+from gradeline.reduction.runs import fit_survey, stated_readings
 from gradeline.reduction.statements import assumptions_of, cautions_of
 from gradeline.reduction.tables import RESULT_TABLES, Reduction
 from gradeline.reduction.walls import walls_of
@@ -82,7 +82,9 @@ def reduce(
     )
     flowing = fit_survey(survey, media, line, corrections, excluded, keep_all=keep_all)
     walls = walls_of(survey, line, media, flowing, level=level)
-    friction = friction_of(line, media, flowing, walls, level=level)
+    friction = friction_of(
+        line, media, flowing, walls, level=level, temperature_run=survey.stated.temperature_run or 0.0
+    )
     kind, _ = observation_kinds(survey)
     base = np.array([part.base for part in flowing.fits.scatter])[kind]
     grade_lines = tabulate.grade_line_table(survey, line, media, flowing)
@@ -114,8 +116,19 @@ def reduce(
         laminar=tabulate.laminar_table(survey, flowing, friction),
         reading_units=tabulate.reading_unit_table(survey),
         exponents=tabulate.exponent_table(survey, flowing, friction, level=level),
-        scatter=tabulate.scatter_table(survey, flowing, stated_floor(survey, corrections)),
+        scatter=tabulate.scatter_table(survey, flowing, np.hypot(*stated_readings(survey, corrections))),
         bore_sensitivity=tabulate.bore_table(walls),
+        inputs=tabulate.input_table(
+            survey,
+            level=level,
+            correct=correct,
+            keep_all=keep_all,
+            exclude=exclude,
+            unjudged=None if flowing.fits.search.done else flowing.fits.search.reason,
+        ),
+        stated_reaches=tabulate.stated_reach_table(survey),
+        stated_taps=tabulate.stated_tap_table(survey),
+        raw_readings=tabulate.raw_reading_table(survey),
         level=level,
         gravity=media.gravity,
         friction_law_u=float("nan") if law is None else law,

@@ -23,10 +23,10 @@ class Corrections:
     ----------
     offset : (n,) array
         Observation less the common level, mean of the static runs, m; NaN where no static run read it.
-    spread : (n, n) array
-        Offset of observation i for an error of one in the mean static reading of observation j, dimensionless.
-    times : (n,) array
-        Static readings behind each offset (repeats counted), dimensionless; 0 where there is none.
+    covariance : (n, n) array
+        Covariance of the offsets for readings of unit variance, dimensionless.
+    known : (n,) bool array
+        Observations that a static run read.
     applied : bool
         Whether they were taken off the flowing runs.
     heads : Heads
@@ -34,8 +34,8 @@ class Corrections:
     """
 
     offset: Array
-    spread: Array
-    times: Array
+    covariance: Array
+    known: Mask
     applied: bool
     heads: Heads
 
@@ -65,28 +65,29 @@ def static_corrections(
 
     Notes
     -----
-    The level of each static run is the least-squares level of its own readings; a differential gauge sees none, so
-    its whole reading is its offset.
+    Least squares for the levels of the static runs and the offsets of the observations together, weighted by the
+    repeats: y = level + offset. What the offsets have in common cannot be told from the level and is none of theirs. A
+    differential gauge sees no level, so its whole reading is its offset.
     """
     n = heads.observed.shape[1]
     sees_level = heads.taps.sum(axis=1)
     read = static[:, None] & np.isfinite(heads.observed) & ~excluded
-    weight = read / np.maximum(read.sum(axis=0), 1)
-    # Mean over the static runs of (I − level) y, a linear operation M (n from R × n observations).
-    operation = np.zeros((n, *heads.observed.shape))
-    for run in np.flatnonzero(static):
-        mine = read[run]
-        level = np.where(mine, sees_level, 0.0)
-        total = float(level @ level)
-        own = np.eye(n) - (np.outer(sees_level, level) / total if total > 0 else 0.0)
-        operation[:, run] = weight[run][:, None] * own * mine
-    known = read.any(axis=0)
+    weight = np.where(read, repeats, 0.0)
+    along = weight * sees_level
+    total = along @ sees_level
+    # The levels taken out, what is left determines the offsets: N offset = sum over the runs of P_r y_r.
+    part = np.zeros((len(weight), n, n))
+    for run in np.flatnonzero(read.any(axis=1)):
+        shared = np.outer(along[run], along[run]) / total[run] if total[run] > 0 else 0.0
+        part[run] = np.diag(weight[run]) - shared
+    covariance = np.linalg.pinv(part.sum(axis=0), rcond=1e-10, hermitian=True)
+    operation = covariance @ part
+    known = np.asarray(read.any(axis=0))
 
     def offset_of(values: Array) -> Array:
-        return np.asarray(np.einsum("inm,nm->i", operation, np.where(read, values, 0.0)))
+        return np.asarray(np.einsum("rnm,rm->n", operation, np.where(read, values, 0.0)))
 
     offset = np.where(known, offset_of(heads.observed), np.nan)
-    times = np.where(read, repeats, 0).sum(axis=0).astype(float)
     corrected = heads
     applied = bool(apply and known.any())
     if applied:
@@ -100,4 +101,4 @@ def static_corrections(
                 for one in heads.inputs
             ),
         )
-    return Corrections(offset, operation.sum(axis=1), times, applied, corrected)
+    return Corrections(offset, covariance, known, applied, corrected)

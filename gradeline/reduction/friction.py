@@ -61,7 +61,13 @@ class Friction:
 
 
 def friction_of(
-    line: Line, media: Media, flowing: Flowing, walls: tuple[Wall, ...], *, level: float
+    line: Line,
+    media: Media,
+    flowing: Flowing,
+    walls: tuple[Wall, ...],
+    *,
+    level: float,
+    temperature_run: float = 0.0,
 ) -> Friction:
     """Work out friction factor and roughness of every run and reach.
 
@@ -71,6 +77,8 @@ def friction_of(
         The line, its fluids and what the fits say.
     level : float
         Coverage of the intervals.
+    temperature_run : float
+        Standard uncertainty of each run's own temperature, K.
 
     Returns
     -------
@@ -80,7 +88,8 @@ def friction_of(
     slope = flowing.slopes()
     total, random = slope_uncertainty(flowing, len(line.diameter))
     pooled = flowing.fits.pooled_dof
-    base = np.full(slope.shape, pooled if pooled > 0 else np.nan)
+    # Infinite where a statement stands: then only the number has no place, in the table as in the JSON.
+    base = np.full(slope.shape, pooled if 0 < pooled < np.inf else np.nan)
     for wall in walls:
         if np.isfinite(wall.fit.relative_scatter):
             # No scatter within a run: that of the slopes about the law stands for it.
@@ -108,13 +117,14 @@ def friction_of(
         stdtrit(np.where(np.isfinite(factor_dof), factor_dof, 1e9), 0.5 + level / 2.0), float
     )
     reynolds = flowing.reynolds
+    thin = media.viscosity_by_temperature[flowing.rows, None] * temperature_run
     kind = regime(reynolds)
     turbulent = (kind == "turbulent") & positive
     signed = np.where(
         turbulent, relative_roughness(np.where(positive, factor, 1.0), reynolds) * line.diameter, np.nan
     )
     low, high = _roughness_interval(
-        line, flowing, factor, signed, scatter / safe**2, effect, own, factor_times, turbulent
+        line, flowing, factor, signed, scatter / safe**2, effect, own, thin, factor_times, turbulent
     )
     ratio = np.where(kind == "laminar", factor * reynolds / 64.0, np.nan)
     # f Re goes as D⁴ g S / (Q ν).
@@ -135,7 +145,7 @@ def friction_of(
         roughness_high=high,
         laminar_ratio=ratio,
         laminar_ratio_u=ratio
-        * np.sqrt(scatter / safe**2 + (own + flowing.flow_u[:, None]) ** 2 + _squared(drag)),
+        * np.sqrt(scatter / safe**2 + (own + flowing.flow_u[:, None]) ** 2 + thin**2 + _squared(drag)),
         regime=kind,
     )
 
@@ -185,6 +195,7 @@ def _roughness_interval(
     scatter: Array,
     effect: Array,
     own: Array,
+    thin: Array,
     times: Array,
     turbulent: NDArray[np.bool_],
 ) -> tuple[Array, Array]:
@@ -201,7 +212,7 @@ def _roughness_interval(
         along = by_reynolds[:, :, None] * _reynolds_effects(flowing, line)
         effect = effect - along + relative[:, :, None] * np.stack(bore, axis=1)
     rest = own - by_reynolds * flowing.flow_u[:, None]
-    u = np.sqrt(scatter + rest**2 + _squared(effect))
+    u = np.sqrt(scatter + rest**2 + (by_reynolds * thin) ** 2 + _squared(effect))
     low = relative_roughness(np.where(turbulent, factor * np.exp(-times * u), 1.0), reynolds) * line.diameter
     high = relative_roughness(np.where(turbulent, factor * np.exp(times * u), 1.0), reynolds) * line.diameter
     known = turbulent & np.isfinite(u)

@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import inspect
-from collections.abc import Callable
-from dataclasses import dataclass
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -100,6 +101,7 @@ def heads_of(survey: Survey, media: Media) -> Heads:
         taps[column, names.index(observation.tap)] = 1.0
         if observation.tap_2 is not None:
             taps[column, names.index(observation.tap_2)] = -1.0
+    stated: list[Input] = []
     for gauge in survey.gauges:
         mine = [i for i, observation in enumerate(survey.observations) if observation.gauge == gauge.name]
         if not mine:
@@ -111,8 +113,19 @@ def heads_of(survey: Survey, media: Media) -> Heads:
         by_density[:, mine] = head({"density": media.density[:, None]}).imag / _STEP
         by_temperature[:, mine] = head({"density": media.density_by_temperature[:, None]}).imag / _STEP
         by_gravity[:, mine] = head({"gravity": media.gravity}).imag / _STEP
+        for key, setting in gauge.settings.items():
+            if isinstance(setting, Measured) and setting.u:
+                effect = np.zeros(readings.shape)
+                effect[:, mine] = head({key: setting.u}).imag / _STEP
+                stated.append(Input(f"gauge {key.replace('_', ' ')}", gauge.name, heads=effect))
     effects = _Effects(by_elevation, by_temperature, by_density, by_gravity)
-    return Heads(observed, gain, taps, tuple(_inputs(survey, media, readings, gain, effects)))
+    found = [*stated, *_inputs(survey, media, readings, gain, effects)]
+    return Heads(
+        observed,
+        gain,
+        taps,
+        tuple(one if one.heads is None else replace(one, heads=np.nan_to_num(one.heads)) for one in found),
+    )
 
 
 @dataclass(frozen=True)
@@ -125,7 +138,7 @@ class _Effects:
 
 def _head_function(
     survey: Survey, media: Media, gauge: Gauge, mine: list[int]
-) -> Callable[[dict[str, object]], NDArray[np.complex128]]:
+) -> Callable[[Mapping[str, Any]], NDArray[np.complex128]]:
     """Return a function from the inputs to step by (name: size) to the complex heads of a gauge's observations.
 
     The arguments are handed over by name: what a kind's function asks for, it gets.
@@ -140,14 +153,17 @@ def _head_function(
     line = settings.pop("line_temperature", None)
     line_fluid = gauge.settings.get("line_fluid")
 
-    def beside(at: float | None, name: object) -> Array | None:
+    def beside(at: float | None, name: object, step: float) -> NDArray[np.complex128] | None:
         """Density of a column or a line that is not at the run's temperature or not of the flowing fluid."""
-        if at is None and name is None:
+        if (at is None and name is None) or (name is None and survey.fluid.density is not None):
             return None
-        there = temperature if at is None else np.full_like(temperature, at)
-        if name is None and survey.fluid.density is not None:
-            return None
-        return fluid_density(str(name or "water"), there)
+        fluid = str(name or "water")
+        if at is None:
+            return np.asarray(fluid_density(fluid, temperature), complex)
+        there = np.full_like(temperature, at)
+        # The density formulas take no complex temperature: its own step is a central difference.
+        by_temperature = (fluid_density(fluid, there + 0.25) - fluid_density(fluid, there - 0.25)) / 0.5
+        return np.asarray(fluid_density(fluid, there) + 1j * _STEP * step * by_temperature)
 
     given: dict[str, object] = {
         "tap_elevation": elevation,
@@ -160,19 +176,19 @@ def _head_function(
         "surface_tension": media.surface_tension[:, None],
         **settings,
     }
-    apart = {"column_density": beside(column, None), "line_density": beside(line, line_fluid)}
     readings = survey.readings.to_numpy(float)[:, mine]
 
-    def head(steps: dict[str, object]) -> NDArray[np.complex128]:
+    def head(steps: Mapping[str, Any]) -> NDArray[np.complex128]:
         stepped = {
             name: np.asarray(value, complex) + 1j * _STEP * np.asarray(steps.get(name, 0.0))
             for name, value in given.items()
         }
-        # What is filled with the flowing fluid goes with it.
-        stepped |= {
-            name: stepped["density"] if value is None else np.asarray(value, complex)
-            for name, value in apart.items()
+        apart = {
+            "column_density": beside(column, None, float(steps.get("column_temperature", 0.0))),
+            "line_density": beside(line, line_fluid, float(steps.get("line_temperature", 0.0))),
         }
+        # What is filled with the flowing fluid goes with it.
+        stepped |= {name: stepped["density"] if value is None else value for name, value in apart.items()}
         reading = readings + 1j * _STEP * np.asarray(steps.get("reading", 0.0))
         return np.asarray(
             function(reading, **{name: v for name, v in stepped.items() if name in wanted}), complex
@@ -227,18 +243,7 @@ def _inputs(survey: Survey, media: Media, readings: Array, gain: Array, effects:
         found.append(Input("viscosity", viscosity=np.full(len(readings), viscosity.relative_u)))
     if media.gravity_u:
         found.append(Input("gravity", heads=effects.gravity * media.gravity_u, gravity=media.gravity_u))
-    return [
-        Input(
-            one.name,
-            one.subject,
-            None if one.heads is None else np.nan_to_num(one.heads),
-            one.diameter,
-            one.flow,
-            one.viscosity,
-            one.gravity,
-        )
-        for one in found
-    ]
+    return found
 
 
 def observation_kinds(survey: Survey) -> tuple[NDArray[np.intp], list[str]]:

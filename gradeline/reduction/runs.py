@@ -7,7 +7,9 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from gradeline.fitting.pooled import robust_scatter
 from gradeline.fitting.runs import Model, RunFits, fit_runs
+from gradeline.fitting.scatter import Scatter
 from gradeline.hydraulics.friction import (
     colebrook_white,
     darcy_friction_factor,
@@ -17,19 +19,18 @@ from gradeline.hydraulics.friction import (
 )
 from gradeline.reduction.corrections import Corrections
 from gradeline.reduction.heads import Input, observation_kinds
+from gradeline.reduction.inputs import common_errors, flowing_inputs, persistent_errors
 from gradeline.reduction.line import Line, disturbed_taps
 from gradeline.reduction.media import Media
 from gradeline.survey import GAUGE_KINDS, Survey
 
-__all__ = ["Flowing", "fit_survey", "stated_floor"]
+__all__ = ["Flowing", "fit_survey", "stated_readings"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 #: A slope this small is rounding of the heads.
 _NO_SLOPE = 1e-12
-#: Inputs that move single taps, and so the residuals.
-_TAP_INPUTS = frozenset({"tap chainage", "tap elevation", "static reading"})
 _PRESSURE_KINDS = frozenset(name for name, kind in GAUGE_KINDS.items() if kind.reading == "pressure")
 
 
@@ -144,15 +145,17 @@ def fit_survey(
         [sight.sum(axis=1), -(sight @ line.lengths), -(sight @ line.passed)[:, line.fitted]]
     )
     kind, _ = observation_kinds(survey)
-    floor = stated_floor(survey, corrections)
+    floor, resolution = stated_readings(survey, corrections)
     repeats = survey.repeats.to_numpy(float)[rows]
+    spreads = survey.spreads.to_numpy(float)[rows] * np.abs(corrections.heads.gain[rows])
     model = Model(
         design=design,
         velocity_head=plain_head.max(axis=1) if len(rows) else np.zeros(0),
         kind=kind,
         floor=floor,
-        stated=bool((stated_floor(survey, corrections, resolution=False) > 0).all()),
+        resolution=resolution,
         repeats=repeats if (repeats > 1).any() else None,
+        spreads=spreads if (repeats > 1).any() else None,
     )
     factor = np.asarray(colebrook_white(np.maximum(reynolds, 1.0), 0.0))
 
@@ -161,26 +164,24 @@ def fit_survey(
         return heads, observed + heads[:, line.reach_of_tap] @ sight.T + given
 
     heads, energy = energy_of(factor)
-    first = fit_runs(energy, used, model, details=False)
+    first = fit_runs(energy, used, model, search=False, details=False)
     slopes = first.lines.parameters[:, 1 : 1 + len(line.diameter)]
     heads, energy = energy_of(_law_factor(slopes, velocity, reynolds, line, media))
-    base = np.array([part.base for part in first.scatter])[kind] if len(kind) else np.zeros(0)
-    inputs = _all_inputs(survey, line, corrections, rows, slopes, heads, loss_head, given_k, base, floor)
     flow_effect = 2.0 * flow_u[:, None] * (heads[:, line.reach_of_tap] @ sight.T + given)
-    if _is_level(flow_effect, sight.sum(axis=1), used):
-        flow_effect = np.zeros_like(flow_effect)
-    model = replace(
-        model,
-        persistent=_persistent(inputs, used, several=len(survey.gauges) > 1),
-        flow_effect=flow_effect if flow_effect.any() else None,
-    )
-    fits = fit_runs(energy, used, model, keep_all=keep_all)
+    # The scatter first as the trimmed readings show it, then as the fit does that knows of the static readings.
+    scatter = robust_scatter(energy, used, model)
+    for last in (False, True) if corrections.applied else (True,):
+        base = _static_scatter(scatter, kind, corrections, repeats, single=len(rows) == 1 or not last)
+        inputs = flowing_inputs(survey, line, corrections, rows, slopes, heads, loss_head, given_k, base)
+        persistent, steady, along_slope = persistent_errors(inputs, used)
+        common, felt = common_errors(inputs, flow_effect, sight.sum(axis=1), used)
+        told = replace(model, persistent=persistent, common=common, steady=steady, along_slope=along_slope)
+        fits = fit_runs(energy, used, told, keep_all=keep_all and last, details=last)
+        scatter = fits.scatter
     shared = fits.lines.projectors
     gain = shared.gain[shared.index]
     columns = [np.zeros(energy.shape) if one.heads is None else one.heads for one in inputs]
     stacked = np.stack(columns, axis=2) if columns else np.zeros((*energy.shape, 0))
-    known = fits.pooled_dof > 0 or model.is_stated
-    random = fits.random_covariance() if known else np.full((len(rows), *[design.shape[1]] * 2), np.nan)
     return Flowing(
         rows=rows,
         flow=flow,
@@ -199,8 +200,8 @@ def fit_survey(
         design=design,
         inputs=inputs,
         effect=np.einsum("fpn,fnq->fpq", gain, np.where(np.isfinite(stacked), stacked, 0.0)),
-        own=np.einsum("fpn,fn->fp", gain, np.where(used, flow_effect, 0.0)),
-        random=random,
+        own=np.einsum("fpn,fn->fp", gain, np.where(used, felt, 0.0)),
+        random=fits.random_covariance(),
     )
 
 
@@ -212,20 +213,46 @@ def _flow_uncertainty(survey: Survey, rows: NDArray[np.intp], flow: Array) -> Ar
     return np.nan_to_num(survey.runs["flow_u"].to_numpy(float)[rows] / flow)
 
 
-def stated_floor(survey: Survey, corrections: Corrections, *, resolution: bool = True) -> Array:
-    """Stated uncertainty of one reading of each observation as head, with its resolution, m; 0 where unstated."""
+def _static_scatter(
+    scatter: tuple[Scatter, ...],
+    kind: NDArray[np.intp],
+    corrections: Corrections,
+    repeats: Array,
+    *,
+    single: bool,
+) -> Array:
+    """Standard deviation of one static reading of each observation, m; 0 where it is not known.
+
+    With a single run (or before the persistent errors are told apart) the scatter about the line holds the static
+    reading's share: σ² (1/n + 1/m) for means of n flowing and m static readings.
+    """
+    if not len(kind):
+        return np.zeros(0)
+    base = np.nan_to_num(np.array([part.base for part in scatter])[kind])
+    known = np.array([part.stands for part in scatter])[kind]
+    times = np.nanmean(repeats, axis=0) if len(repeats) else np.ones(len(kind))
+    share = np.sqrt(1.0 + np.maximum(times, 1.0) * np.diagonal(corrections.covariance))
+    return np.asarray(np.where(known | (not single), base, base / share))
+
+
+def stated_readings(survey: Survey, corrections: Corrections) -> tuple[Array, Array]:
+    """Return (stated uncertainty of one reading of each observation, what its resolution adds), as heads, m.
+
+    0 where nothing is stated.
+    """
     gain = np.abs(corrections.heads.gain)
     known = np.isfinite(gain)
     size = np.where(known, gain, 0.0).sum(axis=0) / np.maximum(known.sum(axis=0), 1)
-    floors = []
+    floors, resolutions = [], []
     for observation in survey.observations:
         gauge, tap = survey.gauge(observation.gauge), survey.tap(observation.tap)
         general = {"m": survey.stated.reading, "Pa": survey.stated.reading_pressure}
         stated = gauge.reading_u if tap.reading_u is None or observation.tap_2 else tap.reading_u
         if stated is None:
             stated = general["Pa" if gauge.kind in _PRESSURE_KINDS else "m"]
-        floors.append(np.hypot(stated or 0.0, (gauge.resolution or 0.0) * resolution / np.sqrt(12.0)))
-    return np.asarray(np.array(floors) * size)
+        floors.append(stated or 0.0)
+        resolutions.append((gauge.resolution or 0.0) / np.sqrt(12.0))
+    return np.array(floors) * size, np.array(resolutions) * size
 
 
 def _law_factor(slopes: Array, velocity: Array, reynolds: Array, line: Line, media: Media) -> Array:
@@ -238,97 +265,3 @@ def _law_factor(slopes: Array, velocity: Array, reynolds: Array, line: Line, med
         mine = signed[:, k][np.isfinite(signed[:, k])]
         rough[k] = np.clip(np.median(mine), 0.0, 0.1) if len(mine) else 0.0
     return np.asarray(colebrook_white(np.maximum(reynolds, 1.0), rough))
-
-
-def _is_level(effect: Array, sees_level: Array, used: Mask) -> bool:
-    """Whether a change moves all observations of a run alike, so that the line does not feel it."""
-    if not len(effect):
-        return True
-    alike = np.where(used & (sees_level != 0), effect, np.nan)
-    other = np.where(used & (sees_level == 0), effect, 0.0)
-    if not np.isfinite(alike).any():
-        return not other.any()
-    high, low = (
-        np.nanmax(np.where(np.isnan(alike), -np.inf, alike), axis=1),
-        np.nanmin(np.where(np.isnan(alike), np.inf, alike), axis=1),
-    )
-    seen = np.isfinite(high)
-    return bool((high - low)[seen].max(initial=0.0) < 1e-12) and not other.any()
-
-
-def _all_inputs(
-    survey: Survey,
-    line: Line,
-    corrections: Corrections,
-    rows: NDArray[np.intp],
-    slopes: Array,
-    heads: Array,
-    loss_head: Array,
-    given_k: Array,
-    base: Array,
-    floor: Array,
-) -> tuple[Input, ...]:
-    """The shared inputs of the readings, of the line and of the static runs, for the flowing runs."""
-    sight, stated = corrections.heads.taps, survey.stated
-    found = [
-        replace(
-            one,
-            heads=None if one.heads is None else one.heads[rows],
-            viscosity=None if one.viscosity is None else one.viscosity[rows],
-        )
-        for one in corrections.heads.inputs
-    ]
-    count = len(line.diameter)
-    for k, reach in enumerate(survey.reaches):
-        size = reach.diameter.relative_u
-        if not size:
-            continue
-        at_tap = heads[:, line.reach_of_tap] * (line.reach_of_tap == k)
-        losses = (loss_head * given_k * (line.reference == k)) @ line.passed.T
-        found.append(
-            Input(
-                "bore",
-                reach.name,
-                (at_tap + losses) @ sight.T * (-4.0 * size),
-                size * (np.arange(count) == k),
-            )
-        )
-    if stated.flow_scale:
-        whole = heads[:, line.reach_of_tap] + (loss_head * given_k) @ line.passed.T
-        found.append(
-            Input(
-                "flow calibration", heads=whole @ sight.T * (2.0 * stated.flow_scale), flow=stated.flow_scale
-            )
-        )
-    local = np.nan_to_num(slopes)[:, line.reach_of_tap]
-    for t, tap in enumerate(survey.taps):
-        size = stated.chainage if tap.chainage_u is None else tap.chainage_u
-        if size:
-            found.append(Input("tap chainage", tap.name, heads=local[:, [t]] * size * sight[:, t]))
-    for m, fitting in enumerate(line.fittings):
-        if fitting.loss_coefficient is not None and fitting.loss_coefficient.u:
-            head = loss_head[:, [m]] * fitting.loss_coefficient.u
-            found.append(
-                Input("given loss coefficient", fitting.name, heads=head * (sight @ line.passed[:, m]))
-            )
-    if corrections.applied:
-        times = np.maximum(corrections.times, 1.0)
-        # The scatter of the first pass holds the static reading's share; taken apart here.
-        alone = np.maximum(np.nan_to_num(base) / np.sqrt(1.0 + 1.0 / times), floor)
-        for i, observation in enumerate(survey.observations):
-            if corrections.times[i] > 0 and alone[i] > 0:
-                effect = -corrections.spread[:, i] * alone[i] / np.sqrt(times[i])
-                found.append(
-                    Input("static reading", observation.label, heads=np.tile(effect, (len(rows), 1)))
-                )
-    return tuple(found)
-
-
-def _persistent(inputs: tuple[Input, ...], used: Mask, *, several: bool) -> Array | None:
-    """Standard uncertainty of each observation from stated errors that are the same in all runs, m."""
-    names = _TAP_INPUTS | ({"gauge zero"} if several else set())
-    parts = [one.heads**2 for one in inputs if one.name in names and one.heads is not None]
-    if not parts:
-        return None
-    total = np.sqrt(np.sum(parts, axis=0))
-    return np.where(used, total, 0.0) if total.any() else None

@@ -191,11 +191,42 @@ DRAWING_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
             "friction_factor_change": _NUMBER,
             "roughness": _M,
         },
+        # what the survey and the caller stated, group by group; `quantity` names the kind of the value (SI), a value
+        # that nobody stated is missing, and `text` stands for what is no number
+        "inputs": {
+            "group": _TEXT,
+            "name": _TEXT,
+            "what": _TEXT,
+            "text": _TEXT,
+            "quantity": _TEXT,
+            "value": _NUMBER,
+            "value_u": _NUMBER,
+        },
+        "stated_reaches": {
+            "reach": _TEXT,
+            "start": _M,
+            "end": _M,
+            "diameter": _M,
+            "diameter_u": _M,
+            "wall": _TEXT,
+        },
+        "stated_taps": {
+            "tap": _TEXT,
+            "chainage": _M,
+            "chainage_u": _M,
+            "elevation": _M,
+            "elevation_u": _M,
+            "gauge": _TEXT,
+            "gauge_elevation": _M,
+            "reading_u": _number("m or Pa"),
+        },
+        # one row a run and observation, as read
+        "raw_readings": {"run": _TEXT, "tap": _TEXT, "reading": _number("m or Pa"), "repeats": _NUMBER},
     }
 )
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, repr=False)
 class Reduction:
     """All that was reduced from a survey: one DataFrame a table, in SI units.
 
@@ -210,7 +241,9 @@ class Reduction:
     reaches, runs, walls, fittings, taps, heads, flags, budget : DataFrame
         The tables of `RESULT_TABLES`, with exactly those columns.
     grade_lines, layout, laminar, reading_units, exponents, scatter, bore_sensitivity : DataFrame
-        The tables of `DRAWING_TABLES`.
+        Tables of `DRAWING_TABLES`: what figures need.
+    inputs, stated_reaches, stated_taps, raw_readings : DataFrame
+        Tables of `DRAWING_TABLES`: what was put in.
     level : float
         Coverage of the intervals, 0.95 unless asked otherwise.
     gravity : float
@@ -237,6 +270,16 @@ class Reduction:
     exponents: pd.DataFrame
     scatter: pd.DataFrame
     bore_sensitivity: pd.DataFrame
+    inputs: pd.DataFrame
+    stated_reaches: pd.DataFrame
+    stated_taps: pd.DataFrame
+    raw_readings: pd.DataFrame
     level: float
     gravity: float
     friction_law_u: float
+
+    def __repr__(self) -> str:
+        flowing = self.runs["run"][(self.runs["regime"] != "static").to_numpy(bool)].nunique()
+        counts = ((flowing, "flowing run"), (len(self.walls), "wall"), (len(self.flags), "flag"))
+        words = ", ".join(f"{count} {noun}{'' if count == 1 else 's'}" for count, noun in counts)
+        return f"Reduction({self.survey.get('title')!r}, {words})"

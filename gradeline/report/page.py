@@ -11,6 +11,15 @@ from markupsafe import Markup
 from gradeline.quantities.printing import SI_DISPLAY, Display
 from gradeline.reduction.tables import Reduction
 from gradeline.report.figures.render import MOST_PANELS, Picture, embedded
+from gradeline.report.inputs import (
+    fitting_input_table,
+    gauge_table,
+    raw_reading_tables,
+    stated_reach_table,
+    stated_tap_table,
+    statements,
+    uncertainty_table,
+)
 from gradeline.report.printed import PrintedTable, percent
 from gradeline.report.sentences import summarise
 from gradeline.report.tables import (
@@ -30,24 +39,33 @@ __all__ = ["page"]
 
 _MOST_ROWS = 1000
 
-#: What everybody at such a line should know, whatever was measured.
-HANDLING = (
-    (
-        "Pressure below the atmosphere's.",
-        "Where the hydraulic grade line lies below the pipe's crown, air or dirty water can be drawn in through joints, "
-        "taps and air valves, and the water column can part and close again with a blow.",
-    ),
-    (
-        "Trapped pressure.",
-        "A closed tap, hose or gauge line can hold the pressure of an earlier run. Open bleed valves slowly, away from "
-        "the face, and take a line apart only when it has been seen to be empty.",
-    ),
-    (
-        "Mercury.",
-        "Where a gauge holds mercury: its vapour is poisonous. Keep a trap in the line, do not let the column be blown "
-        "over by opening a tap on one side only, and collect spills by the rules of the place.",
-    ),
+_MOST_READINGS = 200
+
+_TRAPPED = (
+    "Trapped pressure.",
+    "A closed tap, hose or gauge line can hold the pressure of an earlier run. Open bleed valves slowly, away from "
+    "the face, and take a line apart only when it has been seen to be empty.",
 )
+_BELOW = (
+    "Pressure below the atmosphere's.",
+    "Where the hydraulic grade line lies below the pipe's crown, air or dirty water can be drawn in through joints, "
+    "taps and air valves, and the water column can part and close again with a blow.",
+)
+_MERCURY = (
+    "Mercury.",
+    "Its vapour is poisonous. Keep a trap in the line, do not let the column be blown over by opening a tap on one "
+    "side only, and collect spills by the rules of the place.",
+)
+
+
+def handling(reduction: Reduction) -> tuple[tuple[str, str], ...]:
+    """Return what people at this line should know: trapped pressure always, the rest where the survey has it."""
+    said = " ".join((*reduction.cautions, *reduction.assumptions, *reduction.inputs["text"].dropna())).lower()
+    lines = reduction.grade_lines
+    below = "below the pipe's crown" in said or bool(
+        (lines["piezometric_head"] < lines["crown"]).to_numpy(bool).any()
+    )
+    return (_TRAPPED, *([_BELOW] if below else []), *([_MERCURY] if "mercury" in said else []))
 
 
 def page(
@@ -92,11 +110,16 @@ def page(
         tables=_tables(reduction, display),
         assumptions=reduction.assumptions,
         cautions=reduction.cautions,
-        handling=HANDLING,
+        handling=handling(reduction),
+        statements=statements(reduction, display),
         level=percent(reduction.level),
         gravity=f"{reduction.gravity:.5f}",
         version=version,
-        left_over={name: max(len(getattr(reduction, name)) - _MOST_ROWS, 0) for name in ("runs", "flags")},
+        raw=raw_reading_tables(reduction, display, limit=_MOST_READINGS),
+        left_over={
+            **{name: max(len(getattr(reduction, name)) - _MOST_ROWS, 0) for name in ("runs", "flags")},
+            "raw": max(reduction.raw_readings["run"].nunique() - _MOST_READINGS, 0),
+        },
     )
 
 
@@ -139,4 +162,9 @@ def _tables(reduction: Reduction, display: Display) -> dict[str, PrintedTable]:
         "taps": tap_table(reduction, display),
         "bore": bore_table(reduction, display),
         "budget": budget_table(reduction),
+        "stated_reaches": stated_reach_table(reduction, display),
+        "stated_fittings": fitting_input_table(reduction, display),
+        "stated_taps": stated_tap_table(reduction, display),
+        "gauges": gauge_table(reduction, display),
+        "uncertainties": uncertainty_table(reduction, display),
     }

@@ -104,9 +104,14 @@ class TableColumn:
 
 
 def lay_out(
-    caption: str, rows: Sequence[Row], columns: Sequence[TableColumn], *, note: str | None = "reason"
+    caption: str,
+    rows: Sequence[Row],
+    columns: Sequence[TableColumn],
+    *,
+    note: str | None = "reason",
+    common_note: bool = False,
 ) -> PrintedTable:
-    """Lay out rows; equal notes share a number."""
+    """Lay out rows; equal notes share a number. With `common_note`, one that all rows share joins the caption."""
     cells = [[column.cell(row) for row in rows] for column in columns]
     kept = [
         n for n, column in enumerate(columns) if column.always or any(cell != MISSING for cell in cells[n])
@@ -115,16 +120,23 @@ def lay_out(
     body = [cells[n] for n in kept]
     words = {place for place, n in enumerate(kept) if columns[n].text}
     notes: dict[str, int] = {}
-    if note is not None and any(row.get(note) for row in rows):
-        marks = [
-            str(notes.setdefault(str(row[note]), len(notes) + 1)) if row.get(note) else "" for row in rows
-        ]
+    texts = [_of_this_version(row.get(note)) for row in rows] if note is not None else []
+    if common_note and len(texts) > 1 and texts[0] and len(set(texts)) == 1:
+        caption = f"{caption} {texts[0][:1].upper()}{texts[0][1:].rstrip('.')}."
+    elif any(texts):
+        marks = [str(notes.setdefault(text, len(notes) + 1)) if text else "" for text in texts]
         words.add(len(heads))
         heads.append("note")
         body.append(marks)
     return PrintedTable(
         caption, tuple(heads), tuple(zip(*body, strict=True)) if rows else (), frozenset(words), tuple(notes)
     )
+
+
+def _of_this_version(reason: object) -> str:
+    """A reason without the parts that speak of columns which no table shows yet."""
+    parts = str(reason or "").split("; ")
+    return "; ".join(part for part in parts if not part.endswith("not estimated in this version"))
 
 
 def name_column(key: str, head: str | None = None, *, always: bool = True) -> TableColumn:

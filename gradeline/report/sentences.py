@@ -18,7 +18,7 @@ from gradeline.quantities.printing import (
 )
 from gradeline.reduction.tables import Reduction
 from gradeline.report.printed import known, percent, records
-from gradeline.report.tables import flagged_value, reading_units
+from gradeline.report.tables import flagged_value, reading_names, reading_units
 
 __all__ = ["JUDGEMENT", "Summary", "summarise"]
 
@@ -88,11 +88,11 @@ def summarise(reduction: Reduction, display: Display = SI_DISPLAY) -> Summary:
         *_readings(reduction, flags),
         *_runs(flags),
         *_taps(flags),
+        *_unflagged(reduction, flags),
+        *_by_hand(reduction),
         *_crown(reduction, display),
         *_cautions(reduction),
     ]
-    if not flags:
-        look.insert(0, "No reading and no run was flagged.")
     return Summary(tuple(filter(None, found)), tuple(look), tuple(_missing(walls, runs, fittings)))
 
 
@@ -129,16 +129,22 @@ def _survey(reduction: Reduction, runs: Sequence[dict[str, Any]]) -> str:
     flowing = _distinct([row for row in runs if row["regime"] != "static"], "run")
     static = _distinct([row for row in runs if row["regime"] == "static"], "run")
     heads = reduction.heads
-    still = set(static)
-    used = sum(
-        bool(one) and str(run) not in still
-        for one, run in zip(heads["used"].fillna(False), heads["run"], strict=True)
-    )
-    read = int(np.isfinite(heads["head"].to_numpy(float, na_value=np.nan)).sum())
-    parts = [_plural(len(flowing), "flowing run")]
+    at_rest = heads["run"].isin(set(static)).to_numpy(bool)
+    read = np.isfinite(heads["head"].to_numpy(float, na_value=np.nan))
+    used = heads["used"].fillna(False).to_numpy(bool)
+    means = " (means of repeats where there are any)" if (reduction.raw_readings["repeats"] > 1).any() else ""
+    parts = []
+    if flowing:
+        count = int((read & ~at_rest).sum())
+        parts.append(
+            f"{_plural(len(flowing), 'flowing run')} with {_plural(count, 'reading')}{means}, "
+            f"{int((used & ~at_rest).sum())} of them used"
+        )
     if static:
-        parts.append(_plural(len(static), "static run"))
-    return f"{' and '.join(parts)} with {_plural(read, 'reading')} in all; {used} of them entered the fits of the grade lines."
+        parts.append(
+            f"{_plural(len(static), 'static run')} with {_plural(int((read & at_rest).sum()), 'reading')}"
+        )
+    return _sentence("; ".join(parts)) if parts else ""
 
 
 def _wall(wall: dict[str, Any], level: float, display: Display) -> str:
@@ -148,10 +154,11 @@ def _wall(wall: dict[str, Any], level: float, display: Display) -> str:
         if known(wall["runs_used"])
         else "from all runs"
     )
-    upper = display.text("roughness", wall["roughness_upper95"], digits=2, unit=True)
+    ends = (wall["roughness_low"], wall["roughness_high"])
+    upper = display.within("roughness", wall["roughness_upper95"], *ends, unit=True)
     if wall["roughness_resolved"]:
-        value = display.text("roughness", wall["roughness"], digits=2, unit=True)
-        interval = display.interval("roughness", wall["roughness_low"], wall["roughness_high"], unit=True)
+        value = display.within("roughness", wall["roughness"], *ends, unit=True)
+        interval = display.interval("roughness", *ends, unit=True)
         words = f"The roughness of the wall {name} is {value} ({percent(level)} interval {interval}), {runs}."
     elif known(wall["roughness_upper95"]):
         words = (
@@ -238,28 +245,20 @@ def _fitting(fitting: dict[str, Any], level: float) -> str:
 
 
 def _law(walls: Sequence[dict[str, Any]], flags: Sequence[dict[str, Any]]) -> Iterable[str]:
+    """One sentence for each flag of the law: what the flag says, or else the trend over Re."""
     flagged = [flag for flag in flags if flag["kind"] == "law"]
-    if not flagged:
-        return
-    trends = [
-        wall
-        for wall in walls
-        if known(wall["law_trend"])
-        and known(wall["law_trend_u"])
-        and abs(wall["law_trend"]) > 2 * wall["law_trend_u"]
-    ]
-    for wall in trends:
-        trend = rounded(100 * wall["law_trend"], 100 * wall["law_trend_u"])
-        direction = "falls" if wall["law_trend"] < 0 else "rises"
-        yield (
-            f"The friction law does not describe the wall {wall['wall']}: against it f {direction} with Re, by "
-            f"({trend}) % per decade. Its roughness is to be read with that in mind."
-        )
     for flag in flagged:
-        if flag["suggestion"] and not trends:
-            yield f"The friction law does not fit: {flag['suggestion']}."
-        elif flag["suggestion"]:
-            yield f"On the misfit of the law: {flag['suggestion']}."
+        if flag["suggestion"]:
+            yield f"The friction law does not fit: {flag['suggestion'].rstrip('.')}."
+    if not any(flag["suggestion"] is None for flag in flagged):
+        return
+    for wall in walls:
+        trend, u = wall["law_trend"], wall["law_trend_u"]
+        if known(trend) and known(u) and abs(trend) > 2 * u:
+            yield (
+                f"The friction law does not describe the wall {wall['wall']}: against it f "
+                f"{'falls' if trend < 0 else 'rises'} with Re, by ({rounded(100 * trend, 100 * u)}) % per decade."
+            )
 
 
 def _readings(reduction: Reduction, flags: Sequence[dict[str, Any]]) -> Iterable[str]:
@@ -317,6 +316,37 @@ def _taps(flags: Sequence[dict[str, Any]]) -> Iterable[str]:
             else " reads off the line in the same way in most runs"
         )
         yield _sentence(f"Tap {flag['tap']}{suggestion}")
+
+
+def _unflagged(reduction: Reduction, flags: Sequence[dict[str, Any]]) -> Iterable[str]:
+    """That no reading and no run was flagged, and why, where readings were not judged at all."""
+    if any(flag["kind"] in ("reading", "run") for flag in flags):
+        return
+    judged = [row["text"] for row in records(reduction.inputs) if row["what"] == "single readings"]
+    if judged and str(judged[0]).startswith("not judged"):
+        why = str(judged[0]).removeprefix("not judged").removeprefix(": ").rstrip(".")
+        yield f"No run was flagged. Single readings were not judged{': ' + why if why else ''}."
+    elif not flags:
+        yield "No reading and no run was flagged."
+
+
+def _by_hand(reduction: Reduction) -> Iterable[str]:
+    """The readings left out by hand: by tap, with its runs where they are not all."""
+    heads = reduction.heads
+    out = (heads["flag"] == "excluded").to_numpy(bool)
+    if not out.any():
+        return
+    read = np.isfinite(heads["head"].to_numpy(float, na_value=np.nan))
+    names = np.array(reading_names(reduction), dtype=object)
+    texts = []
+    for name in dict.fromkeys(names[out]):
+        own = names == name
+        runs = [str(run) for run in heads["run"][own & out]]
+        whole = len(runs) == int((own & read).sum())
+        texts.append(
+            f"{name} in all runs" if whole else f"{name} in run{'s' * (len(runs) > 1)} {_list(runs)}"
+        )
+    yield f"Left out by hand: {'; '.join(texts)}."
 
 
 def _crown(reduction: Reduction, display: Display) -> Iterable[str]:

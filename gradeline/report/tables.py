@@ -36,12 +36,16 @@ __all__ = [
     "flag_table",
     "flagged_value",
     "reach_table",
+    "reading_names",
     "reading_units",
     "run_table",
     "scatter_table",
     "tap_table",
     "wall_table",
 ]
+
+#: A curve that all runs share is called one below this probability.
+_CURVED = 0.01
 
 
 def run_table(
@@ -76,7 +80,9 @@ def run_table(
             ),
             TableColumn(
                 display.head("roughness ε", "roughness"),
-                lambda row: display.text("roughness", row["roughness"], digits=2),
+                lambda row: display.within(
+                    "roughness", row["roughness"], row["roughness_low"], row["roughness_high"]
+                ),
                 always=False,
             ),
             TableColumn(
@@ -107,24 +113,27 @@ def _probability(value: float | None) -> str:
 def wall_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
     """Return the walls: roughness with interval and bound, resolved or not, smooth or not, misfit of the law."""
     level = percent(reduction.level)
+    bound = (
+        ""
+        if level == "95 %"
+        else f" The upper bound is one of 95 %, whatever the level of the intervals ({level})."
+    )
+
+    def within(key: str) -> Callable[[Row], str]:
+        return lambda row: display.within("roughness", row[key], row["roughness_low"], row["roughness_high"])
+
     return lay_out(
         "Walls, from all turbulent runs together. ε⁺ is the roughness Reynolds number of the fastest run; the trend "
-        "is that of f against the friction law.",
+        f"is that of f against the friction law.{bound}",
         records(reduction.walls),
         [
             name_column("wall"),
-            TableColumn(
-                display.head("roughness ε", "roughness"),
-                lambda row: display.text("roughness", row["roughness"], digits=2),
-            ),
+            TableColumn(display.head("roughness ε", "roughness"), within("roughness")),
             TableColumn(
                 display.head(f"{level} interval", "roughness"),
                 lambda row: display.interval("roughness", row["roughness_low"], row["roughness_high"]),
             ),
-            TableColumn(
-                display.head("95 % upper bound", "roughness"),
-                lambda row: display.text("roughness", row["roughness_upper95"], digits=2),
-            ),
+            TableColumn(display.head("95 % upper bound", "roughness"), within("roughness_upper95")),
             TableColumn("resolved", lambda row: truth(row["roughness_resolved"]), text=True),
             TableColumn("hydraulically smooth", lambda row: truth(row["hydraulically_smooth"]), text=True),
             TableColumn("ε⁺", lambda row: format_number(row["roughness_reynolds"], 3)),
@@ -187,7 +196,8 @@ def budget_table(reduction: Reduction) -> PrintedTable:
 def reach_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
     """Return the reaches with their bores and walls."""
     return lay_out(
-        "Reaches, in flow order. p of a curve that all runs share: a small one speaks against a straight grade line.",
+        "Reaches, in flow order. A curve that all runs share is called one where tap errors would make it in fewer than "
+        "1 of 100 surveys (p < 0.01).",
         records(reduction.reaches),
         [
             name_column("reach"),
@@ -197,9 +207,20 @@ def reach_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedT
                 display.head("bore", "diameter"),
                 lambda row: display.text("diameter", row["diameter"], digits=5),
             ),
-            TableColumn("shared curve p", lambda row: _probability(row["shared_curve_p"]), always=False),
+            TableColumn(
+                "curve of all runs", lambda row: _curve(row["shared_curve_p"]), text=True, always=False
+            ),
         ],
     )
+
+
+def _curve(p: float | None) -> str:
+    """What the test of a curve that all runs share says, in words."""
+    if p is None or not math.isfinite(p):
+        return MISSING
+    verdict = "all runs share a curve" if p < _CURVED else "not told from tap errors"
+    shown = _probability(p)
+    return f"{verdict} (p {shown if shown.startswith('<') else '= ' + shown})"
 
 
 def exponent_table(reduction: Reduction) -> PrintedTable:
@@ -221,12 +242,22 @@ def exponent_table(reduction: Reduction) -> PrintedTable:
 
 
 def scatter_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
-    """Return the scatter of the readings by gauge."""
+    """Return the scatter of the readings by kind of gauge, with the gauges of that kind."""
+    units = reduction.reading_units
+    gauges: dict[str, list[str]] = {}
+    for kind, gauge in dict.fromkeys(zip(units["kind"], units["gauge"], strict=True)):
+        gauges.setdefault(str(kind), []).append(str(gauge))
     return lay_out(
         "Scatter of one reading, pooled over all runs: σ² = σ₀² + (c V²/2g)².",
         records(reduction.scatter),
         [
-            name_column("gauge"),
+            name_column("gauge", "kind of gauge"),
+            TableColumn(
+                "gauges",
+                lambda row: ", ".join(gauges.get(str(row["gauge"]), [])) or MISSING,
+                text=True,
+                always=False,
+            ),
             TableColumn(
                 display.head("σ₀", "small head"),
                 lambda row: display.text("small head", row["base"], digits=2),
@@ -261,6 +292,7 @@ def tap_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTab
             ),
             name_column("diagnosis", always=False),
         ],
+        common_note=True,
     )
 
 
@@ -311,6 +343,15 @@ def flag_table(reduction: Reduction, *, limit: int | None = None) -> PrintedTabl
         ],
         note=None,
     )
+
+
+def reading_names(reduction: Reduction) -> list[str]:
+    """Return the name of each row of heads: its tap, or the gauge of a differential reading."""
+    heads = reduction.heads
+    return [
+        str(gauge) if isinstance(other, str) else str(tap)
+        for tap, other, gauge in zip(heads["tap"], heads["tap_2"], heads["gauge"], strict=True)
+    ]
 
 
 def reading_units(reduction: Reduction) -> dict[str, tuple[str, float]]:

@@ -1,6 +1,6 @@
 """How fast: run with ``pytest tests/bench --benchmark-enable``; without it each runs once, and what it says is checked.
 
-No test asserts a time. Each benchmark tells its runs a second under ``extra_info``; the ratios in one sitting are
+No test asserts a time. Each benchmark tells how many runs it took under ``extra_info``; the ratios in one sitting are
 printed by ``python -m tests.bench.ratios``.
 """
 

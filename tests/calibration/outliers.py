@@ -100,14 +100,14 @@ def after_static_run(rng: np.random.Generator, heads: np.ndarray, told: Model) -
     # As the reduction does it: each static reading shifts its own tap by 1 − 1/n, the others by 1/n.
     spread = np.eye(TAPS) - 1.0 / TAPS
     persistent = alone * np.sqrt((spread**2).sum(axis=1))
-    return heads, replace(told, persistent=np.broadcast_to(persistent, heads.shape))
+    return heads, replace(told, persistent=np.broadcast_to(persistent, heads.shape), steady=True)
 
 
 def taps_out_of_place(rng: np.random.Generator, heads: np.ndarray, told: Model) -> tuple[np.ndarray, Model]:
     """Chainages wrong by 2 mm, and stated so: an error that grows with S and is the same in all runs."""
     slope = (heads[:, :1] - heads[:, -1:]) / (CHAINAGE[-1] - CHAINAGE[0])
     heads = heads - slope * 2e-3 * rng.standard_normal(TAPS)
-    return heads, replace(told, persistent=np.broadcast_to(np.abs(slope) * 2e-3, heads.shape))
+    return heads, replace(told, persistent=np.broadcast_to(np.abs(slope) * 2e-3, heads.shape), along_slope=True)
 
 
 def with_gaps(rng: np.random.Generator, heads: np.ndarray, told: Model) -> tuple[np.ndarray, Model]:

@@ -326,6 +326,41 @@ def reduction_of(
         "exponents": exponents,
         "scatter": [{"gauge": gauge, "base": sigma, "surge": 0.002, "stated": NAN, "dof": 61, "note": None}],
         "bore_sensitivity": sensitivity,
+        "inputs": [
+            {"group": "fluid", "name": "water", "what": "name", "text": "water"},
+            {"group": "gauge", "name": gauge, "what": "kind", "text": "piezometer"},
+            {
+                "group": "gauge",
+                "name": gauge,
+                "what": "u of a reading",
+                "quantity": "small head",
+                "value": sigma,
+            },
+            {"group": "gauge", "name": gauge, "what": "u of the scale", "quantity": "relative"},
+            {
+                "group": "stated",
+                "what": "flow of a run, random",
+                "quantity": "relative",
+                "value": 0.004,
+            },
+            {"group": "stated", "what": "chainage of a tap", "quantity": "small head"},
+            {"group": "options", "what": "level of the intervals", "quantity": "relative", "value": 0.95},
+            {"group": "options", "what": "single readings", "text": "judged"},
+        ],
+        "stated_reaches": [
+            {"reach": r[0], "wall": r[1], "start": r[2], "end": r[3], "diameter": r[4], "diameter_u": 3e-5}
+            for r in reaches
+        ],
+        "stated_taps": [{"tap": t[0], "chainage": t[1], "elevation": t[2], "gauge": gauge} for t in taps],
+        "raw_readings": [
+            {
+                "run": head["run"],
+                "tap": head["tap"],
+                "reading": (head["head"] - 0.1) * (1000 * G if unit == "pressure" else 1.0),
+                "repeats": 1,
+            }
+            for head in heads
+        ],
     }
     return Reduction(
         survey={

@@ -8,6 +8,12 @@ from gradeline.reduction.tabulate.drawing import (
     reading_unit_table,
 )
 from gradeline.reduction.tabulate.frames import frame
+from gradeline.reduction.tabulate.inputs import (
+    input_table,
+    raw_reading_table,
+    stated_reach_table,
+    stated_tap_table,
+)
 from gradeline.reduction.tabulate.readings import head_table, scatter_table, tap_table
 from gradeline.reduction.tabulate.runs import reach_table, run_table
 from gradeline.reduction.tabulate.walls import bore_table, fitting_table, wall_table
@@ -19,12 +25,16 @@ __all__ = [
     "frame",
     "grade_line_table",
     "head_table",
+    "input_table",
     "laminar_table",
     "layout_table",
+    "raw_reading_table",
     "reach_table",
     "reading_unit_table",
     "run_table",
     "scatter_table",
+    "stated_reach_table",
+    "stated_tap_table",
     "tap_table",
     "wall_table",
 ]

@@ -87,11 +87,7 @@ def head_table(
 def tap_table(survey: Survey, corrections: Corrections, base: Array) -> pd.DataFrame:
     """Return the table of taps, with their offsets in the static runs."""
     rows: dict[str, list[Any]] = {name: [] for name in RESULT_TABLES["taps"]}
-    noise = np.sqrt(
-        np.einsum(
-            "ij,j->i", corrections.spread**2, np.nan_to_num(base) ** 2 / np.maximum(corrections.times, 1.0)
-        )
-    )
+    noise = np.nan_to_num(base) * np.sqrt(np.diagonal(corrections.covariance))
     own = {one.tap: i for i, one in enumerate(survey.observations) if one.tap_2 is None}
     for tap in survey.taps:
         i = own.get(tap.name)

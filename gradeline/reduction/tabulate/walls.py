@@ -144,7 +144,7 @@ def _head_effects(flowing: Flowing, k: int) -> Array:
     """Relative change of K by the velocity head it is counted in, for each shared input."""
     return np.array(
         [
-            (0.0 if one.diameter is None else 4.0 * float(one.diameter[k])) - 2.0 * one.flow
+            (0.0 if one.diameter is None else 4.0 * float(one.diameter[k])) - 2.0 * one.flow + one.gravity
             for one in flowing.inputs
         ]
     )

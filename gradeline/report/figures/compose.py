@@ -20,8 +20,8 @@ from gradeline.report.figures.style import MUTED, shorten
 __all__ = ["Canvases", "grade_line_figure", "sheet_figure", "single"]
 
 #: Inches.
-WIDTH = 6.2
-_LEFT, _BREADTH = 0.14, 0.825
+WIDTH = 5.6
+_LEFT, _BREADTH = 0.15, 0.82
 
 
 def single(
@@ -40,6 +40,16 @@ def single(
         bottom += 0.6 / height
         ax.set_position((_LEFT, bottom, _BREADTH, 0.9 - bottom))
     _head(figure, ax, title, drawn.legend_rows if not isinstance(drawn, SlopeVelocityArtists) else 0)
+    if isinstance(drawn, ResidualArtists) and drawn.beyond:
+        figure.text(
+            0.985,
+            1 - 0.085 / height,
+            "a mark at the edge lies beyond the axis",
+            fontsize=8.5,
+            color=MUTED,
+            ha="right",
+            va="top",
+        )
     return figure
 
 

@@ -149,11 +149,13 @@ def draw_grade_lines(
     size = 3.5 if small else 5.0
 
     hgl = egl = band = below = None
+    half_band = 0.0
     if len(lines):
         places = column(lines, "chainage") * along
         low_line, high_line = (column(lines, name) * scale for name in ("piezometric_head", "energy_head"))
         half = coverage_factor(reduction, run) * column(lines, "energy_head_u") * scale
         if np.isfinite(half).any():
+            half_band = float(np.nanmax(half))
             band = ax.fill_between(
                 places,
                 low_line - half,
@@ -235,7 +237,13 @@ def draw_grade_lines(
         )
     rows = 0
     if not small:
-        handles: list[Artist | None] = [band, hgl, egl, *drawn.values(), below]
+        handles: list[Artist | None] = [
+            band if _visible(ax, half_band) else None,
+            hgl,
+            egl,
+            *drawn.values(),
+            below,
+        ]
         if pipe is not None:
             handles += [pipe.axis, pipe.fittings]
         rows = _furnish(
@@ -244,6 +252,14 @@ def draw_grade_lines(
     return GradeLineArtists(
         hgl, egl, band, below, drawn["used"], drawn["left_out"], drawn["flagged"], tuple(labels), pipe, rows
     )
+
+
+def _visible(ax: Axes, half: float) -> bool:
+    """Whether a band of that half-width stands out from its line by a pixel (1/96 inch) or more."""
+    low, high = ax.get_ylim()
+    pixels = ax.bbox.height / ax.figure.dpi * 96
+    line = 1.4 * 96 / 72
+    return 2 * half / (high - low) * pixels > line + 1.0
 
 
 def _flows(reduction: Reduction, run: str) -> bool:

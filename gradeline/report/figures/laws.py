@@ -14,6 +14,7 @@ from matplotlib.axes import Axes
 from matplotlib.collections import PolyCollection
 from matplotlib.container import ErrorbarContainer
 from matplotlib.lines import Line2D
+from matplotlib.markers import CARETDOWN, CARETUP
 from matplotlib.patches import Polygon, Rectangle
 from matplotlib.text import Annotation
 
@@ -36,6 +37,9 @@ __all__ = ["FrictionFactorArtists", "SlopeVelocityArtists", "draw_friction_facto
 _Array = npt.NDArray[np.float64]
 _NAMED_RUNS = 20
 _ERRORBARS = 400
+_LABEL_SIZE = 8
+#: Where the label of a run may stand about its mark, the best place first: to the right or left, up or down.
+_LABEL_PLACES = ((1, 1), (1, -1), (-1, -1), (-1, 1), (1, 0), (-1, 0))
 
 
 @dataclass(frozen=True)
@@ -48,10 +52,13 @@ class SlopeVelocityArtists:
         The runs with their intervals, by reach and regime.
     powers : mapping of (str, str) to Line2D
         S proportional to V^n, by reach and regime.
+    open_ends : tuple of Line2D
+        Arrowheads at the edge where an interval goes on beyond the axis, downwards and upwards.
     """
 
     runs: dict[tuple[str, str], ErrorbarContainer]
     powers: dict[tuple[str, str], Line2D]
+    open_ends: tuple[Line2D, ...]
 
 
 @dataclass(frozen=True)
@@ -74,6 +81,8 @@ class FrictionFactorArtists:
         Rings around the runs that are flagged.
     labels : tuple of Annotation
         Labels of the runs.
+    open_ends : tuple of Line2D
+        Arrowheads at the edge where an interval goes on beyond the axis, downwards and upwards.
     legend_rows : int
         Rows of the legend above the axes.
     """
@@ -86,6 +95,7 @@ class FrictionFactorArtists:
     critical: Rectangle | Polygon | None
     flagged: Line2D | None
     labels: tuple[Annotation, ...]
+    open_ends: tuple[Line2D, ...]
     legend_rows: int
 
 
@@ -145,6 +155,34 @@ def _scatter_runs(
     return drawn
 
 
+def _open_ends(ax: Axes, drawn: dict[tuple[str, str], ErrorbarContainer]) -> tuple[Line2D, ...]:
+    """Arrowheads where an interval leaves the axis, whose limits stand by now."""
+    low, high = ax.get_ylim()
+    left, right = ax.get_xlim()
+    ends: dict[int, list[float]] = {CARETDOWN: [], CARETUP: []}
+    for container in drawn.values():
+        for bars in container.lines[2]:
+            for (x, below), (_, above) in bars.get_segments():
+                if left <= x <= right:
+                    ends[CARETDOWN] += [x] if below < low < above else []
+                    ends[CARETUP] += [x] if below < high < above else []
+    return tuple(
+        ax.plot(
+            places,
+            [low if marker == CARETDOWN else high] * len(places),
+            linestyle="none",
+            marker=marker,
+            markersize=6,
+            color=INK,
+            clip_on=False,
+            zorder=4,
+            label="_goes on beyond the axis",
+        )[0]
+        for marker, places in ends.items()
+        if places
+    )
+
+
 def draw_slope_velocity(
     ax: Axes, reduction: Reduction, *, display: Display = SI_DISPLAY
 ) -> SlopeVelocityArtists:
@@ -189,6 +227,7 @@ def draw_slope_velocity(
     points = [line.lines[0].get_data() for line in drawn.values()]
     log_ticks(ax, "x", *_limits(np.concatenate([p[0] for p in points]) if points else np.array([]), 0.05))
     log_ticks(ax, "y", *_limits(np.concatenate([p[1] for p in points]) if points else np.array([]), 0.05))
+    open_ends = _open_ends(ax, drawn)
     ax.set_xlabel(display.head("mean velocity V", "velocity"))
     ax.set_ylabel(display.head("friction slope S", "slope"))
     if drawn:
@@ -205,7 +244,7 @@ def draw_slope_velocity(
             ha="center",
             color=MUTED,
         )
-    return SlopeVelocityArtists(drawn, powers)
+    return SlopeVelocityArtists(drawn, powers, open_ends)
 
 
 def draw_friction_factor(ax: Axes, reduction: Reduction) -> FrictionFactorArtists:
@@ -282,13 +321,16 @@ def draw_friction_factor(ax: Axes, reduction: Reduction) -> FrictionFactorArtist
     with np.errstate(invalid="ignore"):  # a long bar may leave the figure, its run may not
         heights.append(bars[(bars > middle / 2) & (bars < middle * 2)])
     log_ticks(ax, "y", *_limits(np.concatenate(heights), 0.05))
+    open_ends = _open_ends(ax, drawn)
     labels, flagged = _run_labels(ax, reduction, reynolds, factor, seen)
     ax.set_xlabel("Reynolds number Re")
     ax.set_ylabel("Darcy friction factor f")
     rows = legend_above(ax, _law_handles(drawn, fitted, bands, line, smooth, critical, flagged), columns=4)
     if not seen.any():
         ax.text(0.5, 0.5, "no run has a friction factor", transform=ax.transAxes, ha="center", color=MUTED)
-    return FrictionFactorArtists(drawn, fitted, bands, line, smooth, critical, flagged, labels, rows)
+    return FrictionFactorArtists(
+        drawn, fitted, bands, line, smooth, critical, flagged, labels, open_ends, rows
+    )
 
 
 def _mark(container: ErrorbarContainer) -> Line2D:
@@ -365,24 +407,44 @@ def _run_labels(
         )
     wanted = seen if seen.sum() <= _NAMED_RUNS else ringed
     labels = []
-    width, height = ax.bbox.width, ax.bbox.height
-    taken: list[tuple[float, float]] = []
+    points = ax.transData.transform(np.column_stack([reynolds[seen], factor[seen]])) * 72 / ax.figure.dpi
+    names_of = [shorten(name, 12) for name in names]
+    inside = ax.bbox.bounds
+    left, floor, right, ceiling = (
+        side * 72 / ax.figure.dpi
+        for side in (inside[0], inside[1], inside[0] + inside[2], inside[1] + inside[3])
+    )
+    # what a label may not cover: the marks (a ring is wider than its mark), then the labels before it
+    half = 3.5
+    taken = [(x - half, y - half, x + half, y + half) for x, y in points]
     for row in sorted(np.flatnonzero(wanted)[: 2 * _NAMED_RUNS], key=lambda row: reynolds[row]):
-        x, y = ax.transData.transform((reynolds[row], factor[row]))
-        if not (-1 <= x - ax.bbox.x0 <= width + 1 and -1 <= y - ax.bbox.y0 <= height + 1):
+        x, y = ax.transData.transform((reynolds[row], factor[row])) * 72 / ax.figure.dpi
+        if not (left - 1 <= x <= right + 1 and floor - 1 <= y <= ceiling + 1):
             continue
-        # above unless a neighbour's label is there already
-        crowded = any(abs(x - a) < 0.06 * width and abs(y + 9 - b) < 14 for a, b in taken)
-        taken.append((x, y - 9 if crowded else y + 9))
+        text = names_of[row]
+        wide, tall, off = 0.6 * _LABEL_SIZE * len(text), 1.05 * _LABEL_SIZE, 9.0 if ringed[row] else 4.5
+        choices = []
+        for place, (across, up) in enumerate(_LABEL_PLACES):
+            corner_x = x + across * off - (wide if across < 0 else wide / 2 if across == 0 else 0)
+            corner_y = y + up * off - (tall if up < 0 else tall / 2 if up == 0 else 0)
+            box = (corner_x, corner_y, corner_x + wide, corner_y + tall)
+            out = box[0] < left or box[2] > right or box[1] < floor or box[3] > ceiling
+            hits = sum(
+                box[0] < other[2] and other[0] < box[2] and box[1] < other[3] and other[1] < box[3]
+                for other in taken
+            )
+            choices.append((hits + 2 * out, place, across, up, box))
+        _, _, across, up, box = min(choices)
+        taken.append(box)
         labels.append(
             ax.annotate(
-                shorten(names[row], 12),
+                text,
                 (reynolds[row], factor[row]),
-                xytext=(4, -4 if crowded else 4),
+                xytext=(across * off, up * off),
                 textcoords="offset points",
-                ha="left",
-                va="top" if crowded else "bottom",
-                fontsize=8,
+                ha={1: "left", 0: "center", -1: "right"}[across],
+                va={1: "bottom", 0: "center", -1: "top"}[up],
+                fontsize=_LABEL_SIZE,
                 color=INK,
                 zorder=5,
             )

@@ -118,9 +118,7 @@ def _plans(reduction: Reduction, display: Display, blanks: Canvases) -> Iterator
         "Residuals by tap, all runs",
         "Measured minus fitted energy head of every reading, the taps in order of chainage, flagged readings ringed.",
         "residuals",
-        lambda: single(
-            lambda ax: draw_residuals(ax, reduction, display=display), "Residuals by tap", below=0.72
-        ),
+        lambda: single(lambda ax: draw_residuals(ax, reduction, display=display), "Residuals by tap"),
     )
     yield (
         "slope_velocity",

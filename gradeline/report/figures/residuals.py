@@ -49,6 +49,8 @@ class ResidualArtists:
         Two standard deviations of the scatter to either side, at rest and in the fastest run.
     legend_rows : int
         Rows of the legend above the axes.
+    beyond : bool
+        Whether marks that lie beyond the axis stand at its edge.
     """
 
     used: dict[str, Line2D]
@@ -58,6 +60,7 @@ class ResidualArtists:
     still: PolyCollection | None
     fastest: PolyCollection | None
     legend_rows: int
+    beyond: bool
 
 
 def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISPLAY) -> ResidualArtists:
@@ -166,16 +169,17 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
     ax.vlines(np.arange(len(order) - 1) + 0.5, -limit, limit, color="#d5dadd", linewidth=0.7, zorder=0.8)
     ax.axhline(0, color=MUTED, linewidth=0.9, zorder=2)
     ax.set_ylim(-limit, limit)
-    _tap_axis(ax, labels_in_order, beyond=bool((np.abs(y[np.isfinite(y)]) > limit).any()))
+    _tap_axis(ax, labels_in_order)
     ax.set_ylabel(display.head("measured − fitted energy head", "small head"))
     handles = [
         artist for artist in (*drawn.values(), left_out, flagged, still, fastest) if artist is not None
     ]
     rows_of_legend = legend_above(ax, handles, columns=4)
-    return ResidualArtists(drawn, left_out, flagged, tuple(labels), still, fastest, rows_of_legend)
+    beyond = bool((np.abs(y[np.isfinite(y)]) > 0.9 * limit).any())
+    return ResidualArtists(drawn, left_out, flagged, tuple(labels), still, fastest, rows_of_legend, beyond)
 
 
-def _tap_axis(ax: Axes, labels: list[str], *, beyond: bool) -> None:
+def _tap_axis(ax: Axes, labels: list[str]) -> None:
     """Name the taps along the axis, on end where the names are long."""
     ax.set_xlim(-0.6, max(len(labels) - 0.4, 0.6))
     step = max(1, -(-len(labels) // _NAMED_TAPS))
@@ -184,10 +188,7 @@ def _tap_axis(ax: Axes, labels: list[str], *, beyond: bool) -> None:
     if sum(max(len(name), 2) for name in names) > 66:
         ax.tick_params(axis="x", labelrotation=90)
     ax.grid(visible=False, axis="x")
-    ax.set_xlabel(
-        "tap, in order of chainage (within a tap: runs in order)"
-        + ("\nmarks at the edge lie beyond it" if beyond else "")
-    )
+    ax.set_xlabel("tap, in order of chainage (within a tap: runs in order)")
 
 
 def _names(heads: object) -> list[str]:

@@ -184,6 +184,26 @@ def _tick_text(tick: float) -> str:
     return ("" if lead == "1" else f"{lead}×") + f"10{str(power).translate(_SUPERSCRIPT)}"
 
 
+def _roomy(
+    ticks: Sequence[float], texts: Sequence[str], low: float, high: float, length: float, *, across: bool
+) -> list[bool]:
+    """Which labels of a log axis, `length` points long, have room: the rounder ones come first."""
+
+    def roundness(n: int) -> tuple[int, float]:
+        lead = float(f"{ticks[n]:e}".partition("e")[0])
+        return (0 if lead == 1 else 1 if lead in (2, 5) else 2 if lead in (3, 7) else 3), ticks[n]
+
+    taken: list[tuple[float, float]] = []
+    kept = [False] * len(ticks)
+    for n in sorted(range(len(ticks)), key=roundness):
+        centre = math.log(ticks[n] / low) / math.log(high / low) * length
+        half = 0.33 * 9 * len(texts[n]) + 3 if across else 6.5
+        if all(abs(centre - other) >= half + own for other, own in taken):
+            taken.append((centre, half))
+            kept[n] = True
+    return kept
+
+
 def log_ticks(ax: Axes, axis: str, low: float, high: float) -> None:
     """Make an axis logarithmic from `low` to `high` with a few plain ticks (no mathtext, no minor ticks)."""
     ticks = one_two_five(low, high)
@@ -195,7 +215,12 @@ def log_ticks(ax: Axes, axis: str, low: float, high: float) -> None:
         ax.set_ylim(low, high)
     one = ax.xaxis if axis == "x" else ax.yaxis
     one.set_major_locator(FixedLocator(ticks))
-    one.set_major_formatter(FixedFormatter([_tick_text(tick) for tick in ticks]))
+    texts = [_tick_text(tick) for tick in ticks]
+    length = (ax.bbox.width if axis == "x" else ax.bbox.height) * 72 / ax.figure.dpi
+    roomy = _roomy(ticks, texts, low, high, length, across=axis == "x")
+    one.set_major_formatter(
+        FixedFormatter([text if kept else "" for text, kept in zip(texts, roomy, strict=True)])
+    )
     one.set_minor_locator(NullLocator())
     one.set_minor_formatter(NullFormatter())
 

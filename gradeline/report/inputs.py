@@ -1,0 +1,260 @@
+"""What was put in, as tables: the line, the gauges, the stated uncertainties, the readings as they were read."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Sequence
+from typing import Any
+
+from gradeline.quantities.printing import MISSING, SI_DISPLAY, Display, format_number
+from gradeline.reduction.tables import Reduction
+from gradeline.report.printed import (
+    PrintedTable,
+    Row,
+    TableColumn,
+    known,
+    lay_out,
+    name_column,
+    records,
+)
+from gradeline.report.tables import reading_units
+
+__all__ = [
+    "fitting_input_table",
+    "gauge_table",
+    "raw_reading_tables",
+    "stated_reach_table",
+    "stated_tap_table",
+    "statements",
+    "uncertainty_table",
+]
+
+NOT_STATED = "not stated"
+#: Readings side by side in one table, so that it fits on paper.
+_WIDEST = 12
+
+
+def _stated(display: Display, quantity: str, value: float | None, u: float | None) -> str:
+    """A stated value as it was stated: up to six digits, with its ± where one was stated."""
+    if value is None or not math.isfinite(value):
+        return NOT_STATED
+    if known(u):
+        return display.text(quantity, value, u)
+    shown = f"{display.value(quantity, value):.6g}"
+    return format_number(display.value(quantity, value), 6) if "e" in shown else shown.replace("-", "−")
+
+
+def _with_unit(display: Display, quantity: str, text: str) -> str:
+    unit = display.unit(quantity)
+    return (
+        text if not unit or text == NOT_STATED else f"({text}) {unit}" if " ± " in text else f"{text} {unit}"
+    )
+
+
+def _cell(display: Display, row: Row) -> str:
+    """The value of a row of ``inputs`` with its unit, or its words."""
+    if row["quantity"] is None:
+        return MISSING if row["text"] is None else str(row["text"])
+    quantity = str(row["quantity"])
+    return _with_unit(display, quantity, _stated(display, quantity, row["value"], row["value_u"]))
+
+
+def _group(reduction: Reduction, group: str) -> list[dict[str, Any]]:
+    return [row for row in records(reduction.inputs) if row["group"] == group]
+
+
+def stated_reach_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return the reaches as stated: ends, bore with its standard uncertainty, wall."""
+    return lay_out(
+        "Reaches as stated. ± is one standard uncertainty.",
+        records(reduction.stated_reaches),
+        [
+            name_column("reach"),
+            TableColumn(
+                display.head("from", "chainage"),
+                lambda row: _stated(display, "chainage", row["start"], None),
+            ),
+            TableColumn(
+                display.head("to", "chainage"), lambda row: _stated(display, "chainage", row["end"], None)
+            ),
+            TableColumn(
+                display.head("bore", "diameter"),
+                lambda row: (
+                    _stated(display, "diameter", row["diameter"], row["diameter_u"])
+                    + ("" if known(row["diameter_u"]) else " (± not stated)")
+                ),
+            ),
+            name_column("wall"),
+        ],
+        note=None,
+    )
+
+
+def stated_tap_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return the taps as stated: chainage, elevation, gauge, and uncertainties of their own."""
+    rows = records(reduction.stated_taps)
+    pressure = {
+        gauge
+        for gauge, kind in zip(reduction.reading_units["gauge"], reduction.reading_units["kind"], strict=True)
+        if kind == "pressure gauge"
+    }
+
+    def of(quantity: str, key: str) -> Callable[[Row], str]:
+        return lambda row: MISSING if not known(row[key]) else _stated(display, quantity, row[key], None)
+
+    def reading_u(row: Row) -> str:
+        quantity = "pressure" if row["gauge"] in pressure else "small head"
+        shown = of(quantity, "reading_u")(row)
+        return shown if shown == MISSING else _with_unit(display, quantity, shown)
+
+    return lay_out(
+        "Taps as stated.",
+        rows,
+        [
+            name_column("tap"),
+            TableColumn(display.head("chainage", "chainage"), of("chainage", "chainage")),
+            TableColumn(display.head("elevation", "elevation"), of("elevation", "elevation")),
+            name_column("gauge", always=False),
+            TableColumn(
+                display.head("gauge elevation", "elevation"), of("elevation", "gauge_elevation"), always=False
+            ),
+            TableColumn("u of its reading", reading_u, always=False),
+            TableColumn(
+                display.head("u of its chainage", "small head"), of("small head", "chainage_u"), always=False
+            ),
+            TableColumn(
+                display.head("u of its elevation", "small head"),
+                of("small head", "elevation_u"),
+                always=False,
+            ),
+        ],
+        note=None,
+    )
+
+
+def _crossed(rows: Sequence[Row], display: Display, caption: str, first: str) -> PrintedTable:
+    """Rows of ``inputs`` with one line a name and one column for each thing stated of it."""
+    heads = list(dict.fromkeys(str(row["what"]) for row in rows))
+    lines: dict[str, dict[str, Any]] = {}
+    for row in rows:
+        lines.setdefault(str(row["name"]), {"name": row["name"]})[str(row["what"])] = _cell(display, row)
+
+    def column(what: str) -> TableColumn:
+        return TableColumn(what, lambda line: str(line.get(what, MISSING)), text=what == "kind")
+
+    return lay_out(
+        caption,
+        list(lines.values()),
+        [name_column("name", first), *(column(what) for what in heads)],
+        note=None,
+    )
+
+
+def gauge_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return the gauges with their kind, settings and stated uncertainties."""
+    caption = "Gauges as stated; u is a standard uncertainty."
+    return _crossed(_group(reduction, "gauge"), display, caption, "gauge")
+
+
+def fitting_input_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return the fittings as stated."""
+    return _crossed(_group(reduction, "fitting"), display, "Fittings as stated.", "fitting")
+
+
+def uncertainty_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return the standard uncertainties that the survey states for all of its parts."""
+    return lay_out(
+        "Standard uncertainties stated for the whole survey. One that is not stated contributes nothing, unless a gauge "
+        "or a tap states its own.",
+        _group(reduction, "stated"),
+        [name_column("what", "of"), TableColumn("u", lambda row: _cell(display, row))],
+        note=None,
+    )
+
+
+def statements(reduction: Reduction, display: Display = SI_DISPLAY) -> tuple[tuple[str, str], ...]:
+    """Return fluid, site and options as pairs of words."""
+    found = []
+    for group, head in (("fluid", "Fluid"), ("site", "Site")):
+        rows = _group(reduction, group)
+        if rows:
+            parts = [
+                _cell(display, row) if row["what"] == "name" else f"{row['what']} {_cell(display, row)}"
+                for row in rows
+            ]
+            found.append((head, ", ".join(parts)))
+    for row in _group(reduction, "options"):
+        what = str(row["what"])
+        found.append((what[:1].upper() + what[1:], _cell(display, row)))
+    return tuple(found)
+
+
+def raw_reading_tables(
+    reduction: Reduction, display: Display = SI_DISPLAY, *, limit: int | None = None
+) -> tuple[PrintedTable, ...]:
+    """Return the readings as they were read, one line a run; several tables where there are many taps."""
+    raw = reduction.raw_readings
+    labels = list(dict.fromkeys(raw["tap"]))
+    names = list(dict.fromkeys(raw["run"]))[:limit]
+    units = reading_units(reduction)
+    flows: dict[Any, dict[str, Any]] = {}
+    for row in records(reduction.runs[["run", "flow", "temperature"]]):
+        flows.setdefault(row["run"], row)
+    kept = raw[raw["run"].isin(names)] if limit is not None else raw
+    shown = _as_read(kept["tap"].tolist(), kept["reading"].tolist(), units)
+    cells = {(run, tap): text for run, tap, text in zip(kept["run"], kept["tap"], shown, strict=True)}
+    means = " Each is the mean of its repeats." if (raw["repeats"] > 1).any() else ""
+
+    def column(label: str) -> TableColumn:
+        unit = units.get(label, ("", 1.0))[0]
+        head = f"{label} ({unit})" if unit else label
+        return TableColumn(head, lambda row: cells.get((row["run"], label), MISSING))
+
+    rows = [{"flow": None, "temperature": None, **flows.get(run, {}), "run": run} for run in names]
+    return tuple(
+        lay_out(
+            f"Readings as read, in the unit of the record; an en dash was not read.{means}",
+            rows,
+            [
+                name_column("run"),
+                TableColumn(
+                    display.head("flow", "flow"), lambda row: _stated_or_dash(display, "flow", row["flow"])
+                ),
+                TableColumn(
+                    display.head("t", "temperature"),
+                    lambda row: _stated_or_dash(display, "temperature", row["temperature"]),
+                    always=False,
+                ),
+                *(column(label) for label in labels[at : at + _WIDEST]),
+            ],
+            note=None,
+        )
+        for at in range(0, len(labels), _WIDEST)
+    )
+
+
+def _stated_or_dash(display: Display, quantity: str, value: float | None) -> str:
+    return MISSING if not known(value) else _stated(display, quantity, value, None)
+
+
+def _as_read(
+    taps: Sequence[str], readings: Sequence[float], units: dict[str, tuple[str, float]]
+) -> list[str]:
+    """Readings in their units, six digits at most, all of a unit with the same number of decimals."""
+    values = [reading / units.get(tap, ("", 1.0))[1] for tap, reading in zip(taps, readings, strict=True)]
+    decimals: dict[str, int] = {}
+    for tap, value in zip(taps, values, strict=True):
+        unit = units.get(tap, ("", 1.0))[0]
+        if math.isfinite(value):
+            digits = len(f"{value:.6g}".partition(".")[2]) if 1e-4 <= abs(value) < 1e6 else 0
+            decimals[unit] = max(decimals.get(unit, 0), digits)
+    found = []
+    for tap, value in zip(taps, values, strict=True):
+        places = decimals.get(units.get(tap, ("", 1.0))[0], 0)
+        if not math.isfinite(value):
+            found.append(MISSING)
+        elif 1e-4 <= abs(value) < 1e6 or value == 0:
+            found.append(f"{value:.{places}f}".replace("-", "−"))
+        else:
+            found.append(format_number(value, 6))
+    return found
