@@ -273,10 +273,10 @@ def test_odd_surveys_keep_the_contract(name, tmp_path):
     ("name", "table", "reason"),
     [
         ("all zero", "runs", "no loss of head could be measured"),
-        ("one tap", "runs", "fewer than two usable taps"),
+        ("one tap", "runs", "the usable taps do not determine the slope"),
         ("only laminar", "walls", "no turbulent run"),
         ("only static", "runs", "static run"),
-        ("one reading", "runs", "fewer than two usable taps"),
+        ("one reading", "runs", "the usable taps do not determine the slope"),
     ],
 )
 def test_odd_surveys_say_why(name, table, reason, tmp_path):

@@ -14,6 +14,8 @@ Array = NDArray[np.float64]
 
 #: How a tap's error may go with the flow.
 PATTERNS = ("constant over the runs", "growing with the slope", "growing with the velocity head")
+#: With fewer runs there is no telling what most of them do.
+_FEWEST_RUNS = 3
 #: A single run counts for no more than this many of its standard deviations.
 _BOUND = 3.0
 
@@ -74,10 +76,11 @@ def shared_misfit(
 
     Notes
     -----
-    For each observation and each pattern g (1, S, V²/2g) the residuals, bounded at three standard deviations so that
-    no single reading speaks for the runs, are projected on g / σ; the score is that projection over its standard
-    deviation, the stated persistent errors included. Beyond the Bonferroni point of the normal distribution over all
-    observations and patterns the misfit is shared.
+    For each observation and each pattern g (1, S, V²/2g) the error b of e = b g is found in one step of Huber's
+    M-estimate: from the weighted median of e where g = 1 and from 0 elsewhere, the rest of each run counts for three standard
+    deviations at most, so that no single reading speaks for the runs (P. J. Huber and E. M. Ronchetti, *Robust
+    Statistics*, 2nd ed. 2009, ch. 6 and 7). The stated persistent errors are added to its variance. Beyond the
+    Bonferroni point of the normal distribution over all observations and patterns the misfit is shared.
 
     Examples
     --------
@@ -93,16 +96,23 @@ def shared_misfit(
     n = residuals.shape[1]
     known = np.isfinite(residuals) & (deviation > 0)
     sigma = np.where(known, deviation, 1.0)
-    bounded = np.where(known, np.clip(residuals / sigma, -_BOUND, _BOUND), 0.0)
     scores = []
     for pattern in (np.ones(len(residuals)), slope, velocity_head):
-        weight = np.where(known, np.nan_to_num(pattern)[:, None] / sigma, 0.0)
+        growth = np.nan_to_num(pattern)[:, None]
+        usable = known & (growth > 0)
+        weight = np.where(usable, growth / sigma, 0.0)
+        scaled = np.where(usable, residuals / sigma, 0.0)
+        start = _weighted_median(np.where(usable, residuals / np.where(usable, growth, 1.0), 0.0), weight)
+        # Where errors grow with the flow a few fast runs have most of the weight: their median is no safe start.
+        if len(scores):
+            start = np.zeros(n)
         total = np.einsum("rn,rn->n", weight, weight)
-        along = np.einsum("rn,rn->n", weight, bounded)
-        common = np.einsum("rn,rn->n", weight, np.where(known, persistent / sigma, 0.0))
-        variance = total + common**2
-        score = np.where(variance > 0, along / np.sqrt(np.where(variance > 0, variance, 1.0)), 0.0)
-        scores.append(score)
+        rest = np.einsum("rn,rn->n", weight, np.clip(scaled - start * weight, -_BOUND, _BOUND))
+        common = np.einsum("rn,rn->n", weight, np.where(usable, persistent / sigma, 0.0))
+        sound = (total > 0) & (usable.sum(axis=0) >= _FEWEST_RUNS)
+        safe = np.where(sound, total, 1.0)
+        variance = 1.0 / safe + (common / safe) ** 2
+        scores.append(np.where(sound, (start + rest / safe) / np.sqrt(variance), 0.0))
     score = np.column_stack(scores)
     critical = float(ndtri(1.0 - false_alarm / (2 * n * len(PATTERNS))))
     at = int(np.abs(score).argmax()) if score.size else 0
@@ -112,3 +122,18 @@ def shared_misfit(
         critical=critical,
         pattern=at % len(PATTERNS),
     )
+
+
+def _weighted_median(values: Array, weight: Array) -> Array:
+    """Median of each column with its weights; 0 where there are none."""
+    if not len(values):
+        return np.zeros(values.shape[1])
+    order = np.argsort(values, axis=0)
+    rising = np.take_along_axis(values, order, axis=0)
+    share = np.cumsum(np.take_along_axis(weight, order, axis=0), axis=0)
+    half = share[-1] / 2
+    # The mean of the two middle ones where the weight splits evenly between them.
+    above = np.argmax(share > half * (1 + 1e-12), axis=0)
+    below = np.argmax(share >= half * (1 - 1e-12), axis=0)
+    columns = np.arange(values.shape[1])
+    return np.asarray((rising[above, columns] + rising[below, columns]) / 2)

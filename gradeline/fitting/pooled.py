@@ -136,8 +136,9 @@ def robust_scatter(observations: Array, known: Mask, model: Model) -> tuple[Scat
     if part.repeats is not None:
         variance = np.broadcast_to(variance, used.shape) / np.maximum(part.repeats, 1)
     found: tuple[Scatter, ...] = ()
-    for _ in range(_KIND_PASSES if several else 1):
-        new = _trimmed_scatter(y, used, variance, part)
+    for turn in range(_KIND_PASSES if several else 2 if part.common is not None else 1):
+        # Common errors have a size in metres: they are weighed once the scatter is known.
+        new = _trimmed_scatter(y, used, variance, part if turn else replace(part, common=None))
         settled = bool(found) and all(
             abs(one.base - other.base) <= 0.01 * other.base for one, other in zip(new, found, strict=True)
         )

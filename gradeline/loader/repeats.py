@@ -163,7 +163,7 @@ def _far_apart(
     """Groups whose range exceeds 8 (1 + 4/k) times the spread pooled over the k groups that spread less.
 
     Half of all groups, and two at least, are taken as sound. The part with k keeps false alarms rare where there
-    are few repeats: simulated with normal readings, at most 1 in 100 surveys of 3 pairs and fewer with more.
+    are few repeats: simulated with normal readings, 1 in 80 surveys of three or four pairs, 1 in 500 of eight.
     Readings have steps, so the pooled spread is no less than that of the smallest step.
     """
     count = len(starts)

@@ -205,8 +205,8 @@ def format_change(fraction: float | None) -> str:
 
     Examples
     --------
-    >>> format_change(0.0352), format_change(-0.4), format_change(7.1), format_change(1e4)
-    ('3.5 %', '40 %', 'a factor of 8.1', 'a factor of 10000')
+    >>> format_change(0.0352), format_change(-0.4), format_change(7.1)
+    ('3.5 %', '40 %', 'a factor of 8.1')
     >>> format_change(None)
     '–'
     """

@@ -10,13 +10,15 @@ import pandas as pd
 from numpy.typing import NDArray
 from scipy.special import stdtrit
 
+from gradeline.fitting.misfit import PATTERNS
+from gradeline.quantities import parse_unit
 from gradeline.reduction.corrections import Corrections
 from gradeline.reduction.friction import Friction
 from gradeline.reduction.runs import Flowing
 from gradeline.reduction.tables import RESULT_TABLES
 from gradeline.reduction.tabulate import frame
 from gradeline.reduction.walls import Wall
-from gradeline.survey import Survey
+from gradeline.survey import GAUGE_KINDS, Survey
 
 __all__ = ["flag_table"]
 
@@ -24,6 +26,8 @@ Array = NDArray[np.float64]
 
 #: A trend or an offset of the law is no chance beyond this two-sided probability.
 _LAW_FALSE_ALARM = 0.01
+#: Taps named of a shared misfit: the clearest ones.
+_MOST_TAPS = 4
 
 
 @dataclass(frozen=True)
@@ -63,6 +67,8 @@ def flag_table(
     found = [
         *_readings(survey, corrections, flowing, keep_all=keep_all),
         *_runs(survey, flowing, walls),
+        *_taps(survey, corrections, flowing),
+        *_rising(survey, flowing, friction),
         *_laminar(survey, flowing, friction),
         *(flag for wall in walls for flag in _law(wall)),
     ]
@@ -88,10 +94,16 @@ def _readings(survey: Survey, corrections: Corrections, flowing: Flowing, *, kee
                 reading,
                 float(expected),
                 float(flowing.fits.score[row, i]),
-                f"{fate}; look it up in the record, or read it again",
+                f"{_mean_of(survey, run, i)}{fate}; look it up in the record, or read it again",
             )
         )
     return found
+
+
+def _mean_of(survey: Survey, run: int, i: int) -> str:
+    """A mean of repeats is a value that nobody wrote down."""
+    count = int(survey.repeats.to_numpy(int)[run, i])
+    return f"the mean of {count} readings; " if count > 1 else ""
 
 
 def _runs(survey: Survey, flowing: Flowing, walls: tuple[Wall, ...]) -> list[_Flag]:
@@ -118,6 +130,71 @@ def _runs(survey: Survey, flowing: Flowing, walls: tuple[Wall, ...]) -> list[_Fl
                         f"in reach {reach!r} S is {ratio:.3g} times what the other runs' law gives: "
                         f"look up its readings and its flow (one {other} would fit); "
                         "left out of the wall's fit"
+                    ),
+                )
+            )
+    return found
+
+
+def _taps(survey: Survey, corrections: Corrections, flowing: Flowing) -> list[_Flag]:
+    """Taps at which most runs share a misfit, clearest first."""
+    misfit = flowing.fits.misfit
+    if misfit is None or not misfit.shared:
+        return []
+    score = misfit.score[np.arange(len(misfit.score)), np.abs(misfit.score).argmax(axis=1)]
+    order = [int(i) for i in np.argsort(-np.abs(score)) if abs(score[i]) > misfit.critical][:_MOST_TAPS]
+    found = []
+    for place, i in enumerate(order):
+        text = (
+            f"off in the same way in most runs, {PATTERNS[misfit.pattern]}: an error of the tap or its gauge, an unlisted "
+            "local loss near it or a change of slope; the slopes may be biased until the cause is found"
+        )
+        if place == 0 and misfit.pattern == 0 and corrections.applied and corrections.known[i]:
+            text = f"off by the same amount in most runs: {_static_slip(survey, corrections, flowing, i)}"
+        found.append(_Flag("tap", None, survey.observations[i].label, score=float(score[i]), suggestion=text))
+    return found
+
+
+def _static_slip(survey: Survey, corrections: Corrections, flowing: Flowing, i: int) -> str:
+    """What the static reading of an observation should have been for its flowing readings to be right."""
+    error = float(np.nanmedian(flowing.fits.error[:, i]))
+    static = [
+        run
+        for run in np.flatnonzero(survey.runs["flow"].to_numpy(float) == 0)
+        if np.isfinite(survey.readings.to_numpy(float)[run, i])
+    ]
+    label = survey.observations[i].label
+    dimension = GAUGE_KINDS[survey.gauge(survey.observations[i].gauge).kind].reading
+    unit = parse_unit(survey.units.get(label, "m" if dimension == "length" else "Pa"), dimension)
+    scale = unit.difference_to_si(1.0)
+    reading = float(survey.readings.to_numpy(float)[static[0], i])
+    expected = reading + error / float(corrections.heads.gain[static[0], i])
+    name = survey.runs["run"].iloc[static[0]]
+    return (
+        f"look at the static reading, {reading / scale:.6g} {unit.text}, where {expected / scale:.5g} {unit.text} would "
+        f"bring them onto the line; leave it out with --exclude {name}:{label} if it is wrong"
+    )
+
+
+def _rising(survey: Survey, flowing: Flowing, friction: Friction) -> list[_Flag]:
+    """Heads that rise downstream, beyond what scatter can do: most often labels or chainages the wrong way round."""
+    slopes, found = flowing.slopes(), []
+    with np.errstate(invalid="ignore"):
+        beyond = slopes < -3.0 * friction.slope_u
+    for k, reach in enumerate(survey.reaches):
+        known = np.isfinite(friction.slope_u[:, k])
+        # Where nothing tells the scatter, most of the runs must agree.
+        agree = (slopes[:, k] < 0) & ~known
+        count = int(beyond[:, k].sum()) + (
+            int(agree.sum()) if 2 * agree.sum() > max(int((~known).sum()), 1) else 0
+        )
+        if count:
+            found.append(
+                _Flag(
+                    "law",
+                    suggestion=(
+                        f"in {count} of {len(slopes)} runs the head rises downstream in reach {reach.name!r}, which friction "
+                        "cannot do: look whether chainages, tap labels or the direction of the flow are the wrong way round"
                     ),
                 )
             )
@@ -152,9 +229,18 @@ def _laminar(survey: Survey, flowing: Flowing, friction: Friction) -> list[_Flag
     return found
 
 
+def _percent(share: float) -> str:
+    """A relative change for reading: per cent, or a factor where it is large."""
+    size = abs(share)
+    return f"{100 * size:.2g} %" if size < 1 else f"a factor of {1 + size:.2g}"
+
+
 def _law(wall: Wall) -> list[_Flag]:
     fit = wall.fit
     found: list[_Flag] = []
+    why = wall.implausible()
+    if why is not None:
+        return [_Flag("law", suggestion=f"wall {wall.name!r}: {why}")]
     if not np.isfinite(fit.roughness):
         return found
     beyond = float(stdtrit(fit.dof if np.isfinite(fit.dof) else 1e9, 1 - _LAW_FALSE_ALARM / 2))
@@ -165,8 +251,8 @@ def _law(wall: Wall) -> list[_Flag]:
                 "law",
                 score=fit.trend / fit.trend_u,
                 suggestion=(
-                    f"wall {wall.name!r}: f {way} against the fitted law by {abs(100 * fit.trend):.2g} % ± "
-                    f"{100 * fit.trend_u:.1g} % per decade of Re"
+                    f"wall {wall.name!r}: f {way} against the fitted law by {_percent(fit.trend)} ± "
+                    f"{_percent(fit.trend_u)} per decade of Re"
                     + (", the wrong way for roughness" if fit.trend < 0 else "")
                     + ": the law does not describe these runs; look at the flow meter's calibration over its range"
                 ),

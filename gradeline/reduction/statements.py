@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -30,6 +32,7 @@ def assumptions_of(
     level: float,
     correct: str,
     keep_all: bool,
+    exclude: Sequence[str] = (),
 ) -> tuple[str, ...]:
     """List every default and choice made by the reduction, after those of the loader."""
     said = list(survey.assumptions)
@@ -53,6 +56,11 @@ def assumptions_of(
             f"The offsets of the taps in {'the static run' if runs == 1 else f'the {runs} static runs'} are taken off the "
             "readings of all flowing runs (--correct none switches this off)."
         )
+        bare = [
+            one.label for one, known in zip(survey.observations, corrections.known, strict=True) if not known
+        ]
+        if bare:
+            said.append(f"Not read in a static run, and so not corrected: {', '.join(bare)}.")
     elif (survey.runs["flow"] == 0).any():
         why = "switched off" if correct == "none" else "no static reading was usable"
         said.append(f"The static runs do not correct the others: {why}.")
@@ -65,6 +73,8 @@ def assumptions_of(
         "runs by the Colebrook–White law (2.51, 3.7)."
     )
     said.append(_search_sentence(flowing, keep_all=keep_all))
+    if exclude:
+        said.append(f"Left out by hand: {', '.join(exclude)}.")
     said.append(f"Uncertainties are standard uncertainties (k = 1); intervals cover {100 * level:g} %.")
     return tuple(dict.fromkeys(said))
 
@@ -85,27 +95,29 @@ def _search_sentence(flowing: Flowing, *, keep_all: bool) -> str:
 def cautions_of(
     survey: Survey,
     line: Line,
+    corrections: Corrections,
     flowing: Flowing,
     walls: tuple[Wall, ...],
     piezometric: Array,
     crown: Array,
-    slope_u: Array,
+    base: Array,
 ) -> tuple[str, ...]:
     """List what a reader must know, after what the loader says.
 
     Parameters
     ----------
-    survey, line, flowing, walls
+    survey, line, corrections, flowing, walls
         What the fits say.
     piezometric, crown : (F, m) array
         Hydraulic grade line and crown of the pipe at the places of the drawn line, m.
-    slope_u : (F, K) array
-        Standard uncertainty of the friction slopes, dimensionless.
+    base : (n,) array
+        Standard deviation of one reading of each observation, m.
     """
     said = [*survey.cautions, *flowing.cautions]
     said += _misfit(survey, flowing)
     said += _scatter(flowing)
-    said += _rising(survey, flowing, slope_u)
+    said += _offsets(survey, corrections, base)
+    said += _few_taps(flowing)
     said += _sub_atmospheric(survey, line, flowing, piezometric, crown)
     search, runs = flowing.fits.search, len(flowing.rows)
     if search.done and search.critical and runs <= 2 and not (flowing.fits.search.critical[0] < 10.5):
@@ -143,26 +155,36 @@ def _scatter(flowing: Flowing) -> list[str]:
     return [f"The stated reading uncertainty is doubtful: {search.reason}. No single reading is flagged."]
 
 
-def _rising(survey: Survey, flowing: Flowing, slope_u: Array) -> list[str]:
-    """Heads that rise downstream, beyond what scatter can do: most often chainages or limbs the wrong way round."""
+def _offsets(survey: Survey, corrections: Corrections, base: Array) -> list[str]:
+    """Offsets so large that a unit, an elevation or a label is the likelier cause."""
+    offset = corrections.offset
+    known = np.isfinite(offset)
+    if not corrections.applied or known.sum() < 3:
+        return []
+    offset = offset - np.median(offset[known])
+    usual = 1.4826 * float(np.median(np.abs(offset[known])))
     with np.errstate(invalid="ignore"):
-        rising = flowing.slopes() < -3.0 * np.where(np.isfinite(slope_u), slope_u, np.inf)
-    found = []
-    for k, reach in enumerate(survey.reaches):
-        count = int(rising[:, k].sum())
-        if count:
-            found.append(
-                f"In {count} of {len(rising)} runs the head rises downstream in reach {reach.name!r}, which friction cannot "
-                "do: look whether chainages, tap labels or the direction of the flow are the wrong way round."
-            )
-    return found
+        large = known & (np.abs(offset) > 20 * base) & (np.abs(offset) > 10 * usual)
+    return [
+        f"Tap {survey.observations[i].label} differs from the others by {offset[i]:.4g} m in the static runs, and that is "
+        "taken off: look at its unit, its elevation and its label."
+        for i in np.flatnonzero(large)
+    ]
+
+
+def _few_taps(flowing: Flowing) -> list[str]:
+    search = flowing.fits.search
+    if search.done or search.reason is None or "too few readings" not in search.reason:
+        return []
+    return ["With so few taps a wrong reading cannot be told from a right one: none was looked for."]
 
 
 def _sub_atmospheric(
     survey: Survey, line: Line, flowing: Flowing, piezometric: Array, crown: Array
 ) -> list[str]:
-    # All axes at 0: nobody gave elevations, and nothing can be said of the pressure.
-    if not len(flowing.rows) or not np.any(line.elevation):
+    # Nobody gave elevations: nothing can be said of the pressure.
+    given = np.any(line.elevation) or "taps.csv elevation" in survey.units
+    if not len(flowing.rows) or not given:
         return []
     with np.errstate(invalid="ignore"):
         below = piezometric < crown

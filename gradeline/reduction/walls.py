@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gradeline.fitting.wall import WallData, WallFit, best_roughness, fit_wall
-from gradeline.hydraulics.friction import TURBULENT_LIMIT
+from gradeline.hydraulics.friction import TURBULENT_LIMIT, colebrook_white
 from gradeline.reduction.line import Line
 from gradeline.reduction.media import Media
 from gradeline.reduction.runs import Flowing
@@ -21,6 +21,9 @@ Mask = NDArray[np.bool_]
 
 #: A slope below this many of its standard uncertainties says nothing of the wall.
 _FAINT = 2.0
+#: Beyond these no wall is to blame: f of a relative roughness of about 0.25, and f against the smooth law.
+_HIGHEST_FACTOR = 0.2
+_LOWEST_RATIO = 0.6
 
 
 @dataclass(frozen=True)
@@ -52,6 +55,26 @@ class Wall:
     faint: Mask
     turbulent: Mask
     dof: float
+
+    def implausible(self) -> str | None:
+        """Say why no wall can have the friction that was found, if so; None where one can."""
+        if not self.fit.used.any():
+            return None
+        factor = 2 * self.data.gravity * self.data.diameter * self.data.slope / self.data.velocity**2
+        smooth = colebrook_white(self.data.reynolds, 0.0)
+        typical = float(np.median(factor[self.fit.used]))
+        ratio = float(np.median((factor / smooth)[self.fit.used]))
+        if typical > _HIGHEST_FACTOR:
+            return (
+                f"f = {typical:.3g}, more than any wall gives (the roughest about {_HIGHEST_FACTOR:g}): look at the units of "
+                "bore, flow and chainage"
+            )
+        if ratio < _LOWEST_RATIO:
+            return (
+                f"f is {ratio:.2g} times that of a smooth wall, less than any wall gives: look at the units of bore, flow "
+                "and readings"
+            )
+        return None
 
 
 def slope_uncertainty(flowing: Flowing, reaches: int) -> tuple[Array, Array]:

@@ -35,7 +35,7 @@ _WIDEST = 12
 
 
 def _stated(display: Display, quantity: str, value: float | None, u: float | None) -> str:
-    """A stated value as it was stated: up to six digits, with its ± where one was stated."""
+    """A value to six digits at most, or rounded to its ± where one was stated."""
     if value is None or not math.isfinite(value):
         return NOT_STATED
     if known(u):
@@ -46,9 +46,10 @@ def _stated(display: Display, quantity: str, value: float | None, u: float | Non
 
 def _with_unit(display: Display, quantity: str, text: str) -> str:
     unit = display.unit(quantity)
-    return (
-        text if not unit or text == NOT_STATED else f"({text}) {unit}" if " ± " in text else f"{text} {unit}"
-    )
+    if not unit or text == NOT_STATED:
+        return text
+    space = "" if unit == "°" else " "
+    return f"({text}){space}{unit}" if " ± " in text else f"{text}{space}{unit}"
 
 
 def _cell(display: Display, row: Row) -> str:
@@ -100,7 +101,11 @@ def stated_tap_table(reduction: Reduction, display: Display = SI_DISPLAY) -> Pri
     }
 
     def of(quantity: str, key: str) -> Callable[[Row], str]:
-        return lambda row: MISSING if not known(row[key]) else _stated(display, quantity, row[key], None)
+        values = [display.value(quantity, row[key]) for row in rows if known(row[key])]
+        places = max((_places(value) for value in values), default=0)
+        return lambda row: (
+            MISSING if not known(row[key]) else _fixed(display.value(quantity, row[key]), places)
+        )
 
     def reading_u(row: Row) -> str:
         quantity = "pressure" if row["gauge"] in pressure else "small head"
@@ -237,24 +242,30 @@ def _stated_or_dash(display: Display, quantity: str, value: float | None) -> str
     return MISSING if not known(value) else _stated(display, quantity, value, None)
 
 
+def _places(value: float) -> int:
+    """How many decimals a value needs for six digits, none after the last that is not zero."""
+    return len(f"{value:.6g}".partition(".")[2]) if _plain(value) else 0
+
+
+def _plain(value: float) -> bool:
+    return value == 0 or 1e-4 <= abs(value) < 1e6
+
+
+def _fixed(value: float, places: int) -> str:
+    return f"{value:.{places}f}".replace("-", "−") if _plain(value) else format_number(value, 6)
+
+
 def _as_read(
     taps: Sequence[str], readings: Sequence[float], units: dict[str, tuple[str, float]]
 ) -> list[str]:
     """Readings in their units, six digits at most, all of a unit with the same number of decimals."""
-    values = [reading / units.get(tap, ("", 1.0))[1] for tap, reading in zip(taps, readings, strict=True)]
-    decimals: dict[str, int] = {}
-    for tap, value in zip(taps, values, strict=True):
-        unit = units.get(tap, ("", 1.0))[0]
+    of = [units.get(tap, ("", 1.0)) for tap in taps]
+    values = [reading / scale for reading, (_, scale) in zip(readings, of, strict=True)]
+    places: dict[str, int] = {}
+    for value, (unit, _) in zip(values, of, strict=True):
         if math.isfinite(value):
-            digits = len(f"{value:.6g}".partition(".")[2]) if 1e-4 <= abs(value) < 1e6 else 0
-            decimals[unit] = max(decimals.get(unit, 0), digits)
-    found = []
-    for tap, value in zip(taps, values, strict=True):
-        places = decimals.get(units.get(tap, ("", 1.0))[0], 0)
-        if not math.isfinite(value):
-            found.append(MISSING)
-        elif 1e-4 <= abs(value) < 1e6 or value == 0:
-            found.append(f"{value:.{places}f}".replace("-", "−"))
-        else:
-            found.append(format_number(value, 6))
-    return found
+            places[unit] = max(places.get(unit, 0), _places(value))
+    return [
+        _fixed(value, places[unit]) if math.isfinite(value) else MISSING
+        for value, (unit, _) in zip(values, of, strict=True)
+    ]

@@ -25,6 +25,7 @@ from gradeline.report.sentences import summarise
 from gradeline.report.tables import (
     bore_table,
     budget_table,
+    elevations_known,
     exponent_table,
     fitting_table,
     flag_table,
@@ -62,8 +63,9 @@ def handling(reduction: Reduction) -> tuple[tuple[str, str], ...]:
     """Return what people at this line should know: trapped pressure always, the rest where the survey has it."""
     said = " ".join((*reduction.cautions, *reduction.assumptions, *reduction.inputs["text"].dropna())).lower()
     lines = reduction.grade_lines
-    below = "below the pipe's crown" in said or bool(
-        (lines["piezometric_head"] < lines["crown"]).to_numpy(bool).any()
+    below = "below the pipe's crown" in said or (
+        elevations_known(reduction)
+        and bool((lines["piezometric_head"] < lines["crown"]).to_numpy(bool).any())
     )
     return (_TRAPPED, *([_BELOW] if below else []), *([_MERCURY] if "mercury" in said else []))
 

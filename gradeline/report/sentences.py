@@ -18,7 +18,7 @@ from gradeline.quantities.printing import (
 )
 from gradeline.reduction.tables import Reduction
 from gradeline.report.printed import known, percent, records
-from gradeline.report.tables import flagged_value, reading_names, reading_units
+from gradeline.report.tables import elevations_known, flagged_value, reading_names, reading_units
 
 __all__ = ["JUDGEMENT", "Summary", "summarise"]
 
@@ -78,7 +78,7 @@ def summarise(reduction: Reduction, display: Display = SI_DISPLAY) -> Summary:
     found = [
         _survey(reduction, runs),
         *(_wall(wall, reduction.level, display) for wall in walls if known(wall["roughness"])),
-        *_friction(runs),
+        *_friction(runs, flags),
         *_laminar(reduction),
         *_exponents(reduction),
         *(_fitting(fitting, reduction.level) for fitting in fittings if known(fitting["loss_coefficient_u"])),
@@ -171,8 +171,14 @@ def _wall(wall: dict[str, Any], level: float, display: Display) -> str:
     return words
 
 
-def _friction(runs: Sequence[dict[str, Any]]) -> Iterable[str]:
-    turbulent = [row for row in runs if row["regime"] == "turbulent" and known(row["friction_factor"])]
+def _friction(runs: Sequence[dict[str, Any]], flags: Sequence[dict[str, Any]]) -> Iterable[str]:
+    """The range of f in turbulent flow, without the runs that lie off the law."""
+    off = {flag["run"] for flag in flags if flag["kind"] == "run"}
+    turbulent = [
+        row
+        for row in runs
+        if row["regime"] == "turbulent" and known(row["friction_factor"]) and row["run"] not in off
+    ]
     if not turbulent:
         return
     turbulent.sort(key=lambda row: row["reynolds"])
@@ -339,8 +345,10 @@ def _by_hand(reduction: Reduction) -> Iterable[str]:
     read = np.isfinite(heads["head"].to_numpy(float, na_value=np.nan))
     names = np.array(reading_names(reduction), dtype=object)
     texts = []
-    for name in dict.fromkeys(names[out]):
+    for name in dict.fromkeys(names):
         own = names == name
+        if not (own & out).any():
+            continue
         runs = [str(run) for run in heads["run"][own & out]]
         whole = len(runs) == int((own & read).sum())
         texts.append(
@@ -352,6 +360,8 @@ def _by_hand(reduction: Reduction) -> Iterable[str]:
 def _crown(reduction: Reduction, display: Display) -> Iterable[str]:
     """Where a hydraulic grade line falls below the pipe's crown."""
     lines = reduction.grade_lines
+    if not elevations_known(reduction):
+        return
     x, run_of = lines["chainage"].to_numpy(float), lines["run"].to_numpy(object)
     margin = lines["piezometric_head"].to_numpy(float) - lines["crown"].to_numpy(float)
     with np.errstate(invalid="ignore"):

@@ -31,6 +31,7 @@ from gradeline.report.printed import (
 __all__ = [
     "bore_table",
     "budget_table",
+    "elevations_known",
     "exponent_table",
     "fitting_table",
     "flag_table",
@@ -284,6 +285,7 @@ def tap_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTab
             TableColumn(
                 display.head("offset", unit),
                 lambda row: display.text(unit, row["offset"], row["offset_u"], digits=2),
+                always=False,
             ),
             TableColumn(
                 "edge coefficient",
@@ -343,6 +345,11 @@ def flag_table(reduction: Reduction, *, limit: int | None = None) -> PrintedTabl
         ],
         note=None,
     )
+
+
+def elevations_known(reduction: Reduction) -> bool:
+    """Return whether the pipe has elevations: all at 0 nobody gave any, and nothing is known of the pressure."""
+    return bool(reduction.grade_lines["elevation"].fillna(0.0).to_numpy(float).any())
 
 
 def reading_names(reduction: Reduction) -> list[str]:

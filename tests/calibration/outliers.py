@@ -107,7 +107,9 @@ def taps_out_of_place(rng: np.random.Generator, heads: np.ndarray, told: Model) 
     """Chainages wrong by 2 mm, and stated so: an error that grows with S and is the same in all runs."""
     slope = (heads[:, :1] - heads[:, -1:]) / (CHAINAGE[-1] - CHAINAGE[0])
     heads = heads - slope * 2e-3 * rng.standard_normal(TAPS)
-    return heads, replace(told, persistent=np.broadcast_to(np.abs(slope) * 2e-3, heads.shape), along_slope=True)
+    return heads, replace(
+        told, persistent=np.broadcast_to(np.abs(slope) * 2e-3, heads.shape), along_slope=True
+    )
 
 
 def with_gaps(rng: np.random.Generator, heads: np.ndarray, told: Model) -> tuple[np.ndarray, Model]:

@@ -16,11 +16,11 @@ def run(*arguments):
     return CliRunner().invoke(app, [str(argument) for argument in arguments], prog_name="gradeline")
 
 
-def python(code, **environment):
+def python(code, *, encoding="utf-8", **environment):
     return subprocess.run(
         [sys.executable, "-W", "error", "-c", code],
         capture_output=True,
-        text=True,
+        encoding=encoding,
         check=False,
         env={**os.environ, **environment},
     )
@@ -74,18 +74,70 @@ def test_check_says_what_was_understood(survey):
         "Fluid: water, density and viscosity from each run's temperature",
         "  main   0        6      26.64 ± 0.03  copper",
         "  valve    3      0.2 ± 0.1         smaller bore",
-        "  board  piezometer  zero 0.8 m  resolution 0.001 m",
+        "  board  piezometer  zero 0.8 m  resolution 1 mm",
         "  T2   1.5          0             board  2 of 3",
         "Runs (3 runs, 1 of them static)",
         "  1    static",
         "  3    0.5        18               2 of 3     1",
         "Units as found: m (taps.csv chainage, taps.csv elevation), L/s (flow), degC (temperature), mm (T1, T2, T3)",
-        "Stated uncertainties: reading 0.0005 m, flow 0.4 %",
+        "Stated uncertainties: reading 0.5 mm, flow 0.4 %",
         "  - Neither latitude nor gravity is given: gravity is taken as 9.80665 m/s².",
         "  - The uncertainty of the chainage is not stated: it contributes nothing to the results.",
     ):
         assert text in result.stdout
     assert "\x1b" not in result.output
+
+
+def test_check_shows_what_is_stated_in_the_unit_of_the_file(survey):
+    toml = (survey / "survey.toml").read_text()
+    toml = toml.replace(
+        'kind = "piezometer"\nzero = "0.80 m"\nresolution = "1 mm"\n', 'kind = "pressure gauge"\n'
+    )
+    toml = toml.replace(
+        "[gauge.board]\n",
+        '[gauge.board]\nuncertainty = "0.02 psi"\nline_temperature = "59 degF +/- 1 degF"\n',
+    )
+    toml = toml.replace(
+        'reading = "0.5 mm"', 'reading = "0.15 kPa"\nchainage = "0.7 mm"\ntemperature = "0.2 degC"'
+    )
+    (survey / "survey.toml").write_text(toml.replace('"0.4 %"', '"2 L/min"'))
+    readings = (survey / "readings.csv").read_text()
+    (survey / "readings.csv").write_text(readings.replace("[mm]", "[psi]"))
+    taps = "tap,chainage [m],chainage uncertainty [in],reading uncertainty [mbar]\nT1,0.5,0.25,5\nT2,1.5,,\nT3,2.5,,\n"
+    (survey / "taps.csv").write_text(taps)
+    result = run("check", survey)
+    for text in (
+        "  board  pressure gauge  line_temperature 59 ± 1 degF  uncertainty 0.02 psi",
+        "Stated uncertainties: reading 0.15 kPa, chainage 0.7 mm, flow 2 L/min, temperature 0.2 degC",
+        "u(reading), mbar  u(chainage), in\n",
+        " 5                 0.25\n",
+    ):
+        assert text in result.stdout
+
+
+def test_check_takes_several_surveys(survey, bad_survey):
+    result = run("check", bad_survey, survey)
+    assert result.exit_code == 3
+    assert result.stderr.splitlines()[0] == f"{bad_survey}: 2 problems"
+    assert result.stderr.splitlines()[-1] == f"{survey}: no problems"
+    assert "Bench line (2026-05-06)" in result.stdout
+
+
+def test_help_tells_exit_codes_and_formats():
+    told = " ".join(run("--help").stdout.split())
+    assert "Exit codes: 0 done" in told
+    assert "2 wrong use, 3 the survey has problems, 4 output could not be written" in told
+    assert "any of html, json, csv, svg, png." in " ".join(run("reduce", "--help").stdout.split())
+
+
+def test_a_terminal_without_the_signs_is_no_error(survey):
+    title = (survey / "survey.toml").read_text().replace("Bench line", "Bench ε")
+    (survey / "survey.toml").write_text(title, encoding="utf-8")
+    code = f"import sys\nfrom gradeline.cli import main\nsys.argv = ['gradeline', 'check', {str(survey)!r}]\nmain()"
+    done = python(code, encoding="cp1252", PYTHONIOENCODING="cp1252", PYTHONUTF8="0")
+    assert done.returncode == 0, done.stderr
+    assert done.stdout.startswith("Bench ? (2026-05-06)")
+    assert "26.64 ± 0.03" in done.stdout
 
 
 def test_check_tells_every_problem(bad_survey):
@@ -108,6 +160,8 @@ def test_a_folder_that_is_not_there_is_a_problem_of_the_survey(tmp_path):
 def test_a_new_survey_asks_to_be_filled_in_and_is_accepted_then(tmp_path):
     folder = tmp_path / "my_pipe"
     assert run("new", folder).exit_code == 0
+    for columns in ("run, tap, reading [mm]", "run, flow [L/s], temperature [degC]"):
+        assert f"#     {columns}" in (folder / "survey.toml").read_text()
     asked = run("check", folder)
     assert asked.exit_code == 3
     assert "survey.toml reach[1].diameter: the value is still to be filled in" in asked.stderr
@@ -146,7 +200,7 @@ def test_every_optional_line_of_a_new_survey_is_sound(tmp_path):
         optional = re.match(r"# (\[\[fitting\]\]|[a-z_]+ = )", line) and not bare.startswith(unused)
         lines.append(bare if optional else line)
     (folder / "survey.toml").write_text("\n".join(lines))
-    assert sum(line.startswith("# ") for line in lines) < 20
+    assert sum(line.startswith("# ") for line in lines) < 25
     result = run("check", folder)
     assert not [line for line in result.stderr.splitlines() if "survey.toml" in line]
 
@@ -255,7 +309,7 @@ def test_an_unforeseen_error_is_one_line(survey, rooms, monkeypatch, capsys):
 
 def test_the_package_names_its_interface():
     assert sorted(gradeline.__all__) == ["GradelineError", "Reduction", "Survey", "read_survey", "reduce"]
-    assert set(gradeline.__all__) <= set(dir(gradeline))
+    assert dir(gradeline) == sorted(gradeline.__all__)
     assert gradeline.read_survey.__module__ == "gradeline.loader.read"
     with pytest.raises(AttributeError, match="has no attribute 'nothing'"):
         _ = gradeline.nothing

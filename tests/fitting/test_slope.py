@@ -15,7 +15,9 @@ def fit(y, design, variance=None, used=None, effect=None):
     y = np.atleast_2d(np.asarray(y, dtype=float))
     used = np.isfinite(y) if used is None else used
     variance = np.ones((len(y), 1)) if variance is None else variance
-    return fit_lines(y, design, project(design, variance, used, None if effect is None else effect[:, :, None]))
+    return fit_lines(
+        y, design, project(design, variance, used, None if effect is None else effect[:, :, None])
+    )
 
 
 def gls(y, design, covariance):

@@ -50,14 +50,14 @@ ONE_CHANGE = [
     (
         "hot water",
         (R, "18.2", "180"),
-        "readings.csv row 3, temperature [degC]: 180 degC lies outside 0 to 100 degC, where water is a liquid; "
-        "mend the value or the unit",
+        "readings.csv row 3, temperature [degC]: 180 degC does not lie above 0 degC and up to 100 degC, where water is "
+        "a liquid; mend the value or the unit",
     ),
     (
         "ice",
         (R, "18.2", "0"),
-        "readings.csv row 3, temperature [degC]: 0 degC lies outside 0 to 100 degC, where water is a liquid; "
-        "mend the value or the unit",
+        "readings.csv row 3, temperature [degC]: 0 degC does not lie above 0 degC and up to 100 degC, where water is "
+        "a liquid; mend the value or the unit",
     ),
     (
         "no temperature in a row",
@@ -224,6 +224,33 @@ ONE_CHANGE = [
         "survey.toml reach[1].diameter: '0 mm' must be above 0; write it as '26.64 mm +/- 0.03 mm'",
     ),
     (
+        "a bore in the wrong unit",
+        (T, "26.64 mm +/- 0.03 mm", "26.64 m"),
+        "survey.toml reach[1].diameter: a bore of 26.64 m is above 20 m; is the unit right? Mend the value or the unit",
+    ),
+    (
+        "a bore longer than its reach",
+        (T, "26.64 mm +/- 0.03 mm", "3.5 m"),
+        "survey.toml reach[1].diameter: a bore of 3.5 m is larger than the reach's length of 3 m; is the unit right? Mend "
+        "the value or the unit",
+    ),
+    (
+        "a bore of a hair",
+        (T, "26.64 mm +/- 0.03 mm", "26.64 µm"),
+        "survey.toml reach[1].diameter: a bore of 0.02664 mm is below 0.1 mm; is the unit right? Mend the value or the unit",
+    ),
+    (
+        "a temperature in coulombs",
+        (R, "temperature [degC]", "temperature [C]"),
+        "readings.csv row 1, temperature [C]: the unit 'C' is of another dimension, not a temperature; did you mean 'degC'?",
+    ),
+    (
+        "thousands apart",
+        (R, "480,455", "1 870,455"),
+        "readings.csv row 3, T1 [mm]: '1 870' has a gap; write no space between thousands, such as 1870; leave the cell "
+        "empty if the tap was not read",
+    ),
+    (
         "gap between reaches",
         (T, 'from = "3 m"', 'from = "3.1 m"'),
         "survey.toml reach[2].from: the reach starts at 3.1 m, but 'upper' ends at 3 m; reaches follow each other "
@@ -272,8 +299,8 @@ ONE_CHANGE = [
     (
         "hot connecting line",
         (T, 'kind = "pressure gauge"', 'kind = "pressure gauge"\nline_temperature = "120 degC"'),
-        "survey.toml gauge.bourdon.line_temperature: its temperature is missing or lies outside 0 to 100 degC, where the "
-        "density of water is known; mend the value or the unit",
+        "survey.toml gauge.bourdon.line_temperature: its temperature is missing or does not lie above 0 degC and up to "
+        "100 degC, where the density of water is known; mend the value or the unit",
     ),
     (
         "escape sequence in a name",
@@ -451,23 +478,110 @@ def test_a_line_of_mercury_needs_a_temperature(write_survey):
         )
     )
     assert told == [
-        "survey.toml gauge.bourdon.line_temperature: a run's temperature, as the line states none, is missing or lies "
-        "outside -20 to 100 degC, where the density of mercury is known; add line_temperature"
+        "survey.toml gauge.bourdon.line_temperature: a run's temperature, as the line states none, is missing or does "
+        "not lie above -20 degC and up to 100 degC, where the density of mercury is known; add line_temperature"
     ]
 
 
-def test_of_many_unknown_names_the_first_have_remedies(write_survey):
-    rows = "".join(f"x{n},T1,5\n" for n in range(40))
+def test_many_unknown_runs_or_taps_are_one_line(write_survey):
+    sound = "run,tap,reading [mm]\n1,T1,5\n1,T2,5\n1,T3,5\n1,T4,5\n"
+    piezometers = (T, 'kind = "pressure gauge"', 'kind = "piezometer"')
+    runs = "run,flow [L/s],temperature [degC]\n1,0.1,18\n"
+
+    def told(rows):
+        return problems_of(write_survey(piezometers, readings_csv=sound + rows, runs_csv=runs))
+
+    assert told("".join(f"x{n},T1,5\n" for n in range(40))) == [
+        "readings.csv row 6, run: there are 40 runs that are not in runs.csv: 'x0', 'x1', 'x2' and 37 more, in rows 6 "
+        "to 45; known are 1"
+    ]
+    assert told("".join(f"1,U{n},5\n" for n in range(5))) == [
+        "readings.csv row 6, tap: there are 5 taps that are not in taps.csv: 'U0', 'U1', 'U2' and 2 more, in rows 6 to "
+        "10; known are T1, T2, T3, T4"
+    ]
+    assert told("2,T1,5\n1,T1,5\n2,T2,5\n2,T3,5\n") == [
+        "readings.csv row 6, run: there is no run '2' in runs.csv (nor for rows 8, 9); known are 1"
+    ]
+
+
+def test_many_taps_outside_every_reach_are_one_line(write_survey):
+    in_mm = "tap,chainage [m],gauge\n" + "".join(f"T{n},{n}500,board\n" for n in range(1, 5))
+    readings = "run,flow [L/s],temperature [degC],T1 [mm],T2 [mm],T3 [mm],T4 [mm]\n1,0.1,18,5,5,5,5\n"
+    assert problems_of(write_survey(taps_csv=in_mm, readings_csv=readings)) == [
+        "taps.csv row 2, chainage [m]: 1500 m lies outside every reach (0 m to 6 m), and so do 3 more taps (rows 3 to 5); "
+        "mend the chainages or their unit or extend a reach"
+    ]
+
+
+def test_unsorted_chainages_are_one_line(write_survey):
+    taps = "tap,chainage [m],gauge\nT1,5,board\nT2,4,board\nT3,3,board\nT4,2,board\n"
+    readings = "run,flow [L/s],temperature [degC],T1 [mm],T2 [mm],T3 [mm],T4 [mm]\n1,0.1,18,5,5,5,5\n"
+    assert problems_of(write_survey(taps_csv=taps, readings_csv=readings)) == [
+        "taps.csv row 3, chainage [m]: 4 m does not come after 5 m of tap 'T1', and 2 more not after the tap above (rows "
+        "4, 5); list the taps in order of chainage, each at its own"
+    ]
+
+
+def test_many_empty_runs_are_one_line(write_survey):
+    head = "run,flow [L/s],temperature [degC],T1 [mm],T2 [mm],T3 [mm],T4 [kPa]\n"
+    empty = [f"r{n},0.1,18,,,,\n" for n in range(12)]
+    full = "s,0.1,18,5,5,5,5\n"
+    assert problems_of(write_survey(readings_csv=head + full + "".join(empty))) == [
+        "readings.csv row 3, run: all readings are empty of the 12 runs 'r0', 'r1', 'r2', 'r3', 'r4', 'r5', 'r6', 'r7', "
+        "'r8', 'r9' and 2 more in rows 13, 14; enter them or take the runs away"
+    ]
+    assert len(problems_of(write_survey(readings_csv=head + full + "".join(empty[:10])))) == 10
+
+
+def test_units_in_round_brackets_are_told_once(write_survey):
+    assert problems_of(write_survey((R, "T3 [mm]", "T3 (mm)"), (R, "flow [L/s]", "flow(L/s)"))) == [
+        "readings.csv row 1, flow(L/s): units stand in square brackets; write 'flow [L/s]'",
+        "readings.csv row 1, T3 (mm): units stand in square brackets; write 'T3 [mm]'",
+    ]
+    assert problems_of(write_survey((R, "temperature [degC]", "temperature (degC)"))) == [
+        "readings.csv row 1, temperature (degC): units stand in square brackets; write 'temperature [degC]'"
+    ]
+    assert problems_of(write_survey((P, "chainage [m]", "chainage (m)"))) == [
+        "taps.csv row 1, chainage (m): units stand in square brackets; write 'chainage [m]'"
+    ]
+    rounded = "run,flow [L/s],temperature [degC],T1 (mm),T2 (mm),T3 (mm),T4 (kPa)\n1,0.1,18,5,5,5,5\n"
+    assert problems_of(write_survey(readings_csv=rounded)) == [
+        "readings.csv row 1, T1 (mm): units stand in square brackets; write 'T1 [mm]', and so on for 3 more taps"
+    ]
+    listed = "run,tap,reading (mm)\n1,T1,5\n"
+    runs = "run,flow [L/s],temperature [degC]\n1,0.1,18\n"
+    assert problems_of(write_survey(readings_csv=listed, runs_csv=runs)) == [
+        "readings.csv row 1, reading (mm): units stand in square brackets; write 'reading [mm]'"
+    ]
+
+
+def test_two_columns_of_readings_are_told_the_rule(write_survey):
+    listed = "run,tap,reading [bar],reading [psi]\n1,T1,,5\n1,T4,2,\n"
+    runs = "run,flow [L/s],temperature [degC]\n1,0.1,18\n"
+    assert problems_of(write_survey(readings_csv=listed, runs_csv=runs)) == [
+        "readings.csv row 1, reading [psi]: two columns are called 'reading'; readings listed one a row have one column "
+        "'reading [unit]', or a column 'reading' beside a column 'unit'"
+    ]
+
+
+GEAR_OIL = 'name = "gear oil"\ndensity = "868 kg/m^3"\nviscosity = "31 mPa s"'
+
+
+def test_a_temperature_that_changes_nothing_is_refused(write_survey):
     told = problems_of(
         write_survey(
-            (T, 'kind = "pressure gauge"', 'kind = "piezometer"'),
-            readings_csv="run,tap,reading [mm]\n1,T1,5\n1,T2,5\n1,T3,5\n1,T4,5\n" + rows,
-            runs_csv="run,flow [L/s],temperature [degC]\n1,0.1,18\n",
+            (T, 'name = "water"', GEAR_OIL),
+            (T, 'zero = "0.80 m"', 'column_temperature = "20 degC"'),
+            (T, 'kind = "pressure gauge"', 'kind = "pressure gauge"\nline_temperature = "20 degC"'),
         )
     )
-    assert len(told) == 40
-    assert told[0] == "readings.csv row 6, run: there is no run 'x0' in runs.csv; known are 1"
-    assert told[-1] == "readings.csv row 45, run: there is no run 'x39' in runs.csv; see the remedies above"
+    rule = (
+        "the key has no effect, as [fluid] gives one density of gear oil for all temperatures; take it away"
+    )
+    assert told == [
+        f"survey.toml gauge.board.column_temperature: {rule}",
+        f"survey.toml gauge.bourdon.line_temperature: {rule}",
+    ]
 
 
 def test_row_numbers_are_those_of_an_editor(write_survey):

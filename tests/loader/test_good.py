@@ -164,7 +164,8 @@ line_fluid = "mercury"
     assert survey.assumptions == (
         "The survey names no fluid: it is taken as water.",
         "Neither latitude nor gravity is given: gravity is taken as 9.80665 m/s².",
-        "No elevation of the taps is given: the pipe's axis is taken as level, at the datum.",
+        "The elevation of the taps is not given: the pipe's axis is taken as level at the datum, so pressures below "
+        "atmospheric are not looked for.",
         "The elevation of the gauge is not given at A and B: it is taken to be at the pipe's axis.",
         "The gauge 'dial' is the only one: it is taken to read every tap.",
         "The survey states no date.",
@@ -200,6 +201,107 @@ def test_another_fluid_needs_no_temperature(write_survey):
     assert survey.fluid.density == Measured(868.0, 2.0)
     assert survey.fluid.viscosity == Measured(0.031)
     assert survey.runs["temperature"].isna().all()
+    assert (
+        "The density and the viscosity of gear oil are taken as constant: run temperatures do not change them."
+        in survey.assumptions
+    )
+    assert not any("surface tension" in text for text in survey.cautions)
+
+
+def test_capillary_rise_in_another_fluid_is_a_caution(write_survey):
+    fluid = 'name = "gear oil"\ndensity = "868 kg/m^3"\nviscosity = "31 mPa s"'
+    bore = ("survey.toml", 'zero = "0.80 m"', 'zero = "0.80 m"\nbore = "6 mm"')
+    survey = read_survey(write_survey(("survey.toml", 'name = "water"', fluid), bore))
+    assert (
+        "The capillary rise in gauge 'board' is taken with the surface tension of water, 0.0728 N/m, since that of gear oil "
+        "is not known." in survey.cautions
+    )
+    assert not any("surface tension" in text for text in read_survey(write_survey(bore)).cautions)
+
+
+def test_a_zero_with_its_own_uncertainty_is_stated(write_survey):
+    cautions = read_survey(write_survey()).cautions
+    assert (
+        "The uncertainties of the zero and the scale of gauge 'board' are not stated: they contribute nothing to the "
+        "results." in cautions
+    )
+    survey = read_survey(write_survey(("survey.toml", '"0.80 m"', '"0.80 m +/- 20 mm"')))
+    assert survey.gauge("board").settings["zero"] == Measured(0.8, 0.02)
+    assert (
+        "The uncertainty of the scale of gauge 'board' is not stated: it contributes nothing to the results."
+        in survey.cautions
+    )
+
+
+def test_taps_close_together_in_a_long_reach_are_a_caution(write_survey):
+    taps = "tap,chainage [m],gauge\n" + "".join(f"T{n},{n}.1e-3,board\n" for n in range(1, 5))
+    readings = "run,flow [L/s],temperature [degC],T1 [mm],T2 [mm],T3 [mm],T4 [mm]\n1,0.1,18,5,5,5,5\n"
+    survey = read_survey(write_survey(taps_csv=taps, readings_csv=readings))
+    said = "In reach 'upper' all 4 taps lie within 3 mm of a reach of 3 m: is the unit of chainage right?"
+    assert said in survey.cautions
+    assert not any("unit of chainage" in text for text in read_survey(write_survey()).cautions)
+
+
+LONG_SOUND = "run,tap,reading [mm]\n" + "".join(f"1,T{n},{5 + n}\n" for n in range(1, 5))
+ONE_RUN = "run,flow [L/s],temperature [degC]\n1,0.1,18\n"
+PIEZOMETERS = ("survey.toml", 'kind = "pressure gauge"', 'kind = "piezometer"')
+
+
+def test_doubled_rows_of_listed_readings_are_repeats(write_survey):
+    survey = read_survey(write_survey(PIEZOMETERS, readings_csv=LONG_SOUND + "1,T2,9\n", runs_csv=ONE_RUN))
+    assert survey.readings.loc["1", "T2"] == pytest.approx(0.008)
+    assert (
+        "Rows of readings with one run and one tap are averaged as repeats: run 1 at T2 (2 rows)."
+        in survey.assumptions
+    )
+    plain = read_survey(write_survey(PIEZOMETERS, readings_csv=LONG_SOUND, runs_csv=ONE_RUN))
+    assert not any("repeats" in text for text in plain.assumptions)
+
+
+def doubtful(survey):
+    return [text for text in survey.cautions if "lie far apart" in text]
+
+
+def test_repeats_far_apart_are_a_caution_with_both_rows(write_survey):
+    head = "run,flow [L/s],temperature [degC],T1 [mm],T2 [mm],T3 [mm],T4 [kPa]\n"
+    rows = (
+        head
+        + "a,0.25,18,480,455,431,1.4\na,0.25,18,481,555,432,1.5\nb,0.5,18,430,400,310,0\nb,0.5,18,431,399,312,0\n"
+    )
+    # the others: five pairs 1 mm apart or so, (1 + 1 + 1 + 1 + 4)/2 over 5 degrees of freedom: s = 0.894 mm
+    (said,) = doubtful(read_survey(write_survey(readings_csv=rows)))
+    assert said == (
+        "The repeats of run 'a' at tap 'T2' lie far apart: 455 mm (readings.csv row 2) and 555 mm (readings.csv row 3), "
+        "112 times the usual spread of repeats. Look for a slip of the pen; as it stands, their mean is used."
+    )
+    assert not doubtful(read_survey(write_survey(readings_csv=rows.replace("555", "458"))))
+    # two slips do not hide each other, and a step of the scale among equal repeats is none
+    two = rows.replace("b,0.5,18,431,399,312", "b,0.5,18,530,399,312")
+    assert len(doubtful(read_survey(write_survey(readings_csv=two)))) == 2
+    equal = (
+        head
+        + "a,0.25,18,480,455,431,1.4\na,0.25,18,480,456,431,1.4\nb,0.5,18,430,400,310,0\nb,0.5,18,430,400,310,0\n"
+    )
+    assert not doubtful(read_survey(write_survey(readings_csv=equal)))
+
+
+def test_listed_repeats_far_apart_name_their_rows(write_survey):
+    doubled = "".join(f"1,T{n},{value}\n" for n, value in ((1, 6.5), (2, 7.5), (3, 8.5), (4, 90)))
+    survey = read_survey(write_survey(PIEZOMETERS, readings_csv=LONG_SOUND + doubled, runs_csv=ONE_RUN))
+    assert not doubtful(survey)  # the tap T4 is read by a gauge of its own
+    one_gauge = ("taps.csv", "bourdon", "board")
+    survey = read_survey(
+        write_survey(PIEZOMETERS, one_gauge, readings_csv=LONG_SOUND + doubled, runs_csv=ONE_RUN)
+    )
+    (said,) = doubtful(survey)
+    assert "9 mm (readings.csv row 5) and 90 mm (readings.csv row 9)" in said
+
+
+def test_units_of_stated_values_are_kept(write_survey):
+    survey = read_survey(write_survey())
+    assert survey.units["survey.toml uncertainty.reading"] == "mm"
+    assert survey.units["survey.toml gauge.board.zero"] == "m"
+    assert "taps.csv elevation" in survey.units
 
 
 def test_change_of_bore_stands_at_the_boundary(write_survey):

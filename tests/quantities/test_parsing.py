@@ -6,7 +6,14 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from gradeline.errors import QuantityError
-from gradeline.quantities import DIMENSIONS, parse_number, parse_quantity, parse_uncertainty, parse_unit
+from gradeline.quantities import (
+    DIMENSIONS,
+    parse_number,
+    parse_quantity,
+    parse_uncertainty,
+    parse_unit,
+    units,
+)
 
 
 @pytest.mark.parametrize(
@@ -46,6 +53,8 @@ from gradeline.quantities import DIMENSIONS, parse_number, parse_quantity, parse
         ("1 mmH2O", "pressure", 9.80665, None),
         ("3.6 m3/h", "flow", 1e-3, None),
         ("60 L/min", "flow", 1e-3, None),
+        # the technical atmosphere, 98.0665 kPa exactly (NIST SP 811, appendix B.8)
+        ("1 kgf/cm^2", "pressure", 98066.5, None),
         ("1 ft", "length", 0.3048, None),
         ("2 in", "length", 0.0508, None),
     ],
@@ -93,6 +102,22 @@ def test_a_decimal_unit_adds_no_noise():
         ("", "length", "'' is not a number"),
         ("mm", "length", "'mm' is not a number"),
         ("5 MM", "length", "the unit 'MM' is of another dimension, not a length"),
+        ("18 C", "temperature", "'C' is of another dimension, not a temperature; did you mean 'degC'?"),
+        ("64 F", "temperature", "did you mean 'degF'?"),
+        ("0.2 C", "temperature difference", "did you mean 'degC'?"),
+        ("2 l/S", "flow", "the unit 'l/S' is of another dimension, not a flow; did you mean 'L/s'?"),
+        ("2 M3/H", "flow", "'M3/H' is not a unit that is known; did you mean 'm^3/h'?"),
+        ("2 lpm", "flow", "'lpm' is not a unit that is known; did you mean 'L/min'?"),
+        ("2 KPa", "pressure", "'KPa' is not a unit that is known; did you mean 'kPa'?"),
+        (
+            "2 kg/cm2",
+            "pressure",
+            "'kg/cm2' is of another dimension, not a pressure; did you mean 'kgf/cm^2'?",
+        ),
+        ("31 mPa.s", "dynamic viscosity", "did you mean 'mPa s'?"),
+        ("5 MM", "length", "; did you mean 'mm'?"),
+        ("1 870 mm", "length", "'1 870' has a gap; write no space between thousands, such as 1870"),
+        ("-12 345.6 m", "length", "write no space between thousands, such as -12345.6"),
         ("5 mmm", "length", "'mmm' is not a unit that is known; did you mean 'mm'?"),
         ("5 m^9^9^9", "length", "'m^9^9^9' is not a unit that is known"),
         ("5 __import__('os')", "length", "is not a unit that is known"),
@@ -130,6 +155,20 @@ def test_a_unit_converts_whole_arrays():
     assert celsius.to_si(np.array([0.0, 18.0])).tolist() == [273.15, 291.15]
     assert celsius.difference_to_si(np.array([0.5])).tolist() == [0.5]
     assert parse_unit("mm", "length").to_si(np.array([[1.0, np.nan]])).tolist()[0][0] == 0.001
+
+
+def test_a_unit_gives_back_what_it_took():
+    fahrenheit = parse_unit("degF", "temperature")
+    assert fahrenheit.from_si(fahrenheit.to_si(64.4)) == pytest.approx(64.4, rel=1e-14)
+    assert fahrenheit.difference_from_si(1.0) == pytest.approx(1.8, rel=1e-14)
+    assert parse_unit("kPa", "pressure").difference_from_si(150.0) == 0.15
+
+
+def test_every_unit_that_a_near_miss_names_is_taken():
+    for table in (units._FURTHER, {name: spelt.values() for name, spelt in units._SPELLINGS.items()}):
+        for dimension, names in table.items():
+            for name in names:
+                assert parse_unit(name, dimension).dimension == dimension
 
 
 def test_every_unit_that_a_message_offers_is_taken():

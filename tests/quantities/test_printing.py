@@ -14,8 +14,10 @@ from gradeline.quantities.printing import (
     SI_DISPLAY,
     Display,
     DisplayUnit,
+    format_change,
     format_interval,
     format_number,
+    format_within,
     rounded,
     thousands,
 )
@@ -96,6 +98,31 @@ def test_no_input_prints_nan_or_infinity(value: float, u: float) -> None:
 )
 def test_intervals(low: float | None, high: float | None, text: str) -> None:
     assert format_interval(low, high) == text
+
+
+@pytest.mark.parametrize(
+    ("value", "low", "high", "text"),
+    [
+        # half the width 0.019: two digits of it are thousandths
+        (0.15291, 0.13412, 0.17203, "0.153"),
+        (1047.399, 1012.0, 1082.8, "1047"),
+        (0.0, 0.0, 0.0047, "0"),
+        (0.00012, 0.0, 0.0047, "0.00012"),
+        (0.91, None, 1.1, "0.91"),
+        (None, 0.1, 0.2, MISSING),
+    ],
+)
+def test_a_value_has_the_digits_of_its_interval(
+    value: float | None, low: float | None, high: float | None, text: str
+) -> None:
+    assert format_within(value, low, high) == text
+
+
+def test_a_change_beyond_double_is_a_factor() -> None:
+    assert format_change(0.99) == "99 %"
+    assert format_change(1.01) == "a factor of 2.0"
+    assert format_change(-0.9) == "90 %"
+    assert format_change(NAN) == MISSING
 
 
 def test_units_for_readers() -> None:

@@ -140,7 +140,7 @@ def test_every_run_and_reading_has_its_row(reduced):
 @pytest.mark.parametrize(
     ("name", "table", "reason"),
     [
-        ("one tap", "runs", "fewer than two usable taps that determine the slope of this reach"),
+        ("one tap", "runs", "the usable taps do not determine the slope of this reach"),
         ("a run not read", "runs", "no usable reading in this run"),
         ("all zero", "runs", "no loss of head could be measured: S is not above zero"),
         ("one run, two taps", "runs", "no uncertainty without a stated one"),
@@ -148,7 +148,7 @@ def test_every_run_and_reading_has_its_row(reduced):
         ("only static", "runs", "static run"),
         ("only laminar", "walls", "no turbulent run: only turbulent friction depends on the wall"),
         ("only static", "walls", "no turbulent run"),
-        ("all zero", "walls", "in no turbulent run does the slope exceed twice its uncertainty"),
+        ("all zero", "walls", "in no turbulent run is the slope above zero and twice its uncertainty"),
         ("one run, two taps", "walls", "nothing tells how sure the roughness is"),
         ("smooth", "walls", "not told from zero"),
         ("valves side by side", "fittings", "may lie between the same taps"),

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
+import itertools
 import xml.etree.ElementTree as ET
 
 import matplotlib as mpl
@@ -23,7 +24,7 @@ from gradeline.report.figures import (
     pictures,
 )
 from gradeline.report.figures.grade_lines import pipe_fits_the_scale, run_title
-from gradeline.report.figures.style import COLOURS, RC, one_two_five, styled
+from gradeline.report.figures.style import COLOURS, RC, log_ticks, one_two_five, styled
 
 SVG = "{http://www.w3.org/2000/svg}"
 
@@ -101,11 +102,24 @@ def test_the_pipe_with_taps_and_fittings(ax, field: Reduction) -> None:
 
 def test_below_the_crown_is_marked(ax, bench: Reduction) -> None:
     # a line that falls below the pipe shares its axes and is hatched there, with an entry in the legend
-    assert pipe_fits_the_scale(bench, "R10")
-    assert not pipe_fits_the_scale(bench, "R5")
-    drawn = draw_grade_lines(ax, bench, "R10", with_pipe=True)
+    lines = bench.grade_lines.copy()
+    lines[["energy_head", "piezometric_head", "elevation", "crown"]] += 0.3
+    high = dataclasses.replace(bench, grade_lines=lines)
+    assert pipe_fits_the_scale(high, "R10")
+    assert not pipe_fits_the_scale(high, "R5")
+    drawn = draw_grade_lines(ax, high, "R10", with_pipe=True)
     assert drawn.below_crown.get_hatch()
     assert "HGL below crown" in [text.get_text() for text in ax.get_legend().get_texts()]
+    ax.clear()
+    # an axis at 0 everywhere: nobody gave elevations
+    assert draw_grade_lines(ax, bench, "R10", with_pipe=True).below_crown is None
+
+
+def test_residuals_of_rounding_make_no_figure_of_their_own(ax, bench: Reduction) -> None:
+    heads = bench.heads.assign(residual=1e-17, flag=None, used=True)
+    draw_residuals(ax, dataclasses.replace(bench, heads=heads, scatter=bench.scatter.iloc[:0]))
+    assert ax.get_ylim() == (-1.0, 1.0)
+    assert "nothing is left over" in " ".join(text.get_text() for text in ax.texts)
 
 
 def test_residuals_are_in_millimetres_and_ring_the_flagged(ax, bench: Reduction) -> None:
@@ -117,6 +131,7 @@ def test_residuals_are_in_millimetres_and_ring_the_flagged(ax, bench: Reduction)
     assert len(drawn.flagged.get_xdata()) == 1
     assert round(float(drawn.flagged.get_xdata()[0])) == 3  # T4 is the fourth tap
     assert drawn.labels[0].get_text().startswith("run R7: +11.")
+    assert drawn.beyond
     assert abs(drawn.flagged.get_ydata()[0]) < ax.get_ylim()[1]
     assert ax.get_ylabel() == "measured − fitted energy head (mm)"
     assert [label.get_text() for label in ax.get_xticklabels()] == [f"T{n}" for n in range(1, 11)]
@@ -160,6 +175,58 @@ def test_friction_factor_with_its_laws(ax, bench: Reduction) -> None:
     assert {label.get_text() for label in drawn.labels} == {f"R{n}" for n in range(2, 11)}
     assert ax.get_xlabel() == "Reynolds number Re"
     assert ax.get_ylabel() == "Darcy friction factor f"
+
+
+def test_an_interval_that_leaves_the_axis_ends_in_an_arrowhead(ax, bench: Reduction) -> None:
+    sound = bench.runs.copy()
+    for name in ("slope", "friction_factor"):
+        sound[f"{name}_low"], sound[f"{name}_high"] = sound[name] * 0.99, sound[name] * 1.01
+    wide = sound.copy()
+    wide.loc[wide["run"] == "R2", ["friction_factor_low", "slope_low"]] = -0.01
+    for draw in (draw_friction_factor, draw_slope_velocity):
+        ax.clear()
+        assert draw(ax, dataclasses.replace(bench, runs=sound)).open_ends == ()
+        ax.clear()
+        (head,) = draw(ax, dataclasses.replace(bench, runs=wide)).open_ends
+        column = "reynolds" if draw is draw_friction_factor else "velocity"
+        np.testing.assert_allclose(head.get_xdata(), wide[column][wide["run"] == "R2"])
+        np.testing.assert_allclose(head.get_ydata(), ax.get_ylim()[0])
+
+
+def test_labels_of_runs_cover_neither_marks_nor_each_other(ax, bench: Reduction) -> None:
+    # three runs side by side, nearer to each other than their labels are wide
+    runs = bench.runs.copy()
+    for n, row in enumerate((6, 7, 8)):
+        runs.loc[row, ["reynolds", "friction_factor"]] = [30000 * (1 + 0.05 * n), 0.0235 * (1 + 0.01 * n)]
+    drawn = draw_friction_factor(ax, dataclasses.replace(bench, runs=runs))
+    renderer = ax.figure.canvas.get_renderer()
+    boxes = [label.get_window_extent(renderer) for label in drawn.labels]
+    marks = np.concatenate([one.lines[0].get_xydata() for one in drawn.runs.values()])
+    for n, box in enumerate(boxes):
+        assert not [other for other in boxes[:n] if box.overlaps(other)]
+        for x, y in ax.transData.transform(marks):
+            assert not (box.x0 < x < box.x1 and box.y0 < y < box.y1)
+
+
+def test_a_band_too_narrow_to_be_seen_is_not_in_the_legend(ax, bench: Reduction) -> None:
+    wide = draw_grade_lines(ax, bench, "R5")
+    assert "95 % band" in [text.get_text() for text in ax.get_legend().get_texts()]
+    ax.clear()
+    lines = bench.grade_lines.assign(energy_head_u=1e-3 * bench.grade_lines["energy_head_u"])
+    narrow = draw_grade_lines(ax, dataclasses.replace(bench, grade_lines=lines), "R5")
+    assert wide.band is not None
+    assert narrow.band is not None
+    assert "95 % band" not in [text.get_text() for text in ax.get_legend().get_texts()]
+
+
+@pytest.mark.parametrize(("low", "high"), [(8e4, 4.3e5), (1e3, 9e4), (2.1e5, 2.3e5), (900, 3e6)])
+def test_labels_of_a_log_axis_do_not_touch(ax, low: float, high: float) -> None:
+    log_ticks(ax, "x", low, high)
+    renderer = ax.figure.canvas.get_renderer()
+    boxes = [label.get_window_extent(renderer) for label in ax.get_xticklabels() if label.get_text().strip()]
+    assert len(boxes) >= 2
+    for one, other in itertools.pairwise(boxes):
+        assert other.x0 - one.x1 > 2
 
 
 def test_a_flagged_run_is_ringed(ax, bench: Reduction) -> None:

@@ -96,9 +96,11 @@ def _run_reasons(flowing: Flowing, friction: Friction) -> NDArray[np.object_]:
     )
     reasons[friction.slope <= 0] = "no loss of head could be measured: S is not above zero"
     missing = ~np.isfinite(friction.slope)
-    reasons[missing] = "fewer than two usable taps that determine the slope of this reach"
+    reasons[missing] = (
+        "the usable taps do not determine the slope of this reach: it takes two with no fitted loss between"
+    )
     empty = ~np.asarray(flowing.used.any(axis=1))
-    reasons[missing & empty[:, None]] = "no usable reading in this run"
+    reasons[missing & empty[:, None]] = "no usable reading in this run: not taken, left out or disturbed"
     return reasons
 
 

@@ -22,6 +22,7 @@ __all__ = ["bore_table", "fitting_table", "wall_table"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
+_MISSING = {"roughness_resolved": None, "hydraulically_smooth": None}
 _LATER = "not estimated in this version"
 #: Changes of the bore for which the roughness is worked out again.
 _BORE_CHANGES = (-0.05, -0.02, -0.01, 0.0, 0.01, 0.02, 0.05)
@@ -32,6 +33,13 @@ def wall_table(walls: tuple[Wall, ...]) -> pd.DataFrame:
     rows: dict[str, list[Any]] = {name: [] for name in RESULT_TABLES["walls"]}
     for wall in walls:
         fit = wall.fit
+        why = wall.implausible()
+        if why is not None:
+            # A number would be taken for a roughness.
+            told = {"wall": wall.name, "runs_used": 0, "reason": why} | _MISSING
+            for name, column in rows.items():
+                column.append(told.get(name, np.nan))
+            continue
         rows["wall"].append(wall.name)
         rows["roughness"].append(fit.roughness)
         rows["roughness_low"].append(fit.low)
@@ -56,8 +64,8 @@ def _wall_reasons(wall: Wall) -> list[str]:
         if not wall.turbulent.any():
             return ["no turbulent run: only turbulent friction depends on the wall"]
         if wall.faint.any():
-            return ["in no turbulent run does the slope exceed twice its uncertainty"]
-        return ["no turbulent run has a slope above zero"]
+            return ["in no turbulent run is the slope above zero and twice its uncertainty"]
+        return ["in no turbulent run is there a slope above zero that its taps determine"]
     if not np.isfinite(fit.low):
         reasons.append("one slope and no stated reading uncertainty: nothing tells how sure the roughness is")
     elif not np.isfinite(fit.high):
@@ -96,7 +104,7 @@ def bore_table(walls: tuple[Wall, ...]) -> pd.DataFrame:
     """Return each wall's roughness if its bore were a little different; f goes as the fifth power of the bore."""
     rows: dict[str, list[Any]] = {name: [] for name in DRAWING_TABLES["bore_sensitivity"]}
     for wall in walls:
-        if not np.isfinite(wall.fit.roughness):
+        if not np.isfinite(wall.fit.roughness) or wall.implausible() is not None:
             continue
         for change, roughness in zip(_BORE_CHANGES, bore_variants(wall, _BORE_CHANGES), strict=True):
             for name, entry in zip(rows, (wall.name, change, (1 + change) ** 5 - 1, roughness), strict=True):

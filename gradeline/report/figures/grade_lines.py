@@ -17,6 +17,7 @@ from gradeline.quantities.printing import SI_DISPLAY, Display, thousands
 from gradeline.reduction.tables import Reduction
 from gradeline.report.figures.pipe import Array, PipeArtists, column, draw_pipe, of_run
 from gradeline.report.figures.style import COLOURS, INK, MUTED, legend_above, shorten
+from gradeline.report.tables import elevations_known
 
 __all__ = [
     "GradeLineArtists",
@@ -100,7 +101,7 @@ def pipe_fits_the_scale(reduction: Reduction, run: str) -> bool:
         return False
     hgl, egl = column(lines, "piezometric_head"), column(lines, "energy_head")
     axis, crown = column(lines, "elevation"), column(lines, "crown")
-    if np.any(hgl < crown):
+    if elevations_known(reduction) and np.any(hgl < crown):
         return True
     if not np.isfinite([*hgl, *egl, *axis]).all():
         return False
@@ -171,7 +172,7 @@ def draw_grade_lines(
         )
         (hgl,) = ax.plot(places, low_line, color=COLOURS["blue"], linewidth=1.4, label="HGL")
         crown = column(lines, "crown") * scale
-        if with_pipe and np.any(low_line < crown):
+        if with_pipe and elevations_known(reduction) and np.any(low_line < crown):
             below = ax.fill_between(
                 places,
                 low_line,

@@ -21,8 +21,8 @@ from matplotlib.text import Annotation
 from gradeline.hydraulics.friction import LAMINAR_LIMIT, TURBULENT_LIMIT, colebrook_white, laminar
 from gradeline.quantities.printing import SI_DISPLAY, Display, rounded
 from gradeline.reduction.tables import Reduction
+from gradeline.report.figures.run_labels import drawn_lines, run_labels
 from gradeline.report.figures.style import (
-    COLOURS,
     INK,
     MUTED,
     REACH_COLOURS,
@@ -35,11 +35,7 @@ from gradeline.report.figures.style import (
 __all__ = ["FrictionFactorArtists", "SlopeVelocityArtists", "draw_friction_factor", "draw_slope_velocity"]
 
 _Array = npt.NDArray[np.float64]
-_NAMED_RUNS = 20
 _ERRORBARS = 400
-_LABEL_SIZE = 8
-#: Where the label of a run may stand about its mark, the best place first: to the right or left, up or down.
-_LABEL_PLACES = ((1, 1), (1, -1), (-1, -1), (-1, 1), (1, 0), (-1, 0))
 
 
 @dataclass(frozen=True)
@@ -322,7 +318,8 @@ def draw_friction_factor(ax: Axes, reduction: Reduction) -> FrictionFactorArtist
         heights.append(bars[(bars > middle / 2) & (bars < middle * 2)])
     log_ticks(ax, "y", *_limits(np.concatenate(heights), 0.05))
     open_ends = _open_ends(ax, drawn)
-    labels, flagged = _run_labels(ax, reduction, reynolds, factor, seen)
+    lines = drawn_lines(drawn, (line, *fitted.values()))
+    labels, flagged = run_labels(ax, reduction, reynolds, factor, seen, lines)
     ax.set_xlabel("Reynolds number Re")
     ax.set_ylabel("Darcy friction factor f")
     rows = legend_above(ax, _law_handles(drawn, fitted, bands, line, smooth, critical, flagged), columns=4)
@@ -382,71 +379,3 @@ def _fitted_laws(
             )
         found.append((str(reach["reach"]), law, ends))
     return found
-
-
-def _run_labels(
-    ax: Axes, reduction: Reduction, reynolds: _Array, factor: _Array, seen: npt.NDArray[np.bool_]
-) -> tuple[tuple[Annotation, ...], Line2D | None]:
-    """Name the runs, all of them where they are few, else the flagged ones; ring the flagged ones."""
-    names = reduction.runs["run"].to_numpy(object)
-    flags = reduction.flags
-    off = set(flags["run"][(flags["kind"] == "run").to_numpy(bool)])
-    ringed = np.array([name in off for name in names], bool) & seen
-    ring = None
-    if ringed.any():
-        (ring,) = ax.plot(
-            reynolds[ringed],
-            factor[ringed],
-            "o",
-            markersize=12,
-            markerfacecolor="none",
-            markeredgecolor=COLOURS["vermilion"],
-            markeredgewidth=1.6,
-            label="run flagged",
-            zorder=4,
-        )
-    wanted = seen if seen.sum() <= _NAMED_RUNS else ringed
-    labels = []
-    points = ax.transData.transform(np.column_stack([reynolds[seen], factor[seen]])) * 72 / ax.figure.dpi
-    names_of = [shorten(name, 12) for name in names]
-    inside = ax.bbox.bounds
-    left, floor, right, ceiling = (
-        side * 72 / ax.figure.dpi
-        for side in (inside[0], inside[1], inside[0] + inside[2], inside[1] + inside[3])
-    )
-    # what a label may not cover: the marks (a ring is wider than its mark), then the labels before it
-    half = 3.5
-    taken = [(x - half, y - half, x + half, y + half) for x, y in points]
-    for row in sorted(np.flatnonzero(wanted)[: 2 * _NAMED_RUNS], key=lambda row: reynolds[row]):
-        x, y = ax.transData.transform((reynolds[row], factor[row])) * 72 / ax.figure.dpi
-        if not (left - 1 <= x <= right + 1 and floor - 1 <= y <= ceiling + 1):
-            continue
-        text = names_of[row]
-        wide, tall, off = 0.6 * _LABEL_SIZE * len(text), 1.05 * _LABEL_SIZE, 9.0 if ringed[row] else 4.5
-        choices = []
-        for place, (across, up) in enumerate(_LABEL_PLACES):
-            corner_x = x + across * off - (wide if across < 0 else wide / 2 if across == 0 else 0)
-            corner_y = y + up * off - (tall if up < 0 else tall / 2 if up == 0 else 0)
-            box = (corner_x, corner_y, corner_x + wide, corner_y + tall)
-            out = box[0] < left or box[2] > right or box[1] < floor or box[3] > ceiling
-            hits = sum(
-                box[0] < other[2] and other[0] < box[2] and box[1] < other[3] and other[1] < box[3]
-                for other in taken
-            )
-            choices.append((hits + 2 * out, place, across, up, box))
-        _, _, across, up, box = min(choices)
-        taken.append(box)
-        labels.append(
-            ax.annotate(
-                text,
-                (reynolds[row], factor[row]),
-                xytext=(across * off, up * off),
-                textcoords="offset points",
-                ha={1: "left", 0: "center", -1: "right"}[across],
-                va={1: "bottom", 0: "center", -1: "top"}[up],
-                fontsize=_LABEL_SIZE,
-                color=INK,
-                zorder=5,
-            )
-        )
-    return tuple(labels), ring

@@ -27,6 +27,8 @@ from gradeline.report.figures.style import (
 __all__ = ["ResidualArtists", "draw_residuals"]
 
 _MANY_MARKS = 4000
+#: A residual below this, in the unit of the axis, is no more than the rounding of the arithmetic.
+_ROUNDING = 1e-6
 _NAMED_TAPS = 24
 _NAMED_RINGS = 12
 
@@ -95,6 +97,7 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
     at_rest = np.array([regimes.get(run) == "static" for run in run_of], bool)
     if not (np.abs(y[at_rest]) > 1e-6).any():
         y = np.where(at_rest, np.nan, y)
+    nothing_left = not (np.abs(y[np.isfinite(y)]) > _ROUNDING).any()
     used = heads["used"].fillna(False).to_numpy(bool) & np.isfinite(y)
     flags = heads["flag"].to_numpy(object)
     outlying = np.array([flag == "outlier" for flag in flags], bool) & np.isfinite(y)
@@ -103,7 +106,9 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
     still, fastest, two_sigma = _scatter_bands(ax, reduction, labels_in_order, display)
     near = np.isfinite(y) & ~outlying & (used | (np.abs(y) < 3 * two_sigma))
     sound = np.abs(y[near])
-    limit = 1.35 * max([two_sigma, *sound.tolist()], default=1.0) or 1.0
+    limit = 1.35 * max([two_sigma, *sound.tolist()], default=1.0)
+    if limit < _ROUNDING:
+        limit = 1.0
     shown = np.clip(y, -limit * 0.9, limit * 0.9)
 
     raster = len(heads) > _MANY_MARKS
@@ -148,27 +153,20 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
             label="flagged",
             zorder=4,
         )
-        rows = np.flatnonzero(outlying)
-        named: list[tuple[float, bool, int]] = []
-        for row in rows[:_NAMED_RINGS]:
-            at = (float(x[row]), float(shown[row]))
-            # a label goes a line further in where a neighbour's stands on the same side
-            taken = {
-                level
-                for place, up, level in named
-                if up == (y[row] > 0) and abs(place - at[0]) < 0.4 * len(order)
-            }
-            level = min(set(range(_NAMED_RINGS)) - taken)
-            named.append((at[0], bool(y[row] > 0), level))
-            to_right = x[row] < 0.6 * len(order)
-            labels.append(
-                _ring_label(
-                    ax, shorten(run_of[row], 16), at, y[row], level=level, to_right=to_right, display=display
-                )
-            )
+        labels = _ring_labels(ax, np.flatnonzero(outlying), run_of, (x, y, shown), len(order), display)
     ax.vlines(np.arange(len(order) - 1) + 0.5, -limit, limit, color="#d5dadd", linewidth=0.7, zorder=0.8)
     ax.axhline(0, color=MUTED, linewidth=0.9, zorder=2)
     ax.set_ylim(-limit, limit)
+    if nothing_left and np.isfinite(y).any():
+        ax.text(
+            0.5,
+            0.08,
+            "no run has more readings than its line has parameters: nothing is left over",
+            transform=ax.transAxes,
+            ha="center",
+            fontsize=8.5,
+            color=MUTED,
+        )
     _tap_axis(ax, labels_in_order)
     ax.set_ylabel(display.head("measured − fitted energy head", "small head"))
     handles = [
@@ -198,6 +196,31 @@ def _names(heads: object) -> list[str]:
         str(gauge) if isinstance(other, str) else str(tap)
         for tap, other, gauge in zip(taps, second, gauges, strict=True)
     ]
+
+
+def _ring_labels(
+    ax: Axes,
+    rows: npt.NDArray[np.intp],
+    run_of: npt.NDArray[np.object_],
+    places: tuple[npt.NDArray[np.float64], npt.NDArray[np.float64], npt.NDArray[np.float64]],
+    taps: int,
+    display: Display,
+) -> list[Annotation]:
+    """Name the first rings: x, residual and where it is shown are the three `places`."""
+    x, y, shown = places
+    labels = []
+    named: list[tuple[float, bool, int]] = []
+    for row in rows[:_NAMED_RINGS]:
+        at = (float(x[row]), float(shown[row]))
+        # a label goes a line further in where a neighbour's stands on the same side
+        taken = {
+            level for place, up, level in named if up == (y[row] > 0) and abs(place - at[0]) < 0.4 * taps
+        }
+        level = min(set(range(_NAMED_RINGS)) - taken)
+        named.append((at[0], bool(y[row] > 0), level))
+        name, to_right = shorten(run_of[row], 16), bool(x[row] < 0.6 * taps)
+        labels.append(_ring_label(ax, name, at, y[row], level=level, to_right=to_right, display=display))
+    return labels
 
 
 def _ring_label(
