@@ -96,7 +96,7 @@ def shared_misfit(
     n = residuals.shape[1]
     known = np.isfinite(residuals) & (deviation > 0)
     sigma = np.where(known, deviation, 1.0)
-    scores = []
+    scores: list[Array] = []
     for pattern in (np.ones(len(residuals)), slope, velocity_head):
         growth = np.nan_to_num(pattern)[:, None]
         usable = known & (growth > 0)
@@ -104,7 +104,7 @@ def shared_misfit(
         scaled = np.where(usable, residuals / sigma, 0.0)
         start = _weighted_median(np.where(usable, residuals / np.where(usable, growth, 1.0), 0.0), weight)
         # Where errors grow with the flow a few fast runs have most of the weight: their median is no safe start.
-        if len(scores):
+        if scores:
             start = np.zeros(n)
         total = np.einsum("rn,rn->n", weight, weight)
         rest = np.einsum("rn,rn->n", weight, np.clip(scaled - start * weight, -_BOUND, _BOUND))

@@ -93,7 +93,27 @@ def reading_variance(scatter: tuple[Scatter, ...], model: Model) -> Array:
 
 
 def sample_of(model: Model, runs: int) -> tuple[slice, Model]:
-    """Return evenly spread runs to judge the scatter on, and their model."""
+    """Return evenly spread runs to judge the scatter on, and their model.
+
+    Parameters
+    ----------
+    model : Model
+        Of all runs.
+    runs : int
+        How many there are, dimensionless count.
+
+    Returns
+    -------
+    slice, Model
+        The runs picked and what is known of them.
+
+    Examples
+    --------
+    >>> model = Model(np.ones((3, 1)), np.zeros(5000), np.zeros(3, int), np.zeros(3))
+    >>> pick, part = sample_of(model, 5000)
+    >>> pick.step, len(part.velocity_head)
+    (3, 1667)
+    """
     pick = slice(None, None, max(1, -(-runs // _SCATTER_RUNS)))
     return pick, model.of_runs(pick)
 

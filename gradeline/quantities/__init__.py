@@ -2,7 +2,7 @@
 
 from gradeline.quantities.measured import Measured
 from gradeline.quantities.parsing import parse_number, parse_quantity, parse_uncertainty
-from gradeline.quantities.printing import Display, format_interval, rounded
+from gradeline.quantities.printing import Display, format_change, format_interval, rounded
 from gradeline.quantities.units import DIMENSIONS, Dimension, Unit, parse_unit
 
 __all__ = [
@@ -11,6 +11,7 @@ __all__ = [
     "Display",
     "Measured",
     "Unit",
+    "format_change",
     "format_interval",
     "parse_number",
     "parse_quantity",

@@ -115,7 +115,7 @@ def reduce(
         runs=tabulate.run_table(survey, media, line, flowing, friction),
         walls=tabulate.wall_table(walls),
         fittings=tabulate.fitting_table(line, media, flowing, friction, level=level),
-        taps=tabulate.tap_table(survey, corrections, base),
+        taps=tabulate.tap_table(survey, corrections, base, excluded),
         heads=tabulate.head_table(survey, line, corrections, flowing, excluded),
         flags=flag_table(survey, corrections, flowing, friction, walls, keep_all=keep_all),
         budget=tabulate.frame("budget", {name: [] for name in RESULT_TABLES["budget"]}),
@@ -123,7 +123,7 @@ def reduce(
         layout=tabulate.layout_table(survey, line),
         laminar=tabulate.laminar_table(survey, flowing, friction),
         reading_units=tabulate.reading_unit_table(survey),
-        exponents=tabulate.exponent_table(survey, flowing, friction, level=level),
+        exponents=tabulate.exponent_table(survey, flowing, friction, walls, level=level),
         scatter=tabulate.scatter_table(survey, flowing, np.hypot(*stated_readings(survey, corrections))),
         bore_sensitivity=tabulate.bore_table(walls),
         inputs=tabulate.input_table(

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from scipy.special import stdtrit
 
 from gradeline.fitting.misfit import PATTERNS
-from gradeline.quantities import parse_unit
+from gradeline.quantities import format_change, parse_unit, rounded
 from gradeline.reduction.corrections import Corrections
 from gradeline.reduction.friction import Friction
 from gradeline.reduction.runs import Flowing
@@ -113,12 +113,8 @@ def _runs(survey: Survey, flowing: Flowing, walls: tuple[Wall, ...]) -> list[_Fl
             slope, expected = wall.data.slope[row, k], wall.fit.expected_slope[row, k]
             ratio = slope / expected
             # S goes almost as Q²: the factor on the flow that would bring this run onto the law.
-            flow = ratio**0.5
-            other = (
-                f"{flow:.3g} times as large"
-                if not 0.5 < flow < 2
-                else f"{abs(100 * (flow - 1)):.2g} % {'larger' if flow > 1 else 'smaller'}"
-            )
+            flow = ratio**0.5 - 1
+            other = f"{format_change(flow)} {'larger' if flow > 0 else 'smaller'}"
             reach = survey.reaches[wall.reaches[k]].name
             found.append(
                 _Flag(
@@ -215,24 +211,18 @@ def _laminar(survey: Survey, flowing: Flowing, friction: Friction) -> list[_Flag
         score = (mean - 1) / spread
         dof = max(flowing.fits.pooled_dof, 1.0) if flowing.fits.pooled_dof else 1e9
         if abs(score) > stdtrit(dof, 1 - _LAW_FALSE_ALARM / 2):
-            bore = 100 * (mean**-0.25 - 1)
+            bore = mean**-0.25 - 1
             found.append(
                 _Flag(
                     "law",
                     score=float(score),
                     suggestion=(
-                        f"in the laminar runs of reach {reach.name!r} f Re / 64 = {mean:.3f} ± {spread:.3f}: a bore "
-                        f"{abs(bore):.2g} % {'larger' if bore > 0 else 'smaller'} would make it 1"
+                        f"in the laminar runs of reach {reach.name!r} f Re / 64 = {rounded(mean, spread)}: a bore "
+                        f"{format_change(bore)} {'larger' if bore > 0 else 'smaller'} would make it 1"
                     ),
                 )
             )
     return found
-
-
-def _percent(share: float) -> str:
-    """A relative change for reading: per cent, or a factor where it is large."""
-    size = abs(share)
-    return f"{100 * size:.2g} %" if size < 1 else f"a factor of {1 + size:.2g}"
 
 
 def _law(wall: Wall) -> list[_Flag]:
@@ -251,8 +241,8 @@ def _law(wall: Wall) -> list[_Flag]:
                 "law",
                 score=fit.trend / fit.trend_u,
                 suggestion=(
-                    f"wall {wall.name!r}: f {way} against the fitted law by {_percent(fit.trend)} ± "
-                    f"{_percent(fit.trend_u)} per decade of Re"
+                    f"wall {wall.name!r}: f {way} against the fitted law by {format_change(abs(fit.trend))} ± "
+                    f"{format_change(fit.trend_u)} per decade of Re"
                     + (", the wrong way for roughness" if fit.trend < 0 else "")
                     + ": the law does not describe these runs; look at the flow meter's calibration over its range"
                 ),
@@ -260,15 +250,14 @@ def _law(wall: Wall) -> list[_Flag]:
         )
     score = fit.offset / fit.offset_u if fit.offset_u > 0 else 0.0
     if fit.roughness == 0 and score < -beyond:
-        bore = 100 * (np.exp(-fit.offset / 5) - 1)
-        flow = 100 * (1 - np.exp(fit.offset / 2))
+        bore, flow = float(np.expm1(-fit.offset / 5)), float(-np.expm1(fit.offset / 2))
         found.append(
             _Flag(
                 "law",
                 score=float(score),
                 suggestion=(
-                    f"wall {wall.name!r}: f lies {abs(100 * fit.offset):.2g} % below that of a smooth wall, beyond its "
-                    f"uncertainty: a bore about {bore:.2g} % larger or flows about {flow:.2g} % smaller than stated "
+                    f"wall {wall.name!r}: f lies {format_change(-np.expm1(fit.offset))} below that of a smooth wall, beyond its "
+                    f"uncertainty: a bore about {format_change(bore)} larger or flows about {format_change(flow)} smaller than stated "
                     "would bring it onto the law"
                 ),
             )

@@ -17,6 +17,7 @@ from gradeline.reduction.media import Media
 from gradeline.reduction.runs import Flowing
 from gradeline.reduction.tables import DRAWING_TABLES
 from gradeline.reduction.tabulate.frames import frame
+from gradeline.reduction.walls import Wall
 from gradeline.survey import GAUGE_KINDS, Survey
 
 __all__ = ["exponent_table", "grade_line_table", "laminar_table", "layout_table", "reading_unit_table"]
@@ -133,12 +134,17 @@ def reading_unit_table(survey: Survey) -> pd.DataFrame:
     return frame("reading_units", rows)
 
 
-def exponent_table(survey: Survey, flowing: Flowing, friction: Friction, *, level: float) -> pd.DataFrame:
-    """Return the exponent of S against V for each reach, laminar and turbulent runs apart."""
+def exponent_table(
+    survey: Survey, flowing: Flowing, friction: Friction, walls: tuple[Wall, ...], *, level: float
+) -> pd.DataFrame:
+    """Return the exponent of S against V for each reach, laminar and turbulent runs apart, those off the law left out."""
+    off = np.zeros(friction.slope.shape, dtype=bool)
+    for wall in walls:
+        off[:, wall.reaches] = wall.fit.off_law
     rows: dict[str, list[Any]] = {name: [] for name in DRAWING_TABLES["exponents"]}
     for k, reach in enumerate(survey.reaches):
         for kind in ("laminar", "turbulent"):
-            mine = (friction.regime[:, k] == kind) & np.isfinite(friction.slope[:, k])
+            mine = (friction.regime[:, k] == kind) & np.isfinite(friction.slope[:, k]) & ~off[:, k]
             if not mine.any():
                 continue
             slope = friction.slope[mine, k]

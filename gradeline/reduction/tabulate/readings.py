@@ -84,7 +84,7 @@ def head_table(
     )
 
 
-def tap_table(survey: Survey, corrections: Corrections, base: Array) -> pd.DataFrame:
+def tap_table(survey: Survey, corrections: Corrections, base: Array, excluded: Mask) -> pd.DataFrame:
     """Return the table of taps, with their offsets in the static runs."""
     rows: dict[str, list[Any]] = {name: [] for name in RESULT_TABLES["taps"]}
     noise = np.nan_to_num(base) * np.sqrt(np.diagonal(corrections.covariance))
@@ -96,6 +96,8 @@ def tap_table(survey: Survey, corrections: Corrections, base: Array) -> pd.DataF
         why = (
             "read only through differential gauges"
             if i is None
+            else "left out by hand"
+            if excluded[:, i].all()
             else "no static run read this tap"
             if not np.isfinite(offset)
             else "offset against the mean of the taps in the static runs"
