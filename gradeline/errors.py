@@ -5,7 +5,15 @@ from __future__ import annotations
 from collections.abc import Iterable
 from dataclasses import dataclass
 
-__all__ = ["GradelineError", "OutputError", "Problem", "QuantityError", "ReductionError", "SurveyError"]
+__all__ = [
+    "GradelineError",
+    "OutputError",
+    "Problem",
+    "QuantityError",
+    "ReductionError",
+    "SurveyError",
+    "UsageError",
+]
 
 
 class GradelineError(Exception):
@@ -18,6 +26,10 @@ class QuantityError(GradelineError, ValueError):
 
 class ReductionError(GradelineError, ValueError):
     """A survey that is sound as a file but from which nothing at all can be reduced as asked."""
+
+
+class UsageError(GradelineError, ValueError):
+    """An argument that does not fit what it was given with."""
 
 
 class OutputError(GradelineError, OSError):
@@ -35,9 +47,10 @@ class Problem:
     Parameters
     ----------
     file : str
-        Name of the file inside the survey folder, such as ``readings.csv``.
+        Name of the file inside the survey folder, such as ``readings.csv``; of a workbook with its sheet.
     row : int or None
-        Line number in the file as an editor shows it (the heading is 1); None where the whole file is meant.
+        Line number as an editor or a spreadsheet program shows it (the heading is 1); None where the whole file is
+        meant.
     column : str or None
         Heading of the column, or the TOML key such as ``reach[1].diameter``.
     message : str
@@ -57,7 +70,7 @@ class Problem:
     @property
     def place(self) -> tuple[int, str, int]:
         """What problems are sorted by: the file in reading order, then the row."""
-        stem = self.file.partition(".")[0]
+        stem = self.file.rpartition(" sheet ")[2].partition(".")[0]
         return (_ORDER.index(stem) if stem in _ORDER else -1, self.file, self.row or 0)
 
     def __str__(self) -> str:

@@ -10,24 +10,32 @@ import itertools
 from collections import Counter
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from types import MappingProxyType
 from typing import Literal
 
 import numpy as np
 import pandas as pd
 
 from gradeline.errors import Problem, SurveyError
+from gradeline.flow_methods import FlowSetup
+from gradeline.gauge_kinds import GAUGE_KINDS, Calibration, GaugeKey, GaugeKind, Leg, Pressure
 from gradeline.quantities import Measured
 
 __all__ = [
     "GAUGE_KINDS",
+    "Calibration",
     "Fitting",
     "Fluid",
     "Gauge",
     "GaugeKey",
     "GaugeKind",
+    "Leg",
     "Observation",
+    "Offtake",
+    "Pressure",
+    "PropertyTable",
     "Reach",
+    "Section",
+    "SideValve",
     "Site",
     "SourceFile",
     "Stated",
@@ -35,74 +43,6 @@ __all__ = [
     "Survey",
     "Tap",
 ]
-
-
-@dataclass(frozen=True)
-class GaugeKey:
-    """One key that a gauge of some kind takes in ``survey.toml``.
-
-    Parameters
-    ----------
-    dimension : str
-        A dimension that `gradeline.quantities` knows, or ``"text"``.
-    meaning : str
-        One line for messages and for the written survey.
-    required : bool
-        Whether the key must be given.
-    positive : bool
-        Whether the value must be above zero.
-    """
-
-    dimension: str
-    meaning: str
-    required: bool = False
-    positive: bool = False
-
-
-@dataclass(frozen=True)
-class GaugeKind:
-    """What a survey may say of one kind of gauge; its physics is in `gradeline.hydraulics.manometry`.
-
-    Parameters
-    ----------
-    reading : str
-        Dimension of a reading: ``"length"`` or ``"pressure"``.
-    keys : mapping of str to GaugeKey
-        The keys of this kind beside those that every gauge takes.
-    differential : bool
-        Whether one reading is a difference between two taps.
-    """
-
-    reading: Literal["length", "pressure"]
-    keys: Mapping[str, GaugeKey]
-    differential: bool = False
-
-
-_LINE_KEYS = {
-    "line_fluid": GaugeKey("text", "fluid in the connecting line, where it is not the flowing one"),
-    "line_temperature": GaugeKey(
-        "temperature", "temperature of the connecting line, where it is not the run's"
-    ),
-}
-
-#: Every gauge kind by its name in ``survey.toml``. The loader dispatches on this table; the head of each kind is
-#: the entry of the same name in `gradeline.hydraulics.manometry.HEADS`.
-GAUGE_KINDS: Mapping[str, GaugeKind] = MappingProxyType(
-    {
-        "piezometer": GaugeKind(
-            reading="length",
-            keys={
-                "zero": GaugeKey("length", "elevation of the scale's zero above datum"),
-                "inclination": GaugeKey(
-                    "angle", "of the scale from the horizontal; 90 deg when left out", positive=True
-                ),
-                "bore": GaugeKey("length", "of the tube, for its capillary rise", positive=True),
-                "column_temperature": GaugeKey("temperature", "of the column, where it is not the run's"),
-            },
-        ),
-        "pressure gauge": GaugeKind(reading="pressure", keys=_LINE_KEYS),
-    }
-)
 
 
 @dataclass(frozen=True)
@@ -144,26 +84,96 @@ class StatedUncertainties:
     friction_law: float | None = None
 
 
+#: How far beyond two given viscosities their law is followed, K.
+BEYOND = 40.0
+
+
+@dataclass(frozen=True)
+class PropertyTable:
+    """Properties of a fluid against temperature, as a file of the survey gives them.
+
+    Parameters
+    ----------
+    file : str
+        Its name.
+    temperature, density, kinematic_viscosity : tuple of float
+        K, strictly rising, two at least; kg/m³; m²/s.
+    density_u, viscosity_u : float or None
+        Relative standard uncertainties, the same error at all temperatures.
+    """
+
+    file: str
+    temperature: tuple[float, ...]
+    density: tuple[float, ...]
+    kinematic_viscosity: tuple[float, ...]
+    density_u: float | None = None
+    viscosity_u: float | None = None
+
+
 @dataclass(frozen=True)
 class Fluid:
-    """The flowing fluid: water by name, any other by its density and one viscosity.
+    """The flowing fluid: water or air by name, any other by its density and viscosity or by a table of them.
 
     Parameters
     ----------
     name : str
-        ``"water"``, or any name where the properties are given.
+        ``"water"``, ``"air"`` with a line pressure, or any name where the properties are given.
     density : Measured or None
-        kg/m³.
+        kg/m³; at `density_temperature` where there is an expansion.
     viscosity : Measured or None
         Dynamic, Pa s.
     kinematic_viscosity : Measured or None
         m²/s.
+    table : PropertyTable or None
+        Density and kinematic viscosity against temperature.
+    viscosity_at : tuple of (float, Measured)
+        Two temperatures (K) in rising order, each with its kinematic viscosity (m²/s); empty where not given so.
+    density_temperature : float or None
+        K, at which `density` is given.
+    expansion : Measured or None
+        Coefficient of thermal (cubic) expansion, 1/K.
+    line_pressure : Measured or None
+        Absolute pressure in the line, Pa: the fluid is air.
+    humidity : float
+        Relative humidity of flowing air, dimensionless.
     """
 
     name: str = "water"
     density: Measured | None = None
     viscosity: Measured | None = None
     kinematic_viscosity: Measured | None = None
+    table: PropertyTable | None = None
+    viscosity_at: tuple[tuple[float, Measured], ...] = ()
+    density_temperature: float | None = None
+    expansion: Measured | None = None
+    line_pressure: Measured | None = None
+    humidity: float = 0.5
+
+    @property
+    def is_water(self) -> bool:
+        """Whether its properties are those of water."""
+        return self.name == "water" and self.density is None and self.table is None
+
+    @property
+    def is_air(self) -> bool:
+        """Whether its properties are those of air at the line pressure."""
+        return self.line_pressure is not None
+
+    @property
+    def follows_temperature(self) -> bool:
+        """Whether density or viscosity are worked out at each run's temperature."""
+        return bool(self.density is None or self.viscosity_at or self.expansion is not None)
+
+    @property
+    def span(self) -> tuple[float, float] | None:
+        """Temperatures (K) between which the properties are known, None where they are constant."""
+        if self.table is not None:
+            return self.table.temperature[0], self.table.temperature[-1]
+        if self.is_air:
+            return 223.15, 373.15
+        if self.viscosity_at:
+            return self.viscosity_at[0][0] - BEYOND, self.viscosity_at[-1][0] + BEYOND
+        return (273.15, 373.15) if self.is_water else None
 
 
 @dataclass(frozen=True)
@@ -176,10 +186,74 @@ class Site:
 
 
 @dataclass(frozen=True)
+class Section:
+    """A cross-section that is not a circle.
+
+    Parameters
+    ----------
+    shape : {"rectangle", "annulus", "given"}
+        What `sides` are: width and height, outer and inner diameter, or area and wetted perimeter.
+    sides : tuple of Measured
+        Two of them, m (an area in m²).
+    laminar_constant : float or None
+        f·Re of laminar flow on the hydraulic diameter, dimensionless, where the survey gives it.
+    """
+
+    shape: Literal["rectangle", "annulus", "given"]
+    sides: tuple[Measured, Measured]
+    laminar_constant: float | None = None
+
+
+@dataclass(frozen=True)
+class Offtake:
+    """A branch that takes a part of the flow away, at a boundary between two reaches.
+
+    Parameters
+    ----------
+    name : str
+        Its label.
+    at : float
+        Chainage, m.
+    flow_u : Stated or None
+        Standard uncertainty of the flow it takes, the same error in all runs. What it takes in each run (m³/s) is
+        the column ``offtake NAME`` of `Survey.runs`.
+    """
+
+    name: str
+    at: float
+    flow_u: Stated | None = None
+
+    @property
+    def column(self) -> str:
+        """Its column in `Survey.runs`."""
+        return f"offtake {self.name}"
+
+
+@dataclass(frozen=True)
+class SideValve:
+    """A valve on a branch of the line, and whether it was shut during the survey.
+
+    Parameters
+    ----------
+    name : str
+        Its label.
+    state : {"shut", "open", "unknown"}
+        As stated.
+    where : str
+        Where flow can leave by it, as a phrase with the taps beside it.
+    """
+
+    name: str
+    state: Literal["shut", "open", "unknown"]
+    where: str = ""
+
+
+@dataclass(frozen=True)
 class Reach:
     """A length of one bore and one wall, from chainage `start` to `end` (m), in flow order.
 
-    `inlet` says that the flow enters here undeveloped, so that the entrance length counts from `start`.
+    `inlet` says that the flow enters here undeveloped, so that the entrance length counts from `start`. Where there
+    is a `section`, `diameter` is its hydraulic diameter.
     """
 
     name: str
@@ -188,6 +262,7 @@ class Reach:
     diameter: Measured
     wall: str
     inlet: bool = False
+    section: Section | None = None
 
     @property
     def length(self) -> float:
@@ -244,6 +319,12 @@ class Gauge:
         Standard uncertainty of the zero, the same in all runs, in the unit of the reading.
     scale_u : float or None
         Relative standard uncertainty of the scale, the same in all runs.
+    span : tuple of float or None
+        Lowest and highest reading of its scale, in the unit of the reading.
+    legs : tuple of Leg
+        Of a compound manometer, from the upstream tap on.
+    calibration : Calibration or None
+        What it showed at known values.
     """
 
     name: str
@@ -253,6 +334,15 @@ class Gauge:
     resolution: float | None = None
     zero_u: float | None = None
     scale_u: float | None = None
+    span: tuple[float, float] | None = None
+    legs: tuple[Leg, ...] = ()
+    calibration: Calibration | None = None
+
+    @property
+    def floats(self) -> bool:
+        """Whether the level of its columns is not known, so that only their differences count."""
+        key = GAUGE_KINDS[self.kind].level_key
+        return key is not None and key not in self.settings
 
 
 @dataclass(frozen=True)
@@ -287,11 +377,15 @@ class Tap:
 
 @dataclass(frozen=True)
 class Observation:
-    """One column of readings: a gauge at a tap, or between `tap` (upstream) and `tap_2` (downstream)."""
+    """One column of readings: a gauge at a tap, or between `tap` (upstream) and `tap_2` (downstream).
+
+    `read_twice` says that each reading is the difference of two that were read from the scale one by one.
+    """
 
     gauge: str
     tap: str
     tap_2: str | None = None
+    read_twice: bool = False
 
     @property
     def label(self) -> str:
@@ -326,7 +420,10 @@ class Survey:
     runs : DataFrame
         One row a run, in the order of the file: ``run`` (text), ``flow`` (m³/s, mean of the repeats),
         ``flow_u`` (standard uncertainty of that mean from the spread of repeats, NaN without repeats),
-        ``temperature`` (K, NaN where it was not given), ``repeats`` (int).
+        ``temperature`` (K, NaN where it was not given), ``repeats`` (int); where the files have them,
+        ``temperature_u`` (K, of the run's own temperature, from its change during the run) and for each off-take
+        ``offtake NAME`` (m³/s), ``flow_start`` and ``flow_end`` (m³/s), ``direction`` (``rising``, ``falling`` or None).
+        Where the flow is to be worked out from `flow_readings`, ``flow`` is NaN but in static runs.
     readings : DataFrame
         Indexed by run, one column an observation (its label), SI (m or Pa), mean of the repeats, NaN where not taken.
     repeats : DataFrame
@@ -341,8 +438,19 @@ class Survey:
         What the loader took for granted, and what a reader should know.
     date : str or None
         As in the file (ISO 8601).
+    levels : DataFrame or None
+        The levels that compound manometers are read at, m, indexed by run: a column ``gauge level`` each.
     units : mapping of str to str
         The unit of each column as the files gave it; columns of ``taps.csv`` begin with the file's name.
+    offtakes : tuple of Offtake
+        The branches that take flow away.
+    side_valves : tuple of SideValve
+        The valves on branches, shut or not.
+    flow : FlowSetup
+        How the flow was measured, and how the taps were read meanwhile.
+    flow_readings : DataFrame
+        What the method reads, SI: a row for each row of the file (``run``, ``file``, ``line``, the method's columns); empty
+        where the flow itself is given.
 
     Raises
     ------
@@ -369,6 +477,11 @@ class Survey:
     cautions: tuple[str, ...] = ()
     date: str | None = None
     units: Mapping[str, str] = field(default_factory=dict)
+    levels: pd.DataFrame | None = None
+    offtakes: tuple[Offtake, ...] = ()
+    side_valves: tuple[SideValve, ...] = ()
+    flow: FlowSetup = field(default_factory=FlowSetup)
+    flow_readings: pd.DataFrame = field(default_factory=pd.DataFrame)
 
     def __post_init__(self) -> None:
         problems = [Problem(self.source or "survey", None, None, text) for text in _faults(self)]
@@ -420,6 +533,7 @@ def _faults(survey: Survey) -> list[str]:
     ]:
         if not first <= at <= last:
             found.append(f"{what} {name!r} at {at} m lies outside every reach ({first} m to {last} m)")
+    found += _offtake_faults(survey)
     chainages = [tap.chainage for tap in survey.taps]
     if any(after <= before for before, after in itertools.pairwise(chainages)):
         found.append("the chainages of the taps do not increase")
@@ -443,4 +557,22 @@ def _faults(survey: Survey) -> list[str]:
             )
     if (survey.runs["flow"].to_numpy(float) < 0).any():
         found.append("a flow is negative; chainage increases downstream")
+    return found
+
+
+def _offtake_faults(survey: Survey) -> list[str]:
+    """Off-takes that do not lie between two reaches, that take nothing known, or that take it all."""
+    boundaries = [reach.start for reach in survey.reaches[1:]]
+    found = [
+        f"off-take {one.name!r} at {one.at} m lies at no boundary between two reaches; split the reach there"
+        for one in survey.offtakes
+        if not any(abs(one.at - at) <= 1e-6 for at in boundaries)
+    ]
+    missing = [one.name for one in survey.offtakes if one.column not in survey.runs.columns]
+    found += [f"the runs do not tell what off-take {name!r} takes" for name in missing]
+    if survey.offtakes and not missing:
+        flow = survey.runs["flow"].to_numpy(float)
+        taken = survey.runs[[one.column for one in survey.offtakes]].to_numpy(float).sum(axis=1)
+        if ((flow > 0) & ~(taken < flow)).any():
+            found.append("the off-takes of a run take as much as flows, or more")
     return found

@@ -96,17 +96,32 @@ def main(tmp_path_factory):
     return reduce_demo("cast_main", tmp_path_factory.mktemp("main"))
 
 
-@pytest.fixture(params=["bench", "main"])
+@pytest.fixture(scope="module")
+def mercury(tmp_path_factory):
+    return reduce_demo("mercury_bench", tmp_path_factory.mktemp("mercury"))
+
+
+@pytest.fixture(scope="module")
+def hydrants(tmp_path_factory):
+    return reduce_demo("hydrant_main", tmp_path_factory.mktemp("hydrants"))
+
+
+@pytest.fixture(params=["bench", "main", "mercury", "hydrants"])
 def demo(request):
     return request.getfixturevalue(request.param)
 
 
-def truth(name, pattern):
-    """Return the numbers that the head of a demo's survey.toml gives as its truth."""
+def words(name, pattern):
+    """Return what the head of a demo's survey.toml gives as its truth."""
     head = (DEMO / name / "survey.toml").read_text(encoding="utf-8").split("[survey]")[0].replace("\n#", "")
     found = re.search(pattern, head)
     assert found, pattern
-    return [float(text) for text in found.groups()]
+    return found.groups()
+
+
+def truth(name, pattern):
+    """Return the numbers that it gives."""
+    return [float(text) for text in words(name, pattern)]
 
 
 def test_the_demo_is_reduced(demo):
@@ -116,7 +131,7 @@ def test_the_demo_is_reduced(demo):
     assert result.stderr == f"Written to {out / 'report.html'}\n"
     there = {path.name for path in out.iterdir()}
     assert there == {"report.html", "reduction.json", "figures", *(f"{table}.csv" for table in RESULT_TABLES)}
-    runs = 10 if name == "copper_bench" else 7
+    runs = {"copper_bench": 10, "cast_main": 7, "mercury_bench": 10, "hydrant_main": 6}[name]
     figures = sorted(path.name for path in (out / "figures").iterdir())
     assert len(figures) == 2 * (runs + 3)
     assert all((out / "figures" / figure).stat().st_size > 1000 for figure in figures)
@@ -206,6 +221,57 @@ def test_the_main_holds_its_truth(main):
     valve = next(row for row in result["fittings"] if row["fitting"] == "gate valve")
     assert valve["loss_coefficient_low"] <= coefficient <= valve["loss_coefficient_high"]
     assert result["flags"] == []
+
+
+def hold_flows(name, result, relative):
+    """Hold each flow against the truth within a relative bound."""
+    (listed,) = words(name, r"True flows[^:]*:\s+([\d., ]+) L/s")
+    true = np.array([float(text) for text in listed.split(",")]) / 1000
+    found = np.array([row["flow"] for row in result["runs"] if row["flow"] > 0])
+    assert found == pytest.approx(true, rel=relative)
+
+
+def test_the_mercury_bench_holds_its_truth(mercury):
+    name, source, out, _ = mercury
+    result = load(out)
+    (micrometres,) = truth(name, r"roughness ([\d.]+) um")
+    wall = result["walls"][0]
+    assert wall["roughness_low"] <= micrometres * 1e-6 <= wall["roughness_high"]
+    assert wall["roughness_resolved"] is True
+    # 10 g at random and 10 g of zero on 4 kg at the least, 0.1 s of 120 s, the balance's 0.1 %: twice in quadrature
+    hold_flows(name, result, 2 * np.hypot(np.hypot(0.010 * 1.5 / 4.0, 0.1 / 120), 0.001))
+    assert {row["regime"] for row in result["runs"]} == {"static", "laminar", "critical", "turbulent"}
+    assert result["flags"] == []
+    # each flowing run is read by one kind of gauge, the one that suits
+    readings = gradeline.read_survey(source).readings.drop("static")
+    by_air, by_mercury = (readings[[f"{letter}{n}" for n in (1, 2, 3)]].notna() for letter in "am")
+    assert (by_air.all(axis=1) ^ by_mercury.all(axis=1)).all()
+    assert by_air.any().all()
+    assert by_mercury.any().all()
+    # the largest fall that mercury showed, 285 mm of it against water: 13.56 less 1 (handbooks, about 15 degC)
+    told = run("gauges", source).stdout
+    largest = re.search(r"m1 \(u-tube\).*?differences +\S+ m to (\S+) m", told, re.DOTALL)
+    assert largest, told
+    assert float(largest[1]) == pytest.approx(0.285 * 12.56, rel=0.01)
+    # Hagen and Poiseuille, 64/Re, whatever the wall
+    for row in result["runs"]:
+        if row["regime"] == "laminar":
+            assert abs(row["friction_factor"] - 64 / row["reynolds"]) < 2.5 * row["friction_factor_u"]
+
+
+def test_the_hydrant_main_holds_its_truth(hydrants):
+    name, _, out, _ = hydrants
+    result = load(out)
+    (millimetres,) = truth(name, r"roughness ([\d.]+) mm")
+    wall = result["walls"][0]
+    assert wall["roughness_low"] <= millimetres * 1e-3 <= wall["roughness_high"]
+    # the outlets' coefficients ± 1.1 %, bores ± 0.6 % in area, pitots 0.5 kPa of 25 kPa at the least: twice in quadrature
+    hold_flows(name, result, 2 * np.sqrt(0.011**2 + 0.006**2 + 0.010**2))
+    assert result["flags"] == []
+    page = (out / "report.html").read_text(encoding="utf-8")
+    assert "Isolation checklist: were all side valves shut? Here 3 of 4 are stated shut." in page
+    assert any("farm branch" in text and "between H4 and H5" in text for text in result["cautions"])
+    assert any("Side valves stated shut: mill, school, scour" in text for text in result["assumptions"])
 
 
 def write(folder, *, taps, rows):

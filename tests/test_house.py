@@ -11,7 +11,7 @@ import pytest
 
 TOP = Path(__file__).resolve().parents[1]
 ROOMS = {"README.md", "DEVELOPERS.md", "pyproject.toml", "gradeline", "tests", "data_demo", "notebooks"}
-SURVEYS = ("cast_main", "copper_bench")
+SURVEYS = ("cast_main", "copper_bench", "hydrant_main", "mercury_bench")
 
 
 def ignored(name: str) -> bool:

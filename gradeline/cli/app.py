@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Annotated, Literal
 
 import typer
 
-from gradeline.errors import GradelineError, OutputError, SurveyError
+from gradeline.errors import GradelineError, OutputError, SurveyError, UsageError
 
 if TYPE_CHECKING:
     from gradeline.survey import Survey
@@ -23,6 +23,19 @@ __all__ = ["FORMATS", "app"]
 FORMATS = ("html", "json", "csv", "svg", "png")
 
 _WRONG_USE, _SURVEY_PROBLEMS, _NOT_WRITTEN = 2, 3, 4
+
+# For one table of heads, which says nothing of its line.
+_Diameter = Annotated[
+    str | None, typer.Option("--diameter", metavar="Q", help='Bore, for one table of heads: "26.6 mm".')
+]
+_Flow = Annotated[
+    str | None, typer.Option("--flow", metavar="Q", help='Flow, for one table of heads: "0.84 L/s".')
+]
+_Temperature = Annotated[
+    str | None,
+    typer.Option("--temperature", metavar="Q", help='Temperature, for one table of heads: "18 degC".'),
+]
+_SURVEYS = "Surveys: folders, .xlsx workbooks, or tables of heads (.csv)."
 
 app = typer.Typer(
     name="gradeline",
@@ -72,7 +85,10 @@ def _tell_problems(source: Path, error: GradelineError) -> None:
 
 @app.command(short_help="Tell every problem of surveys, and what was understood.")
 def check(
-    surveys: Annotated[list[Path], typer.Argument(metavar="SURVEY...", help="Folders of surveys.")],
+    surveys: Annotated[list[Path], typer.Argument(metavar="SURVEY...", help=_SURVEYS)],
+    diameter: _Diameter = None,
+    flow: _Flow = None,
+    temperature: _Temperature = None,
 ) -> None:
     """Load surveys, tell every problem at once, and say what was understood.
 
@@ -83,11 +99,36 @@ def check(
         from gradeline.cli.understood import understood  # noqa: PLC0415
         from gradeline.loader import read_survey  # noqa: PLC0415
 
-        read = read_survey(source)
+        read = read_survey(source, diameter=diameter, flow=flow, temperature=temperature)
         if source != surveys[0]:
             typer.echo()
         typer.echo(understood(read))
         _say(f"{source}: no problems")
+
+    code = max(_attempt(one, source) for source in surveys)
+    if code:
+        raise typer.Exit(code)
+
+
+@app.command(short_help="Tell what each gauge can show, and which gauge fluid suits.")
+def gauges(
+    surveys: Annotated[list[Path], typer.Argument(metavar="SURVEY...", help=_SURVEYS)],
+) -> None:
+    """Tell the range of head that each gauge can show, its resolution as head, and the gauge fluid that suits.
+
+    A heavy gauge fluid keeps a large difference on the board, one of a density near the flowing fluid's magnifies a small
+    one. The choice goes by the survey's own differences.
+
+    Example: gradeline gauges data_demo/copper_bench
+    """
+
+    def one(source: Path) -> None:
+        from gradeline.cli.gauges import gauges_told  # noqa: PLC0415
+        from gradeline.loader import read_survey  # noqa: PLC0415
+
+        if source != surveys[0]:
+            typer.echo()
+        typer.echo(gauges_told(read_survey(source)))
 
     code = max(_attempt(one, source) for source in surveys)
     if code:
@@ -129,13 +170,14 @@ def _formats(value: str) -> str:
 
 @app.command(short_help="Reduce surveys and write their reports.")
 def reduce(
-    surveys: Annotated[list[Path], typer.Argument(metavar="SURVEY...", help="Folders of surveys.")],
+    surveys: Annotated[list[Path], typer.Argument(metavar="SURVEY...", help=_SURVEYS)],
     out: Annotated[
         Path | None,
         typer.Option(
             "--out",
             metavar="DIR",
-            help="Folder for the results: SURVEY/reduction by default; of several surveys, a folder in DIR each.",
+            help="Folder for the results: SURVEY/reduction by default, or SURVEY_reduction beside a survey in one "
+            "file; of several surveys, a folder in DIR each.",
         ),
     ] = None,
     overwrite: Annotated[
@@ -162,10 +204,16 @@ def reduce(
         list[str] | None,
         typer.Option("--exclude", metavar="TAP|RUN:TAP", help="Leave a reading out; may be repeated."),
     ] = None,
+    diameter: _Diameter = None,
+    flow: _Flow = None,
+    temperature: _Temperature = None,
 ) -> None:
     """Reduce surveys: fit every run, find wrong readings, estimate the wall, write the report.
 
     Example: gradeline reduce data_demo/copper_bench --exclude T4 --out results
+
+    A table with the columns chainage [m] and head [mm] alone: gradeline reduce heads.csv --diameter "26.6 mm" --flow
+    "0.84 L/s" --temperature "18 degC"
     """
     chosen = tuple(each.strip() for each in formats.split(","))
     targets = _targets(surveys, out)
@@ -174,7 +222,7 @@ def reduce(
     def one(source: Path, target: Path) -> None:
         from gradeline.loader import read_survey  # noqa: PLC0415
 
-        read = read_survey(source)
+        read = read_survey(source, diameter=diameter, flow=flow, temperature=temperature)
         _check_exclusions(excluded, read)
         from gradeline.reduction import reduce as reduce_survey  # noqa: PLC0415
         from gradeline.report import terminal_summary, write  # noqa: PLC0415
@@ -196,6 +244,9 @@ def _attempt(action: Callable[..., None], source: Path, *targets: Path) -> int:
     except typer.BadParameter as error:
         _say(f"{source}: {error.message}")
         return _WRONG_USE
+    except UsageError as error:
+        _say(f"{source}: {error}")
+        return _WRONG_USE
     except OutputError as error:
         _say(f"{source}: {error}")
         return _NOT_WRITTEN
@@ -208,10 +259,13 @@ def _attempt(action: Callable[..., None], source: Path, *targets: Path) -> int:
 def _targets(surveys: Sequence[Path], out: Path | None) -> list[Path]:
     """Where the results of each survey go."""
     if out is None:
-        return [source / "reduction" for source in surveys]
+        return [
+            source.with_name(f"{source.stem}_reduction") if source.is_file() else source / "reduction"
+            for source in surveys
+        ]
     if len(surveys) == 1:
         return [out]
-    targets = [out / source.resolve().name for source in surveys]
+    targets = [out / (source.stem if source.is_file() else source.resolve().name) for source in surveys]
     for place, target in enumerate(targets):
         if target in targets[:place]:
             raise typer.BadParameter(

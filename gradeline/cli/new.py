@@ -5,15 +5,22 @@ from __future__ import annotations
 from importlib.resources import files
 from pathlib import Path
 
+from gradeline.cli.flow_lines import flow_template
 from gradeline.errors import OutputError
-from gradeline.survey import GAUGE_KINDS
+from gradeline.gauge_kinds import GAUGE_KINDS, GaugeKey
+from gradeline.loader.gauge_keys import EXAMPLES
 
 __all__ = ["NEW_FILES", "write_new"]
 
 #: The files that are written.
 NEW_FILES = ("survey.toml", "taps.csv", "readings.csv")
 
-_EXAMPLES = {"length": '"? m"', "angle": '"30 deg"', "temperature": '"18 degC"', "text": '"water"'}
+_LEGS = (
+    "#   [[gauge.board.leg]]           # from the upstream tap on, as many as there are",
+    '#   fluid = "mercury"             # or any name with density = "1594 kg/m^3"',
+    '#   from = "T1"                   # a tap, an elevation such as "1.2 m", or the name of a level',
+    "#   to = \"a\"                     # that is read: then readings.csv has a column 'board a [mm]'",
+)
 
 
 def write_new(folder: Path) -> None:
@@ -37,7 +44,11 @@ def write_new(folder: Path) -> None:
         for name in NEW_FILES:
             text = template.joinpath(name).read_text(encoding="utf-8")
             if name == "survey.toml":
-                text = text.replace("{kinds}", _kinds()).replace("{keys}", _gauge_keys())
+                text = (
+                    text.replace("{kinds}", _kinds())
+                    .replace("{keys}", _gauge_keys())
+                    .replace("{flow}", flow_template())
+                )
             folder.joinpath(name).write_text(text, encoding="utf-8")
     except OSError as error:
         raise OutputError(f"{folder} cannot be written ({error.strerror}); name another folder") from error
@@ -50,12 +61,32 @@ def _kinds() -> str:
 def _gauge_keys() -> str:
     """The keys of each gauge kind as comments; the zero of the piezometer is left to be filled in."""
     lines: list[str] = []
+    for name, key in GAUGE_KINDS["piezometer"].keys.items():
+        asked = name == "zero"
+        lines.append(_key_line("" if asked else "# ", name, '"? m"' if asked else _example(key), key.meaning))
+    told: dict[str, list[str]] = {}
+    seen: set[str] = set()
     for kind, known in GAUGE_KINDS.items():
-        if kind != "piezometer":
-            lines.append(f"# a {kind} (readings such as kPa, bar, psi, mH2O) takes instead:")
-        for name, key in known.keys.items():
-            asked = name == "zero"
-            value = _EXAMPLES[key.dimension] if asked or key.dimension != "length" else '"4 mm"'
-            written = f"{'' if asked else '# '}{name} = {value}"
-            lines.append(f"{written:<31} # {key.meaning}")
+        fresh = {name: key for name, key in known.keys.items() if f"{name} {key.meaning}" not in seen}
+        keys = [
+            _key_line("#   ", name, _example(key), key.meaning + (" (needed)" if key.required else ""))
+            for name, key in fresh.items()
+        ]
+        again = [name for name in known.keys if name not in fresh]
+        keys += [f"#   as above: {', '.join(again)}"] if again else []
+        keys += list(_LEGS) if known.legs else []
+        same = next((text for text, kinds in told.items() if GAUGE_KINDS[kinds[0]].keys == known.keys), None)
+        told.setdefault(same or "\n".join(keys), []).append(kind)
+        seen |= {f"{name} {key.meaning}" for name, key in known.keys.items()}
+    for text, kinds in list(told.items())[1:]:
+        named = " or ".join(f'"{kind}"' for kind in kinds)
+        lines += [f"# kind = {named} takes:", text]
     return "\n".join(lines)
+
+
+def _example(key: GaugeKey) -> str:
+    return f'"{key.example or EXAMPLES.get(key.dimension, "1")}"'
+
+
+def _key_line(mark: str, name: str, value: str, meaning: str) -> str:
+    return f"{f'{mark}{name} = {value}':<31} # {meaning}"

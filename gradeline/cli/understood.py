@@ -5,16 +5,28 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 
 import numpy as np
+from numpy.typing import NDArray
 
+from gradeline.cli.flow_lines import flow_text
 from gradeline.quantities import Measured, Unit, parse_unit
-from gradeline.survey import GAUGE_KINDS, Fluid, Gauge, Stated, Survey
+from gradeline.reduction.flow import metered_flow
+from gradeline.survey import GAUGE_KINDS, Fluid, Gauge, Pressure, Reach, Stated, Survey
 
 __all__ = ["understood"]
 
 _RUNS_SHOWN = 40
 
 # Units of values and of uncertainties where nobody wrote one.
-_SETTINGS = {"length": "m", "pressure": "kPa", "angle": "deg", "temperature": "degC"}
+_SETTINGS = {
+    "length": "m",
+    "pressure": "kPa",
+    "angle": "deg",
+    "temperature": "degC",
+    "density": "kg/m^3",
+    "surface tension": "N/m",
+    "thermal expansion": "1/K",
+    "dimensionless": "%",
+}
 _UNCERTAINTIES = {
     "length": "mm",
     "pressure": "kPa",
@@ -26,10 +38,12 @@ _UNCERTAINTIES = {
 
 def understood(survey: Survey) -> str:
     """Return what a survey says: SI units but for the bore (mm) and the flow (L/s), what is stated as stated."""
+    survey = metered_flow(survey).survey
     flows = survey.runs["flow"].to_numpy(float)
     parts = [
         f"{survey.title}" + (f" ({survey.date})" if survey.date else ""),
         f"Fluid: {_fluid(survey.fluid)}",
+        flow_text(survey.flow),
         _table(
             "Reaches",
             ("reach", "from, m", "to, m", "bore, mm", "wall"),
@@ -38,11 +52,24 @@ def understood(survey: Survey) -> str:
                     reach.name + (" (inlet)" if reach.inlet else ""),
                     f"{reach.start:g}",
                     f"{reach.end:g}",
-                    _measured(reach.diameter, 1000),
+                    _measured(reach.diameter, 1000) + _shape(reach),
                     reach.wall,
                 )
                 for reach in survey.reaches
             ],
+        ),
+        _table(
+            "Off-takes",
+            ("off-take", "at, m", "takes, L/s"),
+            [
+                (one.name, f"{one.at:g}", _range(1000 * survey.runs[one.column].to_numpy(float)))
+                for one in survey.offtakes
+            ],
+        ),
+        _table(
+            "Side valves",
+            ("side valve", "where", "state"),
+            [(valve.name, valve.where, valve.state) for valve in survey.side_valves],
         ),
         _table(
             "Fittings",
@@ -83,10 +110,39 @@ def _measured(value: Measured, factor: float = 1.0) -> str:
     return text if value.u is None else f"{text} ± {value.u * factor:.2g}"
 
 
+def _shape(reach: Reach) -> str:
+    """Where the section is no circle, what it is; the bore is then its hydraulic diameter."""
+    if reach.section is None:
+        return ""
+    first, second = (side.value for side in reach.section.sides)
+    if reach.section.shape == "given":
+        return f" (hydraulic; {first:.6g} m², perimeter {second:.6g} m)"
+    sign = "×" if reach.section.shape == "rectangle" else "/"
+    return f" (hydraulic; {reach.section.shape} {1000 * first:.6g} {sign} {1000 * second:.6g})"
+
+
+def _range(values: NDArray[np.float64]) -> str:
+    """The least and the largest of the flows that are taken, one where they are equal."""
+    flowing = values[values > 0]
+    low, high = (float(flowing.min()), float(flowing.max())) if len(flowing) else (0.0, 0.0)
+    return f"{low:.6g}" if low == high else f"{low:.6g} to {high:.6g}"
+
+
 def _fluid(fluid: Fluid) -> str:
+    if fluid.table is not None:
+        return f"{fluid.name}, density and viscosity from each run's temperature by {fluid.table.file}"
+    if fluid.line_pressure is not None:
+        return f"{fluid.name} at {_measured(fluid.line_pressure, 1e-3)} kPa absolute, from each run's temperature"
     if fluid.density is None:
         return f"{fluid.name}, density and viscosity from each run's temperature"
     given = [f"density {_measured(fluid.density)} kg/m³"]
+    if fluid.expansion is not None and fluid.density_temperature is not None:
+        at = f"{fluid.density_temperature - 273.15:g} °C"
+        given[0] += f" at {at}, expansion {_measured(fluid.expansion)} 1/K"
+    given += [
+        f"kinematic viscosity {_measured(value, 1e6)} mm²/s at {kelvin - 273.15:g} °C"
+        for kelvin, value in fluid.viscosity_at
+    ]
     if fluid.viscosity is not None:
         given.append(f"viscosity {_measured(fluid.viscosity, 1000)} mPa s")
     if fluid.kinematic_viscosity is not None:
@@ -95,7 +151,9 @@ def _fluid(fluid: Fluid) -> str:
 
 
 def _settings(survey: Survey, gauge: Gauge) -> str:
-    dimensions = {name: key.dimension for name, key in GAUGE_KINDS[gauge.kind].keys.items()}
+    dimensions = {
+        name: key.dimension.removeprefix("gas ") for name, key in GAUGE_KINDS[gauge.kind].keys.items()
+    }
     found: list[str] = []
     for name, value in gauge.settings.items():
         if isinstance(value, str):
@@ -103,8 +161,22 @@ def _settings(survey: Survey, gauge: Gauge) -> str:
             continue
         unit = _unit(survey, f"survey.toml gauge.{gauge.name}.{name}", dimensions[name], _SETTINGS)
         u = None if value.u is None else unit.difference_from_si(value.u)
-        found.append(f"{name} {_measured(Measured(unit.from_si(value.value), u))} {unit.text}")
+        absolute = " abs" if isinstance(value, Pressure) and value.absolute else ""
+        found.append(f"{name} {_measured(Measured(unit.from_si(value.value), u))} {unit.text}{absolute}")
+    if gauge.span is not None:
+        reading = GAUGE_KINDS[gauge.kind].reading
+        unit = _unit(survey, f"survey.toml gauge.{gauge.name}.range", reading, _SETTINGS)
+        found.append(
+            f"range {unit.from_si(gauge.span[0]):.6g} to {unit.from_si(gauge.span[1]):.6g} {unit.text}"
+        )
+    if gauge.calibration is not None:
+        found.append(f"calibration {gauge.calibration.file} ({len(gauge.calibration.reading)} points)")
+    found += [f"leg of {leg.fluid} from {_end(leg.start)} to {_end(leg.end)}" for leg in gauge.legs]
     return ", ".join(found)
+
+
+def _end(end: float | str) -> str:
+    return end if isinstance(end, str) else f"{end:g} m"
 
 
 def _unit(survey: Survey, place: str, dimension: str, usual: Mapping[str, str]) -> Unit:
@@ -153,7 +225,7 @@ def _taps(survey: Survey) -> str:
             f"{tap.chainage:g}",
             f"{tap.elevation:g}",
             tap.gauge or "",
-            f"{taken[tap.name]} of {len(survey.runs)}",
+            f"{taken[tap.name]} of {len(survey.runs)}" if tap.name in taken else "",
             *(
                 ""
                 if (value := getattr(tap, name)) is None

@@ -26,6 +26,7 @@ _ROUGHEST = 0.1
 #: Probability, over all runs of a sound wall, that one is called off the law.
 _RUN_FALSE_ALARM = 0.05
 _SETTLED = 12
+_NEAR = 1e-4  # a step beyond this share of ε is no polish
 #: A slope this many scatters from the others stays out of the first fit.
 _FAR = 5.0
 
@@ -50,8 +51,9 @@ class WallData:
         m²/s.
     gravity : float
         m/s².
-    flow_u : (R,) array
-        Relative standard uncertainty of each run's own flow, dimensionless; 0 where none was stated.
+    flow_u : (R,) or (R, K) array
+        Relative standard uncertainty of each run's own flow, dimensionless; 0 where none was stated. It is one error
+        in all reaches of the run.
     own_slope_effect : (R, K) array
         Change of S with the run's own flow error, dimensionless; 0 where the bore does not change.
     viscosity_u : (R,) array
@@ -60,7 +62,7 @@ class WallData:
         Change of S with each shared input, dimensionless.
     diameter_effect : (K, q) array
         Relative change of the bore, dimensionless.
-    flow_effect : (q,) array
+    flow_effect : (q,) or (R, K, q) array
         Relative change of the flow, dimensionless.
     viscosity_effect : (R, q) array
         Relative change of the kinematic viscosity, dimensionless.
@@ -206,7 +208,7 @@ def _covariance(data: WallData, roughness: float, used: Mask, relative_scatter: 
         + by_reynolds[:, :, None] * data.viscosity_effect[:, None, :]
         + data.gravity_effect
     )
-    own = data.own_slope_effect / law - flow * data.flow_u[:, None]
+    own = data.own_slope_effect / law - flow * data.flow_u.reshape(len(flow), -1)
     thin = by_reynolds * data.viscosity_u[:, None]
     block = own[:, :, None] * own[:, None, :] + thin[:, :, None] * thin[:, None, :]
     if np.isfinite(relative_scatter):
@@ -440,6 +442,28 @@ def _settle(
         roughness = new
         if done:
             break
+    return _polished(data, used, roughness, scatter, covariance)
+
+
+def _polished(
+    data: WallData, used: Mask, roughness: float, scatter: float, covariance: _Covariance
+) -> tuple[float, _Covariance]:
+    """Take ε from eight digits, all that a search for a minimum can give, to rounding, by Gauss–Newton steps."""
+    for _ in range(_SETTLED):
+        if not roughness > 0:
+            break
+        gradient = _law_gradient(data, used, roughness)
+        turned = covariance.solve(gradient)
+        information = float((gradient * turned).sum())
+        step = (
+            float((turned * _residual(data, used, roughness)).sum()) / information if information > 0 else 0.0
+        )
+        if not abs(step) <= _NEAR * roughness:
+            break  # the minimum is an edge, or a flat one: the search stands
+        roughness += step
+        covariance = _covariance(data, roughness, used, scatter)
+        if abs(step) <= 1e-15 * roughness:
+            break
     return roughness, covariance
 
 
@@ -502,7 +526,7 @@ def _interval(
     one_sided = float(stdtrit(dof, 0.95)) ** 2 if np.isfinite(dof) else _normal(0.95) ** 2
     low = 0.0
     if roughness > 0 and above(0.0) > two_sided:
-        low = float(brentq(lambda value: above(value) - two_sided, 0.0, roughness, xtol=1e-15))
+        low = float(brentq(lambda value: above(value) - two_sided, 0.0, roughness, xtol=1e-20))
     highs = []
     rougher = grid.roughness > roughness
     beyond = grid.roughness[rougher]
@@ -516,7 +540,7 @@ def _interval(
         highs.append(
             float(
                 brentq(
-                    lambda value, rise=rise: above(value) - rise, start, float(beyond[over[0]]), xtol=1e-15
+                    lambda value, rise=rise: above(value) - rise, start, float(beyond[over[0]]), xtol=1e-20
                 )
             )
         )

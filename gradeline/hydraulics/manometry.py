@@ -15,54 +15,18 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
-__all__ = ["HEADS", "capillary_rise", "piezometer_head", "pressure_gauge_head"]
+from gradeline.hydraulics.capillarity import capillary_rise
+from gradeline.hydraulics.chain import compound_manometer_head
+from gradeline.hydraulics.differential import (
+    differential_pressure_difference,
+    inverted_u_tube_difference,
+    u_tube_difference,
+)
+
+__all__ = ["HEADS", "capillary_rise", "closed_multitube_head", "piezometer_head", "pressure_gauge_head"]
 
 # float64 for float arguments, complex128 where an argument is complex
 Array = npt.NDArray[Any]
-
-
-def capillary_rise(
-    *,
-    bore: npt.ArrayLike,
-    density: npt.ArrayLike,
-    gravity: npt.ArrayLike,
-    surface_tension: npt.ArrayLike,
-    contact_angle: npt.ArrayLike = 0.0,
-) -> Array:
-    """Return how far a liquid stands too high in a narrow open tube (Jurin).
-
-    Parameters
-    ----------
-    bore : array_like
-        Bore of the tube, m, above 0; the formula is meant for bores below about 5 mm.
-    density : array_like
-        Density of the liquid, kg/m³.
-    gravity : array_like
-        Local gravity, m/s².
-    surface_tension : array_like
-        Of the liquid against air, N/m.
-    contact_angle : array_like
-        Between liquid and wall, rad; 0 for water on clean glass. Beyond π/2 the liquid stands too low.
-
-    Returns
-    -------
-    ndarray
-        Rise 4 σ cos θ/(ρ g d), m; negative where the liquid does not wet the wall.
-
-    References
-    ----------
-    Jurin's law, in any text on fluid mechanics. In wider tubes it overstates the rise: the meniscus is no
-    longer a part of a sphere.
-
-    Examples
-    --------
-    >>> rise = capillary_rise(bore=0.004, density=998.2, gravity=9.80665, surface_tension=0.0727)
-    >>> print(f"{1000 * rise:.2f} mm")
-    7.43 mm
-    """
-    tension = np.asarray(surface_tension) * np.cos(np.asarray(contact_angle))
-    rise: Array = 4.0 * tension / (np.asarray(density) * np.asarray(gravity) * np.asarray(bore))
-    return rise
 
 
 def piezometer_head(
@@ -146,6 +110,7 @@ def pressure_gauge_head(
     line_density: npt.ArrayLike,
     air_density: npt.ArrayLike,
     gravity: npt.ArrayLike,
+    zero_reading: npt.ArrayLike = 0.0,
 ) -> Array:
     """Return the piezometric head from a pressure read at the gauge's own elevation.
 
@@ -165,6 +130,8 @@ def pressure_gauge_head(
         Density of the air, kg/m³.
     gravity : array_like
         Local gravity, m/s², above 0.
+    zero_reading : array_like
+        What the gauge shows when it is open to the atmosphere, Pa; taken off the reading.
 
     Returns
     -------
@@ -185,12 +152,106 @@ def pressure_gauge_head(
     """
     tap, gauge, rho = np.asarray(tap_elevation), np.asarray(gauge_elevation), np.asarray(density)
     g = np.asarray(gravity)
-    pressure_at_tap = np.asarray(reading) + np.asarray(line_density) * g * (gauge - tap)
+    shown = np.asarray(reading) - np.asarray(zero_reading)
+    pressure_at_tap = shown + np.asarray(line_density) * g * (gauge - tap)
     head: Array = tap + pressure_at_tap / (rho * g) - np.asarray(air_density) / rho * gauge
+    return head
+
+
+def closed_multitube_head(
+    reading: npt.ArrayLike,
+    *,
+    tap_elevation: npt.ArrayLike,
+    density: npt.ArrayLike,
+    column_density: npt.ArrayLike,
+    gauge_density: npt.ArrayLike,
+    air_density: npt.ArrayLike,
+    gravity: npt.ArrayLike,
+    gas_pressure: npt.ArrayLike = 0.0,
+    zero: npt.ArrayLike = 0.0,
+    inclination: npt.ArrayLike = math.pi / 2,
+    bore: npt.ArrayLike | None = None,
+    surface_tension: npt.ArrayLike = 0.0728,
+    contact_angle: npt.ArrayLike = 0.0,
+) -> Array:
+    """Return the piezometric head from a column under trapped gas.
+
+    Parameters
+    ----------
+    reading : array_like
+        Reading R along the scale, m.
+    tap_elevation : array_like
+        Elevation of the pipe's axis at the tap above datum, m.
+    density, column_density : array_like
+        Density of the flowing fluid and of that in the column, kg/m³.
+    gauge_density : array_like
+        Density of the trapped gas, kg/m³.
+    air_density : array_like
+        Density of the air outside, kg/m³.
+    gravity : array_like
+        Local gravity, m/s², above 0.
+    gas_pressure : array_like
+        Pressure of the gas at the scale's zero against the local atmosphere, Pa. Where it is not known any value
+        serves: it moves all columns of a run alike.
+    zero : array_like
+        Elevation of the scale's zero above datum, m.
+    inclination : array_like
+        Inclination of the scale from the horizontal, rad; π/2 is upright.
+    bore : array_like or None
+        Bore of the tube, m, for its capillary rise; None where the rise is negligible or already taken off.
+    surface_tension : array_like
+        Of the column against the gas, N/m; the default is water and air at 20 °C.
+    contact_angle : array_like
+        Between column and tube, rad.
+
+    Returns
+    -------
+    ndarray
+        Head, m of flowing fluid above datum: that of an open column, the gas in the place of the air above the
+        scale's zero, and p_gas/(ρ g).
+
+    References
+    ----------
+    Hydrostatics of column, gas and air. Without pressure and filled with air it is `piezometer_head`.
+
+    Examples
+    --------
+    >>> h = closed_multitube_head(0.5, tap_elevation=0.0, zero=0.8, density=998.2, column_density=998.2,
+    ...                           gauge_density=1.2, air_density=1.2, gravity=9.80665, gas_pressure=9789.0)
+    >>> print(f"{h:.4f}")
+    2.2984
+    """
+    base, rho = np.asarray(zero), np.asarray(density)
+    gas, air = np.asarray(gauge_density), np.asarray(air_density)
+    under_gas = piezometer_head(
+        reading,
+        tap_elevation=tap_elevation,
+        density=density,
+        column_density=column_density,
+        air_density=gas,
+        gravity=gravity,
+        zero=zero,
+        inclination=inclination,
+        bore=bore,
+        surface_tension=surface_tension,
+        contact_angle=contact_angle,
+    )
+    head: Array = (
+        under_gas + (gas - air) / rho * base + np.asarray(gas_pressure) / (rho * np.asarray(gravity))
+    )
     return head
 
 
 #: The head of each gauge kind by its name in ``survey.toml``. Callers pass the arguments by parameter name.
 HEADS: Mapping[str, Callable[..., Array]] = MappingProxyType(
-    {"piezometer": piezometer_head, "pressure gauge": pressure_gauge_head}
+    {
+        "piezometer": piezometer_head,
+        "closed multitube manometer": closed_multitube_head,
+        "u-tube": u_tube_difference,
+        "inverted u-tube": inverted_u_tube_difference,
+        "compound manometer": compound_manometer_head,
+        "pressure gauge": pressure_gauge_head,
+        "transducer": pressure_gauge_head,
+        "differential transducer": differential_pressure_difference,
+    }
 )

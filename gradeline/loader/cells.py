@@ -1,20 +1,19 @@
-"""A table on disk as columns of text cells with their line numbers, and the text of cells as numbers.
+"""A table as columns of text cells with their line numbers, and the text of cells as numbers.
 
-Other table formats join here: each needs to return `Cells`, and nothing else has to change.
+Every table format (see `gradeline.loader.tables`) hands its rows to `cells_of`; nothing else has to change.
 """
 
 from __future__ import annotations
 
-import csv
 import difflib
-import io
 import re
-from collections.abc import Iterable
-from dataclasses import dataclass
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from gradeline.errors import QuantityError
+from gradeline.loader.delimited import POINTED, WITH_COMMA, read_rows, separator_of, without_marks
 from gradeline.loader.ledger import PLACEHOLDER, Ledger
 from gradeline.quantities import Unit, parse_number
 
@@ -22,6 +21,7 @@ __all__ = [
     "Cells",
     "Heading",
     "Hints",
+    "cells_of",
     "column_index",
     "nearest",
     "numbers",
@@ -62,19 +62,22 @@ class Cells:
     columns : tuple of list of str
         The cells below each heading.
     lines : list of int
-        The line of each row as an editor shows it.
-    heading_line : int
-        The line of the heading.
+        The line of each row as an editor or a spreadsheet program shows it.
+    heading_line : int or None
+        The line of the heading; None where the format has none.
     doubled : frozenset of str
         Names that more than one heading has; the first of them is kept.
+    decimal_comma : bool
+        Whether decimals are set off by a comma.
     """
 
     file: str
     headings: tuple[Heading, ...]
     columns: tuple[list[str], ...]
     lines: list[int]
-    heading_line: int = 1
+    heading_line: int | None = 1
     doubled: frozenset[str] = frozenset()
+    decimal_comma: bool = False
 
     def __len__(self) -> int:
         return len(self.lines)
@@ -168,21 +171,42 @@ def read_cells(ledger: Ledger, name: str, *, required: bool = True) -> Cells | N
     text = ledger.text_of(name, required=required)
     if text is None:
         return None
-    rows, lines = _rows(ledger, name, text)
-    if not rows:
-        if not any(problem.file == name for problem in ledger.problems):
-            ledger.problem(name, None, None, "the file is empty; give a heading and rows")
-        return None
-    headings = tuple(parse_heading(cell) for cell in rows[0])
-    if len(headings) == 1 and re.search(r"[;\t]", rows[0][0]):
-        mark = "semicolons" if ";" in rows[0][0] else "tabs"
+    separator = separator_of(text)
+    rows, lines, fault = read_rows(text, separator)
+    if fault is not None:
         ledger.problem(
-            name,
-            lines[0],
-            None,
-            f"cells are separated by {mark}; separate them by commas, decimals by a point",
+            name, fault[0], None, f"the row cannot be read as csv ({fault[1]}); check its quotation marks"
         )
         return None
+    cells = cells_of(ledger, name, rows, lines)
+    return cells if cells is None or separator == "," else _decimals(ledger, cells)
+
+
+def cells_of(
+    ledger: Ledger, name: str, rows: Sequence[Sequence[str]], lines: Sequence[int | None]
+) -> Cells | None:
+    """Return rows of text as a table, None (with its problems noted) where they are none.
+
+    Parameters
+    ----------
+    ledger : Ledger
+        Takes the problems.
+    name : str
+        What messages call the table.
+    rows : sequence of sequence of str
+        The heading and the rows below it, none of them without any text.
+    lines : sequence of int or None
+        The line of each; of the heading it may be None.
+
+    Returns
+    -------
+    Cells or None
+        The columns that have a name, without notes.
+    """
+    if not rows:
+        ledger.problem(name, None, None, "the file is empty; give a heading and rows")
+        return None
+    headings = tuple(parse_heading(cell) for cell in rows[0])
     width = len(headings)
     ledger.order.update({f"{name}: {heading.text}": place for place, heading in enumerate(headings)})
     wrong = [index for index, row in enumerate(rows) if len(row) != width]
@@ -203,27 +227,49 @@ def read_cells(ledger: Ledger, name: str, *, required: bool = True) -> Cells | N
         return None
     columns = [[cell.strip() for cell in column] for column in zip(*rows[1:], strict=True)]
     columns = columns or [[] for _ in headings]
-    return _named_columns(ledger, Cells(name, headings, tuple(columns), lines[1:], lines[0]))
+    below = [line for line in lines[1:] if line is not None]
+    return _named_columns(ledger, Cells(name, headings, tuple(columns), below, lines[0]))
 
 
-def _rows(ledger: Ledger, name: str, text: str) -> tuple[list[list[str]], list[int]]:
-    """The rows that hold any text, each with the line it begins on."""
-    rows: list[list[str]] = []
-    lines: list[int] = []
-    reader = csv.reader(io.StringIO(text, newline=""), strict=True, skipinitialspace=True)
-    line = 1
-    try:
-        for row in reader:
-            if any(row) and "".join(row).strip():
-                rows.append(row)
-                lines.append(line)
-            line = reader.line_num + 1
-    except csv.Error as error:
+def _decimals(ledger: Ledger, cells: Cells) -> Cells:
+    """Find out whether the decimals of a table are set off by a comma: one number with a comma says so for all.
+
+    A number with a point is then a problem, as nobody can tell which of the two marks thousands.
+    """
+    measured = [
+        index
+        for index, heading in enumerate(cells.headings)
+        if heading.unit is not None or heading.name == "reading"
+    ]
+    found = {
+        mark: [
+            (row, index)
+            for index in measured
+            if mark in "".join(cells.columns[index])
+            for row, cell in enumerate(cells.columns[index])
+            if mark in cell and form.fullmatch(cell)
+        ]
+        for mark, form in ((",", WITH_COMMA), (".", POINTED))
+    }
+    if not found[","]:
+        return cells
+    row, index = min(found[","])
+    comma = f"{cells.columns[index][row]!r} in row {cells.lines[row]}, {cells.headings[index].text}"
+    if found["."]:
+        row, index = min(found["."])
+        others = f", and so have {len(found['.']) - 1} more cells" if len(found["."]) > 1 else ""
         ledger.problem(
-            name, line, None, f"the row cannot be read as csv ({error}); check its quotation marks"
+            cells.file,
+            cells.lines[row],
+            cells.headings[index].text,
+            f"{cells.columns[index][row]!r} has a point{others}, but {comma} has a decimal comma; write all "
+            "numbers of the file alike, with no mark between thousands",
         )
-        return [], []
-    return rows, lines
+    else:
+        ledger.assumptions.append(
+            f"The decimals of {cells.file} are set off by a comma ({comma}): 1,234 is a little more than one."
+        )
+    return replace(cells, decimal_comma=True)
 
 
 def _named_columns(ledger: Ledger, cells: Cells) -> Cells:
@@ -287,7 +333,7 @@ def numbers(
     ndarray
         One value a row, SI.
     """
-    column = cells.columns[index]
+    column = without_marks(cells.columns[index]) if cells.decimal_comma else cells.columns[index]
     values: np.ndarray | None = None
     if not _NOT_NUMERIC.search("\n".join(column)):
         try:
@@ -297,12 +343,14 @@ def numbers(
         if values is not None and (np.abs(values) > _TOO_LARGE).any():
             values = None
     if values is None:
-        values = np.array([_number(ledger, cells, index, row, remedy) for row in range(len(cells))])
+        values = np.array(
+            [_number(ledger, cells, index, row, text, remedy) for row, text in enumerate(column)]
+        )
     return unit.difference_to_si(values) if difference else unit.to_si(values)
 
 
-def _number(ledger: Ledger, cells: Cells, index: int, row: int, remedy: str) -> float:
-    """One cell with its problem noted; the slow path, taken where a column holds anything unusual."""
+def _number(ledger: Ledger, cells: Cells, index: int, row: int, text: str, remedy: str) -> float:
+    """One cell, `text` with a decimal point, with its problem noted; taken where a column holds anything unusual."""
     cell = cells.columns[index][row]
     if not cell:
         return np.nan
@@ -310,9 +358,9 @@ def _number(ledger: Ledger, cells: Cells, index: int, row: int, remedy: str) -> 
         message = _TO_FILL_IN
     else:
         try:
-            value = parse_number(cell)
+            value = parse_number(text)
         except QuantityError as error:
-            message = str(error)
+            message = str(error) if text == cell else f"{cell!r} is not a number"
         else:
             if abs(value) <= _TOO_LARGE:
                 return value

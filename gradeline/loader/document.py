@@ -3,15 +3,24 @@
 from __future__ import annotations
 
 import functools
-import re
-import tomllib
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from typing import Annotated, Any
 
 from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationError, create_model
 
+from gradeline.loader.bore import Diameter, MeasuredArea, Number, Shape, Thickness, Volume
 from gradeline.loader.cells import nearest
+from gradeline.loader.flow_keys import FlowTable, read_flow_table
+from gradeline.loader.fluids import Expansion, Humidity, LinePressure, Temperature, TwoViscosities
+from gradeline.loader.gauge_keys import (
+    EXAMPLES,
+    gauge_key_reader,
+    plain_value,
+    range_reader,
+    read_file_name,
+    read_leg_end,
+)
 from gradeline.loader.keys import (
     Bores,
     Chainage,
@@ -26,19 +35,31 @@ from gradeline.loader.keys import (
     read_date,
     read_loss_coefficient,
     read_reading_uncertainty,
-    read_text,
     uncertainty_reader,
     written,
 )
 from gradeline.loader.ledger import PLACEHOLDER, Ledger
+from gradeline.loader.tables import read_data
+from gradeline.loader.toml import DOCUMENT
 from gradeline.quantities import Measured
 from gradeline.quantities.parsing import unit_of
 from gradeline.survey import GAUGE_KINDS, Stated
 
-__all__ = ["LINE_FLUIDS", "NAME", "Document", "FittingTable", "GaugeTable", "ReachTable", "read_document"]
+__all__ = [
+    "LINE_FLUIDS",
+    "NAME",
+    "Document",
+    "FittingTable",
+    "GaugeTable",
+    "LegTable",
+    "OfftakeTable",
+    "ReachTable",
+    "SideValveTable",
+    "read_document",
+]
 
 #: The file's name in the folder.
-NAME = "survey.toml"
+NAME = DOCUMENT
 
 #: Fluids whose density is known from their temperature, for the connecting line of a gauge, and where, K.
 LINE_FLUIDS = {"air": (223.15, 373.15), "mercury": (253.15, 373.15), "water": (273.15, 373.15)}
@@ -75,6 +96,14 @@ class FluidTable(_Table):
         ]
         | None
     ) = None
+    viscosity_at: TwoViscosities | None = None
+    density_temperature: Temperature | None = None
+    expansion: Expansion | None = None
+    properties: Text | None = None
+    u_density: RelativeUncertainty | None = None
+    u_viscosity: RelativeUncertainty | None = None
+    line_pressure: LinePressure | None = None
+    relative_humidity: Humidity | None = None
 
 
 class SiteTable(_Table):
@@ -95,9 +124,20 @@ class ReachTable(_Table):
     name: Text = Field(examples=["test length"])
     start: Chainage = Field(alias="from", examples=["0 m"])
     end: Chainage = Field(alias="to", examples=["5.5 m"])
-    diameter: Annotated[
-        Measured, BeforeValidator(measured_reader("length", "26.64 mm +/- 0.03 mm", 0, strict=True))
-    ] = Field(examples=["26.64 mm +/- 0.03 mm"])
+    diameter: Diameter | None = None
+    nominal: Diameter | None = None
+    wall_thickness: Thickness | None = None
+    lining: Thickness | None = None
+    fill_volume: Volume | None = None
+    fill_length: Diameter | None = None
+    shape: Shape | None = None
+    width: Diameter | None = None
+    height: Diameter | None = None
+    outer: Diameter | None = None
+    inner: Diameter | None = None
+    area: MeasuredArea | None = None
+    perimeter: Diameter | None = None
+    laminar_constant: Number | None = None
     wall: Text = Field(examples=["copper"])
     inlet: Truth = False
 
@@ -116,6 +156,28 @@ class FittingTable(_Table):
     recovery: Bores = 10.0
 
 
+class OfftakeTable(_Table):
+    """One ``[[offtake]]``."""
+
+    name: Text = Field(examples=["hydrant 4"])
+    at: Chainage = Field(examples=["310 m"])
+    flow: (
+        Annotated[Measured, BeforeValidator(measured_reader("flow", "2 L/s +/- 0.1 L/s", 0, strict=True))]
+        | None
+    ) = None
+    u_flow: Annotated[Stated, BeforeValidator(uncertainty_reader("flow", "2 %", kind="either"))] | None = None
+
+
+class SideValveTable(_Table):
+    """One ``[[side_valve]]``."""
+
+    name: Text = Field(examples=["lane valve"])
+    state: Annotated[str, BeforeValidator(choice_reader("shut", "open", "unknown"))] = Field(
+        examples=["shut"]
+    )
+    at: Chainage | None = None
+
+
 class UncertaintyTable(_Table):
     """``[uncertainty]``."""
 
@@ -129,6 +191,17 @@ class UncertaintyTable(_Table):
     friction_law: RelativeUncertainty | None = None
 
 
+class LegTable(_Table):
+    """One ``[[gauge.NAME.leg]]``."""
+
+    fluid: Text = Field(examples=["mercury"])
+    density: (
+        Annotated[Measured, BeforeValidator(measured_reader("density", "868 kg/m^3", 0, strict=True))] | None
+    ) = None
+    start: Annotated[float | str, BeforeValidator(read_leg_end)] = Field(alias="from", examples=["T1"])
+    end: Annotated[float | str, BeforeValidator(read_leg_end)] = Field(alias="to", examples=["1.2 m"])
+
+
 @dataclass(frozen=True)
 class GaugeTable:
     """One ``[gauge.NAME]``: its kind, None where that is unknown, and its values, None where any is at fault."""
@@ -136,6 +209,7 @@ class GaugeTable:
     name: str
     kind: str | None
     values: Mapping[str, Any] | None
+    legs: tuple[LegTable | None, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -151,8 +225,11 @@ class Document:
     uncertainty: UncertaintyTable | None
     reaches: tuple[ReachTable | None, ...]
     fittings: tuple[FittingTable | None, ...]
+    offtakes: tuple[OfftakeTable | None, ...] = ()
+    side_valves: tuple[SideValveTable | None, ...] = ()
     gauges: Mapping[str, GaugeTable] = field(default_factory=dict)
     units: Mapping[str, str] = field(default_factory=dict)
+    flow: FlowTable | None = field(default_factory=FlowTable)
 
 
 @functools.cache
@@ -167,28 +244,14 @@ def _gauge_model(kind: str) -> type[_Table]:
         "u_zero": (reading | None, None),
         "u_scale": (RelativeUncertainty | None, None),
     }
-    examples = {"length": "0.80 m", "angle": "30 deg", "temperature": "18 degC"}
+    span = range_reader(known.reading, "0 to 1.2 m" if known.reading == "length" else "0 to 600 kPa")
+    fields["range"] = (Annotated[Any, BeforeValidator(span)], None)
+    if not known.legs:
+        fields["calibration"] = (Annotated[str | None, BeforeValidator(read_file_name)], None)
     for name, key in known.keys.items():
-        reader: Callable[[object], Any]
-        if name == "line_fluid":
-            reader = choice_reader(*LINE_FLUIDS)
-        elif key.dimension == "text":
-            reader = read_text
-        else:
-            low, strict = (0.0, True) if key.positive else (None, False)
-            high = 1.5708 if key.dimension == "angle" else None
-            reader = measured_reader(
-                key.dimension, examples.get(key.dimension, "1"), low, high, strict=strict
-            )
-        annotated = Annotated[Any, BeforeValidator(reader)]
-        fields[name] = (
-            (annotated, Field(examples=[examples.get(key.dimension, "water")]))
-            if key.required
-            else (
-                annotated,
-                None,
-            )
-        )
+        annotated = Annotated[Any, BeforeValidator(gauge_key_reader(name, key, tuple(LINE_FLUIDS)))]
+        example = key.example or EXAMPLES.get(key.dimension, "1")
+        fields[name] = (annotated, Field(examples=[example])) if key.required else (annotated, None)
     return create_model("Gauge", __base__=_Table, kind=(Text, ...), **fields)
 
 
@@ -198,8 +261,13 @@ _SINGLE: Mapping[str, type[_Table]] = {
     "site": SiteTable,
     "uncertainty": UncertaintyTable,
 }
-_LISTS: Mapping[str, type[_Table]] = {"reach": ReachTable, "fitting": FittingTable}
-_TOP_LEVEL = (*_SINGLE, *_LISTS, "gauge")
+_LISTS: Mapping[str, type[_Table]] = {
+    "reach": ReachTable,
+    "fitting": FittingTable,
+    "offtake": OfftakeTable,
+    "side_valve": SideValveTable,
+}
+_TOP_LEVEL = (*_SINGLE, *_LISTS, "gauge", "flow")
 
 
 def read_document(ledger: Ledger) -> Document | None:
@@ -207,22 +275,8 @@ def read_document(ledger: Ledger) -> Document | None:
 
     Every fault is noted in `ledger` under its key, such as ``reach[1].diameter`` (the first reach is 1).
     """
-    text = ledger.text_of(NAME)
-    if text is None:
-        return None
-    try:
-        data = tomllib.loads(text)
-    except ValueError as error:
-        found = re.search(
-            r"(.*?)\s*\(at (?:line (\d+), column (\d+)|end of document)\)", str(error), re.DOTALL
-        )
-        row = int(found[2]) if found and found[2] else (len(text.rstrip().splitlines()) if found else None)
-        column = f", at character {found[3]}" if found and found[3] else ""
-        said = found[1] if found else "a number or date is out of range"
-        ledger.problem(NAME, row, None, f"this is not TOML: {said}{column}; mend the line")
-        return None
-    except RecursionError:
-        ledger.problem(NAME, None, None, "the file nests lists or tables too deeply; write them flat")
+    data = read_data(ledger)
+    if data is None:
         return None
     ledger.order.update({path: place for place, path in enumerate(_paths(data))})
     for key in data:
@@ -242,8 +296,11 @@ def read_document(ledger: Ledger) -> Document | None:
         uncertainty=single["uncertainty"] if "uncertainty" in data else UncertaintyTable(),  # type: ignore[arg-type]
         reaches=lists["reach"],  # type: ignore[arg-type]
         fittings=lists["fitting"],  # type: ignore[arg-type]
+        offtakes=lists["offtake"],  # type: ignore[arg-type]
+        side_valves=lists["side_valve"],  # type: ignore[arg-type]
         gauges=_gauges(ledger, data.get("gauge")),
         units=_units(data),
+        flow=read_flow_table(ledger, data.get("flow"), _validate),
     )
 
 
@@ -259,7 +316,7 @@ def _units(data: Mapping[str, Any]) -> dict[str, str]:
         for path, table in tables.items()
         if isinstance(table, dict)
         for key, value in table.items()
-        if isinstance(value, str) and (unit := unit_of(value))
+        if isinstance(value, str) and (unit := unit_of(plain_value(value)))
     }
 
 
@@ -311,14 +368,28 @@ def _gauges(ledger: Ledger, data: object) -> dict[str, GaugeTable]:
             kind = None
         else:
             kind = kind.strip()
-            model = _validate(ledger, _gauge_model(kind), table, path)
+            legs, keys = _legs(ledger, kind, table, path)
+            model = _validate(ledger, _gauge_model(kind), keys, path)
             values = (
                 None if model is None else {each: getattr(model, each) for each in type(model).model_fields}
             )
-            gauges[name] = GaugeTable(name, kind, values)
+            gauges[name] = GaugeTable(name, kind, values, legs)
             continue
         gauges[name] = GaugeTable(name, None, None)
     return gauges
+
+
+def _legs(
+    ledger: Ledger, kind: str, table: dict[str, Any], path: str
+) -> tuple[tuple[LegTable | None, ...], dict[str, Any]]:
+    """The legs of a gauge that is described by them, and its other keys."""
+    if not GAUGE_KINDS[kind].legs:
+        return (), table
+    rest = {key: value for key, value in table.items() if key != "leg"}
+    if "leg" not in table:
+        ledger.problem(NAME, None, path, f"the gauge has no legs; describe each one with [[{path}.leg]]")
+        return (), rest
+    return _list(ledger, LegTable, table["leg"], f"{path}.leg"), rest  # type: ignore[return-value]
 
 
 def _validate(ledger: Ledger, model: type[_Table], data: object, path: str) -> _Table | None:

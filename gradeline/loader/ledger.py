@@ -6,9 +6,13 @@ import hashlib
 import re
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from gradeline.errors import Problem, SurveyError
 from gradeline.survey import SourceFile
+
+if TYPE_CHECKING:
+    from gradeline.loader.tables import Source
 
 __all__ = ["CONTROL", "LARGEST_FILE", "PLACEHOLDER", "Ledger"]
 
@@ -47,6 +51,8 @@ class Ledger:
     order : dict
         Where each TOML key, or each column by ``file: heading``, stands in its file, so that problems are told in
         that order.
+    source : Source or None
+        Where the survey's tables are; None stands for files in the folder.
     """
 
     folder: Path
@@ -55,6 +61,7 @@ class Ledger:
     assumptions: list[str] = field(default_factory=list)
     cautions: list[str] = field(default_factory=list)
     order: dict[str, int] = field(default_factory=dict)
+    source: Source | None = None
 
     def problem(self, file: str, row: int | None, column: str | None, message: str) -> None:
         """Note one fault at its place."""
@@ -63,7 +70,8 @@ class Ledger:
     def raise_problems(self) -> None:
         """Raise SurveyError with all that was noted, where there is anything."""
         if self.problems:
-            raise SurveyError(sorted(self.problems, key=self._key_place))
+            ordered = sorted(self.problems, key=self._key_place)
+            raise SurveyError(ordered if self.source is None else map(self.source.placed, ordered))
 
     def _key_place(self, problem: Problem) -> int:
         """Where the key or the column of a problem stands in its file; the error sorts by file and row."""
@@ -79,6 +87,11 @@ class Ledger:
 
         UTF-8 with or without a byte order mark and UTF-16 are read.
         """
+        content = self.content_of(name, required=required)
+        return None if content is None else self._decode(name, content)
+
+    def content_of(self, name: str, *, required: bool = True, largest: int = LARGEST_FILE) -> bytes | None:
+        """Return the bytes of a file in the folder, at most `largest`; None (with a problem noted) where that fails."""
         path = self.folder / name
         if not path.is_file():
             if required:
@@ -86,9 +99,9 @@ class Ledger:
                 self.problem(name, None, None, f"the file is missing{other or '; add it to the folder'}")
             return None
         try:
-            if path.stat().st_size > LARGEST_FILE:
+            if path.stat().st_size > largest:
                 self.problem(
-                    name, None, None, f"the file is larger than {LARGEST_FILE // 10**6} MB; split the survey"
+                    name, None, None, f"the file is larger than {largest // 10**6} MB; split the survey"
                 )
                 return None
             content = path.read_bytes()
@@ -98,7 +111,7 @@ class Ledger:
             )
             return None
         self.files.append(SourceFile(name, hashlib.sha256(content).hexdigest()))
-        return self._decode(name, content)
+        return content
 
     def _beside(self, path: Path) -> str | None:
         """What a user may have put there instead of a csv file."""

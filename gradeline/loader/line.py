@@ -3,17 +3,18 @@
 from __future__ import annotations
 
 import itertools
+import math
 from collections.abc import Sequence
 from typing import Any, Literal, cast
 
+from gradeline.loader.bore import Bore, BoreFaultError, bore_of
 from gradeline.loader.document import LINE_FLUIDS, NAME, Document, FittingTable, GaugeTable, ReachTable
 from gradeline.loader.ledger import Ledger
 from gradeline.quantities import Measured
-from gradeline.survey import GAUGE_KINDS, Fitting, Fluid, Gauge, Reach, Site, Stated, StatedUncertainties
+from gradeline.survey import GAUGE_KINDS, Fitting, Fluid, Gauge, Leg, Reach, Site, Stated, StatedUncertainties
 
 __all__ = [
     "build_fittings",
-    "build_fluid",
     "build_gauge",
     "build_reaches",
     "build_site",
@@ -26,6 +27,8 @@ __all__ = [
 _SAME_PLACE = 1e-6
 _ROUNDING = 1e-9
 _SMALLEST_BORE, _LARGEST_BORE = 1e-4, 20.0
+#: The key that a bore out of bounds is told at, where it was not stated itself.
+_WAYS_IN = ("nominal", "fill_volume", "area", "width", "outer")
 
 
 def within_line(chainage: float, reaches: Sequence[Reach]) -> float | None:
@@ -40,56 +43,6 @@ def within_line(chainage: float, reaches: Sequence[Reach]) -> float | None:
     """
     start, end = reaches[0].start, reaches[-1].end
     return min(max(chainage, start), end) if start - _ROUNDING <= chainage <= end + _ROUNDING else None
-
-
-def build_fluid(ledger: Ledger, document: Document) -> Fluid | None:
-    """Return the flowing fluid, None where its table is at fault."""
-    table = document.fluid
-    if table is None:
-        return None
-    given = {
-        "density": table.density,
-        "viscosity": table.viscosity,
-        "kinematic_viscosity": table.kinematic_viscosity,
-    }
-    stated = [key for key, value in given.items() if value is not None]
-    if table.name == "water":
-        for key in stated:
-            ledger.problem(
-                NAME,
-                None,
-                f"fluid.{key}",
-                "water has its properties from the temperature; leave the key out, or give the fluid another name",
-            )
-        return None if stated else Fluid("water")
-    if not stated:
-        hint = " (did you mean 'water'?)" if _near_water(table.name) else ""
-        ledger.problem(
-            NAME,
-            None,
-            "fluid.name",
-            f"unknown fluid {table.name!r}{hint}; known is water, any other fluid needs density and viscosity",
-        )
-        return None
-    if table.density is None:
-        ledger.problem(
-            NAME, None, "fluid.density", 'the key is missing; add it, such as density = "868 kg/m^3"'
-        )
-    if table.viscosity is None and table.kinematic_viscosity is None:
-        ledger.problem(
-            NAME, None, "fluid.viscosity", 'the key is missing; add it, such as viscosity = "31 mPa s"'
-        )
-    if table.viscosity is not None and table.kinematic_viscosity is not None:
-        ledger.problem(
-            NAME, None, "fluid.kinematic_viscosity", "viscosity is given as well; keep one of the two"
-        )
-    return Fluid(table.name, table.density, table.viscosity, table.kinematic_viscosity)
-
-
-def _near_water(name: str) -> bool:
-    import difflib  # noqa: PLC0415
-
-    return bool(difflib.get_close_matches(name.casefold(), ["water"], cutoff=0.6))
 
 
 def build_site(document: Document) -> Site:
@@ -116,13 +69,17 @@ def build_reaches(ledger: Ledger, document: Document) -> tuple[Reach, ...] | Non
                 f"the reach ends at {table.end:g} m, not after its start at {table.start:g} m; "
                 "chainage increases downstream",
             )
-        _check_bore(ledger, document, table, path)
+        bore = _bore(ledger, document, table, path)
         if any(table.name == other.name for other in reaches):
             sound = False
             ledger.problem(
                 NAME, None, f"{path}.name", f"another reach is called {table.name!r}; give each its own name"
             )
-        reaches.append(Reach(table.name, table.start, table.end, table.diameter, table.wall, table.inlet))
+        if bore is None:
+            continue
+        reaches.append(
+            Reach(table.name, table.start, table.end, bore.diameter, table.wall, table.inlet, bore.section)
+        )
     if len(reaches) < len(document.reaches):
         return None
     for place, (before, after) in enumerate(itertools.pairwise(reaches), start=2):
@@ -138,9 +95,32 @@ def build_reaches(ledger: Ledger, document: Document) -> tuple[Reach, ...] | Non
     return tuple(reaches) if sound and reaches else None
 
 
-def _check_bore(ledger: Ledger, document: Document, table: ReachTable, path: str) -> None:
+def _bore(ledger: Ledger, document: Document, table: ReachTable, path: str) -> Bore | None:
+    """The bore of a reach with what is said of it, None where its keys are at fault."""
+    try:
+        bore = bore_of(table)
+    except BoreFaultError as fault:
+        ledger.problem(NAME, None, f"{path}.{fault.key}", fault.message)
+        return None
+    key = "diameter"
+    if table.diameter is None:
+        key = next(name for name in _WAYS_IN if getattr(table, name) is not None)
+    _check_bore(ledger, document, table, bore.diameter.value, f"{path}.{key}")
+    if bore.said is not None:
+        ledger.assumptions.append(f"The bore of reach {table.name!r} {bore.said}.")
+    if bore.unstated:
+        what = " and the ".join(bore.unstated)
+        verb = "is" if len(bore.unstated) == 1 else "are"
+        ledger.cautions.append(
+            f"The uncertainty of the {what} of reach {table.name!r} {verb} not stated: it contributes nothing to that of the "
+            "bore."
+        )
+    return bore
+
+
+def _check_bore(ledger: Ledger, document: Document, table: ReachTable, bore: float, key: str) -> None:
     """Note a bore that no pipe has, most often one in the wrong unit."""
-    bore, length = table.diameter.value, table.end - table.start
+    length = table.end - table.start
     on_plan = document.survey is not None and document.survey.chainage_is == "plan"  # a steep pipe is longer
     if bore > _LARGEST_BORE:
         fault = f"a bore of {bore:g} m is above {_LARGEST_BORE:g} m"
@@ -150,7 +130,7 @@ def _check_bore(ledger: Ledger, document: Document, table: ReachTable, path: str
         fault = f"a bore of {bore:g} m is larger than the reach's length of {length:g} m"
     else:
         return
-    ledger.problem(NAME, None, f"{path}.diameter", f"{fault}; is the unit right? Mend the value or the unit")
+    ledger.problem(NAME, None, key, f"{fault}; is the unit right? Mend the value or the unit")
 
 
 def build_fittings(
@@ -209,7 +189,7 @@ def _change_of_bore(
     boundaries = [
         after.start
         for before, after in itertools.pairwise(reaches)
-        if before.diameter.value != after.diameter.value
+        if before.diameter.value != after.diameter.value or before.section != after.section
     ]
     at = next((boundary for boundary in boundaries if abs(boundary - table.at) <= _SAME_PLACE), None)
     if at is None:
@@ -242,7 +222,12 @@ def build_gauge(table: GaugeTable) -> Gauge | None:
         table.name,
         table.kind,
         cast("dict[str, Measured | str]", settings),
-        *(_value(values[key]) for key in ("uncertainty", "resolution", "u_zero", "u_scale")),
+        reading_u=_value(values["uncertainty"]),
+        resolution=_value(values["resolution"]),
+        zero_u=_value(values["u_zero"]),
+        scale_u=_value(values["u_scale"]),
+        span=values["range"],
+        legs=tuple(Leg(leg.fluid, leg.density, leg.start, leg.end) for leg in table.legs if leg is not None),
     )
 
 
@@ -264,12 +249,14 @@ def check_gauge_temperatures(
     """
     for gauge in document.gauges.values():
         values = gauge.values or {}
-        flowing = "water" if fluid.density is None else None
+        flowing = "water" if fluid.is_water else None
         for key, name in (
             ("column_temperature", flowing),
             ("line_temperature", values.get("line_fluid") or flowing),
         ):
             stated = values.get(key)
+            if name is None and stated is not None and fluid.follows_temperature:
+                _check_own_span(ledger, f"gauge.{gauge.name}.{key}", fluid, stated.value)
             if name is None or (stated is None and (name == flowing or key == "column_temperature")):
                 continue
             low, high = LINE_FLUIDS[name]
@@ -289,9 +276,22 @@ def check_gauge_temperatures(
             )
 
 
+def _check_own_span(ledger: Ledger, key: str, fluid: Fluid, temperature: float) -> None:
+    """Note a column or line of the flowing fluid where the properties of that are not known."""
+    low, high = fluid.span or (0.0, math.inf)
+    if not low <= temperature <= high:
+        ledger.problem(
+            NAME,
+            None,
+            key,
+            f"the temperature does not lie from {low - 273.15:g} to {high - 273.15:g} degC, where the density of {fluid.name} is "
+            "known; mend the value or the unit",
+        )
+
+
 def check_given_fluid(ledger: Ledger, document: Document, fluid: Fluid) -> None:
     """Note the temperatures of columns and lines that change nothing, since the fluid's density is given."""
-    if fluid.density is None:
+    if fluid.density is None or fluid.expansion is not None:
         return
     for gauge in document.gauges.values():
         values = gauge.values or {}

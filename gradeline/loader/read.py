@@ -3,15 +3,20 @@
 from __future__ import annotations
 
 import os
+from collections.abc import Mapping
+from dataclasses import replace
 from pathlib import Path
 
 from gradeline.errors import SurveyError
+from gradeline.flow_methods import FlowSetup
 from gradeline.loader.axis import along_axis
 from gradeline.loader.document import NAME, Document, read_document
+from gradeline.loader.fluids import build_fluid, state_fluid, temperature_rule
+from gradeline.loader.gauge_columns import check_columns, observe, with_gauge_columns
+from gradeline.loader.gauges import check_gauges, read_calibration
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.line import (
     build_fittings,
-    build_fluid,
     build_gauge,
     build_reaches,
     build_site,
@@ -19,23 +24,36 @@ from gradeline.loader.line import (
     check_gauge_temperatures,
     check_given_fluid,
 )
+from gradeline.loader.offtakes import Branch, build_branches
 from gradeline.loader.readings import read_runs
 from gradeline.loader.repeats import RunTable
+from gradeline.loader.side_valves import build_side_valves, state_side_valves
 from gradeline.loader.statements import state_assumptions, state_cautions
+from gradeline.loader.tables import source_of
 from gradeline.loader.taps import TapTable, read_taps
-from gradeline.survey import Fitting, Fluid, Observation, Reach, StatedUncertainties, Survey
+from gradeline.survey import Calibration, Fitting, Fluid, Reach, SideValve, StatedUncertainties, Survey
 
 __all__ = ["read_survey"]
 
 
-def read_survey(path: str | os.PathLike[str]) -> Survey:
-    """Return the survey that a folder holds.
+def read_survey(
+    path: str | os.PathLike[str],
+    *,
+    diameter: str | None = None,
+    flow: str | None = None,
+    temperature: str | None = None,
+) -> Survey:
+    """Return the survey that a folder, a workbook or one table of heads holds.
 
     Parameters
     ----------
     path : str or path
         A folder with ``survey.toml``, ``taps.csv`` and ``readings.csv``, and ``runs.csv`` where the readings are
-        listed one a row.
+        listed one a row (the tables may be ``.parquet`` instead); an ``.xlsx`` with the sheets ``survey``, ``taps``,
+        ``readings`` and perhaps ``runs``; or one table with columns such as ``chainage [m]`` and ``head [mm]``.
+    diameter, flow, temperature : str or None
+        For one table of heads, and only for it: bore, flow and temperature with their units, such as
+        ``"26.6 mm +/- 0.1 mm"``, ``"0.84 L/s"`` and ``"18 degC"``.
 
     Returns
     -------
@@ -46,6 +64,9 @@ def read_survey(path: str | os.PathLike[str]) -> Survey:
     ------
     SurveyError
         With every problem of every file at once: its place, the rule, the value found and the remedy.
+    UsageError
+        Where diameter, flow or temperature are missing or at fault beside one table of heads, or given beside a
+        survey that says them itself.
 
     Examples
     --------
@@ -54,33 +75,51 @@ def read_survey(path: str | os.PathLike[str]) -> Survey:
         ...
     gradeline.errors.SurveyError: no such folder: there is no such folder; give the folder that holds survey.toml
     """
-    folder = Path(path)
-    ledger = Ledger(folder)
-    if not folder.is_dir():
-        what = "this is a file, not a folder" if folder.is_file() else "there is no such folder"
-        ledger.problem(str(folder), None, None, f"{what}; give the folder that holds {NAME}")
+    path = Path(path)
+    ledger = Ledger(path.parent if path.is_file() else path)
+    ledger.source = source_of(ledger, path, {"diameter": diameter, "flow": flow, "temperature": temperature})
+    if ledger.source is None:
         ledger.raise_problems()
     document = read_document(ledger)
     fluid = reaches = None
     fittings: tuple[Fitting, ...] = ()
+    branches: tuple[Branch, ...] = ()
     stated = StatedUncertainties()
     if document is not None:
-        fluid = build_fluid(ledger, document)
+        fluid = build_fluid(ledger, document.fluid)
         if fluid is not None:
             check_given_fluid(ledger, document, fluid)
         reaches = build_reaches(ledger, document)
         fittings = build_fittings(ledger, document, reaches)
+        branches = build_branches(ledger, document, reaches)
         stated = build_stated(ledger, document)
     described = document.gauges if document is not None else {}
     taps = read_taps(ledger, described, reaches)
+    calibrations = {name: read_calibration(ledger, gauge) for name, gauge in described.items()}
     runs = read_runs(
         ledger,
-        taps,
-        is_water=None if fluid is None else fluid.density is None and fluid.name == "water",
+        None if taps is None else with_gauge_columns(taps, described),
+        is_water=None if fluid is None else fluid.is_water,
+        rule=temperature_rule(fluid),
+        branches=branches,
         flow_u=stated.flow,
+        flow=document.flow if document is not None else None,
     )
     if document is not None and fluid is not None and runs is not None:
         check_gauge_temperatures(ledger, document, fluid, runs.runs["temperature"].tolist())
+    if document is not None:
+        check_gauges(
+            ledger,
+            document,
+            fluid,
+            None if taps is None else taps.taps,
+            [] if runs is None else runs.runs["temperature"].tolist(),
+        )
+    if taps is not None and runs is not None:
+        check_columns(ledger, described, taps, runs)
+    side_valves = (
+        () if document is None else build_side_valves(ledger, document, None if taps is None else taps.taps)
+    )
     ledger.raise_problems()
     if document is None or fluid is None or reaches is None or taps is None or runs is None:
         raise SurveyError(ledger.problems)  # a fault that nobody noted would be a slip of this program
@@ -90,9 +129,13 @@ def read_survey(path: str | os.PathLike[str]) -> Survey:
         fluid=fluid,
         reaches=reaches,
         fittings=fittings,
+        branches=branches,
+        side_valves=side_valves,
         stated=stated,
         table=taps,
+        calibrations=calibrations,
         runs=runs,
+        path=path,
     )
 
 
@@ -103,34 +146,57 @@ def _compose(
     fluid: Fluid,
     reaches: tuple[Reach, ...],
     fittings: tuple[Fitting, ...],
+    branches: tuple[Branch, ...],
+    side_valves: tuple[SideValve, ...],
     stated: StatedUncertainties,
     table: TapTable,
+    calibrations: Mapping[str, Calibration | None],
     runs: RunTable,
+    path: Path,
 ) -> Survey:
     """The parts, sound each by itself, as one survey."""
-    gauges = tuple(gauge for each in document.gauges.values() if (gauge := build_gauge(each)) is not None)
+    gauges = tuple(
+        replace(gauge, calibration=calibrations.get(gauge.name))
+        for each in document.gauges.values()
+        if (gauge := build_gauge(each)) is not None
+    )
+    observed = observe(table, document.gauges, runs)
+    runs = observed.runs
     taps = table.taps
     header = document.survey
+    offtakes = tuple(one.offtake for one in branches)
     if header is not None and header.chainage_is == "plan":
+        # An off-take lies where a reach begins, also along the axis.
+        starts = [next(k for k, reach in enumerate(reaches) if reach.start == one.at) for one in offtakes]
         reaches, fittings, taps = along_axis(reaches, fittings, taps)
         ledger.assumptions.append(
             "Chainages are measured on the plan: they are made true lengths with the elevations of the taps, "
             "straight between taps and level before the first and after the last."
         )
+        offtakes = tuple(replace(one, at=reaches[k].start) for one, k in zip(offtakes, starts, strict=True))
+    setup = document.flow.setup if document.flow is not None else FlowSetup()
+    state_side_valves(ledger, side_valves, method=setup.method)
+    state_fluid(ledger, document.fluid, fluid, runs.runs["temperature"].tolist())
     state_assumptions(ledger, document, taps=table, gauges=gauges, fluid=fluid, runs=runs)
     state_cautions(ledger, stated, fluid=fluid, reaches=reaches, taps=taps, gauges=gauges, runs=runs)
     return Survey(
-        title=(header.title if header is not None else None) or ledger.folder.resolve().name,
-        source=str(ledger.folder),
+        title=(header.title if header is not None else None)
+        or (path.stem if path.is_file() else path.resolve().name),
+        source=str(path),
         reaches=reaches,
         taps=taps,
         gauges=gauges,
-        observations=tuple(Observation(gauge=tap.gauge or "", tap=tap.name) for tap in taps),
+        observations=observed.observations,
+        levels=observed.levels,
         runs=runs.runs,
         readings=runs.readings,
         repeats=runs.repeats,
         spreads=runs.spreads,
+        flow=setup,
+        flow_readings=runs.flow_readings,
         fittings=fittings,
+        offtakes=offtakes,
+        side_valves=side_valves,
         fluid=fluid,
         site=build_site(document),
         stated=stated,
@@ -140,7 +206,7 @@ def _compose(
         date=header.date if header is not None else None,
         units={
             **{f"{NAME} {key}": unit for key, unit in document.units.items()},
-            **{f"{table.file} {column}": unit for column, unit in table.units.items()},
+            **{f"taps.csv {column}": unit for column, unit in table.units.items()},
             **runs.units,
         },
     )

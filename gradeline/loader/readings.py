@@ -3,16 +3,37 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 
 import numpy as np
+import pandas as pd
 
 from gradeline.errors import QuantityError
-from gradeline.loader.cells import Cells, Hints, column_index, nearest, numbers, read_cells, round_brackets
+from gradeline.loader.cells import Cells, Hints, column_index, nearest, numbers, round_brackets
 from gradeline.loader.columns import Columns, Known, read_unit
+from gradeline.loader.flow_keys import FlowTable
+from gradeline.loader.flow_rows import (
+    check_flows,
+    flow_columns,
+    flow_of_rows,
+    flow_readings,
+    with_flow_columns,
+)
+from gradeline.loader.fluids import TemperatureRule
 from gradeline.loader.grouped import TOLD_SINGLY, by_name, quoted, rows_phrase
 from gradeline.loader.ledger import Ledger
+from gradeline.loader.offtakes import Branch, branch_columns, check_branches, with_branches
+from gradeline.loader.reference import reference_change
 from gradeline.loader.repeats import Rows, RunTable, averaged, check_repeated_flows
+from gradeline.loader.spans import check_spans
+from gradeline.loader.tables import place_of, read_table
 from gradeline.loader.taps import TapTable
+from gradeline.loader.temperatures import (
+    TEMPERATURE_COLUMNS,
+    check_temperatures,
+    temperature_of_rows,
+    with_temperature_u,
+)
 from gradeline.quantities import Unit, parse_unit
 from gradeline.survey import Stated
 
@@ -20,18 +41,17 @@ __all__ = ["RunTable", "read_runs"]
 
 _RUN_COLUMNS: Mapping[str, Known] = {
     "run": Known(required=True),
-    "flow": Known(("flow",), required=True, remedy="give the flow, 0 for a static run"),
-    "temperature": Known(("temperature",), remedy="give the temperature of the fluid"),
+    **TEMPERATURE_COLUMNS,
 }
 _LONG_COLUMNS: Mapping[str, Known] = {
     "run": Known(required=True),
     "tap": Known(required=True),
     "reading": Known(("length", "pressure"), required=True, own_unit=False),
     "unit": Known(),
+    "reference": Known(("length", "pressure"), remedy="read the reference gauge beside every reading"),
 }
 _NOT_READ = "leave the cell empty if the tap was not read"
 _EMPTY_SINGLY = 10
-_ZERO_CELSIUS, _BOILING = 273.15, 373.15
 
 
 def read_runs(
@@ -40,6 +60,9 @@ def read_runs(
     *,
     is_water: bool | None,
     flow_u: Stated | None,
+    flow: FlowTable | None = None,
+    rule: TemperatureRule | None = None,
+    branches: Sequence[Branch] = (),
 ) -> RunTable | None:
     """Return the runs of the survey, None where their tables cannot be read.
 
@@ -53,53 +76,75 @@ def read_runs(
         Whether each run needs a temperature; None where the fluid is not known.
     flow_u : Stated or None
         Stated uncertainty of one flow, against which repeats are held.
+    flow : FlowTable or None
+        How the flow was measured; None: it is given itself.
+    rule : TemperatureRule or None
+        What the temperatures are held to where the fluid is neither water nor constant.
+    branches : sequence of Branch
+        The off-takes.
 
     Returns
     -------
     RunTable or None
         Means over the repeats of each run, SI.
     """
-    cells = read_cells(ledger, "readings.csv")
+    cells = read_table(ledger, "readings")
     if cells is None:
         return None
     long = column_index(cells, "tap") is not None
     if long:
-        run_cells = read_cells(ledger, "runs.csv")
-        rows = None if run_cells is None else _run_rows(ledger, run_cells, others=False)
+        run_cells = read_table(ledger, "runs")
+        rows = None if run_cells is None else _run_rows(ledger, run_cells, flow, branches, others=False)
         units = _long_readings(ledger, cells, rows, taps)
     else:
-        if (ledger.folder / "runs.csv").exists():
+        runs_place = place_of(ledger, "runs")
+        if runs_place is not None:
             ledger.problem(
-                "runs.csv",
+                runs_place,
                 None,
                 None,
-                "readings.csv has a column for each tap and holds the runs itself; take runs.csv away, "
+                f"{cells.file} has a column for each tap and holds the runs itself; take {runs_place} away, "
                 "or list the readings by 'run', 'tap' and 'reading'",
             )
-        rows = _run_rows(ledger, cells, others=True)
+        rows = _run_rows(ledger, cells, flow, branches, others=True)
         units = _wide_readings(ledger, cells, rows, taps)
     if rows is None:
         return None
-    _check_runs(ledger, rows, is_water=is_water)
+    check_temperatures(ledger, rows, is_water=is_water, rule=rule)
+    check_flows(rows, flow)
+    check_branches(ledger, rows, branches)
     check_repeated_flows(rows, flow_u)
     if taps is None:
         return None
     _check_taken(rows)
     table_units = {name: unit.text for name, unit in rows.columns.units.items() if unit is not None}
-    gauges = {tap.name: tap.gauge for tap in taps.taps}
-    return averaged(
+    gauges = {**{tap.name: tap.gauge for tap in taps.taps}, **taps.gauge_of}
+    check_spans(ledger, cells.file, rows, taps)
+
+    def with_line_columns(runs: pd.DataFrame) -> pd.DataFrame:
+        return with_branches(with_temperature_u(ledger, runs, rows), rows, branches)
+
+    table = averaged(
         rows, taps.distinct, [gauges.get(name) for name in taps.distinct], table_units | units, listed=long
+    )
+    return replace(
+        table,
+        runs=with_line_columns(with_flow_columns(table.runs, rows)),
+        flow_readings=flow_readings(rows, flow),
     )
 
 
-def _run_rows(ledger: Ledger, cells: Cells, *, others: bool) -> Rows:
-    columns = Columns(ledger, cells, _RUN_COLUMNS, others=others)
+def _run_rows(
+    ledger: Ledger, cells: Cells, flow: FlowTable | None, branches: Sequence[Branch], *, others: bool
+) -> Rows:
+    known = {**_RUN_COLUMNS, **flow_columns(flow), **branch_columns(branches)}
+    columns = Columns(ledger, cells, known, others=others)
     labels = columns.labels("run")
     return Rows(
         labels=labels,
         lines=cells.lines,
-        flow=columns.values("flow"),
-        temperature=columns.values("temperature"),
+        flow=flow_of_rows(ledger, columns, flow),
+        temperature=temperature_of_rows(ledger, columns),
         columns=columns,
         run_codes={label: code for code, label in enumerate(dict.fromkeys(labels))},
     )
@@ -121,9 +166,9 @@ def _wide_readings(
     read = set()
     misnamed: list[tuple[str, str, str]] = []
     places: list[int] = []
-    hints = Hints([*_RUN_COLUMNS, *names])
+    hints = Hints([*rows.columns.known, *names])
     for index, heading in enumerate(cells.headings):
-        if heading.name in _RUN_COLUMNS or heading in rows.columns.misnamed.values():
+        if heading.name in rows.columns.known or heading in rows.columns.misnamed.values():
             continue
         bracketed = round_brackets(heading, codes)
         if bracketed is not None:
@@ -132,13 +177,22 @@ def _wide_readings(
             given = np.array([bool(cell) for cell in cells.columns[index]])
             blocks.append((codes[bracketed[0]], np.full(len(cells), np.nan), given))
             continue
+        if heading.name in taps.bare and heading.name not in codes:
+            ledger.problem(
+                cells.file,
+                cells.heading_line,
+                heading.text,
+                f"the tap {heading.name!r} has no gauge in {taps.file}, where only differential gauges read it; name its gauge "
+                "there, or take the column away",
+            )
+            continue
         if heading.name not in codes:
             hint = hints(heading.name)
             ledger.problem(
                 cells.file,
                 cells.heading_line,
                 heading.text,
-                f"there is no tap {heading.name!r} in taps.csv and no such column; {hint}",
+                f"there is no tap {heading.name!r} in {taps.file} and no such column; {hint}",
             )
             continue
         read.add(heading.name)
@@ -159,8 +213,9 @@ def _wide_readings(
             heading_text,
             f"units stand in square brackets; write {f'{name} [{unit_text}]'!r}{others}",
         )
+    rows.present = frozenset(read)
     for name in names:
-        if name not in read:
+        if name not in read and name not in taps.optional:
             _unread(ledger, taps, name, f"has no column in {cells.file}; add one headed '{name} [unit]'")
     run_of_row = np.array([rows.run_codes[label] for label in rows.labels], dtype=int)
     rows.reading_runs = np.tile(run_of_row, len(blocks))
@@ -193,19 +248,22 @@ def _long_readings(
     known_runs = rows.run_codes if rows is not None else None
     known_taps = {name: code for code, name in enumerate(taps.distinct)} if taps is not None else None
     if known_runs is not None:
-        _unknown_labels(columns, "run", run_labels, known_runs, "runs.csv")
-    if known_taps is not None:
-        _unknown_labels(columns, "tap", tap_labels, known_taps, "taps.csv")
+        _unknown_labels(columns, "run", run_labels, known_runs, place_of(ledger, "runs") or "runs.csv")
+    if taps is not None and known_taps is not None:
+        _unknown_labels(columns, "tap", tap_labels, known_taps, taps.file)
     if "reading" not in columns or "reading" in cells.doubled or taps is None or known_taps is None:
         return {}
     given = np.array([bool(cell) for cell in columns.raw("reading")])
     values, units = _long_values(ledger, columns, tap_labels, given, taps)
     read = set(tap_labels)
     for name in known_taps:
-        if name not in read:
+        if name not in read and name not in taps.optional:
             _unread(ledger, taps, name, f"has no reading in {cells.file}; add its rows")
+    kinds = {taps.reads.get(name) for name in read & set(known_taps)}
+    values = values - reference_change(columns, run_labels, given, kinds.pop() if len(kinds) == 1 else None)
     if rows is None or known_runs is None:
         return units
+    rows.present, rows.referenced = frozenset(read), "reference" in columns
     runs = np.array([known_runs.get(label, -1) for label in run_labels], dtype=int)
     of_taps = np.array([known_taps.get(label, -1) for label in tap_labels], dtype=int)
     sound = (runs >= 0) & (of_taps >= 0)
@@ -313,44 +371,6 @@ def _long_unit(columns: Columns, row: int, text: str, dimension: str) -> Unit | 
 
 def _raw_numbers(ledger: Ledger, cells: Cells, index: int) -> np.ndarray:
     return numbers(ledger, cells, index, Unit("", "dimensionless", 1.0), remedy=_NOT_READ)
-
-
-def _check_runs(ledger: Ledger, rows: Rows, *, is_water: bool | None) -> None:
-    """Flows at or above zero, and temperatures at which the fluid flows."""
-    columns = rows.columns
-    if "flow" in columns:
-        raw = columns.raw("flow")
-        for row in [row for row, cell in enumerate(raw) if not cell]:
-            columns.problem(row, "flow", "the cell is empty; give the flow, 0 for a static run")
-        for row in np.flatnonzero(rows.flow < 0).tolist():
-            columns.problem(
-                row, "flow", f"{raw[row]} is negative; chainage increases downstream, so turn the line round"
-            )
-    if "temperature" not in columns:
-        if is_water and "temperature" not in columns.misnamed:
-            ledger.problem(
-                columns.cells.file,
-                columns.cells.heading_line,
-                None,
-                "the column 'temperature [degC]' is missing; water has its density and viscosity from it",
-            )
-        return
-    raw = columns.raw("temperature")
-    if is_water:
-        for row in [row for row, cell in enumerate(raw) if not cell]:
-            columns.problem(
-                row,
-                "temperature",
-                "the cell is empty; water has its density and viscosity from the temperature",
-            )
-        outside = (rows.temperature <= _ZERO_CELSIUS) | (rows.temperature > _BOILING)
-        rule = "does not lie above 0 degC and up to 100 degC, where water is a liquid; mend the value or the unit"
-    else:
-        outside = rows.temperature <= 0
-        rule = "lies below absolute zero; mend the value or the unit"
-    unit = columns.units["temperature"]
-    for row in np.flatnonzero(outside).tolist():
-        columns.problem(row, "temperature", f"{raw[row]} {unit.text if unit else ''} {rule}")
 
 
 def _check_taken(rows: Rows) -> None:

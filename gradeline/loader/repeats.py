@@ -24,7 +24,8 @@ class RunTable:
     """Runs and readings as `gradeline.survey.Survey` holds them, with the units they came in.
 
     `doubtful` tells the repeats that lie much further apart than the rest; `listed` says that the readings were
-    listed one a row.
+    listed one a row, `present` which columns of readings there are, and `referenced` that the change of a reference
+    gauge was taken out of them.
     """
 
     runs: pd.DataFrame
@@ -34,6 +35,9 @@ class RunTable:
     units: Mapping[str, str]
     doubtful: tuple[str, ...] = ()
     listed: bool = False
+    present: frozenset[str] = frozenset()
+    referenced: bool = False
+    flow_readings: pd.DataFrame = field(default_factory=pd.DataFrame)
 
 
 @dataclass
@@ -53,6 +57,8 @@ class Rows:
     reading_taps: np.ndarray = field(default_factory=lambda: np.empty(0, int))
     values: np.ndarray = field(default_factory=lambda: np.empty(0))
     given: np.ndarray = field(default_factory=lambda: np.empty(0, bool))
+    present: frozenset[str] = frozenset()
+    referenced: bool = False
     told: Callable[[int], str] = str
 
 
@@ -106,7 +112,17 @@ def averaged(
         pd.DataFrame(table.reshape(n_runs, n_taps), index=index, columns=list(names)) for table in tables
     )
     doubtful = _doubtful(rows, place, tables[2], names, gauges)
-    return RunTable(runs, readings, repeats, spreads, units, doubtful, listed)
+    return RunTable(
+        runs,
+        readings,
+        repeats,
+        spreads,
+        units,
+        doubtful,
+        listed,
+        present=rows.present,
+        referenced=rows.referenced,
+    )
 
 
 def _statistics(

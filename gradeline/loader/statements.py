@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from gradeline.loader.document import Document
+from gradeline.loader.gauge_statements import holds_mercury, state_gauge_assumptions
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.repeats import RunTable
 from gradeline.loader.taps import TapTable
@@ -42,7 +43,7 @@ def state_assumptions(
     note = ledger.assumptions.append
     if "fluid" not in ledger.order:
         note("The survey names no fluid: it is taken as water.")
-    if fluid.density is not None:
+    if not fluid.follows_temperature:
         note(
             f"The density and the viscosity of {fluid.name} are taken as constant: run temperatures do not change them."
         )
@@ -64,15 +65,16 @@ def state_assumptions(
             "it is taken to be at the pipe's axis."
         )
     for gauge in gauges:
-        if gauge.kind != "piezometer":
-            continue
+        if "zero" not in GAUGE_KINDS[gauge.kind].keys:
+            continue  # its readings are no heights above datum
         if "zero" not in gauge.settings:
             note(f"The zero of gauge {gauge.name!r} is not given: it is taken to be at the datum.")
         if "inclination" not in gauge.settings:
             note(f"The inclination of gauge {gauge.name!r} is not given: its scale is taken as upright.")
         if "bore" not in gauge.settings:
             note(f"The tube bore of gauge {gauge.name!r} is not given: no capillary rise is taken off.")
-    if len(gauges) == 1 and ("gauge" not in taps.columns):
+    state_gauge_assumptions(ledger, gauges, runs)
+    if len(gauges) == 1 and "gauge" not in taps.columns and not GAUGE_KINDS[gauges[0].kind].differential:
         note(f"The gauge {gauges[0].name!r} is the only one: it is taken to read every tap.")
     _state_repeats(ledger, runs)
     if document.survey is not None and document.survey.date is None:
@@ -116,9 +118,10 @@ def state_cautions(
     bores = [reach.name for reach in reaches if reach.diameter.u is None]
     if bores:
         note(f"The uncertainty of the bore is not stated for {_listed(bores)}: {nothing}. f grows as D⁵.")
-    if stated.flow is None:
+    given = runs.flow_readings.empty  # otherwise the reduction tells what the flow's readings lack
+    if stated.flow is None and given:
         note(f"The random uncertainty of the flow is not stated: {nothing}.")
-    if stated.flow_scale is None:
+    if stated.flow_scale is None and given:
         note(f"The calibration uncertainty of the flow (flow_scale) is not stated: {nothing}.")
     if stated.chainage is None and any(tap.chainage_u is None for tap in taps):
         own = any(tap.chainage_u is not None for tap in taps)
@@ -128,11 +131,16 @@ def state_cautions(
         note(f"The uncertainty of the elevation is not stated: {nothing}.")
     for gauge in gauges:
         read = [tap for tap in taps if tap.gauge == gauge.name]
-        if not read:
+        differential = GAUGE_KINDS[gauge.kind].differential
+        if not read and not differential:
             note(f"The gauge {gauge.name!r} reads no tap and is not used.")
             continue
         general = stated.reading_pressure if gauge.name in pressure else stated.reading
-        if gauge.reading_u is None and general is None and any(tap.reading_u is None for tap in read):
+        if (
+            gauge.reading_u is None
+            and general is None
+            and (differential or any(tap.reading_u is None for tap in read))
+        ):
             note(
                 f"The uncertainty of a reading of gauge {gauge.name!r} is not stated: it is estimated from the "
                 "scatter where there are taps and runs enough, and otherwise contributes nothing."
@@ -148,7 +156,7 @@ def state_cautions(
                 f"The {noun} of the {' and the '.join(unstated)} of gauge {gauge.name!r} {verb} not stated: "
                 f"{they} nothing to the results."
             )
-        if "bore" in gauge.settings and fluid.density is not None:
+        if "bore" in gauge.settings and not fluid.is_water:
             note(
                 f"The capillary rise in gauge {gauge.name!r} is taken with the surface tension of water, 0.0728 N/m, "
                 f"since that of {fluid.name} is not known."
@@ -170,11 +178,9 @@ def state_cautions(
             )
     ledger.cautions.extend(runs.doubtful)
     has_temperature = bool(np.isfinite(runs.runs["temperature"].to_numpy(float)).any())
-    if has_temperature and fluid.density is None and stated.temperature is None:
+    if has_temperature and fluid.follows_temperature and stated.temperature is None:
         note(f"The uncertainty of the temperature is not stated: {nothing}.")
-    if "mercury" in fluid.name.casefold() or any(
-        gauge.settings.get("line_fluid") == "mercury" for gauge in gauges
-    ):
+    if "mercury" in fluid.name.casefold() or any(holds_mercury(gauge) for gauge in gauges):
         note(
             "Mercury is poisonous, as a vapour too: fill and bleed such lines over a tray, in moving air, "
             "and have a spill kit at hand."

@@ -3,22 +3,23 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
-from gradeline.loader.cells import nearest, parse_heading, read_cells
+from gradeline.loader.cells import nearest, parse_heading
 from gradeline.loader.columns import Columns, Known
 from gradeline.loader.document import GaugeTable
 from gradeline.loader.grouped import TOLD_SINGLY, rows_phrase
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.line import within_line
+from gradeline.loader.tables import read_table
 from gradeline.survey import GAUGE_KINDS, Reach, Tap
 
 __all__ = ["RESERVED", "TapTable", "read_taps"]
 
 #: Names that columns of the readings have, so that no tap can be called so.
-RESERVED = ("run", "flow", "temperature", "tap", "reading", "unit")
+RESERVED = ("run", "flow", "temperature", "tap", "reading", "unit", "reference")
 
 _COLUMNS: Mapping[str, Known] = {
     "tap": Known(required=True),
@@ -53,7 +54,15 @@ class TapTable:
     rows : mapping of str to int
         The line of each tap in the file.
     file : str
-        Name of the file.
+        What messages call the table.
+    optional : frozenset of str
+        Columns of readings that need not be there: a differential gauge may be read in more than one way.
+    bare : frozenset of str
+        Taps without a gauge of their own.
+    gauge_of : mapping of str to str or None
+        The gauge of each column of readings.
+    spans : mapping of str to (float, float)
+        Lowest and highest reading of a column, SI.
     """
 
     names: tuple[str, ...]
@@ -63,6 +72,10 @@ class TapTable:
     columns: frozenset[str]
     rows: Mapping[str, int]
     file: str = "taps.csv"
+    optional: frozenset[str] = frozenset()
+    bare: frozenset[str] = frozenset()
+    gauge_of: Mapping[str, str | None] = field(default_factory=dict)
+    spans: Mapping[str, tuple[float, float]] = field(default_factory=dict)
 
     @property
     def distinct(self) -> list[str]:
@@ -76,7 +89,7 @@ def read_taps(
     reaches: Sequence[Reach] | None,
 ) -> TapTable | None:
     """Return ``taps.csv`` as taps, None where the file is missing or no table."""
-    cells = read_cells(ledger, "taps.csv")
+    cells = read_table(ledger, "taps")
     if cells is None:
         return None
     columns = Columns(ledger, cells, _COLUMNS)
@@ -102,6 +115,7 @@ def read_taps(
         units=units,
         columns=frozenset(columns.units),
         rows=dict(zip(names, cells.lines, strict=True)),
+        file=cells.file,
     )
 
 
@@ -157,28 +171,53 @@ def _check_names(columns: Columns, names: Sequence[str]) -> None:
 
 def _gauges_of(columns: Columns, gauges: Mapping[str, GaugeTable]) -> list[str | None]:
     """The gauge of each tap: as written, or the only one."""
-    only = next(iter(gauges)) if len(gauges) == 1 else None
+    differential = {
+        name: gauge.values or {}
+        for name, gauge in gauges.items()
+        if gauge.kind is not None and GAUGE_KINDS[gauge.kind].differential
+    }
+    # Only these read a tap each; the others name their taps themselves.
+    single = [name for name in gauges if name not in differential]
+    seen = {values.get(key) for values in differential.values() for key in ("upstream", "downstream")}
+    labels = columns.raw("tap")
+    # Where a gauge or its taps are at fault themselves, a tap that nobody names says nothing new.
+    unclaimed_is_told = all(values for values in differential.values()) and seen <= {None, *labels}
+    only = single[0] if len(single) == 1 else None
     found: list[str | None] = []
     for row, name in enumerate(columns.raw("gauge")):
-        if name in gauges:
+        if name in differential:
+            columns.problem(
+                row,
+                "gauge",
+                f"the gauge {name!r} reads a difference between two taps, which it names itself as upstream and "
+                "downstream; leave the cell empty",
+            )
+            found.append(None)
+        elif name in gauges:
             found.append(name)
+        elif not name and labels[row] in seen and (only is None or differential):
+            found.append(None)
         elif name and not gauges:
             found.append(None)  # that there is no gauge, or no survey.toml, is told already
         elif name:
             columns.problem(row, "gauge", f"unknown gauge {name!r}; {nearest(name, gauges)}")
             found.append(None)
         else:
-            if only is None and gauges and "gauge" in columns:
+            if gauges and not single and unclaimed_is_told:
                 columns.problem(
-                    row, "gauge", f"the cell is empty; say which gauge reads the tap ({', '.join(gauges)})"
+                    row, "tap", f"no gauge reads the tap {labels[row]!r}; take it away, or add its gauge"
+                )
+            elif only is None and single and "gauge" in columns:
+                columns.problem(
+                    row, "gauge", f"the cell is empty; say which gauge reads the tap ({', '.join(single)})"
                 )
             found.append(only)
-    if "gauge" not in columns and len(gauges) > 1:
+    if "gauge" not in columns and len(single) > 1:
         columns.ledger.problem(
             columns.cells.file,
             columns.cells.heading_line,
             None,
-            f"the column 'gauge' is missing; with {len(gauges)} gauges it says which one reads each tap",
+            f"the column 'gauge' is missing; with {len(single)} gauges it says which one reads each tap",
         )
     return found
 

@@ -68,6 +68,8 @@ DIMENSIONS: Mapping[str, Dimension] = MappingProxyType(
         "time": _dimension("a time", "s, min, h", time=1),
         "volume": _dimension("a volume", "L, m^3, ft^3, US_gal", length=3),
         "velocity": _dimension("a velocity", "m/s, ft/s", length=1, time=-1),
+        "surface tension": _dimension("a surface tension", "N/m, mN/m", mass=1, time=-2),
+        "thermal expansion": _dimension("a thermal expansion", "1/K", temperature=-1),
     }
 )
 
@@ -301,7 +303,9 @@ def _pint_unit(text: str, dimension: str) -> Any:
         raise QuantityError(f"{text!r} is not a unit that is known; {hint}") from error
     for name in dict(unit._units):
         for ambiguous, remedy in _AMBIGUOUS.items():
-            if name.endswith(ambiguous) and not name.endswith(("imperial_" + ambiguous, "_" + ambiguous)):
+            if name.endswith(ambiguous) and not name.endswith(
+                ("imperial_" + ambiguous, "_" + ambiguous, "newton")
+            ):
                 raise QuantityError(f"the unit {text!r} is ambiguous; {remedy}")
     return unit
 

@@ -10,11 +10,15 @@ from gradeline.errors import ReductionError
 from gradeline.reduction import tabulate
 from gradeline.reduction.choices import CORRECTIONS, excluded_readings
 from gradeline.reduction.corrections import static_corrections
+from gradeline.reduction.directions import compare_directions
+from gradeline.reduction.drift import steadied
 from gradeline.reduction.flags import flag_table
+from gradeline.reduction.flow import metered_flow, with_flow_inputs
+from gradeline.reduction.fluids import air_cautions
 from gradeline.reduction.friction import friction_of
 from gradeline.reduction.heads import heads_of, observation_kinds
 from gradeline.reduction.line import line_of
-from gradeline.reduction.media import media_of
+from gradeline.reduction.media import media_of, run_temperature_u
 from gradeline.reduction.runs import fit_survey, stated_readings
 from gradeline.reduction.statements import assumptions_of, cautions_of
 from gradeline.reduction.tables import RESULT_TABLES, Reduction
@@ -69,22 +73,26 @@ def reduce(
         raise ReductionError(f"the level of the intervals is between 0 and 1, such as 0.95; found {level}")
     if correct not in CORRECTIONS:
         raise ReductionError(f"to correct: {correct!r} is not one of {', '.join(CORRECTIONS)}")
+    metered = metered_flow(survey)
+    survey = metered.survey
     excluded = excluded_readings(survey, exclude)
     media = media_of(survey)
     line = line_of(survey)
     static = survey.runs["flow"].to_numpy(float) == 0
     corrections = static_corrections(
-        heads_of(survey, media),
+        with_flow_inputs(heads_of(survey, media), metered.inputs),
         static,
         survey.repeats.to_numpy(float),
         apply=correct == "static",
         excluded=excluded,
     )
+    corrections = steadied(corrections, survey, line, media)
     flowing = fit_survey(survey, media, line, corrections, excluded, keep_all=keep_all)
     walls = walls_of(survey, line, media, flowing, level=level)
     friction = friction_of(
-        line, media, flowing, walls, level=level, temperature_run=survey.stated.temperature_run or 0.0
+        line, media, flowing, walls, level=level, temperature_run=run_temperature_u(survey)[flowing.rows]
     )
+    directions = compare_directions(survey, line, flowing, friction, walls, level=level)
     kind, _ = observation_kinds(survey)
     base = np.array([part.base for part in flowing.fits.scatter])[kind]
     grade_lines = tabulate.grade_line_table(survey, line, media, flowing)
@@ -99,18 +107,31 @@ def reduce(
             "source": survey.source,
             "files": {file.name: file.sha256 for file in survey.files},
         },
-        assumptions=assumptions_of(
-            survey,
-            media,
-            line,
-            corrections,
-            flowing,
-            level=level,
-            correct=correct,
-            keep_all=keep_all,
-            exclude=exclude,
+        assumptions=(
+            *assumptions_of(
+                survey,
+                media,
+                line,
+                corrections,
+                flowing,
+                level=level,
+                correct=correct,
+                keep_all=keep_all,
+                exclude=exclude,
+            ),
+            *directions[0],
         ),
-        cautions=cautions_of(survey, line, corrections, flowing, walls, piezometric, crown, base),
+        cautions=(
+            *cautions_of(survey, line, corrections, flowing, walls, piezometric, crown, base),
+            *air_cautions(
+                survey.fluid,
+                survey.runs["run"].iloc[flowing.rows].tolist(),
+                media.density[flowing.rows],
+                media.gravity,
+                piezometric,
+            ),
+            *directions[1],
+        ),
         reaches=tabulate.reach_table(survey, line, flowing),
         runs=tabulate.run_table(survey, media, line, flowing, friction),
         walls=tabulate.wall_table(walls),

@@ -15,6 +15,15 @@ Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 
+def _of_levels(weight: Array, levels: Array) -> Array:
+    """What the levels of a run take out of the weights of its observations."""
+    along = weight[:, None] * levels
+    if levels.shape[1] == 1:
+        total = float(along[:, 0] @ levels[:, 0])
+        return np.outer(along[:, 0], along[:, 0]) / total if total > 0 else np.zeros((len(weight),) * 2)
+    return np.asarray(along @ np.linalg.pinv(along.T @ levels, rcond=1e-10, hermitian=True) @ along.T)
+
+
 @dataclass(frozen=True)
 class Corrections:
     """Offsets of the observations and what they do to the flowing runs.
@@ -70,16 +79,13 @@ def static_corrections(
     differential gauge sees no level, so its whole reading is its offset.
     """
     n = heads.observed.shape[1]
-    sees_level = heads.taps.sum(axis=1)
+    levels = heads.levels
     read = static[:, None] & np.isfinite(heads.observed) & ~excluded
     weight = np.where(read, repeats, 0.0)
-    along = weight * sees_level
-    total = along @ sees_level
     # The levels taken out, what is left determines the offsets: N offset = sum over the runs of P_r y_r.
     part = np.zeros((len(weight), n, n))
     for run in np.flatnonzero(read.any(axis=1)):
-        shared = np.outer(along[run], along[run]) / total[run] if total[run] > 0 else 0.0
-        part[run] = np.diag(weight[run]) - shared
+        part[run] = np.diag(weight[run]) - _of_levels(weight[run], levels)
     covariance = np.linalg.pinv(part.sum(axis=0), rcond=1e-10, hermitian=True)
     operation = covariance @ part
     known = np.asarray(read.any(axis=0))

@@ -15,6 +15,7 @@ from gradeline.quantities import format_change, parse_unit, rounded
 from gradeline.reduction.corrections import Corrections
 from gradeline.reduction.friction import Friction
 from gradeline.reduction.runs import Flowing
+from gradeline.reduction.sections import laminar_constant_of, laminar_name
 from gradeline.reduction.tables import RESULT_TABLES
 from gradeline.reduction.tabulate import frame
 from gradeline.reduction.walls import Wall
@@ -217,7 +218,8 @@ def _laminar(survey: Survey, flowing: Flowing, friction: Friction) -> list[_Flag
                     "law",
                     score=float(score),
                     suggestion=(
-                        f"in the laminar runs of reach {reach.name!r} f Re / 64 = {rounded(mean, spread)}: a bore "
+                        f"in the laminar runs of reach {reach.name!r} "
+                        f"{laminar_name(laminar_constant_of(reach))} = {rounded(mean, spread)}: a bore "
                         f"{format_change(bore)} {'larger' if bore > 0 else 'smaller'} would make it 1"
                     ),
                 )

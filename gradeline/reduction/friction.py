@@ -37,7 +37,8 @@ class Friction:
     roughness_signed, roughness_low, roughness_high : array
         ε of the run alone, m; turbulent runs only. The signed value may be negative.
     laminar_ratio, laminar_ratio_u : array
-        f Re / 64 of laminar runs, dimensionless: 1 for the true bore (its fourth power) and flow.
+        f Re / 64 of laminar runs (in place of 64 that of the shape), dimensionless: 1 for the true bore (its
+        fourth power) and flow.
     regime : array of str
         Of each run and reach.
     """
@@ -67,7 +68,7 @@ def friction_of(
     walls: tuple[Wall, ...],
     *,
     level: float,
-    temperature_run: float = 0.0,
+    temperature_run: Array | None = None,
 ) -> Friction:
     """Work out friction factor and roughness of every run and reach.
 
@@ -77,8 +78,8 @@ def friction_of(
         The line, its fluids and what the fits say.
     level : float
         Coverage of the intervals.
-    temperature_run : float
-        Standard uncertainty of each run's own temperature, K.
+    temperature_run : (F,) array or None
+        Standard uncertainty of each run's own temperature, K; None: 0.
 
     Returns
     -------
@@ -109,7 +110,7 @@ def friction_of(
     )
     safe = np.where(positive, slope, np.nan)
     effect = _factor_effects(flowing, safe)
-    own = flowing.own[:, 1 : 1 + len(line.diameter)] / safe - 2.0 * flowing.flow_u[:, None]
+    own = flowing.own[:, 1 : 1 + len(line.diameter)] / safe - 2.0 * flowing.reach_flow_u
     scatter = _scatter_variance(random, flowing, line)
     relative = np.sqrt(scatter / safe**2 + own**2 + _squared(effect))
     factor_dof = _effective_dof(relative, np.sqrt(scatter) / np.abs(safe), base)
@@ -117,7 +118,8 @@ def friction_of(
         stdtrit(np.where(np.isfinite(factor_dof), factor_dof, 1e9), 0.5 + level / 2.0), float
     )
     reynolds = flowing.reynolds
-    thin = media.viscosity_by_temperature[flowing.rows, None] * temperature_run
+    own_temperature = np.zeros(len(flowing.rows)) if temperature_run is None else temperature_run
+    thin = (media.viscosity_by_temperature[flowing.rows] * own_temperature)[:, None]
     kind = regime(reynolds)
     turbulent = (kind == "turbulent") & positive
     signed = np.where(
@@ -126,9 +128,9 @@ def friction_of(
     low, high = _roughness_interval(
         line, flowing, factor, signed, scatter / safe**2, effect, own, thin, factor_times, turbulent
     )
-    ratio = np.where(kind == "laminar", factor * reynolds / 64.0, np.nan)
+    ratio = np.where(kind == "laminar", factor * reynolds / line.laminar_constant, np.nan)
     # f Re goes as D⁴ g S / (Q ν).
-    drag = effect + _reynolds_effects(flowing, line)
+    drag = effect + _reynolds_effects(flowing, line) - _constant_effects(flowing, line)
     return Friction(
         slope=slope,
         slope_u=total,
@@ -145,7 +147,7 @@ def friction_of(
         roughness_high=high,
         laminar_ratio=ratio,
         laminar_ratio_u=ratio
-        * np.sqrt(scatter / safe**2 + (own + flowing.flow_u[:, None]) ** 2 + thin**2 + _squared(drag)),
+        * np.sqrt(scatter / safe**2 + (own + flowing.reach_flow_u) ** 2 + thin**2 + _squared(drag)),
         regime=kind,
     )
 
@@ -187,6 +189,13 @@ def _reynolds_effects(flowing: Flowing, line: Line) -> Array:
     return effect
 
 
+def _constant_effects(flowing: Flowing, line: Line) -> Array:
+    """Change of ln(f Re) of laminar flow with each shared input (K, q): it goes with the shape alone."""
+    none = np.zeros(len(line.diameter))
+    found = [none if one.laminar_constant is None else one.laminar_constant for one in flowing.inputs]
+    return np.stack(found, axis=1) if found else np.zeros((len(none), 0))
+
+
 def _roughness_interval(
     line: Line,
     flowing: Flowing,
@@ -211,7 +220,7 @@ def _roughness_interval(
         ]
         along = by_reynolds[:, :, None] * _reynolds_effects(flowing, line)
         effect = effect - along + relative[:, :, None] * np.stack(bore, axis=1)
-    rest = own - by_reynolds * flowing.flow_u[:, None]
+    rest = own - by_reynolds * flowing.reach_flow_u
     u = np.sqrt(scatter + rest**2 + (by_reynolds * thin) ** 2 + _squared(effect))
     low = relative_roughness(np.where(turbulent, factor * np.exp(-times * u), 1.0), reynolds) * line.diameter
     high = relative_roughness(np.where(turbulent, factor * np.exp(times * u), 1.0), reynolds) * line.diameter

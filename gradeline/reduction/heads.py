@@ -2,25 +2,27 @@
 
 from __future__ import annotations
 
-import inspect
-from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from gradeline.hydraulics.manometry import HEADS
 from gradeline.quantities import Measured
-from gradeline.reduction.media import Media, fluid_density
-from gradeline.survey import GAUGE_KINDS, Gauge, Survey
+from gradeline.reduction.accuracy import accuracy_errors
+from gradeline.reduction.calibrations import calibrated
+from gradeline.reduction.chains import chain_of
+from gradeline.reduction.fluids import fluid_inputs
+from gradeline.reduction.gauge_heads import STEP, head_function
+from gradeline.reduction.levels import level_columns
+from gradeline.reduction.media import Media
+from gradeline.survey import GAUGE_KINDS, Survey
 
 __all__ = ["Heads", "Input", "heads_of", "observation_kinds"]
 
 Array = NDArray[np.float64]
 
-#: Complex step: the derivative of an analytic function, exact to rounding.
-_STEP = 1e-30
+#: An effect of an elevation below this is none, m per m.
+_NO_EFFECT = 1e-12
 
 
 @dataclass(frozen=True)
@@ -37,21 +39,24 @@ class Input:
         Change of the observed heads, m.
     diameter : (K,) array or None
         Relative change of the bores.
-    flow : float
-        Relative change of the flow.
+    flow : float or array
+        Relative change of the flow: of all runs and reaches alike, or an array that broadcasts to (R, K).
     viscosity : (R,) array or None
         Relative change of the kinematic viscosity.
     gravity : float
         Relative change of gravity.
+    laminar_constant : (K,) array or None
+        Relative change of f·Re of laminar flow.
     """
 
     name: str
     subject: str = ""
     heads: Array | None = None
     diameter: Array | None = None
-    flow: float = 0.0
+    flow: float | Array = 0.0
     viscosity: Array | None = None
     gravity: float = 0.0
+    laminar_constant: Array | None = None
 
 
 @dataclass(frozen=True)
@@ -64,15 +69,21 @@ class Heads:
         Piezometric head above datum, or for differential gauges the difference upstream less downstream, m.
     gain : (R, n) array
         Change of head for one unit of the reading, m per m or m per Pa.
+    spread : (R, n) array
+        The same for one unit of the random error of a reading: larger where an observation is read from several places.
     taps : (n, T) array
         Which taps an observation sees: +1, and −1 for the downstream tap of a differential gauge.
+    levels : (n, m) array
+        Which free levels an observation stands on, that of the line first.
     inputs : tuple of Input
         Shared inputs of the heads that have a stated uncertainty.
     """
 
     observed: Array
     gain: Array
+    spread: Array
     taps: Array
+    levels: Array
     inputs: tuple[Input, ...]
 
 
@@ -91,9 +102,13 @@ def heads_of(survey: Survey, media: Media) -> Heads:
     Heads
         In the order of the runs and observations.
     """
-    readings = survey.readings.to_numpy(float)
+    corrected = calibrated(survey)
+    readings = corrected.readings
     observed, gain = np.full(readings.shape, np.nan), np.full(readings.shape, np.nan)
-    by_elevation, by_temperature = np.zeros(readings.shape), np.zeros(readings.shape)
+    spread, by_zero = np.full(readings.shape, np.nan), np.full(readings.shape, np.nan)
+    by_scale = np.full(readings.shape, np.nan)
+    by_elevation, by_elevation_2 = np.zeros(readings.shape), np.zeros(readings.shape)
+    by_temperature = np.zeros(readings.shape)
     by_density, by_gravity = np.zeros(readings.shape), np.zeros(readings.shape)
     names = [tap.name for tap in survey.taps]
     taps = np.zeros((readings.shape[1], len(names)))
@@ -106,119 +121,89 @@ def heads_of(survey: Survey, media: Media) -> Heads:
         mine = [i for i, observation in enumerate(survey.observations) if observation.gauge == gauge.name]
         if not mine:
             continue
-        head = _head_function(survey, media, gauge, mine)
+        first = survey.observations[mine[0]]
+        chain = chain_of(survey, media, gauge, first.tap, first.tap_2)
+        head = head_function(survey, media, gauge, mine, readings[:, mine], chain)
         observed[:, mine] = head({}).real
-        gain[:, mine] = head({"reading": 1.0}).imag / _STEP
-        by_elevation[:, mine] = head({"tap_elevation": 1.0, "gauge_elevation": 1.0}).imag / _STEP
-        by_density[:, mine] = head({"density": media.density[:, None]}).imag / _STEP
-        by_temperature[:, mine] = head({"density": media.density_by_temperature[:, None]}).imag / _STEP
-        by_gravity[:, mine] = head({"gravity": media.gravity}).imag / _STEP
-        for key, setting in gauge.settings.items():
-            if isinstance(setting, Measured) and setting.u:
-                effect = np.zeros(readings.shape)
-                effect[:, mine] = head({key: setting.u}).imag / _STEP
-                stated.append(Input(f"gauge {key.replace('_', ' ')}", gauge.name, heads=effect))
-    effects = _Effects(by_elevation, by_temperature, by_density, by_gravity)
-    found = [*stated, *_inputs(survey, media, readings, gain, effects)]
+        of_reading = head({"reading": 1.0}).imag / STEP
+        gain[:, mine] = of_reading * corrected.rate[mine]
+        others = [(head({"leg_rise": share}).imag / STEP, level) for share, level in chain.other_levels]
+        twice = np.array([1.0 + survey.observations[i].read_twice for i in mine])
+        spread[:, mine] = np.sqrt(twice * gain[:, mine] ** 2 + sum(one**2 for one, _ in others))
+        by_zero[:, mine] = of_reading + sum(one for one, _ in others)
+        by_scale[:, mine] = of_reading * readings[:, mine] + sum(one * level for one, level in others)
+        by_elevation[:, mine] = head({"tap_elevation": 1.0, "gauge_elevation": 1.0}).imag / STEP
+        by_elevation_2[:, mine] = head({"tap_2_elevation": 1.0}).imag / STEP
+        by_density[:, mine] = head({"density": media.density[:, None]}).imag / STEP
+        warmer = {"density": media.density_by_temperature[:, None], "run_temperature": 1.0}
+        by_temperature[:, mine] = head(warmer).imag / STEP
+        by_gravity[:, mine] = head({"gravity": media.gravity}).imag / STEP
+        effects = [
+            (f"gauge {key.replace('_', ' ')}", head({key: setting.u}).imag / STEP)
+            for key, setting in gauge.settings.items()
+            if isinstance(setting, Measured) and setting.u
+        ]
+        effects += [(name, of_reading * change) for name, change in accuracy_errors(gauge, readings[:, mine])]
+        effects += [
+            ("gauge calibration", of_reading * change[:, mine])
+            for name, change in corrected.errors
+            if name == gauge.name
+        ]
+        for name, change in effects:
+            if np.any(np.nan_to_num(change)):
+                whole = np.zeros(readings.shape)
+                whole[:, mine] = change
+                stated.append(Input(name, gauge.name, heads=whole))
+    effects_of = _Effects(
+        by_zero, by_scale, by_elevation, by_elevation_2, by_temperature, by_density, by_gravity
+    )
+    found = [*stated, *_inputs(survey, media, effects_of)]
     return Heads(
         observed,
         gain,
+        spread,
         taps,
+        level_columns(survey),
         tuple(one if one.heads is None else replace(one, heads=np.nan_to_num(one.heads)) for one in found),
     )
 
 
 @dataclass(frozen=True)
 class _Effects:
-    elevation: Array  # per m
+    zero: Array  # per unit of the reading
+    scale: Array  # per relative change
+    elevation: Array  # per m, of the (upstream) tap and its gauge
+    elevation_2: Array  # per m, of the downstream tap
     temperature: Array  # per K
     density: Array  # per relative change
     gravity: Array  # per relative change
 
 
-def _head_function(
-    survey: Survey, media: Media, gauge: Gauge, mine: list[int]
-) -> Callable[[Mapping[str, Any]], NDArray[np.complex128]]:
-    """Return a function from the inputs to step by (name: size) to the complex heads of a gauge's observations.
-
-    The arguments are handed over by name: what a kind's function asks for, it gets.
-    """
-    function = HEADS[gauge.kind]
-    wanted = set(inspect.signature(function).parameters)
-    tap = [survey.tap(survey.observations[i].tap) for i in mine]
-    elevation = np.array([t.elevation for t in tap])
-    temperature = survey.runs["temperature"].to_numpy(float)[:, None]
-    settings = {key: value.value for key, value in gauge.settings.items() if isinstance(value, Measured)}
-    column = settings.pop("column_temperature", None)
-    line = settings.pop("line_temperature", None)
-    line_fluid = gauge.settings.get("line_fluid")
-
-    def beside(at: float | None, name: object, step: float) -> NDArray[np.complex128] | None:
-        """Density of a column or a line that is not at the run's temperature or not of the flowing fluid."""
-        if (at is None and name is None) or (name is None and survey.fluid.density is not None):
-            return None
-        fluid = str(name or "water")
-        if at is None:
-            return np.asarray(fluid_density(fluid, temperature), complex)
-        there = np.full_like(temperature, at)
-        # The density formulas take no complex temperature: its own step is a central difference.
-        by_temperature = (fluid_density(fluid, there + 0.25) - fluid_density(fluid, there - 0.25)) / 0.5
-        return np.asarray(fluid_density(fluid, there) + 1j * _STEP * step * by_temperature)
-
-    given: dict[str, object] = {
-        "tap_elevation": elevation,
-        "gauge_elevation": np.array(
-            [t.elevation if t.gauge_elevation is None else t.gauge_elevation for t in tap]
-        ),
-        "density": media.density[:, None],
-        "air_density": media.air,
-        "gravity": media.gravity,
-        "surface_tension": media.surface_tension[:, None],
-        **settings,
-    }
-    readings = survey.readings.to_numpy(float)[:, mine]
-
-    def head(steps: Mapping[str, Any]) -> NDArray[np.complex128]:
-        stepped = {
-            name: np.asarray(value, complex) + 1j * _STEP * np.asarray(steps.get(name, 0.0))
-            for name, value in given.items()
-        }
-        apart = {
-            "column_density": beside(column, None, float(steps.get("column_temperature", 0.0))),
-            "line_density": beside(line, line_fluid, float(steps.get("line_temperature", 0.0))),
-        }
-        # What is filled with the flowing fluid goes with it.
-        stepped |= {name: stepped["density"] if value is None else value for name, value in apart.items()}
-        reading = readings + 1j * _STEP * np.asarray(steps.get("reading", 0.0))
-        return np.asarray(
-            function(reading, **{name: v for name, v in stepped.items() if name in wanted}), complex
-        )
-
-    return head
-
-
-def _inputs(survey: Survey, media: Media, readings: Array, gain: Array, effects: _Effects) -> list[Input]:
+def _inputs(survey: Survey, media: Media, effects: _Effects) -> list[Input]:
     """List the shared inputs of the heads that have a stated uncertainty."""
     stated = survey.stated
     found = []
-    tap_of = [observation.tap for observation in survey.observations]
+    tap_of = np.array([observation.tap for observation in survey.observations], dtype=object)
+    far_of = np.array([observation.tap_2 for observation in survey.observations], dtype=object)
     for gauge in survey.gauges:
         mine = np.array([observation.gauge == gauge.name for observation in survey.observations])
         if not mine.any():
             continue
         if gauge.zero_u:
-            found.append(Input("gauge zero", gauge.name, heads=np.where(mine, gain * gauge.zero_u, 0.0)))
+            found.append(
+                Input("gauge zero", gauge.name, heads=np.where(mine, effects.zero * gauge.zero_u, 0.0))
+            )
         if gauge.scale_u:
             found.append(
-                Input("gauge scale", gauge.name, heads=np.where(mine, gain * readings * gauge.scale_u, 0.0))
+                Input("gauge scale", gauge.name, heads=np.where(mine, effects.scale * gauge.scale_u, 0.0))
             )
     for tap in survey.taps:
         size = stated.elevation if tap.elevation_u is None else tap.elevation_u
-        mine = np.array([name == tap.name for name in tap_of])
-        if size and np.any(effects.elevation[:, mine]):
-            found.append(
-                Input("tap elevation", tap.name, heads=np.where(mine, effects.elevation * size, 0.0))
-            )
+        moved = np.where(tap_of == tap.name, effects.elevation, 0.0)
+        moved = moved + np.where(far_of == tap.name, effects.elevation_2, 0.0)
+        # What is left of elevations that cancel is rounding.
+        if size and np.nanmax(np.abs(moved), initial=0.0) > _NO_EFFECT:
+            found.append(Input("tap elevation", tap.name, heads=moved * size))
     if stated.temperature:
         found.append(
             Input(
@@ -227,27 +212,30 @@ def _inputs(survey: Survey, media: Media, readings: Array, gain: Array, effects:
                 viscosity=media.viscosity_by_temperature * stated.temperature,
             )
         )
-    fluid = survey.fluid
-    if fluid.density is not None and fluid.density.relative_u:
-        # A dynamic viscosity over an uncertain density is an uncertain kinematic one.
-        thinner = 0.0 if fluid.kinematic_viscosity is not None else -fluid.density.relative_u
-        found.append(
-            Input(
-                "density",
-                heads=effects.density * fluid.density.relative_u,
-                viscosity=np.full(len(readings), thinner),
-            )
+    found += [
+        Input(
+            one.name,
+            one.subject,
+            heads=effects.density * one.density[:, None] if one.density.any() else None,
+            viscosity=one.viscosity,
         )
-    viscosity = fluid.kinematic_viscosity or fluid.viscosity
-    if viscosity is not None and viscosity.relative_u:
-        found.append(Input("viscosity", viscosity=np.full(len(readings), viscosity.relative_u)))
+        for one in fluid_inputs(survey.fluid, survey.runs["temperature"].to_numpy(float))
+    ]
     if media.gravity_u:
         found.append(Input("gravity", heads=effects.gravity * media.gravity_u, gravity=media.gravity_u))
     return found
 
 
 def observation_kinds(survey: Survey) -> tuple[NDArray[np.intp], list[str]]:
-    """Return the group whose scatter each observation shares, and the groups' names (gauge kinds)."""
-    kinds = [survey.gauge(observation.gauge).kind for observation in survey.observations]
-    names = [name for name in GAUGE_KINDS if name in kinds]
-    return np.array([names.index(kind) for kind in kinds], dtype=np.intp), names
+    """Return the group whose scatter each observation shares, and the groups' names.
+
+    A group is a gauge kind, and where gauges of one kind differ in their gauge fluid, that fluid's gauges: a
+    millimetre of mercury is another head than one of oil.
+    """
+    gauges = [survey.gauge(observation.gauge) for observation in survey.observations]
+    groups = [(gauge.kind, str(gauge.settings.get("gauge_fluid", ""))) for gauge in gauges]
+    order = list(GAUGE_KINDS)
+    distinct = sorted(dict.fromkeys(groups), key=lambda group: order.index(group[0]))
+    kinds = [kind for kind, _ in distinct]
+    names = [kind if kinds.count(kind) == 1 else f"{kind}, {fluid}" for kind, fluid in distinct]
+    return np.array([distinct.index(group) for group in groups], dtype=np.intp), names

@@ -10,6 +10,8 @@ from numpy.typing import NDArray
 from gradeline.reduction.corrections import Corrections
 from gradeline.reduction.heads import Input
 from gradeline.reduction.line import Line
+from gradeline.reduction.offtakes import flow_heads, offtake_inputs
+from gradeline.reduction.sections import dimensions_of
 from gradeline.survey import Survey
 
 __all__ = ["common_errors", "flowing_inputs", "persistent_errors"]
@@ -34,6 +36,7 @@ def flowing_inputs(
     loss_head: Array,
     given_k: Array,
     base: Array,
+    gain: Array,
 ) -> tuple[Input, ...]:
     """List the shared inputs of the readings, of the line and of the static runs, for the flowing runs.
 
@@ -51,6 +54,8 @@ def flowing_inputs(
         Given loss coefficients, 0 where fitted.
     base : (n,) array
         Standard deviation of one static reading, m; 0 where it is not known.
+    gain : (F, K) array
+        Relative change of the flow in a reach for one of the flow at the line's start: 1 without off-takes.
 
     Returns
     -------
@@ -66,28 +71,33 @@ def flowing_inputs(
         )
         for one in corrections.heads.inputs
     ]
+    found = [_of_flow(one, rows, gain, line, sight, heads, loss_head * given_k) for one in found]
     count = len(line.diameter)
     for k, reach in enumerate(survey.reaches):
-        size = reach.diameter.relative_u
-        if not size:
-            continue
+        here = np.arange(count) == k
         at_tap = heads[:, line.reach_of_tap] * (line.reach_of_tap == k)
         losses = (loss_head * given_k * (line.reference == k)) @ line.passed.T
-        found.append(
+        found += [
             Input(
-                "bore",
+                one.name,
                 reach.name,
-                (at_tap + losses) @ sight.T * (-4.0 * size),
-                size * (np.arange(count) == k),
+                (at_tap + losses) @ sight.T * (-2.0 * one.area),
+                one.diameter * here,
+                # As if the area went as the square of the bore: what it does beyond that stands as a flow.
+                0.0 if reach.section is None else (2.0 * one.diameter - one.area) * here,
+                laminar_constant=one.constant * here if one.constant else None,
             )
-        )
+            for one in dimensions_of(reach)
+        ]
     if stated.flow_scale:
-        whole = heads[:, line.reach_of_tap] + (loss_head * given_k) @ line.passed.T
         found.append(
             Input(
-                "flow calibration", heads=whole @ sight.T * (2.0 * stated.flow_scale), flow=stated.flow_scale
+                "flow calibration",
+                heads=flow_heads(line, sight, heads, loss_head * given_k, gain) * (2.0 * stated.flow_scale),
+                flow=stated.flow_scale if not survey.offtakes else stated.flow_scale * gain,
             )
         )
+    found += offtake_inputs(survey, line, sight, rows, heads, loss_head * given_k)
     local = np.nan_to_num(slopes)[:, line.reach_of_tap]
     for t, tap in enumerate(survey.taps):
         size = stated.chainage if tap.chainage_u is None else tap.chainage_u
@@ -109,6 +119,23 @@ def flowing_inputs(
             if variance > 1e-9 * max(float(variances[-1]), 1e-300)
         ]
     return tuple(found)
+
+
+def _of_flow(
+    one: Input,
+    rows: NDArray[np.intp],
+    gain: Array,
+    line: Line,
+    sight: Array,
+    heads: Array,
+    loss_heads: Array,
+) -> Input:
+    """An input that changes the flow of each run in its own way (R, 1), with the velocity heads that go with it."""
+    if not isinstance(one.flow, np.ndarray):
+        return one
+    relative = one.flow[rows] * gain
+    change = 2.0 * flow_heads(line, sight, heads, loss_heads, relative)
+    return replace(one, flow=relative, heads=change if one.heads is None else one.heads + change)
 
 
 def persistent_errors(inputs: tuple[Input, ...], used: Mask) -> tuple[Array | None, bool, bool]:

@@ -12,7 +12,8 @@ from gradeline.hydraulics.friction import entrance_length
 from gradeline.hydraulics.gradelines import passed, path_lengths
 from gradeline.hydraulics.local_losses import change_of_bore_loss_coefficient
 from gradeline.quantities import Measured
-from gradeline.survey import Fitting, Survey
+from gradeline.reduction.sections import area_of, laminar_constant_of, section_assumptions
+from gradeline.survey import Fitting, Reach, Survey
 
 __all__ = ["Line", "disturbed_taps", "line_of"]
 
@@ -48,7 +49,11 @@ class Line:
     passed : (T, M) array
         1 where a local loss lies upstream of a tap.
     assumptions : tuple of str
-        Loss coefficients taken from the literature.
+        Loss coefficients taken from the literature, and what stands for other sections than circles.
+    area : (K,) array
+        Cross-sections, m².
+    laminar_constant : (K,) array
+        f·Re of laminar flow, dimensionless: 64 for a circle, NaN where the shape is not known.
     """
 
     bounds: Array
@@ -62,11 +67,8 @@ class Line:
     lengths: Array
     passed: Array
     assumptions: tuple[str, ...]
-
-    @property
-    def area(self) -> Array:
-        """Cross-section of each reach, m²."""
-        return np.asarray(np.pi / 4 * self.diameter**2)
+    area: Array
+    laminar_constant: Array
 
 
 def line_of(survey: Survey) -> Line:
@@ -85,19 +87,28 @@ def line_of(survey: Survey) -> Line:
     reaches = survey.reaches
     bounds = np.array([reaches[0].start, *(reach.end for reach in reaches)])
     diameter = np.array([reach.diameter.value for reach in reaches])
+    bore = np.array([_bore(reach) for reach in reaches])
     fittings, assumptions = list(survey.fittings), []
     for before, after in itertools.pairwise(reaches):
-        changes = before.diameter.value != after.diameter.value
+        changes = _bore(before) != _bore(after)
         given = any(fitting.change_of_bore and abs(fitting.at - before.end) < 1e-6 for fitting in fittings)
         if changes and not given:
-            coefficient = float(change_of_bore_loss_coefficient(before.diameter.value, after.diameter.value))
-            what = "contraction" if after.diameter.value < before.diameter.value else "expansion"
+            coefficient = float(change_of_bore_loss_coefficient(_bore(before), _bore(after)))
+            what = "contraction" if _bore(after) < _bore(before) else "expansion"
             name = f"{what} {before.name} to {after.name}"
             fittings.append(Fitting(name, before.end, Measured(coefficient), change_of_bore=True))
             assumptions.append(
                 f"The change of bore at {before.end:g} m is taken as a sudden {what}: K = {coefficient:.3g} of the "
                 "velocity head in the smaller bore (Borda–Carnot for an expansion, 0.5 (1 − β²) for a contraction)."
             )
+    for offtake in survey.offtakes:
+        if not any(abs(fitting.at - offtake.at) < 1e-6 for fitting in survey.fittings):
+            fittings.append(Fitting(f"off-take {offtake.name}", offtake.at, Measured(0.0)))
+            assumptions.append(
+                f"The flow downstream of off-take {offtake.name!r} is less by what it takes; the flow that goes straight on "
+                "loses nothing there (K = 0). A fitting at the same chainage gives or fits a K."
+            )
+    assumptions += section_assumptions(reaches)
     fittings.sort(key=lambda fitting: fitting.at)
     chainage = np.array([tap.chainage for tap in survey.taps])
     at = np.array([fitting.at for fitting in fittings])
@@ -109,12 +120,19 @@ def line_of(survey: Survey) -> Line:
         elevation=np.array([tap.elevation for tap in survey.taps]),
         reach_of_tap=reach_of_tap.astype(np.intp),
         fittings=tuple(fittings),
-        reference=np.array([_reference(fitting, bounds, diameter) for fitting in fittings], dtype=np.intp),
+        reference=np.array([_reference(fitting, bounds, bore) for fitting in fittings], dtype=np.intp),
         fitted=np.array([fitting.loss_coefficient is None for fitting in fittings], dtype=bool),
         lengths=path_lengths(chainage, bounds),
         passed=passed(chainage, at).reshape(len(chainage), len(at)),
         assumptions=tuple(assumptions),
+        area=np.array([area_of(reach) for reach in reaches]),
+        laminar_constant=np.array([laminar_constant_of(reach) for reach in reaches]),
     )
+
+
+def _bore(reach: Reach) -> float:
+    """Bore of the circle that has a reach's area, m: what counts where the section changes."""
+    return reach.diameter.value if reach.section is None else float(np.sqrt(4 * area_of(reach) / np.pi))
 
 
 def _reference(fitting: Fitting, bounds: Array, diameter: Array) -> int:

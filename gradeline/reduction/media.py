@@ -14,13 +14,13 @@ from gradeline.hydraulics.fluid import (
     mercury_density,
     standard_atmosphere_pressure,
     water_density,
-    water_properties,
     water_surface_tension,
 )
 from gradeline.hydraulics.gravity import STANDARD_GRAVITY, normal_gravity
-from gradeline.survey import Fluid, Site, Survey
+from gradeline.reduction.fluids import flowing_properties
+from gradeline.survey import Site, Survey
 
-__all__ = ["Media", "fluid_density", "media_of"]
+__all__ = ["Media", "fluid_density", "media_of", "run_temperature_u"]
 
 Array = NDArray[np.float64]
 
@@ -74,16 +74,17 @@ def media_of(survey: Survey) -> Media:
         For its runs, in their order.
     """
     temperature = survey.runs["temperature"].to_numpy(float)
-    density, viscosity = _flowing(survey.fluid, temperature)
+    fluid = survey.fluid
+    density, viscosity = flowing_properties(fluid, temperature)
     by_density, by_viscosity = np.zeros_like(density), np.zeros_like(density)
     tension = np.full_like(density, 0.0728)
-    if survey.fluid.density is None:
-        (below, thin), (above, thick) = (
-            _flowing(survey.fluid, temperature + step) for step in _sides(temperature)
-        )
-        width = np.subtract(*_sides(temperature)[::-1])
+    if fluid.follows_temperature:
+        sides = _sides(temperature, fluid.span)
+        (below, thin), (above, thick) = (flowing_properties(fluid, temperature + step) for step in sides)
+        width = np.subtract(*sides[::-1])
         by_density = (above - below) / width
         by_viscosity = np.log(thick / thin) / width
+    if fluid.is_water:
         tension = np.asarray(water_surface_tension(temperature))
     gravity, gravity_u = _gravity(survey.site)
     pressure = standard_atmosphere_pressure(survey.site.altitude or 0.0)
@@ -99,25 +100,19 @@ def media_of(survey: Survey) -> Media:
     )
 
 
-def _sides(temperature: Array) -> tuple[Array, Array]:
-    """Steps below and above each temperature that stay between freezing and boiling."""
-    return (
-        np.maximum(-_STEP, 273.151 - temperature),
-        np.minimum(_STEP, 373.15 - temperature),
-    )
+def run_temperature_u(survey: Survey) -> Array:
+    """Return the standard uncertainty of each run's own temperature (R,), K: as stated and from its change."""
+    stated = np.full(len(survey.runs), survey.stated.temperature_run or 0.0)
+    if "temperature_u" not in survey.runs.columns:
+        return stated
+    return np.asarray(np.hypot(stated, np.nan_to_num(survey.runs["temperature_u"].to_numpy(float))))
 
 
-def _flowing(fluid: Fluid, temperature: Array) -> tuple[Array, Array]:
-    """Density and kinematic viscosity of the flowing fluid."""
-    if fluid.density is None:
-        density, viscosity = water_properties(temperature)
-        return np.asarray(density), np.asarray(viscosity / density)
-    density = np.full(temperature.shape, fluid.density.value)
-    if fluid.kinematic_viscosity is not None:
-        return density, np.full(temperature.shape, fluid.kinematic_viscosity.value)
-    if fluid.viscosity is None:
-        raise ReductionError(f"the fluid {fluid.name!r} has a density but no viscosity; give one in [fluid]")
-    return density, np.full(temperature.shape, fluid.viscosity.value / fluid.density.value)
+def _sides(temperature: Array, span: tuple[float, float] | None) -> tuple[Array, Array]:
+    """Steps below and above each temperature that stay where the properties are known."""
+    low, high = (-np.inf, np.inf) if span is None else span
+    # The lowest temperature of water itself, its freezing point, is not one of its own.
+    return np.maximum(-_STEP, low + 0.001 - temperature), np.minimum(_STEP, high - temperature)
 
 
 def fluid_density(name: str, temperature: Array) -> Array:

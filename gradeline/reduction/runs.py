@@ -22,6 +22,7 @@ from gradeline.reduction.heads import Input, observation_kinds
 from gradeline.reduction.inputs import common_errors, flowing_inputs, persistent_errors
 from gradeline.reduction.line import Line, disturbed_taps
 from gradeline.reduction.media import Media
+from gradeline.reduction.offtakes import flow_heads, reach_flows
 from gradeline.survey import GAUGE_KINDS, Survey
 
 __all__ = ["Flowing", "fit_survey", "stated_readings"]
@@ -44,6 +45,8 @@ class Flowing:
         Their places among the runs of the survey.
     flow, flow_u : (F,) array
         m³/s; relative standard uncertainty of the run's own flow, 0 where it is not known.
+    reach_flow_u : (F, K) array
+        Relative standard uncertainty of the flow in each reach from that of the run: larger below an off-take.
     velocity, reynolds, velocity_heads : (F, K) array
         m/s; dimensionless; α V²/2g, m.
     energy : (F, n) array
@@ -59,7 +62,7 @@ class Flowing:
     fits : RunFits
         The fits.
     design : (n, p) array
-        E₀, the reaches, the fitted losses.
+        E₀, the reaches, the fitted losses, the levels of gauges that float.
     inputs : tuple of Input
         All shared inputs with a stated uncertainty.
     effect : (F, p, q) array
@@ -73,6 +76,7 @@ class Flowing:
     rows: NDArray[np.intp]
     flow: Array
     flow_u: Array
+    reach_flow_u: Array
     velocity: Array
     reynolds: Array
     velocity_heads: Array
@@ -125,7 +129,9 @@ def fit_survey(
     """
     rows = np.flatnonzero(survey.runs["flow"].to_numpy(float) > 0)
     flow = survey.runs["flow"].to_numpy(float)[rows]
-    velocity = flow[:, None] / line.area
+    in_reach = reach_flows(survey, rows)
+    flow_gain = flow[:, None] / in_reach
+    velocity = in_reach / line.area
     reynolds = velocity * line.diameter / media.kinematic_viscosity[rows, None]
     plain_head = velocity_head(velocity, media.gravity)
     flow_u = _flow_uncertainty(survey, rows, flow)
@@ -142,7 +148,12 @@ def fit_survey(
     )
     given = (loss_head * given_k) @ (sight @ line.passed).T
     design = np.column_stack(
-        [sight.sum(axis=1), -(sight @ line.lengths), -(sight @ line.passed)[:, line.fitted]]
+        [
+            sight.sum(axis=1),
+            -(sight @ line.lengths),
+            -(sight @ line.passed)[:, line.fitted],
+            corrections.heads.levels[:, 1:],
+        ]
     )
     kind, _ = observation_kinds(survey)
     floor, resolution = stated_readings(survey, corrections)
@@ -167,12 +178,14 @@ def fit_survey(
     first = fit_runs(energy, used, model, search=False, details=False)
     slopes = first.lines.parameters[:, 1 : 1 + len(line.diameter)]
     heads, energy = energy_of(_law_factor(slopes, velocity, reynolds, line, media))
-    flow_effect = 2.0 * flow_u[:, None] * (heads[:, line.reach_of_tap] @ sight.T + given)
+    flow_effect = 2.0 * flow_u[:, None] * flow_heads(line, sight, heads, loss_head * given_k, flow_gain)
     # The scatter first as the trimmed readings show it, then as the fit does that knows of the static readings.
     scatter = robust_scatter(energy, used, model)
     for last in (False, True) if corrections.applied else (True,):
         base = _static_scatter(scatter, kind, corrections, repeats, single=len(rows) == 1 or not last)
-        inputs = flowing_inputs(survey, line, corrections, rows, slopes, heads, loss_head, given_k, base)
+        inputs = flowing_inputs(
+            survey, line, corrections, rows, slopes, heads, loss_head, given_k, base, flow_gain
+        )
         persistent, steady, along_slope = persistent_errors(inputs, used)
         common, felt = common_errors(inputs, flow_effect, sight.sum(axis=1), used)
         told = replace(model, persistent=persistent, common=common, steady=steady, along_slope=along_slope)
@@ -186,6 +199,7 @@ def fit_survey(
         rows=rows,
         flow=flow,
         flow_u=flow_u,
+        reach_flow_u=flow_u[:, None] * flow_gain,
         velocity=velocity,
         reynolds=reynolds,
         velocity_heads=heads,
@@ -209,8 +223,12 @@ def _flow_uncertainty(survey: Survey, rows: NDArray[np.intp], flow: Array) -> Ar
     """Relative standard uncertainty of each run's own flow: as stated, else from its repeats."""
     stated = survey.stated.flow
     if stated is not None:
-        return np.full(len(flow), stated.value) if stated.relative else stated.value / flow
-    return np.nan_to_num(survey.runs["flow_u"].to_numpy(float)[rows] / flow)
+        own = np.full(len(flow), stated.value) if stated.relative else stated.value / flow
+    else:
+        own = np.nan_to_num(survey.runs["flow_u"].to_numpy(float)[rows] / flow)
+    if "flow_drift_u" in survey.runs.columns:
+        own = np.hypot(own, survey.runs["flow_drift_u"].to_numpy(float)[rows])
+    return np.asarray(own)
 
 
 def _static_scatter(
@@ -240,7 +258,7 @@ def stated_readings(survey: Survey, corrections: Corrections) -> tuple[Array, Ar
 
     0 where nothing is stated.
     """
-    gain = np.abs(corrections.heads.gain)
+    gain = corrections.heads.spread
     known = np.isfinite(gain)
     size = np.where(known, gain, 0.0).sum(axis=0) / np.maximum(known.sum(axis=0), 1)
     floors, resolutions = [], []

@@ -11,6 +11,8 @@ from gradeline.fitting.misfit import PATTERNS
 from gradeline.fitting.null import FALSE_ALARM
 from gradeline.hydraulics.gravity import STANDARD_GRAVITY
 from gradeline.reduction.corrections import Corrections
+from gradeline.reduction.fluids import fluid_assumptions
+from gradeline.reduction.gauge_sentences import gauge_assumptions, gauge_cautions
 from gradeline.reduction.line import Line
 from gradeline.reduction.media import Media
 from gradeline.reduction.runs import Flowing
@@ -36,10 +38,7 @@ def assumptions_of(
 ) -> tuple[str, ...]:
     """List every default and choice made by the reduction, after those of the loader."""
     said = list(survey.assumptions)
-    if survey.fluid.density is None:
-        said.append(
-            "Water: density by IAPWS-95 at 101.325 kPa and viscosity by IAPWS R12-08, at each run's temperature."
-        )
+    said += fluid_assumptions(survey.fluid)
     if survey.site.gravity is None and survey.site.latitude is not None:
         said.append(
             f"Gravity {media.gravity:.5f} m/s² by the WGS 84 formula at the site's latitude and altitude."
@@ -49,6 +48,7 @@ def assumptions_of(
     said.append(
         f"Air beside columns and gauges: {media.air:.3f} kg/m³ (20 °C, 50 % humidity, standard atmosphere)."
     )
+    said += gauge_assumptions(survey)
     said += line.assumptions
     if corrections.applied:
         runs = int((survey.runs["flow"] == 0).sum())
@@ -114,6 +114,7 @@ def cautions_of(
         Standard deviation of one reading of each observation, m.
     """
     said = [*survey.cautions, *flowing.cautions]
+    said += gauge_cautions(survey, corrections.heads)
     said += _misfit(survey, flowing)
     said += _scatter(flowing)
     said += _offsets(survey, corrections, base)

@@ -161,7 +161,7 @@ DRAWING_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
         # taps in order, with the pipe's axis and where their gauge refers
         "layout": {"what": _TEXT, "name": _TEXT, "chainage": _M, "elevation": _M, "note": _TEXT},
         # f Re / 64 of the laminar runs: 1 for the true bore and flow
-        "laminar": {"run": _TEXT, "reach": _TEXT, "ratio": _NUMBER, "ratio_u": _NUMBER},
+        "laminar": {"run": _TEXT, "reach": _TEXT, "ratio": _NUMBER, "ratio_u": _NUMBER, "constant": _NUMBER},
         # the unit in which each column of readings was read, and how many SI units it has
         "reading_units": {"tap": _TEXT, "gauge": _TEXT, "kind": _TEXT, "unit": _TEXT, "si_per_unit": _NUMBER},
         # S proportional to V^n, per reach and regime

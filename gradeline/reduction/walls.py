@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from gradeline.fitting.wall import WallData, WallFit, best_roughness, fit_wall
 from gradeline.hydraulics.friction import TURBULENT_LIMIT, colebrook_white
 from gradeline.reduction.line import Line
-from gradeline.reduction.media import Media
+from gradeline.reduction.media import Media, run_temperature_u
 from gradeline.reduction.runs import Flowing
 from gradeline.survey import Survey
 
@@ -126,6 +126,7 @@ def _data(survey: Survey, line: Line, media: Media, flowing: Flowing, mine: NDAr
     by_temperature = media.viscosity_by_temperature[flowing.rows]
     bore = [zero if one.diameter is None else one.diameter for one in inputs]
     viscosity = [none if one.viscosity is None else one.viscosity for one in inputs]
+    flow = [np.broadcast_to(one.flow, (count, len(line.diameter)))[:, mine] for one in inputs]
     return WallData(
         slope=flowing.slopes()[:, mine],
         slope_covariance=flowing.random[:, columns[:, None], columns],
@@ -133,12 +134,12 @@ def _data(survey: Survey, line: Line, media: Media, flowing: Flowing, mine: NDAr
         diameter=line.diameter[mine],
         kinematic_viscosity=media.kinematic_viscosity[flowing.rows],
         gravity=media.gravity,
-        flow_u=flowing.flow_u,
+        flow_u=flowing.reach_flow_u[:, mine],
         own_slope_effect=flowing.own[:, columns],
-        viscosity_u=by_temperature * (survey.stated.temperature_run or 0.0),
+        viscosity_u=by_temperature * run_temperature_u(survey)[flowing.rows],
         slope_effect=flowing.effect[:, columns],
         diameter_effect=np.stack(bore, axis=1)[mine] if bore else np.zeros((len(mine), 0)),
-        flow_effect=np.array([one.flow for one in inputs]),
+        flow_effect=np.stack(flow, axis=2) if flow else np.zeros((count, len(mine), 0)),
         viscosity_effect=np.stack(viscosity, axis=1) if viscosity else np.zeros((count, 0)),
         gravity_effect=np.array([one.gravity for one in inputs]),
     )

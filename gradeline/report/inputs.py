@@ -23,6 +23,7 @@ __all__ = [
     "fitting_input_table",
     "gauge_table",
     "raw_reading_tables",
+    "side_valve_table",
     "stated_reach_table",
     "stated_tap_table",
     "statements",
@@ -32,6 +33,8 @@ __all__ = [
 NOT_STATED = "not stated"
 #: Readings side by side in one table, so that it fits on paper.
 _WIDEST = 12
+#: What is stated of gauges and valves in words, set to the left.
+_IN_WORDS = {"kind", "upstream", "downstream", "gauge fluid", "line fluid", "where", "state"}
 
 
 def _stated(display: Display, quantity: str, value: float | None, u: float | None) -> str:
@@ -97,7 +100,7 @@ def stated_tap_table(reduction: Reduction, display: Display = SI_DISPLAY) -> Pri
     pressure = {
         gauge
         for gauge, kind in zip(reduction.reading_units["gauge"], reduction.reading_units["kind"], strict=True)
-        if kind == "pressure gauge"
+        if kind in ("pressure gauge", "transducer")
     }
 
     def of(quantity: str, key: str) -> Callable[[Row], str]:
@@ -145,7 +148,7 @@ def _crossed(rows: Sequence[Row], display: Display, caption: str, first: str) ->
         lines.setdefault(str(row["name"]), {"name": row["name"]})[str(row["what"])] = _cell(display, row)
 
     def column(what: str) -> TableColumn:
-        return TableColumn(what, lambda line: str(line.get(what, MISSING)), text=what == "kind")
+        return TableColumn(what, lambda line: str(line.get(what, MISSING)), text=what in _IN_WORDS)
 
     return lay_out(
         caption,
@@ -166,6 +169,17 @@ def fitting_input_table(reduction: Reduction, display: Display = SI_DISPLAY) -> 
     return _crossed(_group(reduction, "fitting"), display, "Fittings as stated.", "fitting")
 
 
+def side_valve_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
+    """Return the isolation checklist: each side valve, where flow can leave by it, and whether it was shut."""
+    rows = _group(reduction, "side valve")
+    shut = sum(row["what"] == "state" and row["text"] == "shut" for row in rows)
+    count = sum(row["what"] == "state" for row in rows)
+    found = "all are stated shut" if shut == count else f"{shut} of {count} are stated shut"
+    return _crossed(
+        rows, display, f"Isolation checklist: were all side valves shut? Here {found}.", "side valve"
+    )
+
+
 def uncertainty_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
     """Return the standard uncertainties that the survey states for all of its parts."""
     return lay_out(
@@ -178,9 +192,9 @@ def uncertainty_table(reduction: Reduction, display: Display = SI_DISPLAY) -> Pr
 
 
 def statements(reduction: Reduction, display: Display = SI_DISPLAY) -> tuple[tuple[str, str], ...]:
-    """Return fluid, site and options as pairs of words."""
+    """Return fluid, site, flow and options as pairs of words."""
     found = []
-    for group, head in (("fluid", "Fluid"), ("site", "Site")):
+    for group, head in (("fluid", "Fluid"), ("site", "Site"), ("flow", "Flow")):
         rows = _group(reduction, group)
         if rows:
             parts = [

@@ -215,7 +215,9 @@ def _laminar(reduction: Reduction) -> Iterable[str]:
                 off.append(str(row["run"]))
         elif abs(ratio - 1) > 2 * u:
             off.append(str(row["run"]))
-    words = f"In laminar flow f·Re/64, which is 1 for the true bore and flow, is {_list(texts)}"
+    constants = {f"{row['constant']:.4g}" for row in rows}
+    over = f"f·Re/{constants.pop()}" if len(constants) == 1 else "f·Re over its value for the section's shape"
+    words = f"In laminar flow {over}, which is 1 for the true bore and flow, is {_list(texts)}"
     if off:
         yield (
             f"{words}. In run {_list(off)} that is not 1 within "

@@ -309,6 +309,7 @@ def reduction_of(
                 "reach": row["reach"],
                 "ratio": row["friction_factor"] * row["reynolds"] / 64,
                 "ratio_u": row["friction_factor_u"] * row["reynolds"] / 64,
+                "constant": 64.0,
             }
             for row in runs
             if row["regime"] == "laminar"

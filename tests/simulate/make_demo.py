@@ -6,67 +6,19 @@ those of Python's own generator, which keeps its sequence from version to versio
 
 from __future__ import annotations
 
-import random
 import sys
 from pathlib import Path
-from statistics import NormalDist
 
 import numpy as np
 
 if __name__ == "__main__":  # run as a script: the repo's top is not on the path
     sys.path.insert(0, str(Path(__file__).resolve().parents[2]))
 
-from tests.simulate.line import Floats, TrueLine, TrueLoss, TrueReach
+from tests.simulate.demo_files import Draws, commented, gravity, listed, stepped, table
+from tests.simulate.demo_hydrant import hydrant_main
+from tests.simulate.demo_mercury import mercury_bench
+from tests.simulate.line import TrueLine, TrueLoss, TrueReach
 from tests.simulate.water import ZERO_CELSIUS, air_density, density, kinematic_viscosity
-
-SURVEYS = ("copper_bench", "cast_main")
-
-
-class Draws:
-    """Normal deviates that one seed fixes for good."""
-
-    def __init__(self, seed: int) -> None:
-        self._random = random.Random(seed)
-
-    def one(self, u: float) -> float:
-        """Draw a normal deviate of standard deviation `u`."""
-        return NormalDist().inv_cdf(self._random.random()) * u
-
-    def sized(self, least: float, most: float, size: int) -> Floats:
-        """Draw values whose size is even between `least` and `most`, either sign alike."""
-        ends = [(self._random.random(), self._random.random()) for _ in range(size)]
-        return np.array([(least + (most - least) * a) * (1 if b < 0.5 else -1) for a, b in ends])
-
-    def many(self, u: float, *shape: int) -> Floats:
-        """Draw an array of them."""
-        return np.array([self.one(u) for _ in range(int(np.prod(shape)))]).reshape(shape)
-
-
-def gravity(latitude: float, altitude: float) -> float:
-    """Normal gravity of the WGS 84 ellipsoid (Somigliana) with the free-air gradient, m/s²; degrees and m."""
-    square = np.sin(np.radians(latitude)) ** 2
-    at_sea = 9.7803253359 * (1 + 0.00193185265241 * square) / np.sqrt(1 - 0.00669437999014 * square)
-    return float(at_sea - 3.086e-6 * altitude)
-
-
-def stepped(values: Floats, step: float, decimals: int) -> list[list[str]]:
-    """Round readings to the step of their scale and print them."""
-    return [[f"{round(value / step) * step:.{decimals}f}" for value in row] for row in values]
-
-
-def commented(lines: list[str]) -> str:
-    """Make the comment block at the head of a survey.toml."""
-    return "".join(f"# {line}".rstrip() + "\n" for line in lines)
-
-
-def listed(values: Floats, form: str) -> str:
-    """Print a row of true values."""
-    return ", ".join(f"{value:{form}}" for value in values)
-
-
-def table(rows: list[list[str]]) -> str:
-    """Join cells to csv."""
-    return "".join(",".join(row) + "\n" for row in rows)
 
 
 def copper_bench() -> dict[str, str]:
@@ -292,11 +244,19 @@ friction_law = "2 %"
     return {"survey.toml": commented(head) + survey, "taps.csv": table(taps), "readings.csv": table(runs)}
 
 
+SURVEYS = {
+    "copper_bench": copper_bench,
+    "cast_main": cast_main,
+    "mercury_bench": mercury_bench,
+    "hydrant_main": hydrant_main,
+}
+
+
 def write(folder: Path) -> None:
-    """Write both surveys below `folder`."""
-    for name, files in zip(SURVEYS, (copper_bench(), cast_main()), strict=True):
+    """Write every survey below `folder`."""
+    for name, made in SURVEYS.items():
         (folder / name).mkdir(parents=True, exist_ok=True)
-        for file, text in files.items():
+        for file, text in made().items():
             (folder / name / file).write_bytes(text.encode())
 
 

@@ -12,9 +12,11 @@ from gradeline.fitting.exponent import fit_exponent
 from gradeline.hydraulics.gradelines import grade_lines, stations
 from gradeline.quantities import parse_unit
 from gradeline.reduction.friction import Friction
+from gradeline.reduction.levels import is_relative
 from gradeline.reduction.line import Line
 from gradeline.reduction.media import Media
 from gradeline.reduction.runs import Flowing
+from gradeline.reduction.sections import laminar_constant_of
 from gradeline.reduction.tables import DRAWING_TABLES
 from gradeline.reduction.tabulate.frames import frame
 from gradeline.reduction.walls import Wall
@@ -32,6 +34,7 @@ def grade_line_table(survey: Survey, line: Line, media: Media, flowing: Flowing)
     chainage, side = stations(line.bounds, at, line.chainage)
     parameters = flowing.fits.lines.parameters
     reaches = len(line.diameter)
+    relative = is_relative(survey)
     loss_head = flowing.velocity[:, line.reference] ** 2 / (2 * media.gravity)
     losses = np.zeros_like(loss_head)
     column = 1 + reaches
@@ -44,7 +47,8 @@ def grade_line_table(survey: Survey, line: Line, media: Media, flowing: Flowing)
     drawn = grade_lines(
         chainage,
         side,
-        start_energy=parameters[:, 0],
+        # Without a level only the fall is known: it is drawn from 0 at the line's start, and not against the pipe.
+        start_energy=np.nan_to_num(parameters[:, 0]) if relative else parameters[:, 0],
         reach_bounds=line.bounds,
         slopes=parameters[:, 1 : 1 + reaches],
         velocity_heads=flowing.velocity_heads,
@@ -53,12 +57,15 @@ def grade_line_table(survey: Survey, line: Line, media: Media, flowing: Flowing)
     )
     lengths = np.clip(chainage[:, None], line.bounds[:-1], line.bounds[1:]) - line.bounds[:-1]
     past = (chainage[:, None] > at) | ((side[:, None] > 0) & (chainage[:, None] == at))
-    rows = np.column_stack([np.ones(len(chainage)), -lengths, -past[:, line.fitted].astype(float)])
+    known_columns = np.column_stack([np.ones(len(chainage)), -lengths, -past[:, line.fitted].astype(float)])
+    # The levels of single gauges are no part of the line.
+    rows = np.zeros((len(chainage), parameters.shape[1]))
+    rows[:, : known_columns.shape[1]] = known_columns
     random = np.nan_to_num(flowing.random, nan=0.0) + flowing.own[:, :, None] * flowing.own[:, None, :]
     shared = np.einsum("mp,fpq->fmq", rows, flowing.effect)
     variance = np.einsum("mp,fpr,mr->fm", rows, random, rows) + np.einsum("fmq,fmq->fm", shared, shared)
     known = np.asarray(np.isfinite(flowing.random).all(axis=(1, 2)))[:, None]
-    axis = np.interp(chainage, line.chainage, line.elevation)
+    axis = np.interp(chainage, line.chainage, line.elevation) + (np.nan if relative else 0.0)
     reach = np.clip(
         np.where(
             side < 0, np.searchsorted(line.bounds, chainage), np.searchsorted(line.bounds, chainage, "right")
@@ -107,7 +114,7 @@ def layout_table(survey: Survey, line: Line) -> pd.DataFrame:
 
 
 def laminar_table(survey: Survey, flowing: Flowing, friction: Friction) -> pd.DataFrame:
-    """Return f Re / 64 of each laminar run and reach."""
+    """Return f Re over its value in laminar flow (64 for a circle) of each laminar run and reach."""
     at = np.argwhere(np.isfinite(friction.laminar_ratio))
     names = survey.runs["run"].to_numpy(object)[flowing.rows]
     return frame(
@@ -117,6 +124,7 @@ def laminar_table(survey: Survey, flowing: Flowing, friction: Friction) -> pd.Da
             "reach": [survey.reaches[k].name for _, k in at],
             "ratio": [friction.laminar_ratio[run, k] for run, k in at],
             "ratio_u": [friction.laminar_ratio_u[run, k] for run, k in at],
+            "constant": [laminar_constant_of(survey.reaches[k]) for _, k in at],
         },
     )
 
@@ -149,7 +157,7 @@ def exponent_table(
                 continue
             slope = friction.slope[mine, k]
             safe = np.where(slope > 0, slope, np.nan)
-            spread = np.hypot(friction.slope_u_random[mine, k] / safe, 2 * flowing.flow_u[mine])
+            spread = np.hypot(friction.slope_u_random[mine, k] / safe, 2 * flowing.reach_flow_u[mine, k])
             fit = fit_exponent(flowing.velocity[mine, k], np.nan_to_num(safe), spread, level=level)
             reason = None if np.isfinite(fit.exponent) else "fewer than two runs of different flow"
             values = (reach.name, kind, fit.exponent, fit.u, fit.low, fit.high, fit.runs, reason)

@@ -10,15 +10,25 @@ import pandas as pd
 
 from gradeline.quantities import Measured
 from gradeline.reduction.tables import DRAWING_TABLES
+from gradeline.reduction.tabulate.flow import flow_rows
 from gradeline.reduction.tabulate.frames import frame
-from gradeline.survey import GAUGE_KINDS, Gauge, Stated, Survey
+from gradeline.survey import GAUGE_KINDS, Gauge, Pressure, Stated, Survey
 
 __all__ = ["input_table", "raw_reading_table", "stated_reach_table", "stated_tap_table"]
 
 _Row = tuple[str, str, str, str | None, str | None, float | None, float | None]
 
 #: A dimension of `gradeline.quantities` and how values of it are shown.
-_SHOWN = {"length": "length", "pressure": "pressure", "angle": "angle", "temperature": "temperature"}
+_SHOWN = {
+    "length": "length",
+    "pressure": "pressure",
+    "gas pressure": "pressure",
+    "angle": "angle",
+    "temperature": "temperature",
+    "density": "density",
+    "dimensionless": "relative",
+}
+_UNITS = {"surface tension": ", N/m", "thermal expansion": ", 1/K"}
 #: A small length is shown in a smaller unit than a long one.
 _SMALL = {"length": "small head", "pressure": "pressure"}
 
@@ -46,7 +56,9 @@ def input_table(
     rows = [
         *_medium(survey),
         *_fittings(survey),
+        *_side_valves(survey),
         *(row for gauge in survey.gauges for row in _gauge(gauge)),
+        *flow_rows(survey.flow),
         *_stated(survey),
         ("options", "", "level of the intervals", None, "relative", level, None),
         (
@@ -88,6 +100,18 @@ def _medium(survey: Survey) -> list[_Row]:
     ):
         if value is not None:
             rows.append(_measured("fluid", fluid.name, what, quantity, value))
+    for at, value in fluid.viscosity_at:
+        what = f"kinematic viscosity at {at - 273.15:g} °C"
+        rows.append(_measured("fluid", fluid.name, what, "kinematic viscosity", value))
+    if fluid.expansion is not None and fluid.density_temperature is not None:
+        rows.append(_measured("fluid", fluid.name, "expansion, 1/K", "number", fluid.expansion))
+        rows.append(("fluid", fluid.name, "density at", None, "temperature", fluid.density_temperature, None))
+    if fluid.line_pressure is not None:
+        rows.append(
+            _measured("fluid", fluid.name, "line pressure, absolute", "pressure", fluid.line_pressure)
+        )
+    if fluid.table is not None:
+        rows.append(("fluid", fluid.name, "properties", fluid.table.file, None, None, None))
     if site.gravity is not None:
         rows.append(_measured("site", "", "gravity", "gravity", site.gravity))
     if site.latitude is not None:
@@ -110,6 +134,14 @@ def _fittings(survey: Survey) -> list[_Row]:
     return rows
 
 
+def _side_valves(survey: Survey) -> list[_Row]:
+    rows: list[_Row] = []
+    for valve in survey.side_valves:
+        rows.append(("side valve", valve.name, "where", valve.where, None, None, None))
+        rows.append(("side valve", valve.name, "state", valve.state, None, None, None))
+    return rows
+
+
 def _gauge(gauge: Gauge) -> list[_Row]:
     kind = GAUGE_KINDS[gauge.kind]
     rows: list[_Row] = [("gauge", gauge.name, "kind", gauge.kind, None, None, None)]
@@ -120,7 +152,17 @@ def _gauge(gauge: Gauge) -> list[_Row]:
             continue
         known = kind.keys.get(key)
         quantity = _SHOWN.get(known.dimension, "number") if known is not None else "number"
-        rows.append(_measured("gauge", gauge.name, what, "diameter" if key == "bore" else quantity, value))
+        dimension = known.dimension if known is not None else ""
+        what += " (absolute)" if isinstance(value, Pressure) and value.absolute else _UNITS.get(dimension, "")
+        rows.append(
+            _measured("gauge", gauge.name, what, "diameter" if key.endswith("bore") else quantity, value)
+        )
+    if gauge.calibration is not None:
+        rows.append(("gauge", gauge.name, "calibration", gauge.calibration.file, None, None, None))
+    for place, leg in enumerate(gauge.legs, start=1):
+        ends = [end if isinstance(end, str) else f"{end:g} m" for end in (leg.start, leg.end)]
+        text = f"{leg.fluid} from {ends[0]} to {ends[1]}"
+        rows.append(("gauge", gauge.name, f"leg {place}", text, None, None, None))
     small = _SMALL[kind.reading]
     for what, quantity, u in (
         ("u of a reading", small, gauge.reading_u),

@@ -44,8 +44,7 @@ def head_table(
     static = np.setdiff1d(np.arange(shape[0]), rows)
     for run in static:
         mine = np.isfinite(head[run]) & ~excluded[run]
-        sees = corrections.heads.taps.sum(axis=1)
-        fitted[run] = sees * (head[run][mine & (sees != 0)].mean() if (mine & (sees != 0)).any() else 0.0)
+        fitted[run] = _at_rest(head[run], mine, corrections.heads.levels)
         used[run] = mine
     part = np.full((len(rows), shape[1]), None, dtype=object)
     why = part.copy()
@@ -82,6 +81,14 @@ def head_table(
             "reason": reason.ravel(),
         },
     )
+
+
+def _at_rest(head: Array, used: Mask, levels: Array) -> Array:
+    """What a static run's levels give for each observation, m: the mean of the heads, 0 for a difference."""
+    if levels.shape[1] == 1:
+        seen = used & (levels[:, 0] != 0)
+        return np.asarray(levels[:, 0] * (head[seen].mean() if seen.any() else 0.0))
+    return np.asarray(levels @ np.linalg.lstsq(levels[used], head[used], rcond=None)[0])
 
 
 def tap_table(survey: Survey, corrections: Corrections, base: Array, excluded: Mask) -> pd.DataFrame:

@@ -128,8 +128,10 @@ def fitting_table(
         else:
             head = flowing.velocity[:, k] ** 2 / (2 * media.gravity)
             estimate = flowing.fits.lines.parameters[:, column] / head
-            own = flowing.own[:, column] / head - 2 * estimate * flowing.flow_u
-            effect = flowing.effect[:, column] / head[:, None] + estimate[:, None] * _head_effects(flowing, k)
+            own = flowing.own[:, column] / head - 2 * estimate * flowing.reach_flow_u[:, k]
+            effect = flowing.effect[:, column] / head[:, None] + estimate[:, None] * _head_effects(
+                flowing, int(k)
+            )
             fit = fit_loss_coefficient(
                 estimate,
                 flowing.random[:, column, column] / head**2 + own**2,
@@ -149,13 +151,15 @@ def fitting_table(
 
 
 def _head_effects(flowing: Flowing, k: int) -> Array:
-    """Relative change of K by the velocity head it is counted in, for each shared input."""
-    return np.array(
-        [
-            (0.0 if one.diameter is None else 4.0 * float(one.diameter[k])) - 2.0 * one.flow + one.gravity
-            for one in flowing.inputs
-        ]
-    )
+    """Relative change of K by the velocity head it is counted in, for each run and shared input."""
+    shape = flowing.velocity.shape
+    found = [
+        (0.0 if one.diameter is None else 4.0 * float(one.diameter[k]))
+        - 2.0 * np.broadcast_to(one.flow, shape)[:, k]
+        + one.gravity
+        for one in flowing.inputs
+    ]
+    return np.stack(found, axis=1) if found else np.zeros((shape[0], 0))
 
 
 def _no_coefficient(line: Line, m: int, estimate: Array) -> str:

@@ -18,7 +18,7 @@ from matplotlib.markers import CARETDOWN, CARETUP
 from matplotlib.patches import Polygon, Rectangle
 from matplotlib.text import Annotation
 
-from gradeline.hydraulics.friction import LAMINAR_LIMIT, TURBULENT_LIMIT, colebrook_white, laminar
+from gradeline.hydraulics.friction import LAMINAR_LIMIT, TURBULENT_LIMIT, colebrook_white
 from gradeline.quantities.printing import SI_DISPLAY, Display, rounded
 from gradeline.reduction.tables import Reduction
 from gradeline.report.figures.run_labels import drawn_lines, run_labels
@@ -70,7 +70,7 @@ class FrictionFactorArtists:
     bands : mapping of str to PolyCollection
         Its band, by reach: the roughness interval and the law's own uncertainty.
     laminar, smooth : Line2D or None
-        64/Re, and the law of a smooth wall.
+        f = 64/Re (another constant where the section is no circle), and the law of a smooth wall.
     critical : Rectangle or Polygon or None
         The critical zone.
     flagged : Line2D or None
@@ -269,10 +269,12 @@ def draw_friction_factor(ax: Axes, reduction: Reduction) -> FrictionFactorArtist
     heights = [factor[seen]]
     line = smooth = critical = None
     if grid_low.size:
+        # Of several shapes the first stands for all: each run's own check is in the text.
+        constant = float(reduction.laminar["constant"].iloc[0]) if len(reduction.laminar) else 64.0
         (line,) = ax.plot(
-            grid_low, laminar(grid_low), color=INK, linewidth=1.2, label="laminar, 64/Re", zorder=2
+            grid_low, constant / grid_low, color=INK, linewidth=1.2, label=f"laminar, {constant:.4g}/Re", zorder=2
         )
-        heights.append(laminar(grid_low))
+        heights.append(constant / grid_low)
     if low < TURBULENT_LIMIT and high > LAMINAR_LIMIT:
         critical = ax.axvspan(
             max(low, LAMINAR_LIMIT),

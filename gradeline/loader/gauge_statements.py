@@ -1,0 +1,65 @@
+"""What the loader takes for granted of gauges that hold a fluid of their own or read two taps, in sentences."""
+
+from __future__ import annotations
+
+from gradeline.gauge_kinds import GAUGE_KINDS
+from gradeline.loader.ledger import Ledger
+from gradeline.loader.repeats import RunTable
+from gradeline.survey import Gauge
+
+__all__ = ["holds_mercury", "state_gauge_assumptions"]
+
+
+def state_gauge_assumptions(ledger: Ledger, gauges: tuple[Gauge, ...], runs: RunTable) -> None:
+    """Note every default of such gauges, and what was made of their readings.
+
+    Parameters
+    ----------
+    ledger : Ledger
+        Takes the sentences.
+    gauges : tuple of Gauge
+        Of the survey.
+    runs : RunTable
+        Their readings.
+    """
+    note = ledger.assumptions.append
+    for gauge in gauges:
+        kind = GAUGE_KINDS[gauge.kind]
+        if not kind.differential:
+            continue
+        if "gauge_temperature" in kind.keys and not {"gauge_temperature", "gauge_fluid_density"} & set(
+            gauge.settings
+        ):
+            fluid = gauge.settings.get("gauge_fluid", "air")
+            note(
+                f"The temperature of the {fluid} in gauge {gauge.name!r} is not given: it is taken as the run's."
+            )
+        airy = gauge.settings.get("gauge_fluid", "air") == "air"
+        if airy and "gas_pressure" in kind.keys and "gas_pressure" not in gauge.settings:
+            note(
+                f"The pressure of the air in gauge {gauge.name!r} is not given: its density is taken at that of the "
+                "atmosphere (at 1 bar above it, the difference of heads would be 0.12 % smaller)."
+            )
+        if "line_temperature" in kind.keys and not {"line_temperature", "line_fluid"} & set(gauge.settings):
+            note(
+                f"The connecting lines of gauge {gauge.name!r} are taken as full of the flowing fluid at the run's temperature."
+            )
+        if kind.limbs and not {"left_bore", "right_bore"} & set(gauge.settings):
+            note(
+                f"The limbs of gauge {gauge.name!r} are taken as of one bore, so that their capillary rises cancel."
+            )
+    if runs.referenced:
+        note(
+            "What the reference gauge read above its mean of the run was taken off every reading beside it, so that a change "
+            "during the run does not bend the line; its own scatter counts in each."
+        )
+
+
+def holds_mercury(gauge: Gauge) -> bool:
+    """Return whether there is mercury in a gauge or its lines."""
+    named = {
+        gauge.settings.get("line_fluid"),
+        gauge.settings.get("gauge_fluid"),
+        *(leg.fluid for leg in gauge.legs),
+    }
+    return any("mercury" in str(name).casefold() for name in named)
