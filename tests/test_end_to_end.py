@@ -133,7 +133,8 @@ def test_the_demo_is_reduced(demo):
     assert there == {"report.html", "reduction.json", "figures", *(f"{table}.csv" for table in RESULT_TABLES)}
     runs = {"copper_bench": 10, "cast_main": 7, "mercury_bench": 10, "hydrant_main": 6}[name]
     figures = sorted(path.name for path in (out / "figures").iterdir())
-    assert len(figures) == 2 * (runs + 3)
+    drawn = runs - (name == "mercury_bench")  # differences alone: a run at rest has no grade line to show
+    assert len(figures) == 2 * (drawn + 3)
     assert all((out / "figures" / figure).stat().st_size > 1000 for figure in figures)
 
 

@@ -128,7 +128,13 @@ def gauges(
 
         if source != surveys[0]:
             typer.echo()
-        typer.echo(gauges_told(read_survey(source)))
+        try:
+            survey = read_survey(source)
+        except UsageError:  # nothing is given beside it here: only a table of heads asks for more
+            raise UsageError(
+                "one table of heads has no gauges; give a survey that describes them in survey.toml"
+            ) from None
+        typer.echo(gauges_told(survey))
 
     code = max(_attempt(one, source) for source in surveys)
     if code:

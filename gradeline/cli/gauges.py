@@ -40,14 +40,14 @@ def _lines(one: GaugeRange) -> list[str]:
         lines.append(
             f"  suits        no manometer with a board of {one.board:g} m: {best.fluid} would need {_head(best.largest)}"
         )
-    finest = min(one.choices, key=lambda each: each.step)
+    finest = max(one.choices, key=lambda each: each.smallest)
     if finest is not best and best.step > _COARSE:
         lines.append(f"               {finest.fluid} for the smallest differences alone")
     for each in one.choices:
         verdict = "" if each.fits else ", beyond the board"
         lines.append(
-            f"    {each.fluid}: deflections {_head(each.smallest)} to {_head(each.largest)}{verdict}; one step is "
-            f"{_percent(each.step)} of the smallest"
+            f"    {each.fluid}: deflections {_head(each.smallest)} to {_head(each.largest)}{verdict}"
+            + (f"; one step is {_percent(each.step)} of the smallest" if math.isfinite(each.step) else "")
         )
     return lines
 

@@ -14,6 +14,9 @@ from gradeline.quantities import DIMENSIONS, Unit, parse_unit
 
 __all__ = ["Columns", "Known"]
 
+#: How a plain number is headed where one is asked for.
+_PLAIN = ("1", "count", "counts")
+
 
 @dataclass(frozen=True)
 class Known:
@@ -161,11 +164,21 @@ class Columns:
 def read_unit(ledger: Ledger, cells: Cells, index: int, dimensions: tuple[str, ...]) -> Unit | None:
     """Return the unit of a heading, of the first of `dimensions` that it fits; None with a problem noted."""
     heading = cells.headings[index]
+    if heading.unit in _PLAIN and "dimensionless" in dimensions:
+        return Unit(heading.unit, "dimensionless", 1.0)
     first: QuantityError | None = None
     for dimension in dimensions:
         try:
             return parse_unit(heading.unit or "", dimension)
         except QuantityError as error:
             first = first or error
-    ledger.problem(cells.file, cells.heading_line, heading.text, str(first))
+    told = str(first)
+    if heading.unit and len(dimensions) > 1 and "dimensionless" in dimensions:
+        *nouns, last = (DIMENSIONS[dimension].noun for dimension in dimensions)
+        units = ", ".join(DIMENSIONS[dimension].units[0] for dimension in dimensions[:-1])
+        told = (
+            f"the unit {heading.unit!r} is not one of {', '.join(nouns)} or {last}; give a unit such as {units}, %, and [1] "
+            "for counts, a frequency, a current or a voltage: write it in the readings and in the meter's table alike"
+        )
+    ledger.problem(cells.file, cells.heading_line, heading.text, told)
     return None

@@ -336,7 +336,8 @@ def _paths(value: object, path: str = "", depth: int = 0) -> Iterator[str]:
 
 def _list(ledger: Ledger, model: type[_Table], data: object, name: str) -> tuple[_Table | None, ...]:
     if not isinstance(data, list):
-        ledger.problem(NAME, None, name, f"{written(data)} stands here; begin each one with [[{name}]]")
+        header = f"[[{name}]], alone on its line (in a workbook: alone in column A of its own row)"
+        ledger.problem(NAME, None, name, f"{written(data)} stands here; begin each one with {header}")
         return (None,)
     return tuple(
         _validate(ledger, model, each, f"{name}[{place}]") for place, each in enumerate(data, start=1)

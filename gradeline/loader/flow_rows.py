@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from typing import Any
 
 import numpy as np
 import pandas as pd
 
+from gradeline.flow_methods import FLOW_METHODS
 from gradeline.loader.cells import nearest
 from gradeline.loader.columns import Columns, Known
 from gradeline.loader.flow_keys import FlowTable
@@ -20,9 +22,17 @@ _NAME = "survey.toml"
 _DIRECTIONS = ("rising", "falling")
 
 
-def flow_columns(table: FlowTable | None) -> dict[str, Known]:
-    """Return the columns of the runs that the flow is read from."""
-    table = table or FlowTable()
+def flow_columns(table: FlowTable | None, headings: Iterable[str] = ()) -> dict[str, Known]:
+    """Return the columns of the runs that the flow is read from.
+
+    Where the table of the flow is at fault (None) they are those of `headings` that any method reads.
+    """
+    if table is None:
+        columns = [(name, one) for method in FLOW_METHODS.values() for name, one in method.columns.items()]
+        read = {"flow", "flow start", "flow end", *(name for name, _ in columns)}
+        prefixes = tuple(f"{name} " for name, one in columns if one.each_outlet)
+        own = [name for name in headings if name in read or name.startswith(prefixes)]
+        return {**{name: Known(own_unit=False) for name in own}, "direction": Known()}
     if table.setup.method == "direct":
         remedy = "give the flow, 0 for a static run"
         found = {
@@ -45,9 +55,10 @@ def flow_columns(table: FlowTable | None) -> dict[str, Known]:
 def flow_of_rows(ledger: Ledger, columns: Columns, table: FlowTable | None) -> np.ndarray:
     """Return the flow of each row, m³/s; NaN where it is still to be worked out from the method's readings.
 
-    A row is static where all its primary readings are 0.
+    A row is static where all its primary readings are 0. Nothing is known where the table of the flow is at fault.
     """
-    table = table or FlowTable()
+    if table is None:
+        return np.full(len(columns.cells), np.nan)
     if table.setup.method != "direct":
         primary = [name for name, column in table.column_names.items() if column == table.method.primary]
         read = np.stack([columns.values(name) for name in primary], axis=1)
@@ -63,12 +74,13 @@ def flow_of_rows(ledger: Ledger, columns: Columns, table: FlowTable | None) -> n
 
 def check_flows(rows: Rows, table: FlowTable | None) -> None:
     """Note every reading of the flow that is missing or that cannot be, and every unknown direction."""
-    table = table or FlowTable()
     columns = rows.columns
     if "direction" in columns:
         for row, cell in enumerate(columns.raw("direction")):
             if cell and cell not in _DIRECTIONS:
                 columns.problem(row, "direction", f"unknown {cell!r}; {nearest(cell, _DIRECTIONS)}")
+    if table is None:
+        return
     if table.setup.method == "direct":
         _check_direct(rows)
         return
@@ -187,8 +199,7 @@ def _check_direct(rows: Rows) -> None:
 
 def flow_readings(rows: Rows, table: FlowTable | None) -> pd.DataFrame:
     """Return what the method reads, one row for each row of the ``file``, with its ``line``."""
-    table = table or FlowTable()
-    if table.setup.method == "direct":
+    if table is None or table.setup.method == "direct":
         return pd.DataFrame()
     return pd.DataFrame(
         {

@@ -10,6 +10,7 @@ import pandas as pd
 
 from gradeline.gauge_kinds import GAUGE_KINDS
 from gradeline.loader.document import NAME, GaugeTable
+from gradeline.loader.gauge_keys import Span
 from gradeline.loader.gauges import level_labels
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.repeats import RunTable
@@ -52,7 +53,7 @@ def with_gauge_columns(taps: TapTable, gauges: Mapping[str, GaugeTable]) -> TapT
     differential = _differential(gauges)
     bare = frozenset(tap.name for tap in taps.taps if tap.gauge is None) if differential else frozenset()
     reads, gauge_of = dict(taps.reads), {tap.name: tap.gauge for tap in taps.taps}
-    spans: dict[str, tuple[float, float]] = {}
+    spans: dict[str, Span] = {}
     names = [name for name in taps.distinct if name not in bare]
     extra: list[str] = []
     for gauge in differential:
@@ -66,7 +67,8 @@ def with_gauge_columns(taps: TapTable, gauges: Mapping[str, GaugeTable]) -> TapT
         if span is not None:
             spans |= dict.fromkeys(parts, span)
             # One deflection is a difference of two places on the scale.
-            both = span if kind.reading == "pressure" else (span[0] - span[1], span[1] - span[0])
+            wide = span[1] - span[0]
+            both = span if kind.reading == "pressure" else Span((-wide, wide), span.unit)
             spans |= dict.fromkeys(whole, both)
     for tap in taps.taps:
         gauge_table = gauges.get(tap.gauge or "")

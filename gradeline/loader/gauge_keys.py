@@ -4,14 +4,22 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable
-from typing import Any
+from typing import Any, Self
 
 from gradeline.errors import QuantityError
 from gradeline.gauge_kinds import GaugeKey, Pressure
 from gradeline.loader.keys import choice_reader, measured_reader, read_text, written
-from gradeline.quantities import Measured, parse_quantity
+from gradeline.quantities import Measured, Unit, parse_quantity, parse_unit
 
-__all__ = ["EXAMPLES", "gauge_key_reader", "plain_value", "range_reader", "read_file_name", "read_leg_end"]
+__all__ = [
+    "EXAMPLES",
+    "Span",
+    "gauge_key_reader",
+    "plain_value",
+    "range_reader",
+    "read_file_name",
+    "read_leg_end",
+]
 
 #: What a value of each dimension looks like, for messages and for the written survey.
 EXAMPLES = {
@@ -60,10 +68,22 @@ def _read_gas_pressure(value: object) -> Pressure:
     return Pressure(pressure.value, pressure.u, absolute=bool(found))
 
 
-def range_reader(dimension: str, example: str) -> Callable[[object], tuple[float, float]]:
+class Span(tuple[float, float]):
+    """The lowest and the highest reading of a scale, SI, with the unit that the range is written in."""
+
+    unit: Unit
+
+    def __new__(cls, ends: tuple[float, float], unit: Unit | None = None) -> Self:
+        """Make one; without a unit it is told as it is."""
+        made = super().__new__(cls, ends)
+        made.unit = unit or Unit("", "dimensionless", 1.0)
+        return made
+
+
+def range_reader(dimension: str, example: str) -> Callable[[object], Span]:
     """A reader of the lowest and the highest reading, such as ``"0 to 1.2 m"``."""
 
-    def read(value: object) -> tuple[float, float]:
+    def read(value: object) -> Span:
         text = read_text(value)
         parts = re.split(r"\s+to\s+", text)
         if len(parts) != 2:
@@ -74,7 +94,7 @@ def range_reader(dimension: str, example: str) -> Callable[[object], tuple[float
         low = parse_quantity(f"{parts[0]} {unit}" if bare else parts[0], dimension)
         if high.value <= low.value:
             raise QuantityError(f"{text!r} ends below its beginning; write it as {example!r}")
-        return low.value, high.value
+        return Span((low.value, high.value), parse_unit(re.split(r"\+/-|±", unit)[0].strip(), dimension))
 
     return read
 

@@ -2,12 +2,37 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+
 from gradeline.gauge_kinds import GAUGE_KINDS
+from gradeline.loader.grouped import quoted
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.repeats import RunTable
 from gradeline.survey import Gauge
 
-__all__ = ["holds_mercury", "state_gauge_assumptions"]
+__all__ = ["grouped", "holds_mercury", "state_gauge_assumptions"]
+
+
+def grouped(said: Iterable[tuple[str, str]]) -> list[str]:
+    """Return each sentence once, with the names of all gauges it speaks of.
+
+    Parameters
+    ----------
+    said : iterable of (str, str)
+        Name of a gauge, and a sentence with ``{gauge}`` where it is named.
+
+    Examples
+    --------
+    >>> grouped([("a", "The zero of {gauge} is not given."), ("b", "The zero of {gauge} is not given.")])
+    ["The zero of gauges 'a' and 'b' is not given."]
+    """
+    names: dict[str, list[str]] = {}
+    for name, sentence in said:
+        names.setdefault(sentence, []).append(name)
+    return [
+        sentence.replace("{gauge}", f"gauge{'s' * (len(of) > 1)} {quoted(of, most=8)}")
+        for sentence, of in names.items()
+    ]
 
 
 def state_gauge_assumptions(ledger: Ledger, gauges: tuple[Gauge, ...], runs: RunTable) -> None:
@@ -22,7 +47,7 @@ def state_gauge_assumptions(ledger: Ledger, gauges: tuple[Gauge, ...], runs: Run
     runs : RunTable
         Their readings.
     """
-    note = ledger.assumptions.append
+    said: list[tuple[str, str]] = []
     for gauge in gauges:
         kind = GAUGE_KINDS[gauge.kind]
         if not kind.differential:
@@ -31,25 +56,38 @@ def state_gauge_assumptions(ledger: Ledger, gauges: tuple[Gauge, ...], runs: Run
             gauge.settings
         ):
             fluid = gauge.settings.get("gauge_fluid", "air")
-            note(
-                f"The temperature of the {fluid} in gauge {gauge.name!r} is not given: it is taken as the run's."
+            said.append(
+                (
+                    gauge.name,
+                    f"The temperature of the {fluid} in {{gauge}} is not given: it is taken as the run's.",
+                )
             )
         airy = gauge.settings.get("gauge_fluid", "air") == "air"
         if airy and "gas_pressure" in kind.keys and "gas_pressure" not in gauge.settings:
-            note(
-                f"The pressure of the air in gauge {gauge.name!r} is not given: its density is taken at that of the "
-                "atmosphere (at 1 bar above it, the difference of heads would be 0.12 % smaller)."
+            said.append(
+                (
+                    gauge.name,
+                    "The pressure of the air in {gauge} is not given: its density is taken at that of the "
+                    "atmosphere (at 1 bar above it, the difference of heads would be 0.12 % smaller).",
+                )
             )
         if "line_temperature" in kind.keys and not {"line_temperature", "line_fluid"} & set(gauge.settings):
-            note(
-                f"The connecting lines of gauge {gauge.name!r} are taken as full of the flowing fluid at the run's temperature."
+            said.append(
+                (
+                    gauge.name,
+                    "The connecting lines of {gauge} are taken as full of the flowing fluid at the run's temperature.",
+                )
             )
         if kind.limbs and not {"left_bore", "right_bore"} & set(gauge.settings):
-            note(
-                f"The limbs of gauge {gauge.name!r} are taken as of one bore, so that their capillary rises cancel."
+            said.append(
+                (
+                    gauge.name,
+                    "The limbs of {gauge} are taken as of one bore, so that their capillary rises cancel.",
+                )
             )
+    ledger.assumptions.extend(grouped(said))
     if runs.referenced:
-        note(
+        ledger.assumptions.append(
             "What the reference gauge read above its mean of the run was taken off every reading beside it, so that a change "
             "during the run does not bend the line; its own scatter counts in each."
         )

@@ -87,11 +87,14 @@ def _check_fluid(
     name = values.get("gauge_fluid") or "air"
     own = values.get("gauge_fluid_density")
     if own is None and name not in LINE_FLUIDS:
+        hint = nearest(name, LINE_FLUIDS).replace("?", "? Otherwise")
         _note(
             ledger,
             gauge,
             "gauge_fluid",
-            f"no density is known for {name!r}; add gauge_fluid_density, or choose from {', '.join(LINE_FLUIDS)}",
+            f"no density is known for {name!r}; {hint} add gauge_fluid_density"
+            if hint.startswith("did")
+            else f"no density is known for {name!r}; add gauge_fluid_density, or choose from {', '.join(LINE_FLUIDS)}",
         )
         return
     if own is None:

@@ -157,6 +157,11 @@ def _path(text: str) -> list[tuple[str, int | None]]:
     while at < len(text):
         found = _SEGMENT.match(text, at)
         if found is None or (found[3] == "." and found.end() == len(text)):
+            if "[[" in text:
+                raise ValueError(
+                    f"{text!r} is no key; a header such as [[reach]] stands alone in column A of its own row, its keys "
+                    "in the rows below"
+                )
             raise ValueError(f"{text!r} is no key; write it as fluid.name or reach[1].diameter")
         parts.append((found[1].strip("\"'").strip(), int(found[2]) if found[2] else None))
         at = found.end()

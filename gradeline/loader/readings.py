@@ -60,7 +60,7 @@ def read_runs(
     *,
     is_water: bool | None,
     flow_u: Stated | None,
-    flow: FlowTable | None = None,
+    flow: FlowTable | None,
     rule: TemperatureRule | None = None,
     branches: Sequence[Branch] = (),
 ) -> RunTable | None:
@@ -77,7 +77,7 @@ def read_runs(
     flow_u : Stated or None
         Stated uncertainty of one flow, against which repeats are held.
     flow : FlowTable or None
-        How the flow was measured; None: it is given itself.
+        How the flow was measured; None where that is at fault, which leaves its columns unchecked.
     rule : TemperatureRule or None
         What the temperatures are held to where the fluid is neither water nor constant.
     branches : sequence of Branch
@@ -137,7 +137,11 @@ def read_runs(
 def _run_rows(
     ledger: Ledger, cells: Cells, flow: FlowTable | None, branches: Sequence[Branch], *, others: bool
 ) -> Rows:
-    known = {**_RUN_COLUMNS, **flow_columns(flow), **branch_columns(branches)}
+    known = {
+        **_RUN_COLUMNS,
+        **flow_columns(flow, [heading.name for heading in cells.headings]),
+        **branch_columns(branches),
+    }
     columns = Columns(ledger, cells, known, others=others)
     labels = columns.labels("run")
     return Rows(

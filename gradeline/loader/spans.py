@@ -35,13 +35,14 @@ def check_spans(ledger: Ledger, file: str, rows: Rows, taps: TapTable) -> None:
         mine = rows.reading_taps == code
         with np.errstate(invalid="ignore"):
             beyond = np.flatnonzero(mine & ((rows.values < low - slack) | (rows.values > high + slack)))
-        unit = "m" if taps.reads.get(name) == "length" else "Pa"
+        unit = span.unit
+        shown = " to ".join(f"{unit.from_si(end):g}" for end in span)
         for place in beyond[: 1 if len(beyond) > TOLD_SINGLY else None].tolist():
             more = f", and so do {len(beyond) - 1} more readings" if len(beyond) > TOLD_SINGLY else ""
             ledger.problem(
                 file,
                 None,
                 name,
-                f"{rows.told(place)} lies beyond the scale of gauge {taps.gauge_of.get(name)!r}, {low:g} to {high:g} {unit}"
+                f"{rows.told(place)} lies beyond the scale of gauge {taps.gauge_of.get(name)!r}, {shown} {unit.text}"
                 f"{more}; mend the reading or the gauge's range",
             )

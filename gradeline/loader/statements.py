@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from gradeline.loader.document import Document
-from gradeline.loader.gauge_statements import holds_mercury, state_gauge_assumptions
+from gradeline.loader.gauge_statements import grouped, holds_mercury, state_gauge_assumptions
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.repeats import RunTable
 from gradeline.loader.taps import TapTable
@@ -64,15 +64,21 @@ def state_assumptions(
             f"The elevation of the gauge is not given at {_listed(at_axis)}: "
             "it is taken to be at the pipe's axis."
         )
+    said: list[tuple[str, str]] = []
     for gauge in gauges:
         if "zero" not in GAUGE_KINDS[gauge.kind].keys:
             continue  # its readings are no heights above datum
         if "zero" not in gauge.settings:
-            note(f"The zero of gauge {gauge.name!r} is not given: it is taken to be at the datum.")
+            said.append((gauge.name, "The zero of {gauge} is not given: it is taken to be at the datum."))
         if "inclination" not in gauge.settings:
-            note(f"The inclination of gauge {gauge.name!r} is not given: its scale is taken as upright.")
+            said.append(
+                (gauge.name, "The inclination of {gauge} is not given: its scale is taken as upright.")
+            )
         if "bore" not in gauge.settings:
-            note(f"The tube bore of gauge {gauge.name!r} is not given: no capillary rise is taken off.")
+            said.append(
+                (gauge.name, "The tube bore of {gauge} is not given: no capillary rise is taken off.")
+            )
+    ledger.assumptions.extend(grouped(said))
     state_gauge_assumptions(ledger, gauges, runs)
     if len(gauges) == 1 and "gauge" not in taps.columns and not GAUGE_KINDS[gauges[0].kind].differential:
         note(f"The gauge {gauges[0].name!r} is the only one: it is taken to read every tap.")

@@ -10,6 +10,7 @@ import numpy as np
 from gradeline.loader.cells import nearest, parse_heading
 from gradeline.loader.columns import Columns, Known
 from gradeline.loader.document import GaugeTable
+from gradeline.loader.gauge_keys import Span
 from gradeline.loader.grouped import TOLD_SINGLY, rows_phrase
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.line import within_line
@@ -61,7 +62,7 @@ class TapTable:
         Taps without a gauge of their own.
     gauge_of : mapping of str to str or None
         The gauge of each column of readings.
-    spans : mapping of str to (float, float)
+    spans : mapping of str to Span
         Lowest and highest reading of a column, SI.
     """
 
@@ -75,7 +76,7 @@ class TapTable:
     optional: frozenset[str] = frozenset()
     bare: frozenset[str] = frozenset()
     gauge_of: Mapping[str, str | None] = field(default_factory=dict)
-    spans: Mapping[str, tuple[float, float]] = field(default_factory=dict)
+    spans: Mapping[str, Span] = field(default_factory=dict)
 
     @property
     def distinct(self) -> list[str]:

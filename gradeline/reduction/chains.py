@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from types import MappingProxyType
 from typing import Any
@@ -30,11 +30,14 @@ class Chain:
         For each level but the first: how often it enters the rise of each leg, and its values in each run, m.
     flowing : (L, 1, 1) array
         1 for the legs of flowing fluid, whose density goes with it.
+    density_errors : tuple of (str, array)
+        For each fluid whose density has a stated uncertainty, the standard uncertainty in its legs, kg/m³.
     """
 
     arguments: Mapping[str, Any] = field(default_factory=lambda: MappingProxyType({}))
     other_levels: tuple[tuple[Array, Array], ...] = ()
     flowing: Array = field(default_factory=lambda: np.zeros((0, 1, 1)))
+    density_errors: tuple[tuple[str, Array], ...] = ()
 
 
 def level_names(legs: tuple[Leg, ...], taps: set[str]) -> list[str]:
@@ -96,7 +99,18 @@ def chain_of(survey: Survey, media: Media, gauge: Gauge, tap: str, tap_2: str | 
         },
         other_levels=tuple((share(name), levels[name]) for name in names[1:]),
         flowing=np.array([float(_flows(survey, leg)) for leg in legs])[:, None, None],
+        density_errors=_density_errors(legs),
     )
+
+
+def _density_errors(legs: Sequence[Leg]) -> tuple[tuple[str, Array], ...]:
+    """The stated density errors by fluid: legs of one fluid are filled from one bottle and err together."""
+    sizes: dict[str, Array] = {}
+    for place, leg in enumerate(legs):
+        if leg.density is not None and leg.density.u:
+            change = sizes.setdefault(leg.fluid, np.zeros((len(legs), 1, 1)))
+            change[place] = leg.density.u
+    return tuple(sizes.items())
 
 
 def _levels(survey: Survey, gauge: Gauge, names: list[str]) -> dict[str, Array]:
@@ -116,4 +130,7 @@ def _density(survey: Survey, media: Media, leg: Leg, temperature: Array) -> Arra
         return np.full_like(media.density[:, None], leg.density.value)
     if _flows(survey, leg):
         return media.density[:, None]
+    if leg.fluid == "air":
+        # The air beside the board, as for every other gauge of the survey.
+        return np.full_like(media.density[:, None], media.air)
     return np.broadcast_to(fluid_density(leg.fluid, temperature), media.density[:, None].shape)

@@ -104,8 +104,10 @@ def steadied(corrections: Corrections, survey: Survey, line: Line, media: Media)
     flow = survey.runs["flow"].to_numpy(float)
     start = survey.runs["flow_start"].to_numpy(float)
     end = survey.runs["flow_end"].to_numpy(float)
-    count = heads.observed.shape[1]
-    part = np.linspace(0.0, 1.0, count) if count > 1 else np.array([0.5])
+    # Only what was read took its turn; a single reading is taken to have been read half-way.
+    read = np.isfinite(heads.observed)
+    turns = read.sum(axis=1)[:, None] - 1
+    part = np.where(turns > 0, (np.cumsum(read, axis=1) - 1) / np.maximum(turns, 1), 0.5)
     with np.errstate(invalid="ignore", divide="ignore"):
         then = start[:, None] + (end - start)[:, None] * part
         log_ratio = np.where(drift[:, None] != 0, np.log(flow[:, None] / then), 0.0)

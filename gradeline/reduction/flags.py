@@ -29,6 +29,8 @@ Array = NDArray[np.float64]
 _LAW_FALSE_ALARM = 0.01
 #: Taps named of a shared misfit: the clearest ones.
 _MOST_TAPS = 4
+#: Runs named one by one.
+_FEW = 3
 
 
 @dataclass(frozen=True)
@@ -182,19 +184,26 @@ def _rising(survey: Survey, flowing: Flowing, friction: Friction) -> list[_Flag]
         known = np.isfinite(friction.slope_u[:, k])
         # Where nothing tells the scatter, most of the runs must agree.
         agree = (slopes[:, k] < 0) & ~known
-        count = int(beyond[:, k].sum()) + (
-            int(agree.sum()) if 2 * agree.sum() > max(int((~known).sum()), 1) else 0
+        rising = beyond[:, k] | (agree & (2 * agree.sum() > max(int((~known).sum()), 1)))
+        names = [str(survey.runs["run"].iloc[flowing.rows[run]]) for run in np.flatnonzero(rising)]
+        if not names:
+            continue
+        which = (
+            f"in run {' and '.join(names)}"
+            if len(names) <= _FEW
+            else f"in {len(names)} of {len(slopes)} runs"
         )
-        if count:
-            found.append(
-                _Flag(
-                    "law",
-                    suggestion=(
-                        f"in {count} of {len(slopes)} runs the head rises downstream in reach {reach.name!r}, which friction "
-                        "cannot do: look whether chainages, tap labels or the direction of the flow are the wrong way round"
-                    ),
-                )
+        cause = (
+            "look for a sign, swapped limbs or swapped taps there"
+            if 2 * len(names) < len(slopes)
+            else "look whether chainages, tap labels, limbs or the direction of the flow are the wrong way round"
+        )
+        found.append(
+            _Flag(
+                "law",
+                suggestion=f"{which} the head rises downstream in reach {reach.name!r}, which friction cannot do: {cause}",
             )
+        )
     return found
 
 

@@ -12,6 +12,7 @@ from gradeline.errors import Problem, SurveyError
 from gradeline.flow_methods import FLOW_METHODS, FlowMethod, FlowSetup
 from gradeline.quantities import Measured
 from gradeline.reduction.drift import drift_uncertainty, flow_drift
+from gradeline.reduction.fluids import fluid_inputs
 from gradeline.reduction.heads import Heads, Input
 from gradeline.reduction.media import Media, media_of
 from gradeline.reduction.meters import FLOWS, MeterReadings
@@ -40,7 +41,7 @@ def metered_flow(survey: Survey) -> Metered:
     Parameters
     ----------
     survey : Survey
-        As read; returned as it is where the flow itself was given and did not drift.
+        As read; its flows stay as they are where the flow itself was given and did not drift.
 
     Returns
     -------
@@ -55,7 +56,7 @@ def metered_flow(survey: Survey) -> Metered:
     if survey.flow.method == "direct":
         drift = flow_drift(survey)
         if not drift.any():
-            return Metered(survey)
+            return Metered(replace(survey, assumptions=(*survey.assumptions, *_steady(survey))))
         u, assumptions, cautions = drift_uncertainty(survey, drift)
         return Metered(
             replace(
@@ -95,7 +96,7 @@ def _from_readings(survey: Survey) -> Metered:
         return np.asarray(change / _PART / np.where(per_run > 0, per_run, 1.0))[:, None]
 
     inputs = _inputs(survey, media, given, flow, relative)
-    assumptions = [meter.said(given)]
+    assumptions = [meter.said(given), *_twice_stated(survey, setup, method), *_steady(survey)]
     cautions = _unstated(survey, setup, method)
     if meter.limits is not None and len(flow):
         cautions += [
@@ -111,6 +112,16 @@ def _from_readings(survey: Survey) -> Metered:
         ),
         inputs,
     )
+
+
+def _steady(survey: Survey) -> list[str]:
+    """Tell that a drift could not be looked for where taps were read in order and each run has one flow."""
+    if survey.flow.read != "in order" or {"flow_start", "flow_end"} <= set(survey.runs.columns):
+        return []
+    return [
+        "The taps were read in order and each run has one value of the flow: a drift of the flow meanwhile could not be "
+        "looked for, and none is taken."
+    ]
 
 
 def _given(
@@ -216,15 +227,22 @@ def _media_inputs(
     """What density, temperature and gravity change: the same errors as those of the heads, by the same names."""
     flow_of = FLOWS[given.setup.method].flow
     found = []
-    density = survey.fluid.density
-    if density is not None and density.relative_u:
-        changed = flow_of(replace(given, density=given.density * (1.0 + _PART * density.relative_u)))
-        found.append(Input("density", flow=relative(changed)))
+    labels = {name: place for place, name in enumerate(survey.runs["run"])}
+    run = np.array([labels[name] for name in survey.flow_readings["run"]], dtype=np.intp)
+    at = run[survey.runs["flow"].to_numpy(float)[run] != 0]
+    for one in fluid_inputs(survey.fluid, survey.runs["temperature"].to_numpy(float)):
+        stepped = replace(
+            given,
+            density=given.density * (1.0 + _PART * one.density[at]),
+            kinematic_viscosity=given.kinematic_viscosity * (1.0 + _PART * one.viscosity[at]),
+        )
+        pressure = survey.fluid.line_pressure
+        if one.name == "line pressure" and pressure is not None:
+            # The expansibility of the gas goes with it too.
+            stepped = replace(stepped, line_pressure=pressure.value + _PART * (pressure.u or 0.0))
+        found.append(Input(one.name, one.subject, flow=relative(flow_of(stepped))))
     if survey.stated.temperature:
-        labels = {name: place for place, name in enumerate(survey.runs["run"])}
-        run = np.array([labels[name] for name in survey.flow_readings["run"]], dtype=np.intp)
-        flows = survey.runs["flow"].to_numpy(float)[run] != 0
-        step = media.density_by_temperature[run[flows]] * survey.stated.temperature * _PART
+        step = media.density_by_temperature[at] * survey.stated.temperature * _PART
         found.append(
             Input("temperature", flow=relative(flow_of(replace(given, density=given.density + step))))
         )
@@ -232,6 +250,32 @@ def _media_inputs(
         changed = flow_of(replace(given, gravity=given.gravity * (1.0 + _PART * media.gravity_u)))
         found.append(Input("gravity", flow=relative(changed)))
     return [one for one in found if np.any(np.abs(one.flow) > 1e-12)]
+
+
+def _twice_stated(survey: Survey, setup: FlowSetup, method: FlowMethod) -> list[str]:
+    """Tell where [uncertainty] and [flow] both state an uncertainty of the flow."""
+    said = []
+    random = [key for column in method.columns if (key := f"u_{column.replace(' ', '_')}") in setup.settings]
+    if survey.stated.flow is not None and random:
+        said.append(
+            "The flow's random uncertainty is the one stated in [uncertainty]; "
+            f"[flow] {' and '.join(random)} {'is' if len(random) == 1 else 'are'} not used."
+        )
+    shared = [key for key in ("u_scale", "u_coefficient") if key in setup.settings]
+    coefficient = setup.settings.get("discharge_coefficient")
+    if isinstance(coefficient, Measured) and coefficient.u:
+        shared.append("discharge_coefficient")
+    shared += [
+        f"discharge_coefficient of outlet {outlet.name!r}"
+        for outlet in setup.outlets
+        if isinstance(value := outlet.settings.get("discharge_coefficient"), Measured) and value.u
+    ]
+    if survey.stated.flow_scale and shared:
+        said.append(
+            f"[uncertainty] flow_scale is counted beside the uncertainty of [flow] {' and '.join(shared)}: "
+            "keep one if both describe the same calibration."
+        )
+    return said
 
 
 def _unstated(survey: Survey, setup: FlowSetup, method: FlowMethod) -> list[str]:

@@ -99,6 +99,11 @@ def friction_of(
             shared = np.einsum("fpq,fpq->fp", flowing.effect, flowing.effect)[:, 1 + wall.reaches]
             total[:, wall.reaches] = np.sqrt(part**2 + shared)
             base[:, wall.reaches] = wall.fit.dof
+    # Scatter that nobody stated and nothing shows contributes nothing: what was stated is then all there is to say.
+    unknown = ~np.isfinite(random)
+    stated = np.einsum("fpq,fpq->fp", flowing.effect, flowing.effect) + flowing.own**2
+    stated = np.sqrt(stated[:, 1 : 1 + len(line.diameter)])
+    total = np.where(unknown, np.where(stated > 0, stated, np.nan), total)
     total, random = (np.where(np.isfinite(slope), values, np.nan) for values in (total, random))
     effective = _effective_dof(total, random, base)
     times = stdtrit(np.where(np.isfinite(effective), effective, 1e9), 0.5 + level / 2.0)
@@ -111,8 +116,9 @@ def friction_of(
     safe = np.where(positive, slope, np.nan)
     effect = _factor_effects(flowing, safe)
     own = flowing.own[:, 1 : 1 + len(line.diameter)] / safe - 2.0 * flowing.reach_flow_u
-    scatter = _scatter_variance(random, flowing, line)
+    scatter = np.where(unknown, 0.0, _scatter_variance(random, flowing, line))
     relative = np.sqrt(scatter / safe**2 + own**2 + _squared(effect))
+    relative = np.where(relative > 0, relative, np.nan)
     factor_dof = _effective_dof(relative, np.sqrt(scatter) / np.abs(safe), base)
     factor_times = np.asarray(
         stdtrit(np.where(np.isfinite(factor_dof), factor_dof, 1e9), 0.5 + level / 2.0), float
@@ -131,6 +137,7 @@ def friction_of(
     ratio = np.where(kind == "laminar", factor * reynolds / line.laminar_constant, np.nan)
     # f Re goes as D⁴ g S / (Q ν).
     drag = effect + _reynolds_effects(flowing, line) - _constant_effects(flowing, line)
+    drag_u = np.sqrt(scatter / safe**2 + (own + flowing.reach_flow_u) ** 2 + thin**2 + _squared(drag))
     return Friction(
         slope=slope,
         slope_u=total,
@@ -146,8 +153,7 @@ def friction_of(
         roughness_low=low,
         roughness_high=high,
         laminar_ratio=ratio,
-        laminar_ratio_u=ratio
-        * np.sqrt(scatter / safe**2 + (own + flowing.reach_flow_u) ** 2 + thin**2 + _squared(drag)),
+        laminar_ratio_u=ratio * np.where(drag_u > 0, drag_u, np.nan),
         regime=kind,
     )
 

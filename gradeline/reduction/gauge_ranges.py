@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gradeline.quantities import Measured
+from gradeline.reduction.corrections import static_corrections
 from gradeline.reduction.heads import Heads, heads_of
 from gradeline.reduction.media import fluid_density, media_of
 from gradeline.survey import GAUGE_KINDS, Gauge, Survey
@@ -18,8 +19,6 @@ Array = NDArray[np.float64]
 
 #: Height of a board where the survey states none, m.
 _BOARD = 1.0
-#: Smallest step of a scale where the survey states none, m.
-_STEP = 1e-3
 _ROOM = 293.15
 #: Gauge fluids to choose from beside what the survey names, kg/m³ at 20 °C: round densities of common ones.
 _LIQUIDS = {"an oil of 800 kg/m³ above": 800.0, "a liquid of 1600 kg/m³ below": 1600.0}
@@ -34,9 +33,9 @@ class FluidChoice:
     fluid : str
         Which one, and whether it lies above or below.
     largest, smallest : float
-        Deflection for the largest and the smallest difference, m.
+        Deflection for the largest and the smallest difference along the scale, m.
     step : float
-        What one step of the scale is of the smallest difference, dimensionless.
+        What one step of the scale is of the smallest difference, dimensionless; NaN where no resolution is known.
     fits : bool
         Whether the largest difference stays on the board.
     """
@@ -61,7 +60,7 @@ class GaugeRange:
     resolution : float
         Its smallest step as head, m; NaN where none is stated.
     smallest, largest : float
-        The differences of head over its taps in the flowing runs, m; NaN where there are none.
+        The differences of head over its taps in the flowing runs, offsets of the static runs taken off, m; NaN where there are none.
     board : float
         Height of the board that the fluids are judged by, m.
     choices : tuple of FluidChoice
@@ -94,15 +93,22 @@ def gauge_ranges(survey: Survey) -> tuple[GaugeRange, ...]:
     """
     media = media_of(survey)
     heads = heads_of(survey, media)
+    corrected = static_corrections(
+        heads,
+        survey.runs["flow"].to_numpy(float) == 0,
+        survey.repeats.to_numpy(float),
+        apply=True,
+        excluded=np.zeros(heads.observed.shape, dtype=bool),
+    ).heads
     density = float(np.mean(media.density))
     return tuple(
-        _range_of(survey, gauge, heads, density)
+        _range_of(survey, gauge, heads, corrected, density)
         for gauge in survey.gauges
         if any(one.gauge == gauge.name for one in survey.observations)
     )
 
 
-def _range_of(survey: Survey, gauge: Gauge, heads: Heads, density: float) -> GaugeRange:
+def _range_of(survey: Survey, gauge: Gauge, heads: Heads, corrected: Heads, density: float) -> GaugeRange:
     mine = np.array([one.gauge == gauge.name for one in survey.observations])
     gain, observed = heads.gain[:, mine], heads.observed[:, mine]
     known = np.isfinite(gain)
@@ -113,16 +119,18 @@ def _range_of(survey: Survey, gauge: Gauge, heads: Heads, density: float) -> Gau
     if span is not None and np.isfinite(observed).any():
         if differential and GAUGE_KINDS[gauge.kind].reading == "length":
             high = size * (span[1] - span[0])
-            low = -high
+            low = 0.0 if "area_ratio" in gauge.settings else -high  # of a well-type one limb is read
         else:
             readings = survey.readings.to_numpy(float)[:, mine]
             ends = [observed + gain * (end - readings) for end in span]
             low, high = float(np.nanmean(ends[0])), float(np.nanmean(ends[1]))
     flowing = survey.runs["flow"].to_numpy(float) != 0  # one still to be worked out from its readings is NaN
-    smallest, largest = _differences(observed[flowing], differential=differential)
+    smallest, largest = _differences(corrected.observed[flowing][:, mine], differential=differential)
     steps = GAUGE_KINDS[gauge.kind].reading == "length"
     board = span[1] - span[0] if span is not None and steps else _BOARD
-    step = gauge.resolution if gauge.resolution and steps else _STEP
+    step = gauge.resolution if gauge.resolution and steps else np.nan
+    slope = gauge.settings.get("inclination")
+    rise = float(np.sin(slope.value)) if isinstance(slope, Measured) else 1.0
     return GaugeRange(
         gauge=gauge.name,
         kind=gauge.kind,
@@ -132,7 +140,7 @@ def _range_of(survey: Survey, gauge: Gauge, heads: Heads, density: float) -> Gau
         smallest=smallest,
         largest=largest,
         board=board,
-        choices=_choices(density, smallest, largest, board, step),
+        choices=_choices(density, smallest, largest, board, step, rise),
     )
 
 
@@ -161,7 +169,7 @@ def _differences(observed: Array, *, differential: bool) -> tuple[float, float]:
 
 
 def _choices(
-    density: float, smallest: float, largest: float, board: float, step: float
+    density: float, smallest: float, largest: float, board: float, step: float, rise: float
 ) -> tuple[FluidChoice, ...]:
     """Gauge fluids in order: of those that keep the largest difference on the board the one that magnifies most."""
     if not np.isfinite(largest):
@@ -177,7 +185,7 @@ def _choices(
         difference = density - own if name.endswith("above") else own - density
         if difference <= 0:
             continue
-        deflection = density / difference
+        deflection = density / difference / rise
         found.append(
             FluidChoice(
                 fluid=name,

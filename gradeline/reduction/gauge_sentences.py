@@ -57,7 +57,8 @@ def gauge_cautions(survey: Survey, heads: Heads) -> list[str]:
         names = " and ".join(map(repr, floats))
         said.append(
             f"The gas pressure over the columns of gauge {names} is not known: the level of its columns is free in each "
-            "run. Slopes and differences stand; heads above datum do not."
+            "run. Slopes and differences stand but for the gas's own weight, taken as that of the air outside (0.12 % for "
+            "each bar above it); heads above datum do not."
         )
     if is_relative(survey):
         why = "under trapped gas of unknown pressure" if floats else "between two taps"

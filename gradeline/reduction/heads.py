@@ -143,6 +143,10 @@ def heads_of(survey: Survey, media: Media) -> Heads:
             for key, setting in gauge.settings.items()
             if isinstance(setting, Measured) and setting.u
         ]
+        effects += [
+            (f"density of {fluid} in the legs", head({"leg_density": change}).imag / STEP)
+            for fluid, change in chain.density_errors
+        ]
         effects += [(name, of_reading * change) for name, change in accuracy_errors(gauge, readings[:, mine])]
         effects += [
             ("gauge calibration", of_reading * change[:, mine])

@@ -22,6 +22,8 @@ Mask = NDArray[np.bool_]
 #: Errors of single taps that are the same in all runs, or grow with the slope.
 _STEADY = frozenset({"static reading", "tap elevation"})
 _ALONG_SLOPE = frozenset({"tap chainage"})
+#: Errors that all readings of one gauge share, and that set it apart from the others.
+_OF_A_GAUGE = frozenset({"gauge zero", "gauge zero reading", "gauge calibration"})
 #: A change of head below this is none, m.
 _NO_HEAD = 1e-9
 
@@ -197,7 +199,7 @@ def common_errors(
     parts += [
         one.heads
         for one in inputs
-        if one.name == "gauge zero" and one.heads is not None and not _is_level(one.heads, sees_level, used)
+        if one.name in _OF_A_GAUGE and one.heads is not None and not _is_level(one.heads, sees_level, used)
     ]
     return (np.stack(parts, axis=2) if parts else None), flow_effect
 

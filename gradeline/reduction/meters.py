@@ -24,6 +24,7 @@ from gradeline.hydraulics.weirs import (
     rehbock_flow,
     v_notch_limits,
 )
+from gradeline.quantities import Measured
 from gradeline.reduction.media import fluid_density
 
 __all__ = ["FLOWS", "Meter", "MeterReadings"]
@@ -184,7 +185,13 @@ def _v_notch_limits(given: MeterReadings, _: Array) -> list[str]:
 
 def _channel(given: MeterReadings) -> tuple[float, float, float]:
     width = given.values["notch_width"]
-    return given.values["crest_height"], width, given.values.get("channel_width", width)
+    channel = given.values.get("channel_width", width)
+    stated = [given.setup.settings.get(key) for key in ("notch_width", "channel_width")]
+    sizes = [one.value for one in stated if isinstance(one, Measured)]
+    if len(sizes) == 2 and sizes[0] >= sizes[1] * (1 - 1e-9):
+        # A notch that fills its channel is one width: an error of the notch is one of the channel too.
+        channel = width
+    return given.values["crest_height"], width, channel
 
 
 def _rectangular(given: MeterReadings) -> Array:
@@ -192,7 +199,7 @@ def _rectangular(given: MeterReadings) -> Array:
     head = given.columns["weir head"]
     if given.words.get("equation") == "rehbock":
         return rehbock_flow(head, crest, width, given.gravity)
-    return kindsvater_carter_flow(head, crest, min(width, channel), channel, given.gravity)
+    return kindsvater_carter_flow(head, crest, width, channel, given.gravity)
 
 
 def _rectangular_limits(given: MeterReadings, _: Array) -> list[str]:

@@ -9,7 +9,6 @@ from numpy.typing import NDArray
 
 from gradeline.fitting.misfit import PATTERNS
 from gradeline.fitting.null import FALSE_ALARM
-from gradeline.hydraulics.gravity import STANDARD_GRAVITY
 from gradeline.reduction.corrections import Corrections
 from gradeline.reduction.fluids import fluid_assumptions
 from gradeline.reduction.gauge_sentences import gauge_assumptions, gauge_cautions
@@ -43,7 +42,8 @@ def assumptions_of(
         said.append(
             f"Gravity {media.gravity:.5f} m/s² by the WGS 84 formula at the site's latitude and altitude."
         )
-    if media.gravity == STANDARD_GRAVITY and not any("9.80665" in text for text in said):
+    neither = survey.site.gravity is None and survey.site.latitude is None
+    if neither and not any("9.80665" in text for text in said):
         said.append("Gravity 9.80665 m/s², since neither gravity nor latitude was given.")
     said.append(
         f"Air beside columns and gauges: {media.air:.3f} kg/m³ (20 °C, 50 % humidity, standard atmosphere)."

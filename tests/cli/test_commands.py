@@ -313,3 +313,24 @@ def test_the_package_names_its_interface():
     assert gradeline.read_survey.__module__ == "gradeline.loader.read"
     with pytest.raises(AttributeError, match="has no attribute 'nothing'"):
         _ = gradeline.nothing
+
+
+def test_a_table_of_heads_has_no_gauges_to_tell(tmp_path):
+    table = tmp_path / "heads.csv"
+    table.write_text("chainage [m],head [mm]\n1,300\n2,200\n3,100\n", encoding="utf-8")
+    result = run("gauges", table)
+    assert result.exit_code == 2
+    assert "one table of heads has no gauges" in result.output
+    assert "--diameter" not in result.output
+
+
+def test_a_new_survey_tells_the_columns_of_a_differential_gauge(tmp_path):
+    assert run("new", tmp_path / "fresh").exit_code == 0
+    text = (tmp_path / "fresh" / "survey.toml").read_text(encoding="utf-8")
+    for words in (
+        "m1 [mm]",
+        "m1 left [mm]",
+        "positive where the head is higher",
+        "need no gauge in taps.csv",
+    ):
+        assert words in text

@@ -184,3 +184,34 @@ def test_the_examples_of_every_key_can_be_read(write_flow, method):
         write_flow(toml, columns, meter_csv="reading [mm],flow [L/s]\n0,0.1\n60,1\n")
     )
     assert set(survey.flow.settings) == {key for key in known.keys if not key.startswith("gauge")}
+
+
+@pytest.mark.parametrize(
+    ("toml", "columns"),
+    [
+        (PLATE.replace("30 mm", "52.5 mm"), READ),
+        (PLATE.replace("plate", "plat"), READ),
+        (PITOT.replace('"0.9"', '"9"'), {"pitot north [kPa]": [1, 2, 3, 4, 5]}),
+    ],
+)
+def test_a_fault_of_the_method_brings_no_fault_of_its_columns(write_flow, toml, columns):
+    (told,) = problems(write_flow(toml, columns))
+    assert told.startswith("survey.toml flow")
+
+
+METER_ROWS = "reading [1],flow [L/s]\n10,0.4\n20,0.6\n30,0.8\n40,1.0\n50,1.2\n"
+
+
+def test_a_meter_may_show_a_plain_number(write_flow):
+    counts = {"meter reading [1]": [10, 20, 30, 40, 50]}
+    survey = gradeline.read_survey(write_flow(METER, counts, meter_csv=METER_ROWS))
+    assert survey.flow_readings["meter reading"].tolist() == [10, 20, 30, 40, 50]
+
+
+def test_a_meter_in_hertz_is_told_how_to_write_it(write_flow):
+    told = problems(write_flow(METER, {"meter reading [Hz]": [10, 20, 30, 40, 50]}, meter_csv=METER_ROWS))
+    assert told[0] == (
+        "readings.csv row 1, meter reading [Hz]: the unit 'Hz' is not one of a flow, a length, a pressure, a velocity or a "
+        "pure number; give a unit such as L/s, m, kPa, m/s, %, and [1] for counts, a frequency, a current or a voltage: "
+        "write it in the readings and in the meter's table alike"
+    )

@@ -77,6 +77,23 @@ def test_a_drift_without_a_word_on_the_taps_is_a_caution(write_flow):
     assert any('write read = "in order" in [flow]' in text for text in cautions)
 
 
+@pytest.mark.parametrize("read", ["in order", "together"])
+def test_one_value_a_run_says_that_no_drift_could_be_looked_for(write_flow, read):
+    weir = f"""[flow]
+method = "v-notch weir"
+notch_angle = "90 deg"
+read = "{read}"
+"""
+    given = f'[flow]\nread = "{read}"\n'
+    for toml, columns in (
+        (given, {"flow [m^3/s]": FLOWS}),
+        (weir, {"weir head [m]": [0.038 + 0.003 * n for n in range(5)]}),
+    ):
+        metered = metered_flow(gradeline.read_survey(write_flow(toml, columns)))
+        told = [text for text in metered.survey.assumptions if "could not be looked for" in text]
+        assert len(told) == (read == "in order")
+
+
 def with_directions(write_flow, excess):
     flows = [*FLOWS, *(q * 1.01 for q in FLOWS[::-1])]
     heads = [9.0 - (9.0 - columns_of(q)) * (1 + excess * (place < 5)) for place, q in enumerate(flows)]

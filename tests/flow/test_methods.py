@@ -11,6 +11,7 @@ from gradeline.errors import SurveyError
 from gradeline.hydraulics.differential_meters import differential_meter_flow
 from gradeline.hydraulics.weirs import kindsvater_carter_flow, kindsvater_shen_flow, rehbock_flow
 from gradeline.reduction.flow import metered_flow
+from gradeline.report.inputs import statements
 
 from .conftest import FLOWS, NU, RHO, columns_of
 
@@ -250,14 +251,35 @@ def test_the_record_says_how_the_flow_was_measured(write_flow):
     )
     inputs = gradeline.reduce(gradeline.read_survey(write_flow(toml, cells(columns)))).inputs
     said = inputs[inputs["group"] == "flow"]
-    assert dict(zip(said["what"], said["text"], strict=True)) == {
-        "method": "hydrant pitot",
-        "u of pitot": "50 Pa",
-        "outlet north, bore": "0.01 m",
-        "outlet north, discharge coefficient": "0.9",
-        "outlet south, bore": "0.012 m",
-        "outlet south, discharge coefficient": "0.8",
+    cells_of = zip(said["text"], said["quantity"], said["value"], strict=True)
+    found = {
+        what: text or (quantity, value)
+        for what, (text, quantity, value) in zip(said["what"], cells_of, strict=True)
     }
+    assert found == {
+        "method": "hydrant pitot",
+        "u of pitot": ("pressure", 50.0),
+        "outlet north, bore": ("diameter", 0.01),
+        "outlet north, discharge coefficient": ("number", 0.9),
+        "outlet south, bore": ("diameter", 0.012),
+        "outlet south, discharge coefficient": ("number", 0.8),
+    }
+
+
+@pytest.mark.parametrize(
+    ("case", "keys", "told"),
+    [
+        ("hydrant pitot", 'u_pitot = "50 Pa"', "u of pitot 0.05 kPa, outlet north, bore 10 mm"),
+        ("weighing tank", 'u_mass = "20 g"\nu_time = "0.2 s"', "u of mass 0.02 kg, u of time 0.2 s"),
+        ("volumetric tank", 'u_volume = "100 mL"\nu_scale = "0.2 %"', "u of volume 0.1 L, u of scale 0.2 %"),
+        ("v-notch weir", 'u_weir_head = "0.2 mm"', "u of weir head 0.2 mm"),
+    ],
+)
+def test_the_page_shows_the_flow_in_units_of_a_bench(write_flow, case, keys, told):
+    toml, columns = CASES[case]
+    first, outlets, rest = toml.partition("[[flow.outlet]]")
+    folder = write_flow(f"{first}\n{keys}\n{outlets}{rest}", cells(columns))
+    assert told in dict(statements(gradeline.reduce(gradeline.read_survey(folder))))["Flow"]
 
 
 def test_check_tells_the_flow_that_was_worked_out(write_flow):

@@ -7,6 +7,7 @@ import pytest
 
 import gradeline
 from gradeline.errors import SurveyError
+from gradeline.reduction.gauge_ranges import gauge_ranges
 from tests.gauges.conftest import NAMES, RHO, heads
 from tests.gauges.test_reduction import ENDS, FALL, LEGS, MERCURY, UTUBE
 
@@ -234,3 +235,47 @@ def test_labels_of_gas_pressures_are_read(bench):
     assert any(
         "The gas pressure of gauge 'board' is absolute" in t for t in gradeline.reduce(survey).assumptions
     )
+
+
+def test_a_misspelt_gauge_fluid_is_guessed(bench):
+    assert problems_of(bench(UTUBE.replace("mercury", "mercuri"), COLUMN, ENDS)) == [
+        "survey.toml gauge.m1.gauge_fluid: no density is known for 'mercuri'; did you mean 'mercury'? Otherwise add "
+        "gauge_fluid_density"
+    ]
+
+
+def test_a_limb_beyond_the_board_is_told_in_the_unit_of_the_range(bench):
+    told = problems_of(bench(UTUBE + 'range = "0 to 30 cm"\n', LIMBS, ENDS))
+    assert told
+    assert all("lies beyond the scale of gauge 'm1', 0 to 30 cm" in one for one in told)
+
+
+def ranges_of(folder):
+    (one,) = gauge_ranges(gradeline.read_survey(folder))
+    return one
+
+
+def test_differences_are_counted_without_the_offset_at_rest(bench):
+    plain = ranges_of(bench(UTUBE, COLUMN, ENDS))
+    moved = ranges_of(bench(UTUBE, {"m1 [mm]": DEFLECTION + 5}, ENDS))
+    assert (moved.smallest, moved.largest) == pytest.approx((plain.smallest, plain.largest), rel=1e-9)
+    assert plain.largest == pytest.approx(FALL.max(), rel=1e-3)
+
+
+def test_a_step_is_told_only_where_a_resolution_is_known_and_along_the_slope(bench):
+    assert np.isnan([one.step for one in ranges_of(bench(UTUBE, COLUMN, ENDS)).choices]).all()
+    step = 'resolution = "1 mm"\n'
+    upright = ranges_of(bench(UTUBE + step, COLUMN, ENDS)).choices
+    sloping = ranges_of(
+        bench(UTUBE + step + 'inclination = "30 deg"\n', {"m1 [mm]": 2 * DEFLECTION}, ENDS)
+    ).choices
+    # sin 30° is a half: along the slope everything is twice as long
+    steps = {one.fluid: one.step for one in upright}
+    assert {one.fluid: one.step for one in sloping} == pytest.approx({k: v / 2 for k, v in steps.items()})
+
+
+def test_the_one_limb_of_a_well_begins_at_0(bench):
+    found = ranges_of(bench(UTUBE + 'area_ratio = "0.02"\nrange = "0 to 1.2 m"\n', COLUMN, ENDS))
+    assert found.low == 0.0
+    # handbooks: what stands in the limb and what the well fell by, 1.02 of the reading
+    assert found.high == pytest.approx(1.2 * 1.02 * (MERCURY / RHO - 1), rel=1e-6)

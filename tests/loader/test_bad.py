@@ -6,6 +6,8 @@ from hypothesis import strategies as st
 
 from gradeline.errors import SurveyError
 from gradeline.loader import read_survey
+from gradeline.loader.keyed import read_survey_sheet
+from gradeline.loader.ledger import Ledger
 
 T, P, R = "survey.toml", "taps.csv", "readings.csv"
 
@@ -395,7 +397,11 @@ def test_one_fault_is_told_at_its_place(write_survey, name, change, told):
             {"survey_toml": "x = 5" + "0" * 5000},
             "survey.toml: this is not TOML: a number or date is out of range; mend the line",
         ),
-        ({"survey_toml": "reach = 5"}, "survey.toml reach: 5 stands here; begin each one with [[reach]]"),
+        (
+            {"survey_toml": "reach = 5"},
+            "survey.toml reach: 5 stands here; begin each one with [[reach]], alone on its line (in a workbook: alone in "
+            "column A of its own row)",
+        ),
         (
             {"survey_toml": "[gauge]\nboard = 3"},
             "survey.toml gauge.board: 3 stands here; begin the gauge with [gauge.board]",
@@ -626,3 +632,12 @@ def test_a_damaged_file_is_read_or_told(write_survey, name, place, damage):
         read_survey(folder)
     except SurveyError as error:
         assert all(problem.message for problem in error.problems)  # noqa: PT017 (either outcome is right)
+
+
+def test_a_key_behind_a_header_in_a_workbook_is_told_where_the_header_stands(tmp_path):
+    ledger = Ledger(tmp_path)
+    assert read_survey_sheet(ledger, "sheet survey", [["[[reach]].diameter", "26.6 mm"]]) is None
+    assert [str(problem) for problem in ledger.problems] == [
+        "sheet survey row 1: '[[reach]].diameter' is no key; a header such as [[reach]] stands alone in column A of its own "
+        "row, its keys in the rows below"
+    ]

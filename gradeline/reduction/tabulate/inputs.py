@@ -164,6 +164,11 @@ def _gauge(gauge: Gauge) -> list[_Row]:
         text = f"{leg.fluid} from {ends[0]} to {ends[1]}"
         rows.append(("gauge", gauge.name, f"leg {place}", text, None, None, None))
     small = _SMALL[kind.reading]
+    if gauge.span is not None:
+        rows += [
+            ("gauge", gauge.name, f"range, {end}", None, small, value, None)
+            for end, value in zip(("from", "to"), gauge.span, strict=True)
+        ]
     for what, quantity, u in (
         ("u of a reading", small, gauge.reading_u),
         ("resolution", small, gauge.resolution),

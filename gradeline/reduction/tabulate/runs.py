@@ -90,6 +90,10 @@ def _run_reasons(flowing: Flowing, friction: Friction) -> NDArray[np.object_]:
         reasons[friction.regime == kind] = text
     below = friction.roughness_signed < 0
     reasons[below] = "f lies below that of a smooth wall: no roughness of zero or more gives it"
+    bare = np.isfinite(friction.slope) & np.isfinite(friction.slope_u) & ~np.isfinite(friction.slope_u_random)
+    for run, k in np.argwhere(bare):
+        told = "the scatter of the readings is not known: the uncertainty holds the stated errors alone"
+        reasons[run, k] = f"{reasons[run, k]}; {told}" if reasons[run, k] else told
     unknown = np.isfinite(friction.slope) & ~np.isfinite(friction.slope_u)
     reasons[unknown] = (
         "one line through as many readings as it has parameters: no uncertainty without a stated one"

@@ -11,6 +11,7 @@ from matplotlib.figure import Figure
 
 from gradeline.quantities.printing import Display
 from gradeline.reduction.tables import Reduction
+from gradeline.report.figures.differences import head_axis
 from gradeline.report.figures.grade_lines import draw_grade_lines, pipe_fits_the_scale
 from gradeline.report.figures.laws import FrictionFactorArtists, SlopeVelocityArtists
 from gradeline.report.figures.pipe import draw_pipe
@@ -194,5 +195,5 @@ def sheet_figure(reduction: Reduction, runs: list[str], display: Display) -> Fig
         va="bottom",
         fontsize=9,
     )
-    figure.text(0.012, 0.5, display.head("head above datum", "head"), rotation=90, va="center", fontsize=9)
+    figure.text(0.012, 0.5, head_axis(reduction, display), rotation=90, va="center", fontsize=9)
     return figure

@@ -15,6 +15,7 @@ from matplotlib.text import Annotation
 
 from gradeline.quantities.printing import SI_DISPLAY, Display, thousands
 from gradeline.reduction.tables import Reduction
+from gradeline.report.figures.differences import head_axis, measured_falls, only_differences
 from gradeline.report.figures.pipe import Array, PipeArtists, column, draw_pipe, of_run
 from gradeline.report.figures.style import COLOURS, INK, MUTED, legend_above, shorten
 from gradeline.report.tables import elevations_known
@@ -121,6 +122,8 @@ def draw_grade_lines(
 ) -> GradeLineArtists:
     """Draw a run's hydraulic and energy grade line with its readings, chainage to the right.
 
+    Where differences alone are read, each is a mark at its downstream tap, as far below the fitted head upstream.
+
     Parameters
     ----------
     ax : Axes
@@ -141,7 +144,8 @@ def draw_grade_lines(
     GradeLineArtists
     """
     lines, heads = of_run(reduction.grade_lines, run), of_run(reduction.heads, run)
-    heads = heads[heads["tap_2"].isna().to_numpy(bool)]
+    falls = only_differences(reduction)
+    heads = measured_falls(reduction, lines, heads) if falls else heads[heads["tap_2"].isna().to_numpy(bool)]
     scale, along = display.factor("head"), display.factor("chainage")
     x, y = column(heads, "chainage") * along, column(heads, "head") * scale
     used = heads["used"].fillna(False).to_numpy(bool)
@@ -189,7 +193,13 @@ def draw_grade_lines(
     out = ~used & np.isfinite(y)
     if used.any():
         (drawn["used"],) = ax.plot(
-            x[used], y[used], "o", markersize=size, color=COLOURS["blue"], label="reading used", zorder=3
+            x[used],
+            y[used],
+            "o",
+            markersize=size,
+            color=COLOURS["blue"],
+            label="fall from the tap upstream" if falls else "reading used",
+            zorder=3,
         )
     if out.any():
         (drawn["left_out"],) = ax.plot(
@@ -248,7 +258,11 @@ def draw_grade_lines(
         if pipe is not None:
             handles += [pipe.axis, pipe.fittings]
         rows = _furnish(
-            ax, display, [artist for artist in handles if artist is not None], flowing=not at_rest
+            ax,
+            display,
+            [artist for artist in handles if artist is not None],
+            words=head_axis(reduction, display),
+            flowing=not at_rest,
         )
     return GradeLineArtists(
         hgl, egl, band, below, drawn["used"], drawn["left_out"], drawn["flagged"], tuple(labels), pipe, rows
@@ -341,12 +355,12 @@ def _ring_labels(
     return labels
 
 
-def _furnish(ax: Axes, display: Display, handles: list[Artist], *, flowing: bool) -> int:
+def _furnish(ax: Axes, display: Display, handles: list[Artist], *, words: str, flowing: bool) -> int:
     low, high = ax.get_ylim()
     ax.set_ylim(low, high + 0.11 * (high - low))
     ax.locator_params(axis="y", nbins=6)
     ax.set_xlabel(display.head("chainage x", "chainage"))
-    ax.set_ylabel(display.head("head above datum", "head"))
+    ax.set_ylabel(words)
     if flowing:
         ax.annotate(
             "",

@@ -272,7 +272,12 @@ def draw_friction_factor(ax: Axes, reduction: Reduction) -> FrictionFactorArtist
         # Of several shapes the first stands for all: each run's own check is in the text.
         constant = float(reduction.laminar["constant"].iloc[0]) if len(reduction.laminar) else 64.0
         (line,) = ax.plot(
-            grid_low, constant / grid_low, color=INK, linewidth=1.2, label=f"laminar, {constant:.4g}/Re", zorder=2
+            grid_low,
+            constant / grid_low,
+            color=INK,
+            linewidth=1.2,
+            label=f"laminar, {constant:.4g}/Re",
+            zorder=2,
         )
         heights.append(constant / grid_low)
     if low < TURBULENT_LIMIT and high > LAMINAR_LIMIT:

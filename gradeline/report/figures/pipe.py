@@ -86,10 +86,12 @@ def draw_pipe(
     layout = reduction.layout
     what = layout["what"].to_numpy(object)
     taps, fittings = layout[what == "tap"], layout[(what == "fitting") | (what == "change of bore")]
-    source = lines if len(lines) else taps
+    # without a level the lines hold no elevation: the axis is then drawn from tap to tap
+    along_lines = len(lines) > 0 and bool(np.isfinite(column(lines, "elevation")).any())
+    source = lines if along_lines else taps
     places = column(source, "chainage") * along
     level = column(source, "elevation") * scale
-    top = column(source, "crown") * scale if len(lines) else level
+    top = column(source, "crown") * scale if along_lines else level
     (axis,) = ax.plot(
         places,
         level,

@@ -18,6 +18,7 @@ from matplotlib.figure import Figure
 from gradeline.quantities.printing import SI_DISPLAY, Display
 from gradeline.reduction.tables import Reduction
 from gradeline.report.figures.compose import Canvases, grade_line_figure, sheet_figure, single
+from gradeline.report.figures.differences import drawn_runs, only_differences
 from gradeline.report.figures.grade_lines import run_title
 from gradeline.report.figures.laws import draw_friction_factor, draw_slope_velocity
 from gradeline.report.figures.residuals import draw_residuals
@@ -89,7 +90,7 @@ _Plan = tuple[str, str, str, str, Callable[[], Figure]]
 
 
 def _plans(reduction: Reduction, display: Display, blanks: Canvases) -> Iterator[_Plan]:
-    runs = list(dict.fromkeys(reduction.runs["run"]))
+    runs = drawn_runs(reduction)
     if len(runs) <= SINGLE_RUNS:
         for n, run in enumerate(runs, 1):
             slug = re.sub(r"[^A-Za-z0-9_-]+", "-", str(run)).strip("-")[:40]
@@ -143,7 +144,7 @@ def _plans(reduction: Reduction, display: Display, blanks: Canvases) -> Iterator
 
 def chosen_runs(reduction: Reduction) -> list[str]:
     """Return the runs that get a panel: all up to 120, else the flagged ones and others spread evenly over the flow."""
-    runs = list(dict.fromkeys(reduction.runs["run"]))
+    runs = drawn_runs(reduction)
     if len(runs) <= MOST_PANELS:
         return runs
     flagged = set(reduction.flags["run"].dropna())
@@ -160,7 +161,8 @@ def chosen_runs(reduction: Reduction) -> list[str]:
 def _readings_in_words(reduction: Reduction, run: str) -> str:
     heads = reduction.heads[(reduction.heads["run"] == run).to_numpy(bool)]
     used = int(heads["used"].fillna(False).to_numpy(bool).sum())
-    flagged = [str(tap) for tap, flag in zip(heads["tap"], heads["flag"], strict=True) if flag == "outlier"]
+    names = heads["gauge" if only_differences(reduction) else "tap"]
+    flagged = [str(name) for name, flag in zip(names, heads["flag"], strict=True) if flag == "outlier"]
     words = f"{used} readings in the fit"
     return f"{words}; flagged: {', '.join(flagged)}." if flagged else f"{words}; none flagged."
 
