@@ -14,7 +14,7 @@ def main() -> None:
     Whatever goes wrong that nobody foresaw is told in one line, with exit code 1; with ``GRADELINE_TRACEBACK`` set
     in the environment, its traceback is shown.
     """
-    from gradeline.cli.app import app  # noqa: PLC0415
+    from gradeline.cli.app import app  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     for stream in (sys.stdout, sys.stderr):
         if hasattr(stream, "reconfigure"):  # a terminal that cannot show ± or ε shows a question mark instead

@@ -53,7 +53,7 @@ app = typer.Typer(
 
 def _print_version(asked: bool) -> None:
     if asked:
-        from importlib.metadata import version  # noqa: PLC0415
+        from importlib.metadata import version  # noqa: PLC0415 (loaded when asked for: start-up time)
 
         typer.echo(f"gradeline {version('gradeline')}")
         raise typer.Exit
@@ -96,8 +96,8 @@ def check(
     """
 
     def one(source: Path) -> None:
-        from gradeline.cli.understood import understood  # noqa: PLC0415
-        from gradeline.loader import read_survey  # noqa: PLC0415
+        from gradeline.cli.understood import understood  # noqa: PLC0415 (loaded when asked for: start-up time)
+        from gradeline.loader import read_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
 
         read = read_survey(source, diameter=diameter, flow=flow, temperature=temperature)
         if source != surveys[0]:
@@ -123,8 +123,8 @@ def gauges(
     """
 
     def one(source: Path) -> None:
-        from gradeline.cli.gauges import gauges_told  # noqa: PLC0415
-        from gradeline.loader import read_survey  # noqa: PLC0415
+        from gradeline.cli.gauges import gauges_told  # noqa: PLC0415 (loaded when asked for: start-up time)
+        from gradeline.loader import read_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
 
         if source != surveys[0]:
             typer.echo()
@@ -149,7 +149,7 @@ def new(
 
     Example: gradeline new my_pipe
     """
-    from gradeline.cli.new import NEW_FILES, write_new  # noqa: PLC0415
+    from gradeline.cli.new import NEW_FILES, write_new  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     try:
         write_new(folder)
@@ -226,12 +226,12 @@ def reduce(
     excluded = tuple(exclude or ())
 
     def one(source: Path, target: Path) -> None:
-        from gradeline.loader import read_survey  # noqa: PLC0415
+        from gradeline.loader import read_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
 
         read = read_survey(source, diameter=diameter, flow=flow, temperature=temperature)
         _check_exclusions(excluded, read)
-        from gradeline.reduction import reduce as reduce_survey  # noqa: PLC0415
-        from gradeline.report import terminal_summary, write  # noqa: PLC0415
+        from gradeline.reduction import reduce as reduce_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
+        from gradeline.report import terminal_summary, write  # noqa: PLC0415 (loaded when asked for: start-up time)
 
         reduction = reduce_survey(read, level=level, correct=correct, keep_all=keep_all, exclude=excluded)
         write(reduction, target, formats=chosen, overwrite=overwrite)

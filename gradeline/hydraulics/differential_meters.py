@@ -79,7 +79,7 @@ def expansibility(
     >>> expansibility("orifice plate, corner", 0.0739, 0.0222, 1e5, 1e3).round(4).item()
     0.9975
     """
-    from fluids.flow_meter import nozzle_expansibility, orifice_expansibility  # noqa: PLC0415
+    from fluids.flow_meter import nozzle_expansibility, orifice_expansibility  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     _check_meter(meter, pipe_bore, throat_bore)
     formula = orifice_expansibility if meter.startswith("orifice") else nozzle_expansibility
@@ -128,7 +128,7 @@ def discharge_coefficient(meter: str, pipe_bore: float, throat_bore: float, reyn
     if kind == "venturi":
         return np.full(at.shape, _VENTURI[make])
     if make == "venturi":
-        from fluids.flow_meter import C_venturi_nozzle  # noqa: PLC0415
+        from fluids.flow_meter import C_venturi_nozzle  # noqa: PLC0415 (loaded when asked for: start-up time)
 
         return np.full(at.shape, float(C_venturi_nozzle(pipe_bore, throat_bore)))
     formula = _coefficient_formula(kind, make)
@@ -140,7 +140,7 @@ def discharge_coefficient(meter: str, pipe_bore: float, throat_bore: float, reyn
 
 
 def _coefficient_formula(kind: str, make: str) -> Callable[[float, float, float, float, float], float]:
-    from fluids import flow_meter  # noqa: PLC0415
+    from fluids import flow_meter  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     if kind == "orifice plate":
         formula = flow_meter.C_Reader_Harris_Gallagher

@@ -91,15 +91,15 @@ def water_density(temperature: npt.ArrayLike, pressure: npt.ArrayLike = STANDARD
     >>> print(water_density([277.15, 293.15]).round(4))
     [999.9749 998.2072]
     """
-    from chemicals.iapws import iapws95_Psat, iapws95_rho, iapws95_rhol_sat  # noqa: PLC0415
+    from chemicals.iapws import iapws95_Psat, iapws95_rho, iapws95_rhol_sat  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     kelvin, pascal = _water_temperature(temperature), np.asarray(pressure, dtype=np.float64)
     _refuse_outside((pascal < 100.0) | (pascal > 1e8), pascal, "the pressure of water", "100 to 1e8 Pa")
 
     def liquid(t: float, p: float) -> float:
-        if t >= 273.16 and iapws95_Psat(t) >= p:  # type: ignore[no-untyped-call]
-            return float(iapws95_rhol_sat(t))  # type: ignore[no-untyped-call]
-        return float(iapws95_rho(t, p))  # type: ignore[no-untyped-call]
+        if t >= 273.16 and iapws95_Psat(t) >= p:  # type: ignore[no-untyped-call]  # the library has no types
+            return float(iapws95_rhol_sat(t))  # type: ignore[no-untyped-call]  # the library has no types
+        return float(iapws95_rho(t, p))  # type: ignore[no-untyped-call]  # the library has no types
 
     return _once_each(liquid, kelvin, pascal)
 
@@ -133,7 +133,7 @@ def water_viscosity(temperature: npt.ArrayLike, density: npt.ArrayLike) -> Array
     >>> print(f"{water_viscosity(298.15, 998.0):.9f}")
     0.000889735
     """
-    from chemicals.viscosity import mu_IAPWS  # noqa: PLC0415
+    from chemicals.viscosity import mu_IAPWS  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     kelvin, rho = _water_temperature(temperature), np.asarray(density, dtype=np.float64)
     _refuse_outside((rho < 900.0) | (rho > 1100.0), rho, "the density of liquid water", "900 to 1100 kg/m3")

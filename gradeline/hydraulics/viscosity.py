@@ -149,7 +149,7 @@ def interpolated_properties(
     >>> print(density.round(6), (1e6 * viscosity).round(6))
     874.0 40.0
     """
-    from scipy.interpolate import PchipInterpolator  # noqa: PLC0415
+    from scipy.interpolate import PchipInterpolator  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     kelvin = np.asarray(temperature, dtype=np.float64)
     at, rho, nu = (

@@ -182,7 +182,7 @@ def _shaped(table: ReachTable, given: Mapping[str, Any]) -> Bore:
     first, second = given[sides[0]], given[sides[1]]
     constant = given.get("laminar_constant")
     section = Section(
-        shape or "given",  # type: ignore[arg-type]
+        shape or "given",  # type: ignore[arg-type]  # one of the known shapes, checked above
         (first, second),
         None if constant is None else constant.value,
     )

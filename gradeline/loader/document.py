@@ -294,10 +294,10 @@ def read_document(ledger: Ledger) -> Document | None:
         fluid=single["fluid"] if "fluid" in data else FluidTable(name="water"),  # type: ignore[arg-type]
         site=single["site"] if "site" in data else SiteTable(),  # type: ignore[arg-type]
         uncertainty=single["uncertainty"] if "uncertainty" in data else UncertaintyTable(),  # type: ignore[arg-type]
-        reaches=lists["reach"],  # type: ignore[arg-type]
-        fittings=lists["fitting"],  # type: ignore[arg-type]
-        offtakes=lists["offtake"],  # type: ignore[arg-type]
-        side_valves=lists["side_valve"],  # type: ignore[arg-type]
+        reaches=lists["reach"],  # type: ignore[arg-type]  # each list holds its own table
+        fittings=lists["fitting"],  # type: ignore[arg-type]  # each list holds its own table
+        offtakes=lists["offtake"],  # type: ignore[arg-type]  # each list holds its own table
+        side_valves=lists["side_valve"],  # type: ignore[arg-type]  # each list holds its own table
         gauges=_gauges(ledger, data.get("gauge")),
         units=_units(data),
         flow=read_flow_table(ledger, data.get("flow"), _validate),

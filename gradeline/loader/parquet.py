@@ -24,8 +24,8 @@ def read_parquet(ledger: Ledger, name: str, *, required: bool = True) -> Cells |
     if content is None:
         return None
     try:
-        import pyarrow as pa  # noqa: PLC0415
-        from pyarrow import parquet  # noqa: PLC0415
+        import pyarrow as pa  # noqa: PLC0415 (loaded when asked for: start-up time)
+        from pyarrow import parquet  # noqa: PLC0415 (loaded when asked for: start-up time)
     except ImportError:
         ledger.problem(
             name,
@@ -66,7 +66,7 @@ def _bounded(ledger: Ledger, name: str, content: bytes, parquet: Any) -> Any:
     What it unpacks to stands in its directory, but for texts, which are written once and pointed at: they are read so,
     and their length is summed before they are spelled out.
     """
-    from pyarrow import compute, types  # noqa: PLC0415
+    from pyarrow import compute, types  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     described = parquet.ParquetFile(io.BytesIO(content)).metadata
     nested = [field.name for field in described.schema.to_arrow_schema() if types.is_nested(field.type)]

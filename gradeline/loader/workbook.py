@@ -132,7 +132,7 @@ def open_workbook(ledger: Ledger, name: str) -> Workbook | None:
     Workbook or None
         Its sheets are read when they are asked for.
     """
-    from python_calamine import CalamineWorkbook  # noqa: PLC0415
+    from python_calamine import CalamineWorkbook  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     content = ledger.content_of(name, largest=_LARGEST_FILE)
     if content is None:
@@ -244,7 +244,7 @@ def _errors_by_sheet(parts: Mapping[str, bytes]) -> dict[str, tuple[str, ...]]:
 
 
 def _attribute(tag: bytes, name: str) -> str:
-    from html import unescape  # noqa: PLC0415
+    from html import unescape  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     found = re.search(rf"""\s{name}\s*=\s*("([^"]*)"|'([^']*)')""", tag.decode("utf-8", "replace"))
     return unescape(found[2] or found[3] or "") if found else ""

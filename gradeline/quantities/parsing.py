@@ -103,7 +103,7 @@ def _unit(text: str, dimension: str, whole: str) -> Unit:
 
 def _ufloat(text: str) -> tuple[float, float]:
     """Value and ± of ``26.64+/-0.03`` or ``26.64(3)``."""
-    from uncertainties import ufloat_fromstr  # noqa: PLC0415
+    from uncertainties import ufloat_fromstr  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     with warnings.catch_warnings():
         warnings.simplefilter(

@@ -193,7 +193,7 @@ class Unit:
 @functools.cache
 def _registry() -> Any:
     """The one registry of units, made when the first unit is read."""
-    import pint  # noqa: PLC0415
+    import pint  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     registry: Any = pint.UnitRegistry()
     for definition in _DEFINITIONS:

@@ -241,7 +241,7 @@ def test_start_and_end_temperature_are_their_mean_and_a_rectangle(write_line):
     reduction = gradeline.reduce(survey)
     np.testing.assert_allclose(reduction.laminar["ratio"], 1.0, rtol=1e-4)
     # ν falls by ∂ ln ν/∂T a kelvin, by a monotone cubic through the table: taken here over ±0.1 K about 20 °C.
-    from scipy.interpolate import PchipInterpolator  # noqa: PLC0415
+    from scipy.interpolate import PchipInterpolator  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     log = PchipInterpolator([10, 20, 40], np.log([40, 20, 8]))
     rate = abs(float(log(20.1) - log(19.9)) / 0.2)
@@ -506,7 +506,7 @@ def test_offtakes_at_fault_are_told(write_line, case):
 
 
 def test_check_tells_sections_offtakes_and_fluids(write_line):
-    from gradeline.cli.understood import understood  # noqa: PLC0415
+    from gradeline.cli.understood import understood  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     said = understood(gradeline.read_survey(branched(write_line, FLOWS)))
     assert re.search(r"hydrant +225 +8\b", said)
@@ -535,7 +535,7 @@ def test_offtakes_stay_where_reaches_meet_when_chainages_are_on_the_plan(write_l
 
 
 def test_the_report_names_the_constant_of_the_shape(write_line, tmp_path):
-    from gradeline.report.output import write  # noqa: PLC0415
+    from gradeline.report.output import write  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     folder = oil(write_line, DUCT, area=8e-4, diameter=8e-2 / 3, constant=62.1922)
     write(gradeline.reduce(gradeline.read_survey(folder)), tmp_path / "out")

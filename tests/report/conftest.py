@@ -54,7 +54,7 @@ def reduction_of(
     level_0: float,
     sigma: float,
     fittings: list[tuple[str, float, float]] = (),  # name, chainage, K
-    wrong: dict[tuple[str, str], float] = {},  # noqa: B006
+    wrong: dict[tuple[str, str], float] = {},  # noqa: B006 (never changed)
     disturbed: tuple[str, ...] = (),
     gauge: str = "board",
     unit: str = "length",

@@ -13,8 +13,8 @@ _KELVIN = np.arange(273.0, 334.0)
 
 @cache
 def _table() -> tuple[NDArray[np.float64], NDArray[np.float64]]:
-    from chemicals.iapws import iapws95_rho  # noqa: PLC0415
-    from chemicals.viscosity import mu_IAPWS  # noqa: PLC0415
+    from chemicals.iapws import iapws95_rho  # noqa: PLC0415 (loaded when asked for: start-up time)
+    from chemicals.viscosity import mu_IAPWS  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     density = np.array([iapws95_rho(kelvin, 101325.0) for kelvin in _KELVIN])
     viscosity = np.array([mu_IAPWS(*state) for state in zip(_KELVIN, density, strict=True)])

@@ -174,13 +174,13 @@ def _render(
     figure = draw()
     as_svg, as_png = io.BytesIO(), io.BytesIO()
     if svg:
-        FigureCanvasSVG(figure).print_svg(  # type: ignore[no-untyped-call]
+        FigureCanvasSVG(figure).print_svg(  # type: ignore[no-untyped-call]  # the library has no types
             as_svg, metadata={"Date": None, "Creator": None}
         )
     if png:
         figure.set_dpi(_DPI)
         canvas = FigureCanvasAgg(figure)
-        canvas.print_png(  # type: ignore[no-untyped-call]
+        canvas.print_png(  # type: ignore[no-untyped-call]  # the library has no types
             as_png, metadata={"Software": None}, pil_kwargs={"compress_level": 1}
         )
     return Picture(name, title, alt, group, as_svg.getvalue(), as_png.getvalue())

@@ -191,7 +191,7 @@ def _tap_axis(ax: Axes, labels: list[str]) -> None:
 
 def _names(heads: object) -> list[str]:
     """The tap of each row, or the gauge of a differential reading."""
-    taps, second, gauges = heads["tap"], heads["tap_2"], heads["gauge"]  # type: ignore[index]
+    taps, second, gauges = heads["tap"], heads["tap_2"], heads["gauge"]  # type: ignore[index]  # columns of a table that is there
     return [
         str(gauge) if isinstance(other, str) else str(tap)
         for tap, other, gauge in zip(taps, second, gauges, strict=True)
