@@ -9,7 +9,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from types import MappingProxyType
 
-from gradeline.quantities import Measured
+from gradeline.quantities import Measured, Unit
 
 __all__ = ["FLOW_METHODS", "FlowColumn", "FlowKey", "FlowMethod", "FlowSetup", "MeterTable", "Outlet"]
 
@@ -54,6 +54,8 @@ class FlowKey:
         The texts that are known, the first one by default.
     high : float or None
         Largest value, SI.
+    low : float or None
+        What the value lies above, SI; None: no limit.
     """
 
     dimension: str
@@ -62,6 +64,7 @@ class FlowKey:
     required: bool = False
     choices: tuple[str, ...] = ()
     high: float | None = None
+    low: float | None = 0.0
 
 
 @dataclass(frozen=True)
@@ -113,12 +116,15 @@ class MeterTable:
         m³/s, strictly rising.
     flow_u : tuple of float
         Standard uncertainty of each, m³/s; NaN where nobody stated one.
+    unit : Unit
+        Of the readings as the file has them.
     """
 
     file: str
     reading: tuple[float, ...]
     flow: tuple[float, ...]
     flow_u: tuple[float, ...]
+    unit: Unit
 
 
 @dataclass(frozen=True)
@@ -139,6 +145,8 @@ class FlowSetup:
         How the taps were read; None where nobody said.
     constant_head_at : float or None
         Chainage at which the head did not change while the flow drifted, m.
+    relative : frozenset of str
+        Uncertainties of a meter's readings that are in parts of the reading, of the zero in parts of the table's last one.
     """
 
     method: str = "direct"
@@ -147,6 +155,7 @@ class FlowSetup:
     table: MeterTable | None = None
     read: str | None = None
     constant_head_at: float | None = None
+    relative: frozenset[str] = frozenset()
 
 
 def _random(column: str, example: str, meaning: str) -> dict[str, FlowKey]:
@@ -154,17 +163,47 @@ def _random(column: str, example: str, meaning: str) -> dict[str, FlowKey]:
     return {f"u_{column}": FlowKey(f"uncertainty of {column}", meaning, example)}
 
 
-def _calibration(example: str) -> dict[str, FlowKey]:
+def _calibration(example: str, more: str = "") -> dict[str, FlowKey]:
     """What the primary reading's instrument may be off by in all runs alike."""
     return {
         "u_scale": FlowKey("relative", "calibration of the reading, the same in all runs", "0.2 %"),
-        "u_zero": FlowKey("uncertainty of zero", "zero of the reading, the same in all runs", example),
+        "u_zero": FlowKey("uncertainty of zero", f"zero of the reading, the same in all runs{more}", example),
     }
 
+
+#: What a meter may show; a plain number, headed [1], serves for divisions of a scale.
+METER_DIMENSIONS = (
+    "flow",
+    "length",
+    "pressure",
+    "velocity",
+    "frequency",
+    "rotational speed",
+    "electric current",
+    "voltage",
+    "dimensionless",
+)
 
 _DIFFERENTIAL = FlowColumn(
     ("pressure", "length"), "differential pressure, or the deflection of a gauge fluid", primary=True
 )
+
+#: A differential read by gauges of the survey instead of the column.
+_TAPPING_GAUGES = {
+    "differential_gauge": FlowKey(
+        "text", "a [gauge.NAME] between the meter's tappings, read in place of 'differential'", "m2"
+    ),
+    "upstream_gauge": FlowKey(
+        "text", "or a gauge at each: columns 'upstream tapping' and 'downstream tapping'", "p1"
+    ),
+    "downstream_gauge": FlowKey("text", "the other one, or the same one carried", "p2"),
+    "tapping_rise": FlowKey(
+        "length",
+        "how much higher the downstream tapping lies, for such gauges",
+        "0.20 m +/- 2 mm",
+        low=None,
+    ),
+}
 
 
 def _differential(coefficient: str, **kinds: FlowKey) -> FlowMethod:
@@ -184,6 +223,7 @@ def _differential(coefficient: str, **kinds: FlowKey) -> FlowMethod:
                 choices=("mercury", "air", "water"),
             ),
             "gauge_fluid_density": FlowKey("density", "of a deflection, for another fluid", "1600 kg/m^3"),
+            **_TAPPING_GAUGES,
             **_random("differential", "0.1 kPa", "one reading, random"),
             **_calibration("0.1 kPa"),
         },
@@ -295,7 +335,7 @@ FLOW_METHODS: Mapping[str, FlowMethod] = MappingProxyType(
         "calibrated meter": FlowMethod(
             columns={
                 "meter reading": FlowColumn(
-                    ("flow", "length", "pressure", "velocity", "dimensionless"),
+                    METER_DIMENSIONS,
                     "what the meter shows",
                     primary=True,
                 )
@@ -307,8 +347,8 @@ FLOW_METHODS: Mapping[str, FlowMethod] = MappingProxyType(
                     "meter.csv",
                     required=True,
                 ),
-                **_random("meter_reading", "1 mm", "one reading, random"),
-                **_calibration("1 mm"),
+                **_random("meter_reading", "1 mm", "one reading, random; or in % of it"),
+                **_calibration("1 mm", "; or in % of the table's last reading"),
             },
         ),
     }

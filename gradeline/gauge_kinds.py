@@ -107,12 +107,16 @@ class Leg:
         kg/m³; None where the fluid's name tells it, or where it is the flowing fluid.
     start, end : float or str
         Elevation above datum, m; a tap; or the name of a level that is read.
+    start_u, end_u : float or None
+        Standard uncertainty of such an elevation, m, the same in all runs.
     """
 
     fluid: str
     density: Measured | None
     start: float | str
     end: float | str
+    start_u: float | None = None
+    end_u: float | None = None
 
 
 @dataclass(frozen=True)
@@ -151,7 +155,7 @@ _COLUMN_KEYS = {
         "angle", "of the column on the tube; 0 when left out", high=_ANY_ANGLE, example="20 deg"
     ),
     "surface_tension": GaugeKey(
-        "surface tension", "of the column; that of water when left out", positive=True, example="0.072 N/m"
+        "surface tension", "of the column; known for water alone", positive=True, example="0.072 N/m"
     ),
     "column_temperature": GaugeKey("temperature", "of the column, where it is not the run's"),
 }
@@ -213,7 +217,19 @@ GAUGE_KINDS: Mapping[str, GaugeKind] = MappingProxyType(
     {
         "piezometer": GaugeKind(reading="length", keys=_COLUMN_KEYS),
         "closed multitube manometer": GaugeKind(
-            reading="length", keys={**_COLUMN_KEYS, "gas_pressure": _GAS}, level_key="gas_pressure"
+            reading="length",
+            keys={
+                **_COLUMN_KEYS,
+                "gas_pressure": _GAS,
+                "u_gas_pressure": GaugeKey(
+                    "pressure",
+                    "of a column 'gas_pressure [kPa]' in the runs, the same in all",
+                    positive=True,
+                    example="0.2 kPa",
+                    of_head=False,
+                ),
+            },
+            level_key="gas_pressure",
         ),
         "u-tube": GaugeKind(
             reading="length",
@@ -272,5 +288,7 @@ GAUGE_KINDS: Mapping[str, GaugeKind] = MappingProxyType(
         "differential transducer": GaugeKind(
             reading="pressure", keys={**_TAPS, **_PRESSURE_KEYS}, differential=True, together=_ACCURACY
         ),
+        # No instrument: piezometric heads above datum that somebody worked out already.
+        "head": GaugeKind(reading="length", keys={}),
     }
 )

@@ -19,6 +19,7 @@ from gradeline.errors import Problem, SurveyError
 from gradeline.flow_methods import FlowSetup
 from gradeline.gauge_kinds import GAUGE_KINDS, Calibration, GaugeKey, GaugeKind, Leg, Pressure
 from gradeline.quantities import Measured
+from gradeline.quantities.shown import Shown, counted, shown
 
 __all__ = [
     "GAUGE_KINDS",
@@ -42,6 +43,7 @@ __all__ = [
     "StatedUncertainties",
     "Survey",
     "Tap",
+    "WallHistory",
 ]
 
 
@@ -271,6 +273,31 @@ class Reach:
 
 
 @dataclass(frozen=True)
+class WallHistory:
+    """What was known of a wall beforehand.
+
+    Parameters
+    ----------
+    wall : str
+        Its label.
+    published : Measured or None
+        A published roughness of such a surface, m.
+    published_source : str or None
+        Where it stands.
+    earlier : Measured or None
+        What was found of this wall earlier, m.
+    earlier_source : str or None
+        When or by whom.
+    """
+
+    wall: str
+    published: Measured | None = None
+    published_source: str | None = None
+    earlier: Measured | None = None
+    earlier_source: str | None = None
+
+
+@dataclass(frozen=True)
 class Fitting:
     """A local loss at one chainage.
 
@@ -287,7 +314,12 @@ class Fitting:
     change_of_bore : bool
         Whether it stands for the change of bore at a boundary between reaches.
     approach, recovery : float
-        Taps nearer than this many bores upstream and downstream are disturbed.
+        Taps nearer than this many bores upstream and downstream of its ends are disturbed.
+    kind : str or None
+        What it is, a name of `gradeline.fitting_kinds.fitting_kinds`; None where nobody said.
+    length : float
+        Between its ends along the axis, m, `at` in the middle. The friction of a straight pipe of this length is part
+        of a K that is fitted; with 0, K is what the fitting loses beyond the straight pipe that runs through.
     """
 
     name: str
@@ -297,6 +329,8 @@ class Fitting:
     change_of_bore: bool = False
     approach: float = 2.0
     recovery: float = 10.0
+    kind: str | None = None
+    length: float = 0.0
 
 
 @dataclass(frozen=True)
@@ -325,6 +359,8 @@ class Gauge:
         Of a compound manometer, from the upstream tap on.
     calibration : Calibration or None
         What it showed at known values.
+    gas_read : bool
+        Whether the pressure of the gas over its columns was read in each run.
     """
 
     name: str
@@ -337,12 +373,18 @@ class Gauge:
     span: tuple[float, float] | None = None
     legs: tuple[Leg, ...] = ()
     calibration: Calibration | None = None
+    gas_read: bool = False
 
     @property
     def floats(self) -> bool:
         """Whether the level of its columns is not known, so that only their differences count."""
         key = GAUGE_KINDS[self.kind].level_key
-        return key is not None and key not in self.settings
+        return key is not None and key not in self.settings and not self.gas_read
+
+    @staticmethod
+    def gas_column_of(name: str) -> str:
+        """Return the column of `Survey.runs` with the gas pressure of the gauge called `name`."""
+        return f"gas pressure {name}"
 
 
 @dataclass(frozen=True)
@@ -422,14 +464,15 @@ class Survey:
         ``flow_u`` (standard uncertainty of that mean from the spread of repeats, NaN without repeats),
         ``temperature`` (K, NaN where it was not given), ``repeats`` (int); where the files have them,
         ``temperature_u`` (K, of the run's own temperature, from its change during the run) and for each off-take
-        ``offtake NAME`` (m³/s), ``flow_start`` and ``flow_end`` (m³/s), ``direction`` (``rising``, ``falling`` or None).
+        ``offtake NAME`` (m³/s), ``gas pressure NAME`` (Pa, of a gauge), ``flow_start`` and ``flow_end`` (m³/s), ``direction`` (``rising``, ``falling`` or None).
         Where the flow is to be worked out from `flow_readings`, ``flow`` is NaN but in static runs.
     readings : DataFrame
         Indexed by run, one column an observation (its label), SI (m or Pa), mean of the repeats, NaN where not taken.
     repeats : DataFrame
         Like `readings`: how many values each mean has (int).
     spreads : DataFrame
-        Like `readings`: standard deviation of one reading among the repeats, NaN where there are fewer than two.
+        Like `readings`: standard deviation of one reading among the repeats, NaN where there are fewer than two; of one
+        level, pooled over them, for a compound manometer.
     stated : StatedUncertainties
         What ``[uncertainty]`` says.
     files : tuple of SourceFile
@@ -449,8 +492,15 @@ class Survey:
     flow : FlowSetup
         How the flow was measured, and how the taps were read meanwhile.
     flow_readings : DataFrame
-        What the method reads, SI: a row for each row of the file (``run``, ``file``, ``line``, the method's columns); empty
-        where the flow itself is given.
+        What the method reads, SI: a row for each row of the file (``run``, ``file``, ``line``, the method's columns or those
+        of `flow_gauges`); empty where the flow itself is given.
+    written : DataFrame
+        Numbers of the file that `readings` does not hold one by one: ``run``, ``column`` and ``reading`` (SI) of each
+        repeat, and of each limb that was read. Empty where there are none.
+    flow_gauges : tuple of Gauge
+        The gauges at the tappings of the flow's meter that ``[flow]`` names; empty where its differential is a column.
+    wall_histories : tuple of WallHistory
+        What was known of the walls beforehand.
 
     Raises
     ------
@@ -482,11 +532,38 @@ class Survey:
     side_valves: tuple[SideValve, ...] = ()
     flow: FlowSetup = field(default_factory=FlowSetup)
     flow_readings: pd.DataFrame = field(default_factory=pd.DataFrame)
+    written: pd.DataFrame = field(default_factory=pd.DataFrame)
+    flow_gauges: tuple[Gauge, ...] = ()
+    wall_histories: tuple[WallHistory, ...] = ()
 
     def __post_init__(self) -> None:
         problems = [Problem(self.source or "survey", None, None, text) for text in _faults(self)]
         if problems:
             raise SurveyError(problems)
+
+    def _repr_html_(self) -> str:
+        """Show the runs and their readings, for notebooks."""
+        kinds = {gauge.name: gauge.kind for gauge in self.gauges}
+        sizes = {"length": "small head", "pressure": "pressure"}
+        readings = self.readings.set_axis(
+            [f"reading {one.label}" for one in self.observations], axis="columns"
+        )
+        return shown(
+            f"{self.title}{f', {self.date}' if self.date else ''}",
+            [
+                counted((len(self.runs), "run"), (len(self.taps), "tap"), (len(self.cautions), "caution")),
+            ],
+            self.runs.reset_index(drop=True).join(readings.reset_index(drop=True)),
+            (
+                Shown("run", "run"),
+                Shown("flow", "flow", "flow"),
+                Shown("t", "temperature", "temperature"),
+                *(
+                    Shown(one.label, f"reading {one.label}", sizes[GAUGE_KINDS[kinds[one.gauge]].reading])
+                    for one in self.observations
+                ),
+            ),
+        )
 
     def tap(self, name: str) -> Tap:
         """Return the tap called `name`; KeyError where there is none."""

@@ -1,4 +1,4 @@
-"""Published loss coefficients of a sudden change of bore; each refers to the velocity in the smaller bore."""
+"""Published loss coefficients of a sudden change of bore, in the smaller bore's velocity head, and of valves."""
 
 from __future__ import annotations
 
@@ -7,9 +7,14 @@ import numpy.typing as npt
 
 __all__ = [
     "change_of_bore_loss_coefficient",
+    "change_of_bore_sensitivity",
     "contraction_loss_coefficient",
     "expansion_loss_coefficient",
+    "fully_rough_loss_coefficient",
 ]
+
+#: Roughness of clean commercial steel, 0.00015 ft, m: L. F. Moody, Friction factors for pipe flow, Trans. ASME 66 (1944).
+_CLEAN_STEEL = 4.572e-5
 
 Array = npt.NDArray[np.float64]
 
@@ -97,6 +102,34 @@ def contraction_loss_coefficient(upstream_bore: npt.ArrayLike, downstream_bore: 
     return np.asarray(0.5 * (1.0 - (down / up) ** 2))
 
 
+def change_of_bore_sensitivity(upstream_bore: npt.ArrayLike, downstream_bore: npt.ArrayLike) -> Array:
+    """Return how the loss coefficient of a sudden change of bore goes with the ratio of the bores.
+
+    Parameters
+    ----------
+    upstream_bore, downstream_bore : array_like
+        Bores, m, above 0.
+
+    Returns
+    -------
+    ndarray
+        ∂K/∂ ln β, dimensionless, with β the smaller bore over the larger: −4 β² (1 − β²) of an expansion, −β² of a
+        contraction.
+
+    References
+    ----------
+    The derivatives of `expansion_loss_coefficient` and `contraction_loss_coefficient`.
+
+    Examples
+    --------
+    >>> print(change_of_bore_sensitivity([0.1, 0.2], [0.2, 0.1]))
+    [-0.75 -0.25]
+    """
+    up, down = _bores(upstream_bore, downstream_bore)
+    square = (np.minimum(up, down) / np.maximum(up, down)) ** 2
+    return np.asarray(np.where(down > up, -4.0 * square * (1.0 - square), -square))
+
+
 def change_of_bore_loss_coefficient(upstream_bore: npt.ArrayLike, downstream_bore: npt.ArrayLike) -> Array:
     """Return the loss coefficient of a sudden change of bore, whichever way it goes; 0 where there is none.
 
@@ -131,3 +164,40 @@ def change_of_bore_loss_coefficient(upstream_bore: npt.ArrayLike, downstream_bor
     return np.where(
         up < down, expansion_loss_coefficient(small, large), contraction_loss_coefficient(large, small)
     )
+
+
+def fully_rough_loss_coefficient(multiple: npt.ArrayLike, bore: npt.ArrayLike) -> Array:
+    """Return the loss coefficient of a valve as a multiple of the friction factor of clean steel in fully rough flow.
+
+    Parameters
+    ----------
+    multiple : array_like
+        The equivalent length in bores, dimensionless, at least 0: 8 for a gate valve fully open.
+    bore : array_like
+        m, above 1 mm.
+
+    Returns
+    -------
+    ndarray
+        K = n f_T, dimensionless, with 1/√f_T = −2 log10(ε/3.7 D), ε = 0.04572 mm.
+
+    Raises
+    ------
+    ValueError
+        Where a multiple is negative or a bore is not above 1 mm.
+
+    References
+    ----------
+    Crane Technical Paper 410, Flow of Fluids, appendix A: K of valves and fittings.
+
+    Examples
+    --------
+    >>> print(f"{fully_rough_loss_coefficient(8, 0.0525):.3f}")
+    0.152
+    """
+    times, size = np.asarray(multiple, dtype=np.float64), np.asarray(bore, dtype=np.float64)
+    if (times < 0).any():
+        raise ValueError(f"the multiple must not be negative: {times[times < 0].flat[0]}")
+    if not (size > 1e-3).all():
+        raise ValueError(f"the bore must be above 0.001 m: {size[~(size > 1e-3)].flat[0]}")
+    return np.asarray(times * 0.25 / np.log10(3.7 * size / _CLEAN_STEEL) ** 2)

@@ -23,7 +23,14 @@ from gradeline.hydraulics.differential import (
     u_tube_difference,
 )
 
-__all__ = ["HEADS", "capillary_rise", "closed_multitube_head", "piezometer_head", "pressure_gauge_head"]
+__all__ = [
+    "HEADS",
+    "capillary_rise",
+    "closed_multitube_head",
+    "piezometer_head",
+    "pressure_gauge_head",
+    "stated_head",
+]
 
 # float64 for float arguments, complex128 where an argument is complex
 Array = npt.NDArray[Any]
@@ -242,6 +249,32 @@ def closed_multitube_head(
     return head
 
 
+def stated_head(reading: npt.ArrayLike) -> Array:
+    """Return the piezometric head where it is what was written down.
+
+    Parameters
+    ----------
+    reading : array_like
+        Piezometric head z + p/(ρ g) above datum, m of flowing fluid, worked out already; any value.
+
+    Returns
+    -------
+    ndarray
+        The same, m: h = R. Neither air nor the fluid of a gauge has any more part in it.
+
+    References
+    ----------
+    The definition of the piezometric head.
+
+    Examples
+    --------
+    >>> float(stated_head(1.25))
+    1.25
+    """
+    head: Array = np.array(reading)
+    return head
+
+
 #: The head of each gauge kind by its name in ``survey.toml``. Callers pass the arguments by parameter name.
 HEADS: Mapping[str, Callable[..., Array]] = MappingProxyType(
     {
@@ -253,5 +286,6 @@ HEADS: Mapping[str, Callable[..., Array]] = MappingProxyType(
         "pressure gauge": pressure_gauge_head,
         "transducer": pressure_gauge_head,
         "differential transducer": differential_pressure_difference,
+        "head": stated_head,
     }
 )

@@ -177,8 +177,8 @@ def read_unit(ledger: Ledger, cells: Cells, index: int, dimensions: tuple[str, .
         *nouns, last = (DIMENSIONS[dimension].noun for dimension in dimensions)
         units = ", ".join(DIMENSIONS[dimension].units[0] for dimension in dimensions[:-1])
         told = (
-            f"the unit {heading.unit!r} is not one of {', '.join(nouns)} or {last}; give a unit such as {units}, %, and [1] "
-            "for counts, a frequency, a current or a voltage: write it in the readings and in the meter's table alike"
+            f"the unit {heading.unit!r} is not one of {', '.join(nouns)} or {last}; give a unit such as {units}, %, or [1] "
+            "for divisions of a scale, in the readings and in the meter's table alike"
         )
     ledger.problem(cells.file, cells.heading_line, heading.text, told)
     return None

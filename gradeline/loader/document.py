@@ -4,17 +4,20 @@ from __future__ import annotations
 
 import functools
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Annotated, Any
 
 from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationError, create_model
 
+from gradeline.fitting_kinds import fitting_kinds
 from gradeline.loader.bore import Diameter, MeasuredArea, Number, Shape, Thickness, Volume
 from gradeline.loader.cells import nearest
+from gradeline.loader.flow_gauges import TAPPINGS, FlowGauge, flow_gauges_of, joined, named_gauges
 from gradeline.loader.flow_keys import FlowTable, read_flow_table
 from gradeline.loader.fluids import Expansion, Humidity, LinePressure, Temperature, TwoViscosities
 from gradeline.loader.gauge_keys import (
     EXAMPLES,
+    Elevation,
     gauge_key_reader,
     plain_value,
     range_reader,
@@ -41,6 +44,7 @@ from gradeline.loader.keys import (
 from gradeline.loader.ledger import PLACEHOLDER, Ledger
 from gradeline.loader.tables import read_data
 from gradeline.loader.toml import DOCUMENT
+from gradeline.loader.walls import WallTable, read_walls
 from gradeline.quantities import Measured
 from gradeline.quantities.parsing import unit_of
 from gradeline.survey import GAUGE_KINDS, Stated
@@ -150,7 +154,8 @@ class FittingTable(_Table):
     loss_coefficient: Annotated[Measured | None, BeforeValidator(read_loss_coefficient)] = Field(
         examples=["fit"]
     )
-    kind: Annotated[str, BeforeValidator(choice_reader("change of bore"))] | None = None
+    kind: Annotated[str, BeforeValidator(choice_reader(*fitting_kinds()))] | None = None
+    length: Annotated[float, BeforeValidator(exact_reader("length", "0.15 m", 0.0))] | None = None
     velocity: Annotated[str, BeforeValidator(choice_reader("smaller", "upstream", "downstream"))] = "smaller"
     approach: Bores = 2.0
     recovery: Bores = 10.0
@@ -198,8 +203,8 @@ class LegTable(_Table):
     density: (
         Annotated[Measured, BeforeValidator(measured_reader("density", "868 kg/m^3", 0, strict=True))] | None
     ) = None
-    start: Annotated[float | str, BeforeValidator(read_leg_end)] = Field(alias="from", examples=["T1"])
-    end: Annotated[float | str, BeforeValidator(read_leg_end)] = Field(alias="to", examples=["1.2 m"])
+    start: Annotated[Elevation | str, BeforeValidator(read_leg_end)] = Field(alias="from", examples=["T1"])
+    end: Annotated[Elevation | str, BeforeValidator(read_leg_end)] = Field(alias="to", examples=["1.2 m"])
 
 
 @dataclass(frozen=True)
@@ -216,7 +221,8 @@ class GaugeTable:
 class Document:
     """What ``survey.toml`` says, table by table; None stands for a table at fault.
 
-    `units` has the unit of each value of the gauges and of ``[uncertainty]`` as written, by its key.
+    `units` has the unit of each value of the gauges and of ``[uncertainty]`` as written, by its key. `flow_gauges` are those
+    that ``[flow]`` names; all others are the line's.
     """
 
     survey: SurveyTable | None
@@ -230,6 +236,8 @@ class Document:
     gauges: Mapping[str, GaugeTable] = field(default_factory=dict)
     units: Mapping[str, str] = field(default_factory=dict)
     flow: FlowTable | None = field(default_factory=FlowTable)
+    flow_gauges: Mapping[str, GaugeTable] = field(default_factory=dict)
+    walls: Mapping[str, WallTable] = field(default_factory=dict)
 
 
 @functools.cache
@@ -267,7 +275,7 @@ _LISTS: Mapping[str, type[_Table]] = {
     "offtake": OfftakeTable,
     "side_valve": SideValveTable,
 }
-_TOP_LEVEL = (*_SINGLE, *_LISTS, "gauge", "flow")
+_TOP_LEVEL = (*_SINGLE, *_LISTS, "gauge", "flow", "wall")
 
 
 def read_document(ledger: Ledger) -> Document | None:
@@ -289,6 +297,15 @@ def read_document(ledger: Ledger) -> Document | None:
     lists = {name: _list(ledger, model, data.get(name, []), name) for name, model in _LISTS.items()}
     if not lists["reach"] and "reach" not in data:
         ledger.problem(NAME, None, "reach", "there is no [[reach]]; describe at least one length of pipe")
+    flow = read_flow_table(ledger, data.get("flow"), _validate)
+    described = data.get("gauge")
+    at_meter: dict[str, Any] = {}
+    if isinstance(described, dict):
+        named = named_gauges(data.get("flow"))
+        at_meter = {key: table for key, table in described.items() if key.strip() in named}
+        described = {key: table for key, table in described.items() if key not in at_meter}
+    gauges = _gauges(ledger, described)
+    flow_gauges = _flow_gauges(ledger, at_meter)
     return Document(
         survey=single["survey"] if "survey" in data else SurveyTable(),  # type: ignore[arg-type]
         fluid=single["fluid"] if "fluid" in data else FluidTable(name="water"),  # type: ignore[arg-type]
@@ -298,10 +315,47 @@ def read_document(ledger: Ledger) -> Document | None:
         fittings=lists["fitting"],  # type: ignore[arg-type]  # each list holds its own table
         offtakes=lists["offtake"],  # type: ignore[arg-type]  # each list holds its own table
         side_valves=lists["side_valve"],  # type: ignore[arg-type]  # each list holds its own table
-        gauges=_gauges(ledger, data.get("gauge")),
+        gauges=gauges,
         units=_units(data),
-        flow=read_flow_table(ledger, data.get("flow"), _validate),
+        flow=_with_gauges(ledger, flow, flow_gauges, gauges),
+        flow_gauges=flow_gauges,
+        walls=read_walls(ledger, data.get("wall"), _validate),
     )
+
+
+def _flow_gauges(ledger: Ledger, data: Mapping[str, Any]) -> dict[str, GaugeTable]:
+    """The gauges that ``[flow]`` names, joined to the tappings of its meter."""
+    if not data:
+        return {}
+    return _gauges(ledger, {key: joined(ledger, key.strip(), table) for key, table in data.items()})
+
+
+def _with_gauges(
+    ledger: Ledger,
+    flow: FlowTable | None,
+    tables: Mapping[str, GaugeTable],
+    others: Mapping[str, GaugeTable],
+) -> FlowTable | None:
+    """``[flow]`` with the gauges that it names; None where they are at fault."""
+    if flow is None or not named_gauges(flow.setup.settings):
+        return flow
+    found = {
+        table.name: FlowGauge(
+            table.name,
+            None if table.kind is None else GAUGE_KINDS[table.kind],
+            tuple(
+                end
+                for end in dict.fromkeys(
+                    end for leg in table.legs if leg is not None for end in (leg.start, leg.end)
+                )
+                if isinstance(end, str) and end not in TAPPINGS
+            ),
+            (table.values or {}).get("range"),
+        )
+        for table in tables.values()
+    }
+    gauges = flow_gauges_of(ledger, flow.setup.settings, found, others)
+    return None if gauges is None else replace(flow, gauges=gauges)
 
 
 def _units(data: Mapping[str, Any]) -> dict[str, str]:

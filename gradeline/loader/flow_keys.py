@@ -13,25 +13,31 @@ from gradeline.errors import QuantityError
 from gradeline.flow_methods import FLOW_METHODS, FlowKey, FlowMethod, FlowSetup, MeterTable, Outlet
 from gradeline.loader.cells import nearest, read_cells
 from gradeline.loader.columns import Columns, Known
+from gradeline.loader.flow_gauges import FlowGauges, named_together
 from gradeline.loader.gauge_keys import read_file_name
 from gradeline.loader.keys import choice_reader, exact_reader, measured_reader, read_text, written
 from gradeline.loader.ledger import Ledger
-from gradeline.quantities import Measured, parse_uncertainty
+from gradeline.quantities import DIMENSIONS, Measured, parse_uncertainty
 
 __all__ = ["FlowTable", "read_flow_table"]
 
 _NAME = "survey.toml"
 _REMEDY = "enter it, or take the row away"
+_FEW = 2
 
 Validate = Callable[[Ledger, Any, object, str], BaseModel | None]
 
 
 @dataclass(frozen=True)
 class FlowTable:
-    """``[flow]`` as it was read; `measured` has the dimension of each stated uncertainty of a reading."""
+    """``[flow]`` as it was read.
+
+    `measured` has the dimension of each stated uncertainty of a reading, `gauges` the gauges at a meter's tappings.
+    """
 
     setup: FlowSetup = field(default_factory=FlowSetup)
     measured: Mapping[str, str] = field(default_factory=dict)
+    gauges: FlowGauges | None = None
 
     @property
     def method(self) -> FlowMethod:
@@ -42,6 +48,8 @@ class FlowTable:
     def column_names(self) -> dict[str, str]:
         """The columns of the runs that the method reads, and under which of its columns each stands."""
         found: dict[str, str] = {}
+        if self.gauges is not None:
+            return found  # its gauges have columns of their own
         for name, column in self.method.columns.items():
             if column.each_outlet:
                 found |= {f"{name} {outlet.name}": name for outlet in self.setup.outlets}
@@ -50,8 +58,12 @@ class FlowTable:
         return found
 
 
+#: Stands for the dimension of an uncertainty in parts of what it belongs to.
+_PARTS = "relative"
+
+
 def _either_dimension(dimensions: tuple[str, ...], example: str) -> Callable[[object], Any]:
-    """A reader of an absolute standard uncertainty in one of several dimensions."""
+    """A reader of a standard uncertainty in one of several dimensions, in % only where one of them is a pure number."""
 
     def read(value: object) -> tuple[str, float]:
         if isinstance(value, int | float) and not isinstance(value, bool):
@@ -62,9 +74,15 @@ def _either_dimension(dimensions: tuple[str, ...], example: str) -> Callable[[ob
             if text.endswith("%") and dimension != "dimensionless":
                 continue
             try:
-                return dimension, parse_uncertainty(text, dimension)[0]
+                size, relative = parse_uncertainty(text, dimension)
+                return (_PARTS if relative else dimension), size
             except QuantityError as error:
                 first = first or error
+        if first is not None and len(dimensions) > _FEW:
+            units = ", ".join(DIMENSIONS[dimension].units[0] for dimension in dimensions)
+            raise QuantityError(
+                f"{text!r} is not an uncertainty of a reading; give it with a unit such as {units}"
+            )
         raise first or QuantityError(f"{text!r} must be absolute; write it with a unit, such as {example!r}")
 
     return read
@@ -95,7 +113,7 @@ def _reader(key: FlowKey, method: FlowMethod) -> Callable[[object], Any]:
         return read_text
     if key.dimension == "relative":
         return _relative(key.example)
-    return measured_reader(key.dimension, key.example, 0.0, key.high, strict=True)
+    return measured_reader(key.dimension, key.example, key.low, key.high, strict=key.low is not None)
 
 
 def _model(
@@ -168,6 +186,11 @@ def read_flow_table(ledger: Ledger, data: object, validate: Validate) -> FlowTab
         if table is None:
             return None
         measured["table"] = table[1]
+    relative = {key for key, dimension in measured.items() if dimension == _PARTS}
+    measured = {key: dimension for key, dimension in measured.items() if key not in relative}
+    if table and table[0].unit.text == "%":
+        # The meter itself reads in percent: so do its errors.
+        relative = set()
     setup = FlowSetup(
         method=name,
         settings=settings,
@@ -175,6 +198,7 @@ def read_flow_table(ledger: Ledger, data: object, validate: Validate) -> FlowTab
         table=table[0] if table else None,
         read=getattr(model, "read", None),
         constant_head_at=getattr(model, "constant_head_at", None),
+        relative=frozenset(relative),
     )
     return FlowTable(setup, measured)
 
@@ -194,6 +218,7 @@ def _sound(ledger: Ledger, method: FlowMethod, settings: Mapping[str, Any]) -> b
                 f"{method.smaller[1]}",
             )
             sound = False
+    sound &= named_together(ledger, settings)
     if {"gauge_fluid", "gauge_fluid_density"} <= set(settings):
         ledger.problem(
             _NAME,
@@ -283,4 +308,4 @@ def _meter_table(ledger: Ledger, file: str) -> tuple[MeterTable, str] | None:
     unit = columns.units.get("reading")
     if len(ledger.problems) > before or unit is None:
         return None
-    return MeterTable(file, tuple(reading), tuple(flow), tuple(flow_u)), unit.dimension
+    return MeterTable(file, tuple(reading), tuple(flow), tuple(flow_u), unit), unit.dimension

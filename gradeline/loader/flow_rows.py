@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable
 from typing import Any
 
@@ -11,10 +12,12 @@ import pandas as pd
 from gradeline.flow_methods import FLOW_METHODS
 from gradeline.loader.cells import nearest
 from gradeline.loader.columns import Columns, Known
+from gradeline.loader.flow_gauges import check_gauge_rows, gauge_columns, static_rows
 from gradeline.loader.flow_keys import FlowTable
 from gradeline.loader.grouped import by_name
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.repeats import Rows
+from gradeline.quantities import DIMENSIONS
 
 __all__ = ["check_flows", "flow_columns", "flow_of_rows", "flow_readings", "with_flow_columns"]
 
@@ -31,8 +34,10 @@ def flow_columns(table: FlowTable | None, headings: Iterable[str] = ()) -> dict[
         columns = [(name, one) for method in FLOW_METHODS.values() for name, one in method.columns.items()]
         read = {"flow", "flow start", "flow end", *(name for name, _ in columns)}
         prefixes = tuple(f"{name} " for name, one in columns if one.each_outlet)
-        own = [name for name in headings if name in read or name.startswith(prefixes)]
-        return {**{name: Known(own_unit=False) for name in own}, "direction": Known()}
+        names = [_without_brackets(name) for name in headings]
+        own = [name for name in names if name in read or name.startswith(prefixes)]
+        # What they measure only tells that they have a unit: which one is not looked into.
+        return {**{name: Known(("flow",), own_unit=False) for name in own}, "direction": Known()}
     if table.setup.method == "direct":
         remedy = "give the flow, 0 for a static run"
         found = {
@@ -40,6 +45,8 @@ def flow_columns(table: FlowTable | None, headings: Iterable[str] = ()) -> dict[
             "flow start": Known(("flow",), remedy=remedy),
             "flow end": Known(("flow",), remedy=remedy),
         }
+    elif table.gauges is not None:
+        found = gauge_columns(table.gauges, headings)
     else:
         found = {
             name: Known(
@@ -52,17 +59,29 @@ def flow_columns(table: FlowTable | None, headings: Iterable[str] = ()) -> dict[
     return {**found, "direction": Known()}
 
 
+def _without_brackets(name: str) -> str:
+    """The name of a heading whose unit stands in round brackets, by mistake, perhaps."""
+    return re.sub(r"\s*\([^()]*\)$", "", name)
+
+
 def flow_of_rows(ledger: Ledger, columns: Columns, table: FlowTable | None) -> np.ndarray:
     """Return the flow of each row, m³/s; NaN where it is still to be worked out from the method's readings.
 
-    A row is static where all its primary readings are 0. Nothing is known where the table of the flow is at fault.
+    A row is static where all its primary readings are 0, or what the meter's table has at no flow. Nothing is known where the table of the flow is at fault.
     """
     if table is None:
         return np.full(len(columns.cells), np.nan)
+    if table.gauges is not None:
+        return static_rows(columns, table.gauges)
     if table.setup.method != "direct":
         primary = [name for name, column in table.column_names.items() if column == table.method.primary]
         read = np.stack([columns.values(name) for name in primary], axis=1)
-        return np.where((read == 0).all(axis=1), 0.0, np.nan)
+        still = (read == 0).all(axis=1)
+        meter = table.setup.table
+        if meter is not None and meter.flow[0] == 0:
+            # A meter need not read 0 without flow: a current loop shows 4 mA.
+            still |= np.isclose(read[:, 0], meter.reading[0], rtol=1e-9, atol=0.0)
+        return np.where(still, 0.0, np.nan)
     flow, start, end = (columns.values(name) for name in ("flow", "flow start", "flow end"))
     both = "flow start" in columns and "flow end" in columns
     if "flow" not in columns and not both and "flow" not in columns.misnamed:
@@ -94,10 +113,12 @@ def check_flows(rows: Rows, table: FlowTable | None) -> None:
                     _NAME,
                     None,
                     f"flow.{key}",
-                    f"it is {_with_article(dimension)}, but {heading!r} in {columns.cells.file} is read as "
-                    f"{_with_article(unit.dimension)}; give both alike",
+                    f"it is {DIMENSIONS[dimension].noun}, but {heading!r} in {columns.cells.file} is read as "
+                    f"{DIMENSIONS[unit.dimension].noun}; give both alike",
                 )
     still = rows.flow == 0
+    if table.gauges is not None:
+        check_gauge_rows(columns, table.gauges, still)
     for name, of in table.column_names.items():
         if name not in columns:
             continue
@@ -158,10 +179,6 @@ def _heading(columns: Columns, name: str) -> str:
     return next(heading.text for heading in columns.cells.headings if heading.name == name)
 
 
-def _with_article(dimension: str) -> str:
-    return f"{'an' if dimension[0] in 'aeiou' else 'a'} {dimension}"
-
-
 def _check_direct(rows: Rows) -> None:
     """Flows at or above zero, given in each row."""
     columns = rows.columns
@@ -207,6 +224,11 @@ def flow_readings(rows: Rows, table: FlowTable | None) -> pd.DataFrame:
             "file": rows.columns.cells.file,
             "line": rows.lines,
             **{name: rows.columns.values(name) for name in table.column_names},
+            **{
+                name: rows.columns.values(name)
+                for name in (table.gauges.columns if table.gauges is not None else ())
+                if name in rows.columns
+            },
         }
     )
 

@@ -14,6 +14,7 @@ from gradeline.loader.gauge_keys import Span
 from gradeline.loader.gauges import level_labels
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.repeats import RunTable
+from gradeline.loader.tables import place_of
 from gradeline.loader.taps import TapTable
 from gradeline.survey import Observation
 
@@ -89,6 +90,7 @@ def with_gauge_columns(taps: TapTable, gauges: Mapping[str, GaugeTable]) -> TapT
 def check_columns(ledger: Ledger, gauges: Mapping[str, GaugeTable], taps: TapTable, runs: RunTable) -> None:
     """Note every differential gauge whose columns are missing or doubled, and readings beyond a scale."""
     known = {tap.name: tap for tap in taps.taps}
+    file = place_of(ledger, "readings") or "readings.csv"
     for gauge in _sound(gauges):
         kind = GAUGE_KINDS[gauge.kind or ""]
         if gauge.name in known or (kind.legs and not _parts(gauge, known)):
@@ -99,7 +101,9 @@ def check_columns(ledger: Ledger, gauges: Mapping[str, GaugeTable], taps: TapTab
         read = [name for name in parts if name in runs.present]
         place = f"gauge.{gauge.name}"
         if whole and read:
-            message = f"readings.csv has the columns {gauge.name!r} and {read[0]!r}; keep the deflection or the limbs"
+            message = (
+                f"{file} has the columns {gauge.name!r} and {read[0]!r}; keep the deflection or the limbs"
+            )
             ledger.problem(NAME, None, place, message)
         elif not whole and len(read) < len(parts or [""]):
             wanted = [] if kind.legs else [f"'{gauge.name} [{unit}]'"]
@@ -113,7 +117,7 @@ def check_columns(ledger: Ledger, gauges: Mapping[str, GaugeTable], taps: TapTab
                 NAME,
                 None,
                 place,
-                f"readings.csv has no readings of the gauge; add the column {join.join(wanted)}",
+                f"{file} has no readings of the gauge; add the column {join.join(wanted)}",
             )
         if read and (gauge.values or {}).get("area_ratio") is not None:
             ledger.problem(
@@ -131,7 +135,7 @@ def check_columns(ledger: Ledger, gauges: Mapping[str, GaugeTable], taps: TapTab
                         NAME,
                         None,
                         f"{place}.upstream",
-                        f"the tap {name!r} has the gauge {tap.gauge!r} already; leave its cell in taps.csv empty",
+                        f"the tap {name!r} has the gauge {tap.gauge!r} already; leave its cell in {taps.file} empty",
                     )
 
 
@@ -152,6 +156,7 @@ def observe(taps: TapTable, gauges: Mapping[str, GaugeTable], runs: RunTable) ->
         name: [getattr(runs, name)[one.tap] for one in found] for name in ("readings", "repeats", "spreads")
     }
     levels: dict[str, pd.Series[float]] = {}
+    limbs: list[pd.DataFrame] = []
     for gauge in _sound(gauges):
         kind = GAUGE_KINDS[gauge.kind or ""]
         parts = [f"{gauge.name} {part}" for part in _parts(gauge, known)]
@@ -168,8 +173,10 @@ def observe(taps: TapTable, gauges: Mapping[str, GaugeTable], runs: RunTable) ->
         whole = pd.concat(reading, axis=1).notna().all(axis=1)
         if kind.legs:
             levels |= dict(zip(parts, reading, strict=True))
-            made, scatter = reading[0], spread[0] if len(parts) == 1 else spread[0] * np.nan
+            # Of one level, pooled over all of them: they are read from one scale.
+            made, scatter = reading[0], np.sqrt((pd.concat(spread, axis=1) ** 2).mean(axis=1, skipna=False))
         elif split:
+            limbs += [_single(runs, part) for part in parts]
             made, scatter = reading[0] - reading[1], np.hypot(spread[0], spread[1])
         else:
             made, scatter = reading[0], spread[0]
@@ -187,6 +194,17 @@ def observe(taps: TapTable, gauges: Mapping[str, GaugeTable], runs: RunTable) ->
         for name, unit in runs.units.items():
             if name.startswith(f"{one.gauge} ") and one.label not in units:
                 units[one.label] = unit
+    written = pd.concat([runs.written, *limbs], ignore_index=True) if limbs else runs.written
     return Observed(
-        tuple(found), replace(runs, **frames, units=units), pd.DataFrame(levels) if levels else None
+        tuple(found),
+        replace(runs, **frames, units=units, written=written),
+        pd.DataFrame(levels) if levels else None,
     )
+
+
+def _single(runs: RunTable, column: str) -> pd.DataFrame:
+    """The readings of a column that were read once."""
+    once = (runs.repeats[column] == 1).to_numpy(bool)
+    values = runs.readings[column].to_numpy(float)[once]
+    names = runs.runs["run"].to_numpy(object)[once]
+    return pd.DataFrame({"run": names, "column": column, "reading": values})

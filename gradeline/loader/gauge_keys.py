@@ -13,6 +13,7 @@ from gradeline.quantities import Measured, Unit, parse_quantity, parse_unit
 
 __all__ = [
     "EXAMPLES",
+    "Elevation",
     "Span",
     "gauge_key_reader",
     "plain_value",
@@ -99,8 +100,20 @@ def range_reader(dimension: str, example: str) -> Callable[[object], Span]:
     return read
 
 
-def read_leg_end(value: object) -> float | str:
-    """An elevation, or the name of a tap or of a level that is read."""
+class Elevation(float):
+    """An elevation above datum, m, with its standard uncertainty `u`, m, where one is stated."""
+
+    u: float | None
+
+    def __new__(cls, value: float, u: float | None = None) -> Self:
+        """Make one."""
+        made = super().__new__(cls, value)
+        made.u = u
+        return made
+
+
+def read_leg_end(value: object) -> Elevation | str:
+    """An elevation (an `Elevation`), or the name of a tap or of a level that is read."""
     if isinstance(value, int | float) and not isinstance(value, bool):
         raise QuantityError(f"{written(value)} has no unit; write an elevation such as '1.2 m', or a name")
     text = read_text(value)
@@ -108,9 +121,7 @@ def read_leg_end(value: object) -> float | str:
         found: Measured = parse_quantity(text, "length")
     except QuantityError:
         return text
-    if found.u is not None:
-        raise QuantityError(f"{text!r} takes no ± here; write the elevation alone")
-    return found.value
+    return Elevation(found.value, found.u)
 
 
 def read_file_name(value: object) -> str:

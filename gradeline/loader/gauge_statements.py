@@ -2,37 +2,16 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Iterable
 
 from gradeline.gauge_kinds import GAUGE_KINDS
-from gradeline.loader.grouped import quoted
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.repeats import RunTable
+from gradeline.quantities.phrases import told_once
 from gradeline.survey import Gauge
 
-__all__ = ["grouped", "holds_mercury", "state_gauge_assumptions"]
-
-
-def grouped(said: Iterable[tuple[str, str]]) -> list[str]:
-    """Return each sentence once, with the names of all gauges it speaks of.
-
-    Parameters
-    ----------
-    said : iterable of (str, str)
-        Name of a gauge, and a sentence with ``{gauge}`` where it is named.
-
-    Examples
-    --------
-    >>> grouped([("a", "The zero of {gauge} is not given."), ("b", "The zero of {gauge} is not given.")])
-    ["The zero of gauges 'a' and 'b' is not given."]
-    """
-    names: dict[str, list[str]] = {}
-    for name, sentence in said:
-        names.setdefault(sentence, []).append(name)
-    return [
-        sentence.replace("{gauge}", f"gauge{'s' * (len(of) > 1)} {quoted(of, most=8)}")
-        for sentence, of in names.items()
-    ]
+__all__ = ["holds_mercury", "state_gauge_assumptions", "unstated_elevations"]
 
 
 def state_gauge_assumptions(ledger: Ledger, gauges: tuple[Gauge, ...], runs: RunTable) -> None:
@@ -85,12 +64,37 @@ def state_gauge_assumptions(ledger: Ledger, gauges: tuple[Gauge, ...], runs: Run
                     "The limbs of {gauge} are taken as of one bore, so that their capillary rises cancel.",
                 )
             )
-    ledger.assumptions.extend(grouped(said))
+    ledger.assumptions.extend(told_once(said))
     if runs.referenced:
         ledger.assumptions.append(
             "What the reference gauge read above its mean of the run was taken off every reading beside it, so that a change "
             "during the run does not bend the line; its own scatter counts in each."
         )
+
+
+def unstated_elevations(gauges: Iterable[Gauge]) -> list[str]:
+    """Return the cautions on fixed ends of legs whose elevation has no stated uncertainty."""
+    said = []
+    for gauge in gauges:
+        # The end of one leg is the start of the next; the last one ends open, or at a tap.
+        ends = list(itertools.pairwise(gauge.legs))
+        bare = [leg.end for leg, after in ends if _fixed(leg.end) and not (leg.end_u or after.start_u)]
+        if gauge.legs and "downstream" not in gauge.settings:
+            bare += [leg.end for leg in gauge.legs[-1:] if _fixed(leg.end) and not leg.end_u]
+        if bare:
+            listed = " and ".join(f"{end:g} m" for end in bare)
+            said.append(
+                (
+                    gauge.name,
+                    f"The uncertainty of the fixed elevation{'s' * (len(bare) > 1)} of {{gauge}} ({listed}) is not stated: it "
+                    "contributes nothing to the results.",
+                )
+            )
+    return told_once(said)
+
+
+def _fixed(end: float | str) -> bool:
+    return not isinstance(end, str)
 
 
 def holds_mercury(gauge: Gauge) -> bool:

@@ -11,7 +11,10 @@ from gradeline.gauge_kinds import GAUGE_KINDS, Calibration, GaugeKind
 from gradeline.loader.cells import nearest, read_cells
 from gradeline.loader.columns import Columns, Known
 from gradeline.loader.document import LINE_FLUIDS, NAME, Document, GaugeTable
+from gradeline.loader.gauge_keys import Elevation
 from gradeline.loader.ledger import Ledger
+from gradeline.loader.tables import place_of
+from gradeline.loader.tensions import check_tension
 from gradeline.survey import Fluid, Tap
 
 __all__ = ["check_gauges", "level_labels", "read_calibration"]
@@ -50,6 +53,7 @@ def check_gauges(
             continue
         kind = GAUGE_KINDS[gauge.kind]
         _check_together(ledger, gauge, kind)
+        check_tension(ledger, gauge, kind, fluid)
         if kind.fluid_side is not None:
             _check_fluid(ledger, gauge, kind, fluid, temperatures)
         if kind.differential and taps is not None:
@@ -60,6 +64,10 @@ def check_gauges(
 
 def _note(ledger: Ledger, gauge: GaugeTable, key: str, message: str) -> None:
     ledger.problem(NAME, None, f"gauge.{gauge.name}.{key}", message)
+
+
+def _taps_file(ledger: Ledger) -> str:
+    return place_of(ledger, "taps") or "taps.csv"
 
 
 def _check_together(ledger: Ledger, gauge: GaugeTable, kind: GaugeKind) -> None:
@@ -153,7 +161,9 @@ def _check_taps(ledger: Ledger, gauge: GaugeTable, kind: GaugeKind, taps: Mappin
         if name is None:
             continue
         if name not in taps:
-            _note(ledger, gauge, key, f"there is no tap {name!r} in taps.csv; {nearest(name, taps)}")
+            _note(
+                ledger, gauge, key, f"there is no tap {name!r} in {_taps_file(ledger)}; {nearest(name, taps)}"
+            )
             return
         found.append(taps[name])
     if gauge.name in taps:
@@ -235,6 +245,14 @@ def _check_chain(
             f"the chain does not close: it ends at {shown(legs[-1].end)}, not at the tap {downstream!r} "
             f"({taps[downstream].elevation:g} m); write to = {downstream!r}",
         )
+    for place, end, tap in ((1, legs[0].start, upstream), (len(legs), legs[-1].end, downstream)):
+        if tap is not None and isinstance(end, Elevation) and end.u:
+            _note(
+                ledger,
+                gauge,
+                f"leg[{place}].{'from' if tap == upstream else 'to'}",
+                f"it is the elevation of the tap {tap!r}, whose uncertainty stands in {_taps_file(ledger)}; write the tap's name here",
+            )
     if not level_labels(gauge, taps):
         _note(
             ledger,

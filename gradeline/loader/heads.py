@@ -28,10 +28,24 @@ GIVEN: Mapping[str, tuple[str, str]] = {
 _COLUMNS: Mapping[str, Known] = {
     "tap": Known(),
     "chainage": Known(("length",), required=True),
-    "head": Known(("length",), required=True),
 }
+_AIR = (
+    "are taken as the heights of open columns of the flowing water above one level, so the weight of the air beside them "
+    "counts (0.12 %)"
+)
+#: What the heads may be headed, the gauge kind that each stands for, and how that is told.
+_HEADS: Mapping[str, tuple[str, str]] = {
+    "head": (
+        "head",
+        "its heads are taken as piezometric heads z + p/(ρ g) above one datum, worked out already; where they are the "
+        "heights of open columns, head them 'column height'",
+    ),
+    "reading": ("piezometer", f"its readings {_AIR}; where they are piezometric heads, head them 'head'"),
+    "column height": ("piezometer", f"its column heights {_AIR}"),
+}
+_SETTINGS: Mapping[str, Mapping[str, str]] = {"piezometer": {"zero": "0 m", "inclination": "90 deg"}}
 _RUN = "1"
-_GAUGE = "columns"
+_GAUGES: Mapping[str, str] = {"head": "heads", "piezometer": "columns"}
 
 Reader = Callable[[Ledger], Cells | None]
 
@@ -102,14 +116,25 @@ class TableOfHeads:
     given: Mapping[str, str]
     values: Mapping[str, Measured]
     _cells: Cells | None = None
+    _headed: str = "head"
 
     def data(self, ledger: Ledger) -> dict[str, Any] | None:
-        """Return the line: one reach from the first tap to the last, read by open columns."""
+        """Return the line: one reach from the first tap to the last, read as its column is headed."""
         before = len(ledger.problems)
         cells = self.read(ledger)
         if cells is None:
             return None
-        columns = Columns(ledger, cells, _COLUMNS)
+        present = [heading.name for heading in cells.headings if heading.name in _HEADS]
+        self._headed = present[0] if present else "head"
+        heads = {name: Known(("length",), required=name == self._headed) for name in _HEADS}
+        columns = Columns(ledger, cells, {**_COLUMNS, **heads})
+        for name in present[1:]:
+            ledger.problem(
+                self.file,
+                cells.heading_line,
+                name,
+                f"the column {self._headed!r} holds the heads already; keep one of the two",
+            )
         unit = columns.units.get("chainage")
         if len(ledger.problems) > before or unit is None:
             return None
@@ -126,9 +151,9 @@ class TableOfHeads:
                 ledger.problems += scratch.problems
             return None
         self._cells = cells
+        kind, told = _HEADS[self._headed]
         ledger.assumptions += [
-            f"{self.file} is one run of water: its heads are taken as the heights of open columns of the flowing "
-            "water above one level, so the weight of the air beside them counts (0.12 %).",
+            f"{self.file} is one run of water: {told}.",
             "The line is taken as one reach of one bore and one wall, from the first tap to the last, without "
             "fittings and not at an inlet.",
         ]
@@ -152,7 +177,7 @@ class TableOfHeads:
                     "wall": "pipe",
                 }
             ],
-            "gauge": {_GAUGE: {"kind": "piezometer", "zero": "0 m", "inclination": "90 deg"}},
+            "gauge": {_GAUGES[kind]: {"kind": kind, **_SETTINGS.get(kind, {})}},
             "uncertainty": stated,
         }
 
@@ -198,7 +223,7 @@ class TableOfHeads:
         )
 
     def _readings(self, cells: Cells) -> Cells:
-        heading, heads = self._column(cells, "head")
+        heading, heads = self._column(cells, self._headed)
         return replace(
             cells,
             headings=(

@@ -53,6 +53,8 @@ class Ledger:
         that order.
     source : Source or None
         Where the survey's tables are; None stands for files in the folder.
+    planned : bool
+        Whether the readings are still to be taken, so that none need be there.
     """
 
     folder: Path
@@ -62,6 +64,7 @@ class Ledger:
     cautions: list[str] = field(default_factory=list)
     order: dict[str, int] = field(default_factory=dict)
     source: Source | None = None
+    planned: bool = False
 
     def problem(self, file: str, row: int | None, column: str | None, message: str) -> None:
         """Note one fault at its place."""

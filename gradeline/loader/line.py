@@ -7,8 +7,18 @@ import math
 from collections.abc import Sequence
 from typing import Any, Literal, cast
 
+from gradeline.fitting_kinds import CHANGES_OF_BORE
 from gradeline.loader.bore import Bore, BoreFaultError, bore_of
-from gradeline.loader.document import LINE_FLUIDS, NAME, Document, FittingTable, GaugeTable, ReachTable
+from gradeline.loader.document import (
+    LINE_FLUIDS,
+    NAME,
+    Document,
+    FittingTable,
+    GaugeTable,
+    LegTable,
+    ReachTable,
+)
+from gradeline.loader.gauge_keys import Elevation
 from gradeline.loader.ledger import Ledger
 from gradeline.quantities import Measured
 from gradeline.survey import GAUGE_KINDS, Fitting, Fluid, Gauge, Leg, Reach, Site, Stated, StatedUncertainties
@@ -163,7 +173,7 @@ def build_fittings(
                 )
                 continue
             at = on_line
-            if table.kind is not None:
+            if table.kind in CHANGES_OF_BORE:
                 found = _change_of_bore(ledger, table, path, reaches, fittings)
                 if found is None:
                     continue
@@ -174,12 +184,41 @@ def build_fittings(
                 at,
                 table.loss_coefficient,
                 cast(Literal["smaller", "upstream", "downstream"], table.velocity),
-                table.kind is not None,
+                table.kind in CHANGES_OF_BORE,
                 table.approach,
                 table.recovery,
+                table.kind,
+                _fitting_length(ledger, table, path, reaches, at),
             )
         )
     return tuple(fittings)
+
+
+def _fitting_length(
+    ledger: Ledger, table: FittingTable, path: str, reaches: Sequence[Reach] | None, at: float
+) -> float:
+    """The length of a fitting along the axis, 0 where none is given; notes one that means nothing."""
+    if not table.length:
+        return 0.0
+    if table.loss_coefficient is not None:
+        ledger.problem(
+            NAME,
+            None,
+            f"{path}.length",
+            "the length counts only for a loss coefficient that is fitted; take it away, or write "
+            'loss_coefficient = "fit"',
+        )
+    elif reaches is not None and not (
+        reaches[0].start <= at - table.length / 2 and at + table.length / 2 <= reaches[-1].end
+    ):
+        ledger.problem(
+            NAME,
+            None,
+            f"{path}.length",
+            f"{table.length:g} m with its middle at {at:g} m goes beyond the line ({reaches[0].start:g} m to "
+            f"{reaches[-1].end:g} m); is the unit right? Mend the length, the chainage or the reach",
+        )
+    return table.length
 
 
 def _change_of_bore(
@@ -201,6 +240,16 @@ def _change_of_bore(
             f"the bore does not change at {table.at:g} m; "
             + (f"it changes at {known}" if known else "all reaches have one bore, so leave out the kind"),
         )
+    elif _other_way(table, reaches, at):
+        widens = CHANGES_OF_BORE[table.kind or ""] < 0
+        ledger.problem(
+            NAME,
+            None,
+            f"{path}.kind",
+            f"the bore {'widens' if widens else 'narrows'} at {table.at:g} m, where {table.kind!r} is stated; write "
+            f"{'sudden expansion' if widens else 'sudden contraction'!r}, or mend the bores",
+        )
+        return None
     elif any(other.change_of_bore and other.at == at for other in others):
         ledger.problem(
             NAME,
@@ -210,6 +259,14 @@ def _change_of_bore(
         )
         return None
     return at
+
+
+def _other_way(table: FittingTable, reaches: Sequence[Reach], at: float) -> bool:
+    """Whether the bore changes the other way than the kind says; of sections that are no circle nothing is said."""
+    before, after = next(pair for pair in itertools.pairwise(reaches) if pair[1].start == at)
+    if before.section is not None or after.section is not None:
+        return False
+    return CHANGES_OF_BORE[table.kind or ""] * (after.diameter.value - before.diameter.value) < 0
 
 
 def build_gauge(table: GaugeTable) -> Gauge | None:
@@ -227,8 +284,16 @@ def build_gauge(table: GaugeTable) -> Gauge | None:
         zero_u=_value(values["u_zero"]),
         scale_u=_value(values["u_scale"]),
         span=values["range"],
-        legs=tuple(Leg(leg.fluid, leg.density, leg.start, leg.end) for leg in table.legs if leg is not None),
+        legs=tuple(_leg(leg) for leg in table.legs if leg is not None),
     )
+
+
+def _leg(table: LegTable) -> Leg:
+    (start, start_u), (end, end_u) = (
+        (float(each), each.u) if isinstance(each, Elevation) else (each, None)
+        for each in (table.start, table.end)
+    )
+    return Leg(table.fluid, table.density, start, end, start_u, end_u)
 
 
 def check_gauge_temperatures(

@@ -11,8 +11,12 @@ from gradeline.errors import SurveyError
 from gradeline.flow_methods import FlowSetup
 from gradeline.loader.axis import along_axis
 from gradeline.loader.document import NAME, Document, read_document
+from gradeline.loader.flow_gauge_tables import check_flow_gauges
+from gradeline.loader.flow_gauges import TAPPINGS
 from gradeline.loader.fluids import build_fluid, state_fluid, temperature_rule
+from gradeline.loader.gas_pressures import with_gas_read
 from gradeline.loader.gauge_columns import check_columns, observe, with_gauge_columns
+from gradeline.loader.gauge_statements import state_gauge_assumptions
 from gradeline.loader.gauges import check_gauges, read_calibration
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.line import (
@@ -31,9 +35,19 @@ from gradeline.loader.side_valves import build_side_valves, state_side_valves
 from gradeline.loader.statements import state_assumptions, state_cautions
 from gradeline.loader.tables import source_of
 from gradeline.loader.taps import TapTable, read_taps
-from gradeline.survey import Calibration, Fitting, Fluid, Reach, SideValve, StatedUncertainties, Survey
+from gradeline.loader.walls import build_wall_histories
+from gradeline.survey import (
+    Calibration,
+    Fitting,
+    Fluid,
+    Reach,
+    SideValve,
+    StatedUncertainties,
+    Survey,
+    WallHistory,
+)
 
-__all__ = ["read_survey"]
+__all__ = ["read_from", "read_survey"]
 
 
 def read_survey(
@@ -80,6 +94,11 @@ def read_survey(
     ledger.source = source_of(ledger, path, {"diameter": diameter, "flow": flow, "temperature": temperature})
     if ledger.source is None:
         ledger.raise_problems()
+    return read_from(ledger, path)
+
+
+def read_from(ledger: Ledger, path: Path) -> Survey:
+    """Return the survey whose tables a ledger's source holds, as `read_survey` does."""
     document = read_document(ledger)
     fluid = reaches = None
     fittings: tuple[Fitting, ...] = ()
@@ -95,13 +114,17 @@ def read_survey(
         stated = build_stated(ledger, document)
     described = document.gauges if document is not None else {}
     taps = read_taps(ledger, described, reaches)
-    calibrations = {name: read_calibration(ledger, gauge) for name, gauge in described.items()}
+    at_meter = document.flow_gauges if document is not None else {}
+    calibrations = {
+        name: read_calibration(ledger, gauge) for name, gauge in {**described, **at_meter}.items()
+    }
     runs = read_runs(
         ledger,
         None if taps is None else with_gauge_columns(taps, described),
         is_water=None if fluid is None else fluid.is_water,
         rule=temperature_rule(fluid),
         branches=branches,
+        gauges=described,
         flow_u=stated.flow,
         flow=document.flow if document is not None else None,
     )
@@ -115,11 +138,19 @@ def read_survey(
             None if taps is None else taps.taps,
             [] if runs is None else runs.runs["temperature"].tolist(),
         )
+        check_flow_gauges(
+            ledger,
+            document,
+            fluid,
+            () if taps is None else taps.taps,
+            [] if runs is None else runs.runs["temperature"].tolist(),
+        )
     if taps is not None and runs is not None:
         check_columns(ledger, described, taps, runs)
     side_valves = (
         () if document is None else build_side_valves(ledger, document, None if taps is None else taps.taps)
     )
+    histories = () if document is None else build_wall_histories(ledger, document.walls, reaches)
     ledger.raise_problems()
     if document is None or fluid is None or reaches is None or taps is None or runs is None:
         raise SurveyError(ledger.problems)  # a fault that nobody noted would be a slip of this program
@@ -136,6 +167,7 @@ def read_survey(
         calibrations=calibrations,
         runs=runs,
         path=path,
+        histories=histories,
     )
 
 
@@ -153,11 +185,21 @@ def _compose(
     calibrations: Mapping[str, Calibration | None],
     runs: RunTable,
     path: Path,
+    histories: tuple[WallHistory, ...],
 ) -> Survey:
     """The parts, sound each by itself, as one survey."""
     gauges = tuple(
-        replace(gauge, calibration=calibrations.get(gauge.name))
+        with_gas_read(replace(gauge, calibration=calibrations.get(gauge.name)), runs.runs)
         for each in document.gauges.values()
+        if (gauge := build_gauge(each)) is not None
+    )
+    flow_gauges = tuple(
+        replace(
+            gauge,
+            calibration=calibrations.get(gauge.name),
+            settings={key: value for key, value in gauge.settings.items() if key not in TAPPINGS},
+        )
+        for each in document.flow_gauges.values()
         if (gauge := build_gauge(each)) is not None
     )
     observed = observe(table, document.gauges, runs)
@@ -177,6 +219,7 @@ def _compose(
     setup = document.flow.setup if document.flow is not None else FlowSetup()
     state_side_valves(ledger, side_valves, method=setup.method)
     state_fluid(ledger, document.fluid, fluid, runs.runs["temperature"].tolist())
+    state_gauge_assumptions(ledger, flow_gauges, replace(runs, referenced=False))
     state_assumptions(ledger, document, taps=table, gauges=gauges, fluid=fluid, runs=runs)
     state_cautions(ledger, stated, fluid=fluid, reaches=reaches, taps=taps, gauges=gauges, runs=runs)
     return Survey(
@@ -193,10 +236,13 @@ def _compose(
         repeats=runs.repeats,
         spreads=runs.spreads,
         flow=setup,
+        flow_gauges=flow_gauges,
         flow_readings=runs.flow_readings,
+        written=runs.written,
         fittings=fittings,
         offtakes=offtakes,
         side_valves=side_valves,
+        wall_histories=histories,
         fluid=fluid,
         site=build_site(document),
         stated=stated,

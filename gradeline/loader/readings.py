@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
+from types import MappingProxyType
 
 import numpy as np
 import pandas as pd
@@ -11,6 +12,7 @@ import pandas as pd
 from gradeline.errors import QuantityError
 from gradeline.loader.cells import Cells, Hints, column_index, nearest, numbers, round_brackets
 from gradeline.loader.columns import Columns, Known, read_unit
+from gradeline.loader.document import GaugeTable
 from gradeline.loader.flow_keys import FlowTable
 from gradeline.loader.flow_rows import (
     check_flows,
@@ -20,6 +22,7 @@ from gradeline.loader.flow_rows import (
     with_flow_columns,
 )
 from gradeline.loader.fluids import TemperatureRule
+from gradeline.loader.gas_pressures import check_gas, gas_columns, known_gas, with_gas
 from gradeline.loader.grouped import TOLD_SINGLY, by_name, quoted, rows_phrase
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.offtakes import Branch, branch_columns, check_branches, with_branches
@@ -63,6 +66,7 @@ def read_runs(
     flow: FlowTable | None,
     rule: TemperatureRule | None = None,
     branches: Sequence[Branch] = (),
+    gauges: Mapping[str, GaugeTable] = MappingProxyType({}),
 ) -> RunTable | None:
     """Return the runs of the survey, None where their tables cannot be read.
 
@@ -82,6 +86,8 @@ def read_runs(
         What the temperatures are held to where the fluid is neither water nor constant.
     branches : sequence of Branch
         The off-takes.
+    gauges : mapping of str to GaugeTable
+        The gauges, for the gas pressures that are read beside them.
 
     Returns
     -------
@@ -92,9 +98,10 @@ def read_runs(
     if cells is None:
         return None
     long = column_index(cells, "tap") is not None
+    gas = gas_columns(gauges)
     if long:
         run_cells = read_table(ledger, "runs")
-        rows = None if run_cells is None else _run_rows(ledger, run_cells, flow, branches, others=False)
+        rows = None if run_cells is None else _run_rows(ledger, run_cells, flow, branches, gas, others=False)
         units = _long_readings(ledger, cells, rows, taps)
     else:
         runs_place = place_of(ledger, "runs")
@@ -106,26 +113,28 @@ def read_runs(
                 f"{cells.file} has a column for each tap and holds the runs itself; take {runs_place} away, "
                 "or list the readings by 'run', 'tap' and 'reading'",
             )
-        rows = _run_rows(ledger, cells, flow, branches, others=True)
+        rows = _run_rows(ledger, cells, flow, branches, gas, others=True)
         units = _wide_readings(ledger, cells, rows, taps)
     if rows is None:
         return None
     check_temperatures(ledger, rows, is_water=is_water, rule=rule)
     check_flows(rows, flow)
     check_branches(ledger, rows, branches)
+    check_gas(ledger, rows, gas, gauges)
     check_repeated_flows(rows, flow_u)
     if taps is None:
         return None
-    _check_taken(rows)
+    if not ledger.planned:
+        _check_taken(rows)
     table_units = {name: unit.text for name, unit in rows.columns.units.items() if unit is not None}
-    gauges = {**{tap.name: tap.gauge for tap in taps.taps}, **taps.gauge_of}
+    gauge_of = {**{tap.name: tap.gauge for tap in taps.taps}, **taps.gauge_of}
     check_spans(ledger, cells.file, rows, taps)
 
     def with_line_columns(runs: pd.DataFrame) -> pd.DataFrame:
-        return with_branches(with_temperature_u(ledger, runs, rows), rows, branches)
+        return with_gas(with_branches(with_temperature_u(ledger, runs, rows), rows, branches), rows, gas)
 
     table = averaged(
-        rows, taps.distinct, [gauges.get(name) for name in taps.distinct], table_units | units, listed=long
+        rows, taps.distinct, [gauge_of.get(name) for name in taps.distinct], table_units | units, listed=long
     )
     return replace(
         table,
@@ -135,12 +144,19 @@ def read_runs(
 
 
 def _run_rows(
-    ledger: Ledger, cells: Cells, flow: FlowTable | None, branches: Sequence[Branch], *, others: bool
+    ledger: Ledger,
+    cells: Cells,
+    flow: FlowTable | None,
+    branches: Sequence[Branch],
+    gas: Mapping[str, str],
+    *,
+    others: bool,
 ) -> Rows:
     known = {
         **_RUN_COLUMNS,
         **flow_columns(flow, [heading.name for heading in cells.headings]),
         **branch_columns(branches),
+        **known_gas(gas),
     }
     columns = Columns(ledger, cells, known, others=others)
     labels = columns.labels("run")

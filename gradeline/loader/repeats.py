@@ -38,6 +38,7 @@ class RunTable:
     present: frozenset[str] = frozenset()
     referenced: bool = False
     flow_readings: pd.DataFrame = field(default_factory=pd.DataFrame)
+    written: pd.DataFrame = field(default_factory=pd.DataFrame)
 
 
 @dataclass
@@ -122,6 +123,22 @@ def averaged(
         listed,
         present=rows.present,
         referenced=rows.referenced,
+        written=_written(rows, place, tables[1], names),
+    )
+
+
+def _written(rows: Rows, place: np.ndarray, count: np.ndarray, names: Sequence[str]) -> pd.DataFrame:
+    """The repeats one by one: a slip of the pen sits in one of them, not in their mean."""
+    mine = np.flatnonzero(np.isfinite(rows.values) & (count[place] > 1))
+    if not len(mine):
+        return pd.DataFrame()
+    labels = np.array(list(rows.run_codes), dtype=object)
+    return pd.DataFrame(
+        {
+            "run": labels[rows.reading_runs[mine]],
+            "column": np.array(list(names), dtype=object)[rows.reading_taps[mine]],
+            "reading": rows.values[mine],
+        }
     )
 
 

@@ -5,11 +5,17 @@ from __future__ import annotations
 import numpy as np
 
 from gradeline.loader.document import Document
-from gradeline.loader.gauge_statements import grouped, holds_mercury, state_gauge_assumptions
+from gradeline.loader.gas_pressures import unstated_gas
+from gradeline.loader.gauge_statements import (
+    holds_mercury,
+    state_gauge_assumptions,
+    unstated_elevations,
+)
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.repeats import RunTable
 from gradeline.loader.taps import TapTable
 from gradeline.quantities import Measured
+from gradeline.quantities.phrases import told_once
 from gradeline.survey import GAUGE_KINDS, Fluid, Gauge, Reach, StatedUncertainties, Tap
 
 __all__ = ["state_assumptions", "state_cautions"]
@@ -78,7 +84,7 @@ def state_assumptions(
             said.append(
                 (gauge.name, "The tube bore of {gauge} is not given: no capillary rise is taken off.")
             )
-    ledger.assumptions.extend(grouped(said))
+    ledger.assumptions.extend(told_once(said))
     state_gauge_assumptions(ledger, gauges, runs)
     if len(gauges) == 1 and "gauge" not in taps.columns and not GAUGE_KINDS[gauges[0].kind].differential:
         note(f"The gauge {gauges[0].name!r} is the only one: it is taken to read every tap.")
@@ -108,6 +114,56 @@ def _state_repeats(ledger: Ledger, runs: RunTable) -> None:
             note(f"Rows of readings with one run and one tap are averaged as repeats: {listed}.")
 
 
+def _gauge_cautions(
+    stated: StatedUncertainties, gauges: tuple[Gauge, ...], taps: tuple[Tap, ...]
+) -> list[str]:
+    """What nobody stated of the gauges, and what of them is not used: gauges of which the same is said in one sentence."""
+    pressure = {gauge.name for gauge in gauges if GAUGE_KINDS[gauge.kind].reading == "pressure"}
+    told: list[tuple[str, str]] = []
+    for gauge in gauges:
+        read = [tap for tap in taps if tap.gauge == gauge.name]
+        differential = GAUGE_KINDS[gauge.kind].differential
+        if not read and not differential:
+            told.append((gauge.name, f"The gauge {gauge.name!r} reads no tap and is not used."))
+            continue
+        general = stated.reading_pressure if gauge.name in pressure else stated.reading
+        if (
+            gauge.reading_u is None
+            and general is None
+            and (differential or any(tap.reading_u is None for tap in read))
+        ):
+            told.append(
+                (
+                    gauge.name,
+                    "The uncertainty of a reading of {gauge} is not stated: it is estimated from the "
+                    "scatter where there are taps and runs enough, and otherwise contributes nothing.",
+                )
+            )
+        zero = gauge.settings.get("zero")  # its own ± states the uncertainty as well
+        zero_u = zero.u if isinstance(zero, Measured) and zero.u is not None else gauge.zero_u
+        unstated = [word for word, value in (("zero", zero_u), ("scale", gauge.scale_u)) if value is None]
+        if unstated:
+            one = len(unstated) == 1
+            noun, verb = ("uncertainty", "is") if one else ("uncertainties", "are")
+            they = "it contributes" if one else "they contribute"
+            told.append(
+                (
+                    gauge.name,
+                    f"The {noun} of the {' and the '.join(unstated)} of {{gauge}} {verb} not stated: "
+                    f"{they} nothing to the results.",
+                )
+            )
+        if gauge.name not in pressure and any(tap.gauge_elevation is not None for tap in read):
+            told.append(
+                (
+                    gauge.name,
+                    "A gauge elevation is given for taps of {gauge}, which has its elevation from its zero: "
+                    "it is not used.",
+                )
+            )
+    return told_once(told)
+
+
 def state_cautions(
     ledger: Ledger,
     stated: StatedUncertainties,
@@ -135,43 +191,9 @@ def state_cautions(
     pressure = {gauge.name for gauge in gauges if GAUGE_KINDS[gauge.kind].reading == "pressure"}
     if stated.elevation is None and any(tap.gauge in pressure and tap.elevation_u is None for tap in taps):
         note(f"The uncertainty of the elevation is not stated: {nothing}.")
-    for gauge in gauges:
-        read = [tap for tap in taps if tap.gauge == gauge.name]
-        differential = GAUGE_KINDS[gauge.kind].differential
-        if not read and not differential:
-            note(f"The gauge {gauge.name!r} reads no tap and is not used.")
-            continue
-        general = stated.reading_pressure if gauge.name in pressure else stated.reading
-        if (
-            gauge.reading_u is None
-            and general is None
-            and (differential or any(tap.reading_u is None for tap in read))
-        ):
-            note(
-                f"The uncertainty of a reading of gauge {gauge.name!r} is not stated: it is estimated from the "
-                "scatter where there are taps and runs enough, and otherwise contributes nothing."
-            )
-        zero = gauge.settings.get("zero")  # its own ± states the uncertainty as well
-        zero_u = zero.u if isinstance(zero, Measured) and zero.u is not None else gauge.zero_u
-        unstated = [word for word, value in (("zero", zero_u), ("scale", gauge.scale_u)) if value is None]
-        if unstated:
-            one = len(unstated) == 1
-            noun, verb = ("uncertainty", "is") if one else ("uncertainties", "are")
-            they = "it contributes" if one else "they contribute"
-            note(
-                f"The {noun} of the {' and the '.join(unstated)} of gauge {gauge.name!r} {verb} not stated: "
-                f"{they} nothing to the results."
-            )
-        if "bore" in gauge.settings and not fluid.is_water:
-            note(
-                f"The capillary rise in gauge {gauge.name!r} is taken with the surface tension of water, 0.0728 N/m, "
-                f"since that of {fluid.name} is not known."
-            )
-        if gauge.name not in pressure and any(tap.gauge_elevation is not None for tap in read):
-            note(
-                f"A gauge elevation is given for taps of gauge {gauge.name!r}, which has its elevation from "
-                "its zero: it is not used."
-            )
+    ledger.cautions.extend(_gauge_cautions(stated, gauges, taps))
+    ledger.cautions.extend(unstated_elevations(gauges))
+    ledger.cautions.extend(unstated_gas(gauges))
     for reach in reaches:
         inside = [tap.chainage for tap in taps if reach.start <= tap.chainage <= reach.end]
         span = max(inside, default=0.0) - min(inside, default=0.0)

@@ -9,8 +9,10 @@ from decimal import ROUND_HALF_EVEN, Decimal
 from types import MappingProxyType
 
 __all__ = [
+    "DISPLAYS",
     "MISSING",
     "SI_DISPLAY",
+    "US_DISPLAY",
     "Display",
     "DisplayUnit",
     "format_change",
@@ -284,6 +286,37 @@ _SI_UNITS: Mapping[str, DisplayUnit] = MappingProxyType(
     }
 )
 
+# International foot 0.3048 m, pound 0.45359237 kg, US gallon 231 in³: exact (NIST SP 811, appendix B.8).
+_FOOT = 0.3048
+_POUND = 0.45359237
+_US_GALLON = 231 * 0.0254**3
+_POUND_FORCE = _POUND * 9.80665
+
+_US_UNITS: Mapping[str, DisplayUnit] = MappingProxyType(
+    {
+        "chainage": DisplayUnit("ft", 1 / _FOOT),
+        "elevation": DisplayUnit("ft", 1 / _FOOT),
+        "head": DisplayUnit("ft", 1 / _FOOT),
+        "small head": DisplayUnit("in", 12 / _FOOT),
+        "length": DisplayUnit("ft", 1 / _FOOT),
+        "diameter": DisplayUnit("in", 12 / _FOOT),
+        "roughness": DisplayUnit("in", 12 / _FOOT),
+        "flow": DisplayUnit("US gal/min", 60 / _US_GALLON),
+        "velocity": DisplayUnit("ft/s", 1 / _FOOT),
+        "temperature": DisplayUnit("°F", 1.8, -459.67),
+        "density": DisplayUnit("lb/ft³", _FOOT**3 / _POUND),
+        "kinematic viscosity": DisplayUnit("ft²/s", 1 / _FOOT**2),
+        "pressure": DisplayUnit("psi", 0.0254**2 / _POUND_FORCE),
+        "slope": DisplayUnit("ft/1000 ft", 1e3),
+        "gravity": DisplayUnit("ft/s²", 1 / _FOOT),
+        "viscosity": DisplayUnit("lbf s/ft²", _FOOT**2 / _POUND_FORCE),
+        "temperature difference": DisplayUnit("°F", 1.8),
+        "angle": DisplayUnit("°", 180 / math.pi),
+        "relative": DisplayUnit("%", 100.0),
+        "number": DisplayUnit(""),
+    }
+)
+
 
 @dataclass(frozen=True)
 class Display:
@@ -377,3 +410,9 @@ class Display:
 
 #: SI units of the size that readers use.
 SI_DISPLAY = Display()
+
+#: US customary units. Bore and roughness share one, so that ε/D can be read off.
+US_DISPLAY = Display(_US_UNITS)
+
+#: By the name that ``--units`` takes.
+DISPLAYS: Mapping[str, Display] = MappingProxyType({"si": SI_DISPLAY, "us": US_DISPLAY})

@@ -34,7 +34,7 @@ class Dimension:
     noun : str
         With its article, for messages: ``"a length"``.
     exponents : mapping of str to int
-        Exponents of length, mass, time, temperature; empty for angles and pure numbers.
+        Exponents of length, mass, time, temperature, current; empty for angles and pure numbers.
     units : tuple of str
         Usual units, the first one for examples.
     """
@@ -70,6 +70,11 @@ DIMENSIONS: Mapping[str, Dimension] = MappingProxyType(
         "velocity": _dimension("a velocity", "m/s, ft/s", length=1, time=-1),
         "surface tension": _dimension("a surface tension", "N/m, mN/m", mass=1, time=-2),
         "thermal expansion": _dimension("a thermal expansion", "1/K", temperature=-1),
+        "frequency": _dimension("a frequency", "Hz, kHz, 1/s", time=-1),
+        # of the same exponents as a frequency, told apart by its radians: 60 rpm are one turn a second, not 1 Hz of pulses
+        "rotational speed": _dimension("a rotational speed", "rpm, rad/s", time=-1),
+        "electric current": _dimension("an electric current", "mA, A", current=1),
+        "voltage": _dimension("a voltage", "V, mV", mass=1, length=2, time=-3, current=-1),
     }
 )
 
@@ -318,6 +323,9 @@ def _dimension_of(unit: Any) -> str | None:
         return {(): "dimensionless", (("radian", 1),): "angle"}.get(tuple(roots.items()))
     if "[temperature]" in exponents and len(dict(unit._units)) > 1:
         return None
+    if exponents == {"[time]": -1}:
+        turns = "radian" in dict(unit._REGISTRY.get_base_units(unit)[1]._units)
+        return "rotational speed" if turns else "frequency"
     return next((name for name, known in DIMENSIONS.items() if dict(known.exponents) == exponents), None)
 
 

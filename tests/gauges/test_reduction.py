@@ -265,6 +265,7 @@ def test_a_calibration_corrects_and_adds_its_uncertainty(bench):
     line = np.polyfit(points, noise, 1)
     rest = noise - np.polyval(line, points)
     u = np.sqrt(rest @ rest / 7 / ((points - points.mean()) ** 2).sum())
+    u *= 2.3646 / 1.96  # t of 7 degrees of freedom at 97.5 % (JCGM 100, table G.2: 2.36), over the normal's
     assert fast["slope_u"] == pytest.approx(np.hypot(u * fast["slope"], fast["slope_u_random"]), rel=0.02)
 
 

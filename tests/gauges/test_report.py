@@ -16,7 +16,7 @@ from gradeline.quantities.printing import SI_DISPLAY
 from gradeline.report.figures import draw_grade_lines, draw_pipe, pictures
 from gradeline.report.figures.differences import head_axis
 from gradeline.report.inputs import gauge_table
-from tests.gauges.conftest import AIR, NAMES, RHO, heads
+from tests.gauges.conftest import AIR, CHAINAGE, NAMES, RHO, heads
 from tests.gauges.test_reduction import ENDS, FALL, LEGS, MERCURY, UTUBE
 
 HEADS = heads()
@@ -106,13 +106,48 @@ def test_differences_are_marks_below_the_fitted_head_upstream(bench):
     level = dict(zip(lines["chainage"], lines["piezometric_head"], strict=True))
     where = dict(zip(reduction.layout["name"], reduction.layout["chainage"], strict=True))
     falls = heads["head"][mine].to_numpy(float)
-    assert drawn.used.get_xdata() == pytest.approx([where["T4"], where["T6"]])
-    assert drawn.used.get_ydata() == pytest.approx(
+    assert drawn.used is None
+    assert drawn.falls.get_xdata() == pytest.approx([where["T4"], where["T6"]])
+    assert drawn.falls.get_ydata() == pytest.approx(
         [level[where["T1"]] - falls[0], level[where["T4"]] - falls[1]]
     )
     assert drawn.flagged.get_xdata() == pytest.approx([where["T6"]])
     assert [label.get_text() for label in drawn.labels] == ["m2: as if"]
     assert ax.get_ylabel() == "head relative to the line's start (m)"
+
+
+def test_differences_beside_a_board_are_steps_from_the_fitted_head_upstream(bench):
+    reduction = reduced(surveys(bench, "beside a board"))
+    run_name = reduction.runs["run"].iloc[-1]
+    heads = reduction.heads.copy()
+    mine = (heads["run"] == run_name).to_numpy(bool)
+    bad = mine & (heads["gauge"] == "m1").to_numpy(bool)
+    heads.loc[bad, "flag"] = "outlier"
+    heads.loc[bad, "used"] = False
+    level = np.interp(
+        [CHAINAGE[0]],
+        *(
+            reduction.grade_lines.loc[reduction.grade_lines["run"] == run_name, name]
+            for name in ("chainage", "piezometric_head")
+        ),
+    )[0]
+    foot = level - float(heads.loc[bad, "head"].iloc[0])
+    for table, left_out in ((reduction.heads, False), (heads, True)):
+        ax = Figure().add_subplot()
+        drawn = draw_grade_lines(ax, dataclasses.replace(reduction, heads=table), run_name)
+        assert len(drawn.used.get_xdata()) == len(NAMES)
+        (step,) = drawn.steps.get_segments()
+        assert step == pytest.approx(
+            np.array([(CHAINAGE[0], level), (CHAINAGE[-1], level), (CHAINAGE[-1], foot)])
+        )
+        mark = drawn.left_out if left_out else drawn.falls
+        assert mark.get_marker() == "D"
+        assert (mark.get_markerfacecolor() == "white") == left_out
+        assert mark.get_xydata() == pytest.approx(np.array([(CHAINAGE[-1], foot)]))
+        assert (drawn.flagged is not None) == left_out
+        words = {text.get_text() for text in ax.get_legend().get_texts()}
+        assert ("fall from the tap upstream" in words) != left_out
+        assert ax.get_ylabel() == "head above datum (m)"
 
 
 def test_a_static_run_without_a_level_has_no_grade_lines(bench):

@@ -54,3 +54,29 @@ def test_a_change_of_bore_is_told_by_its_direction():
 def test_wrong_bores_are_refused(function, up, down, words):
     with pytest.raises(ValueError, match=words):
         function(up, down)
+
+
+@pytest.mark.parametrize("bore", [0.019, 0.0266, 0.0525, 0.1023, 0.203])
+def test_valves_against_another_library(bore: float) -> None:
+    """Crane TP-410, gate valve 8 f_T and ball valve 3 f_T, as `fluids.fittings` has them: within 1.5 %, its f_T being
+    that of nominal sizes.
+    """
+    fittings = pytest.importorskip("fluids.fittings")
+    assert local_losses.fully_rough_loss_coefficient(8, bore) == pytest.approx(
+        fittings.K_gate_valve_Crane(bore, bore, 0.0), rel=0.015
+    )
+    assert local_losses.fully_rough_loss_coefficient(3, bore) == pytest.approx(
+        fittings.K_ball_valve_Crane(bore, bore, 0.0), rel=0.015
+    )
+
+
+def test_a_gate_valve_in_a_two_inch_pipe() -> None:
+    """0.15 in Munson, Young and Okiishi, Fundamentals of Fluid Mechanics, table of loss coefficients (from memory)."""
+    assert float(local_losses.fully_rough_loss_coefficient(8, 0.0525)) == pytest.approx(0.15, abs=0.005)
+
+
+def test_a_multiple_below_zero_and_a_hair_are_refused() -> None:
+    with pytest.raises(ValueError, match="the multiple must not be negative: -1"):
+        local_losses.fully_rough_loss_coefficient(-1, 0.05)
+    with pytest.raises(ValueError, match=r"the bore must be above 0.001 m: 0.0005"):
+        local_losses.fully_rough_loss_coefficient(8, 0.0005)

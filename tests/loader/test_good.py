@@ -208,22 +208,31 @@ def test_another_fluid_needs_no_temperature(write_survey):
     assert not any("surface tension" in text for text in survey.cautions)
 
 
-def test_capillary_rise_in_another_fluid_is_a_caution(write_survey):
-    fluid = 'name = "gear oil"\ndensity = "868 kg/m^3"\nviscosity = "31 mPa s"'
-    bore = ("survey.toml", 'zero = "0.80 m"', 'zero = "0.80 m"\nbore = "6 mm"')
-    survey = read_survey(write_survey(("survey.toml", 'name = "water"', fluid), bore))
-    assert (
-        "The capillary rise in gauge 'board' is taken with the surface tension of water, 0.0728 N/m, since that of gear oil "
-        "is not known." in survey.cautions
+def test_capillary_rise_in_another_fluid_takes_its_surface_tension(write_survey):
+    fluid = (
+        "survey.toml",
+        'name = "water"',
+        'name = "gear oil"\ndensity = "868 kg/m^3"\nviscosity = "31 mPa s"',
     )
-    assert not any("surface tension" in text for text in read_survey(write_survey(bore)).cautions)
+    bore = 'zero = "0.80 m"\nbore = "6 mm"'
+    tension = f'{bore}\nsurface_tension = "0.031 N/m"'
+    survey = read_survey(write_survey(fluid, ("survey.toml", 'zero = "0.80 m"', tension)))
+    assert survey.gauge("board").settings["surface_tension"] == Measured(0.031)
+    with pytest.raises(SurveyError) as caught:
+        read_survey(write_survey(fluid, ("survey.toml", 'zero = "0.80 m"', bore)))
+    assert str(caught.value) == (
+        "survey.toml gauge.board.bore: the capillary rise in the tube goes with the surface tension of gear oil, which is not "
+        'known; add it, such as surface_tension = "0.03 N/m", or take bore away where the rise is taken off already or is too '
+        "small to count"
+    )
+    assert read_survey(write_survey(("survey.toml", 'zero = "0.80 m"', bore))).gauge("board").settings["bore"]
 
 
 def test_a_zero_with_its_own_uncertainty_is_stated(write_survey):
     cautions = read_survey(write_survey()).cautions
     assert (
-        "The uncertainties of the zero and the scale of gauge 'board' are not stated: they contribute nothing to the "
-        "results." in cautions
+        "The uncertainties of the zero and the scale of gauges 'board' and 'bourdon' are not stated: they contribute nothing to "
+        "the results." in cautions
     )
     survey = read_survey(write_survey(("survey.toml", '"0.80 m"', '"0.80 m +/- 20 mm"')))
     assert survey.gauge("board").settings["zero"] == Measured(0.8, 0.02)
