@@ -23,6 +23,9 @@ __all__ = [
     "FALSE_ALARM",
     "MANY_RUNS",
     "TABLED_RUNS",
+    "WIDE_PARAMETERS",
+    "WIDE_RUNS",
+    "WIDE_SHAPES",
     "NullRuns",
     "critical_falls",
     "null_runs",
@@ -38,6 +41,13 @@ FALSE_ALARM = 0.01
 MANY_RUNS = 50
 #: Numbers of runs for which critical values are tabled; between them they go as 1/runs.
 TABLED_RUNS = (1, 2, 3, 4, 5, 6, 8, 10, 12, 15, 20, 30, 50)
+#: Readings of longer runs for which everything is tabled, between which it goes as ln n, and numbers of runs there.
+WIDE_SHAPES = (15, 16, 18, 20, 24, 30, 40, 60, 100, 200)
+WIDE_RUNS = (1, 2, 3, 4, 6, 10, 20, 50)
+#: Parameters up to which longer runs are tabled.
+WIDE_PARAMETERS = 6
+#: Readings beyond which a run of still more parameters is judged as one of these and of the same freedom.
+_LONG = 40
 _SEED = 20260506
 _GROSS = (15.0, 60.0)
 
@@ -78,7 +88,7 @@ def _typical_design(n: int, p: int) -> Array:
     return np.column_stack([np.ones(n), *passed])[:, :p]
 
 
-@lru_cache(maxsize=8)
+@lru_cache(maxsize=24)
 def null_runs(observations: int, parameters: int, count: int | None = None) -> NullRuns:
     """Simulate the search on runs of equal variance with evenly spaced taps.
 
@@ -137,10 +147,9 @@ def _tables() -> tuple[dict[tuple[int, int], tuple[float, float]], dict[tuple[in
     moments = {(int(n), int(p)): (float(mean), float(freedom)) for n, p, mean, freedom in rows}
     with (folder / "critical_falls.csv").open(encoding="utf-8") as file:
         rows = np.loadtxt(file, delimiter=",", skiprows=1)
-    critical = {}
-    for key in np.unique(rows[:, :4], axis=0):
-        mine = rows[(rows[:, :4] == key).all(axis=1)]
-        critical[tuple(int(part) for part in key)] = mine[np.argsort(mine[:, 4]), 4:]
+    rows = rows[np.lexsort(rows[:, 4::-1].T)]
+    starts = np.flatnonzero((np.diff(rows[:, :4], axis=0, prepend=-1.0) != 0).any(axis=1))
+    critical = {tuple(int(part) for part in mine[0, :4]): mine[:, 4:] for mine in np.split(rows, starts[1:])}
     return moments, critical
 
 
@@ -158,7 +167,7 @@ def scale_moments(observations: int, parameters: int) -> tuple[float, float]:
     -------
     tuple of float
         The mean for unit variance, and the degrees of freedom of the chi-square with the same relative spread,
-        dimensionless: from the table, or simulated for a shape that is not in it.
+        dimensionless: from the table, between its shapes for longer runs, or simulated for a shape that is not in it.
 
     Examples
     --------
@@ -166,14 +175,47 @@ def scale_moments(observations: int, parameters: int) -> tuple[float, float]:
     >>> 2.2 < mean < 2.5, 4.5 < freedom < 5.5
     (True, True)
     """
-    tabled = _tables()[0].get((observations, parameters))
+    moments = _tables()[0]
+    tabled = moments.get((observations, parameters))
     if tabled is not None:
         return tabled
+    observations, parameters = _alike(observations, parameters)
+    if _between(observations, parameters):
+        # What the trimming takes, and the freedom for what is left, change slowly.
+        near = [(n, *moments[n, parameters]) for n in WIDE_SHAPES]
+        taken = _along(observations, [n - parameters - mean for n, mean, _ in near])
+        mean = observations - parameters - taken
+        return mean, mean * _along(observations, [freedom / mean for _, mean, freedom in near])
     null = null_runs(observations, parameters)
     return null.expected, null.shape
 
 
-@lru_cache(maxsize=512)
+def _alike(observations: int, parameters: int) -> tuple[int, int]:
+    """Return the tabled shape that a long run of many parameters is like: of the same freedom."""
+    like = observations - parameters + WIDE_PARAMETERS
+    return (
+        (like, WIDE_PARAMETERS)
+        if parameters > WIDE_PARAMETERS and like > _LONG
+        else (observations, parameters)
+    )
+
+
+def _between(observations: int, parameters: int) -> bool:
+    """Whether a run lies among the longer ones that are tabled."""
+    return observations > WIDE_SHAPES[0] and parameters <= WIDE_PARAMETERS
+
+
+def _along(observations: int, values: list[float]) -> float:
+    """Interpolate values at `WIDE_SHAPES` as they go with ln n, beyond the last one along the same line."""
+    if not np.isfinite(values).all():
+        return float("inf")
+    logs = np.log(WIDE_SHAPES)
+    at = min(int(np.searchsorted(logs, np.log(observations))), len(logs) - 1)
+    rise = (values[at] - values[at - 1]) / (logs[at] - logs[at - 1])
+    return float(values[at] + rise * (np.log(observations) - logs[at]))
+
+
+@lru_cache(maxsize=2048)
 def critical_falls(
     observations: int, parameters: int, runs: int, *, stated: bool, independent: bool
 ) -> tuple[float, float, float]:
@@ -200,14 +242,23 @@ def critical_falls(
     Notes
     -----
     From a table that `simulated_critical_falls` made (``tests/calibration/make_tables.py``), between its numbers of
-    runs by 1/runs; simulated on the spot for a shape of run that is not in it.
+    runs by 1/runs, between its longer runs by the logarithm of their readings; simulated on the spot for a shape of run
+    that is not in it.
 
     Examples
     --------
     >>> [round(value) for value in critical_falls(10, 2, 1000, stated=False, independent=True)]
     [11, 10, 10]
     """
-    rows = _tables()[1].get((observations, parameters, int(stated), int(independent)))
+    observations, parameters = _alike(observations, parameters)
+    table = _tables()[1]
+    rows = table.get((observations, parameters, int(stated), int(independent)))
+    if rows is None and _between(observations, parameters):
+        near = [
+            critical_falls(n, parameters, runs, stated=stated, independent=independent) for n in WIDE_SHAPES
+        ]
+        first, second, third = (_along(observations, list(column)) for column in zip(*near, strict=True))
+        return first, second, third
     if rows is None:
         return simulated_critical_falls(
             observations, parameters, runs, stated=stated, independent=independent

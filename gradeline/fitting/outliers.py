@@ -31,6 +31,8 @@ Mask = NDArray[np.bool_]
 MOST_OUTLIERS = 3
 #: Up to this many observations every set is examined; above it the search goes forward and backward.
 _EVERY_SET = 14
+#: Readings of the largest fall alone that are paired with all others first.
+_LIKELY = 12
 #: A set whose removal leaves the line undetermined has a determinant this small.
 _SINGULAR = 1e-9
 _CHUNK = 2048
@@ -216,7 +218,7 @@ def _forward_backward(q: Array, weight: Array, candidates: NDArray[np.intp], mos
     """Best single and best pair of all, then the best third; each member is put back and searched for again."""
     size = len(candidates)
     block = weight[np.ix_(candidates, candidates)]
-    chunk = max(1, 400_000 // size**2)
+    chunk = max(1, 400_000 // (size * min(size, _LIKELY)))
     for start in range(0, len(q), chunk):
         part = slice(start, start + chunk)
         values = q[part][:, candidates]
@@ -227,19 +229,9 @@ def _forward_backward(q: Array, weight: Array, candidates: NDArray[np.intp], mos
         falls.members[part, 0, 0] = candidates[best]
         if most < 2:
             continue
-        diagonal = np.diagonal(block)
-        determinant = np.multiply.outer(diagonal, diagonal) - block**2
-        sound = determinant > _SINGULAR * np.multiply.outer(diagonal, diagonal)
-        pair = (
-            values[:, :, None] ** 2 * diagonal
-            - 2 * values[:, :, None] * values[:, None, :] * block
-            + values[:, None, :] ** 2 * diagonal[:, None]
-        )
-        pair = np.where(sound, pair / np.where(sound, determinant, 1.0), 0.0).reshape(len(values), -1)
-        at = pair.argmax(axis=1)
-        chosen = np.column_stack(np.unravel_index(at, (size, size)))
-        falls.fall[part, 1] = pair[rows, at]
-        falls.members[part, 1, :2] = candidates[np.sort(chosen, axis=1)]
+        chosen, fall = _best_pair(values, alone, block)
+        falls.fall[part, 1] = fall
+        falls.members[part, 1, :2] = candidates[chosen]
         if most < 3:
             continue
         third, fall = _best_addition(values, block, chosen)
@@ -252,6 +244,50 @@ def _forward_backward(q: Array, weight: Array, candidates: NDArray[np.intp], mos
             fall = np.where(improved, better, fall)
         falls.fall[part, 2] = fall
         falls.members[part, 2] = candidates[np.sort(chosen, axis=1)]
+
+
+def _best_pair(q: Array, alone: Array, weight: Array) -> tuple[NDArray[np.intp], Array]:
+    """Return the best pair of each run, in order, and its fall.
+
+    Pairs with one of the readings that stand out alone are looked at first. Of readings whose own fall is at most t no
+    pair falls by more than 2 t / (1 − |ρ|), ρ their greatest correlation: where the best pair is beyond that, it is the
+    best of all, and only where it is not are all the others looked at as well.
+    """
+    size = q.shape[1]
+    if size <= 2 * _LIKELY:
+        return _pairs_with(q, weight, np.broadcast_to(np.arange(size), q.shape))
+    order = np.argpartition(-alone, _LIKELY, axis=1)
+    chosen, fall = _pairs_with(q, weight, order[:, :_LIKELY])
+    unit = 1.0 / np.sqrt(np.maximum(np.diagonal(weight), 1e-300))
+    correlation = np.abs(weight * unit[:, None] * unit)
+    np.fill_diagonal(correlation, 0.0)
+    rest = np.take_along_axis(alone, order[:, _LIKELY:], axis=1).max(axis=1)
+    unsure = np.flatnonzero(fall * (1.0 - min(float(correlation.max()), 1.0)) < 2.0 * rest)
+    step = max(1, 400_000 // size**2)
+    for start in range(0, len(unsure), step):
+        some = unsure[start : start + step]
+        every = np.broadcast_to(np.arange(size), (len(some), size))
+        chosen[some], fall[some] = _pairs_with(q[some], weight, every)
+    return chosen, fall
+
+
+def _pairs_with(q: Array, weight: Array, first: NDArray[np.intp]) -> tuple[NDArray[np.intp], Array]:
+    """Return the best pair of each run with one of `first` (R, m) in it, in order, and its fall."""
+    rows, size = np.arange(len(q)), q.shape[1]
+    diagonal, lead = np.diagonal(weight), np.take_along_axis(q, first, axis=1)
+    across, own = weight[first], diagonal[first]
+    product = own[:, :, None] * diagonal
+    determinant = product - across**2
+    sound = determinant > _SINGULAR * product
+    pair = (
+        lead[:, :, None] ** 2 * diagonal
+        - 2 * lead[:, :, None] * q[:, None, :] * across
+        + q[:, None, :] ** 2 * own[:, :, None]
+    )
+    pair = np.where(sound, pair / np.where(sound, determinant, 1.0), 0.0).reshape(len(q), -1)
+    at = pair.argmax(axis=1)
+    chosen = np.column_stack([first[rows, at // size], at % size])
+    return np.sort(chosen, axis=1), pair[rows, at]
 
 
 def _best_addition(q: Array, weight: Array, chosen: NDArray[np.intp]) -> tuple[NDArray[np.intp], Array]:

@@ -6,6 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gradeline.quantities import Measured
+from gradeline.quantities.phrases import told_once
 from gradeline.survey import Gauge, Survey
 
 __all__ = ["accuracy_errors", "accuracy_sentences"]
@@ -49,13 +50,16 @@ def accuracy_errors(gauge: Gauge, readings: Array) -> list[tuple[str, Array]]:
 
 def accuracy_sentences(survey: Survey) -> list[str]:
     """Return what is assumed of the accuracy classes."""
-    return [
-        f"The accuracy class of gauge {gauge.name!r} is a limit of error: u is the limit over √3"
-        + (
-            ", half of its variance an error of the zero and half one of the span."
-            if "accuracy_of_full_scale" in gauge.settings
-            else ", an error of the scale."
+    return told_once(
+        (
+            gauge.name,
+            "The accuracy class of {gauge} is a limit of error: u is the limit over √3"
+            + (
+                ", half of its variance an error of the zero and half one of the span."
+                if "accuracy_of_full_scale" in gauge.settings
+                else ", an error of the scale."
+            ),
         )
         for gauge in survey.gauges
         if {"accuracy_of_full_scale", "accuracy_of_reading"} & set(gauge.settings)
-    ]
+    )

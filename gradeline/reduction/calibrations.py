@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from gradeline.fitting.calibration import CalibrationLine, fit_calibration
 from gradeline.survey import Survey
 
-__all__ = ["Calibrated", "calibrated", "calibration_sentences"]
+__all__ = ["Calibrated", "calibrated", "calibration_sentences", "freedom_factor"]
 
 Array = NDArray[np.float64]
 
@@ -26,12 +26,40 @@ class Calibrated:
     rate : (n,) array
         Change of the corrected reading for one unit of the reading, dimensionless.
     errors : tuple of (str, (R, n) array)
-        Independent errors of standard size: the gauge and the change of its readings, SI.
+        Independent errors of standard size, `freedom_factor` included: the gauge and the change of its readings, SI.
     """
 
     readings: Array
     rate: Array
     errors: tuple[tuple[str, Array], ...]
+
+
+def freedom_factor(dof: int) -> float:
+    """Return what the standard uncertainty of a calibration line is multiplied by for its few degrees of freedom.
+
+    Parameters
+    ----------
+    dof : int
+        Degrees of freedom of the line's scatter, n − 2, at least 1.
+
+    Returns
+    -------
+    float
+        Student's t over the normal's point, both at 97.5 %. The errors of a calibration are shared by all runs, and
+        intervals take shared errors as normal: so a 95 % interval that only the calibration decides is the one by t.
+
+    References
+    ----------
+    JCGM 100:2008, H.3 gives the line's uncertainty with n − 2 degrees of freedom; G.3.2 the interval by t.
+
+    Examples
+    --------
+    >>> [round(freedom_factor(dof), 2) for dof in (1, 9)]
+    [6.48, 1.15]
+    """
+    from scipy.special import ndtri, stdtrit  # noqa: PLC0415 (start-up time)
+
+    return float(stdtrit(dof, 0.975) / ndtri(0.975))
 
 
 def _lines(survey: Survey) -> dict[str, CalibrationLine]:
@@ -66,9 +94,10 @@ def calibrated(survey: Survey) -> Calibrated:
         if not mine.any():
             continue
         away = readings[:, mine] - line.at
+        factor = freedom_factor(line.dof)
         for offset, slope in line.independent_parts():
             change = np.zeros(readings.shape)
-            change[:, mine] = offset + slope * away
+            change[:, mine] = factor * (offset + slope * away)
             errors.append((name, change))
         readings[:, mine] += line.correction(readings[:, mine])
         rate[mine] = 1.0 + line.slope
@@ -85,7 +114,8 @@ def calibration_sentences(survey: Survey) -> tuple[list[str], list[str]]:
         points = len(gauge.calibration.reading)
         assumed.append(
             f"The readings of gauge {gauge.name!r} are corrected by the straight line through the {points} points of "
-            f"{gauge.calibration.file}, with its uncertainty from their scatter ({line.dof} degrees of freedom)."
+            f"{gauge.calibration.file}, with its uncertainty from their scatter, times {freedom_factor(line.dof):.3g} for its "
+            f"{line.dof} degree{'s' * (line.dof != 1)} of freedom (Student's t over the normal at 95 %)."
         )
         beyond = [
             f"{run}:{one.label}"

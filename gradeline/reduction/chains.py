@@ -32,12 +32,16 @@ class Chain:
         1 for the legs of flowing fluid, whose density goes with it.
     density_errors : tuple of (str, array)
         For each fluid whose density has a stated uncertainty, the standard uncertainty in its legs, kg/m³.
+    elevation_errors : tuple of array
+        For each fixed elevation with a stated uncertainty, what it changes of the rise of the legs, m: where two legs
+        meet it is one error of both.
     """
 
     arguments: Mapping[str, Any] = field(default_factory=lambda: MappingProxyType({}))
     other_levels: tuple[tuple[Array, Array], ...] = ()
     flowing: Array = field(default_factory=lambda: np.zeros((0, 1, 1)))
     density_errors: tuple[tuple[str, Array], ...] = ()
+    elevation_errors: tuple[Array, ...] = ()
 
 
 def level_names(legs: tuple[Leg, ...], taps: set[str]) -> list[str]:
@@ -100,6 +104,7 @@ def chain_of(survey: Survey, media: Media, gauge: Gauge, tap: str, tap_2: str | 
         other_levels=tuple((share(name), levels[name]) for name in names[1:]),
         flowing=np.array([float(_flows(survey, leg)) for leg in legs])[:, None, None],
         density_errors=_density_errors(legs),
+        elevation_errors=_elevation_errors(legs),
     )
 
 
@@ -111,6 +116,21 @@ def _density_errors(legs: Sequence[Leg]) -> tuple[tuple[str, Array], ...]:
             change = sizes.setdefault(leg.fluid, np.zeros((len(legs), 1, 1)))
             change[place] = leg.density.u
     return tuple(sizes.items())
+
+
+def _elevation_errors(legs: Sequence[Leg]) -> tuple[Array, ...]:
+    """The stated errors of fixed elevations: the end of one leg is the start of the next."""
+    found = []
+    for place, leg in enumerate(legs):
+        after = legs[place + 1] if place + 1 < len(legs) else None
+        size = max(leg.end_u or 0.0, (after.start_u if after is not None else None) or 0.0)
+        if size:
+            change = np.zeros((len(legs), 1, 1))
+            change[place] = size
+            if after is not None:
+                change[place + 1] = -size
+            found.append(change)
+    return tuple(found)
 
 
 def _levels(survey: Survey, gauge: Gauge, names: list[str]) -> dict[str, Array]:

@@ -14,7 +14,7 @@ from gradeline.survey import Survey
 __all__ = ["CORRECTIONS", "excluded_readings"]
 
 #: What may be taken off the readings.
-CORRECTIONS = ("static", "none")
+CORRECTIONS = ("static", "none", "offsets")
 
 
 def excluded_readings(survey: Survey, exclude: Sequence[str]) -> NDArray[np.bool_]:

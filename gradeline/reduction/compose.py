@@ -6,23 +6,29 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from gradeline.errors import ReductionError
 from gradeline.reduction import tabulate
-from gradeline.reduction.choices import CORRECTIONS, excluded_readings
-from gradeline.reduction.corrections import static_corrections
+from gradeline.reduction.ailment_sentences import ailment_assumptions, ailment_cautions
+from gradeline.reduction.budget import budget_sentences, run_budgets, wall_budgets
+from gradeline.reduction.carried import carried_of
+from gradeline.reduction.conveyance import conveyance_of, conveyance_table, wall_conveyance_table
 from gradeline.reduction.directions import compare_directions
-from gradeline.reduction.drift import steadied
+from gradeline.reduction.estimates import estimates_of
+from gradeline.reduction.fitted import fitted_walls_of
 from gradeline.reduction.flags import flag_table
-from gradeline.reduction.flow import metered_flow, with_flow_inputs
 from gradeline.reduction.fluids import air_cautions
-from gradeline.reduction.friction import friction_of
-from gradeline.reduction.heads import heads_of, observation_kinds
-from gradeline.reduction.line import line_of
-from gradeline.reduction.media import media_of, run_temperature_u
-from gradeline.reduction.runs import fit_survey, stated_readings
+from gradeline.reduction.gentle import gentle_cautions
+from gradeline.reduction.heads import observation_kinds
+from gradeline.reduction.laws import UNSEEN_OFFSETS, departure_table, law_table, laws_of
+from gradeline.reduction.loss_errors import loss_budgets
+from gradeline.reduction.losses import loss_assumptions, loss_cautions
+from gradeline.reduction.monte_carlo import SEED
+from gradeline.reduction.setting import stated_readings
+from gradeline.reduction.slips import slip_table, slips_of, with_slips
 from gradeline.reduction.statements import assumptions_of, cautions_of
-from gradeline.reduction.tables import RESULT_TABLES, Reduction
-from gradeline.reduction.walls import walls_of
+from gradeline.reduction.surfaces import roughness_check_table, surface_table
+from gradeline.reduction.tables import DRAWING_TABLES, Reduction
+from gradeline.reduction.transition import transition_table
+from gradeline.reduction.zero_drift import zero_drift_of
 from gradeline.survey import Survey
 
 __all__ = ["reduce"]
@@ -35,6 +41,8 @@ def reduce(
     correct: str = "static",
     keep_all: bool = False,
     exclude: Sequence[str] = (),
+    monte_carlo: bool = True,
+    seed: int = SEED,
 ) -> Reduction:
     """Reduce a survey: head loss, friction factor, roughness and loss coefficients, each with its uncertainty.
 
@@ -44,12 +52,17 @@ def reduce(
         As `gradeline.read_survey` gives it.
     level : float
         Coverage of the intervals, between 0 and 1.
-    correct : {"static", "none"}
-        Whether the offsets of the taps in the static runs are taken off the others.
+    correct : {"static", "none", "offsets"}
+        Whether the offsets of the taps in the static runs are taken off the others; ``"offsets"``: those that the
+        flowing runs show as well.
     keep_all : bool
         Whether flagged readings enter the fits all the same.
     exclude : sequence of str
         Readings to leave out: ``"T4"`` in all runs, ``"3:T4"`` in run 3.
+    monte_carlo : bool
+        Whether the intervals of S, f and K are held against Monte Carlo; where the two differ, its limits stand.
+    seed : int
+        Of the Monte Carlo draws: the same seed gives the same limits.
 
     Returns
     -------
@@ -69,37 +82,41 @@ def reduce(
     >>> reduction.walls["wall"].tolist()
     ['drawn copper']
     """
-    if not 0.0 < level < 1.0:
-        raise ReductionError(f"the level of the intervals is between 0 and 1, such as 0.95; found {level}")
-    if correct not in CORRECTIONS:
-        raise ReductionError(f"to correct: {correct!r} is not one of {', '.join(CORRECTIONS)}")
-    metered = metered_flow(survey)
-    survey = metered.survey
-    excluded = excluded_readings(survey, exclude)
-    media = media_of(survey)
-    line = line_of(survey)
-    static = survey.runs["flow"].to_numpy(float) == 0
-    corrections = static_corrections(
-        with_flow_inputs(heads_of(survey, media), metered.inputs),
-        static,
-        survey.repeats.to_numpy(float),
-        apply=correct == "static",
-        excluded=excluded,
+    estimates = estimates_of(
+        survey,
+        level=level,
+        correct=correct,
+        keep_all=keep_all,
+        exclude=exclude,
+        monte_carlo=monte_carlo,
+        seed=seed,
     )
-    corrections = steadied(corrections, survey, line, media)
-    flowing = fit_survey(survey, media, line, corrections, excluded, keep_all=keep_all)
-    walls = walls_of(survey, line, media, flowing, level=level)
-    friction = friction_of(
-        line, media, flowing, walls, level=level, temperature_run=run_temperature_u(survey)[flowing.rows]
+    survey, excluded, media = estimates.survey, estimates.excluded, estimates.media
+    line, whole, corrections = estimates.line, estimates.whole, estimates.corrections
+    flowing, walls, friction, losses = (
+        estimates.flowing,
+        estimates.walls,
+        estimates.friction,
+        estimates.losses,
     )
+    budgets = [
+        *run_budgets(survey, flowing, friction, walls),
+        *wall_budgets(flowing, walls),
+        *loss_budgets(whole, media, flowing, losses),
+    ]
     directions = compare_directions(survey, line, flowing, friction, walls, level=level)
     kind, _ = observation_kinds(survey)
     base = np.array([part.base for part in flowing.fits.scatter])[kind]
+    laws, found = laws_of(walls), flowing.ailments.diagnosis
+    conveyance = conveyance_of(line, flowing, friction)
+    of_walls = wall_conveyance_table(survey, media, flowing, walls, conveyance)
+    drift = zero_drift_of(survey, corrections, base, flowing.fits.pooled_dof, excluded)
     grade_lines = tabulate.grade_line_table(survey, line, media, flowing)
     shape = (len(flowing.rows), -1) if len(flowing.rows) else (0, 0)
     piezometric = grade_lines["piezometric_head"].to_numpy(float).reshape(shape)
     crown = grade_lines["crown"].to_numpy(float).reshape(shape)
     law = survey.stated.friction_law
+    slips = slips_of(survey, corrections, flowing, walls)
     return Reduction(
         survey={
             "title": survey.title,
@@ -119,7 +136,13 @@ def reduce(
                 keep_all=keep_all,
                 exclude=exclude,
             ),
+            *ailment_assumptions(flowing, corrections),
+            *loss_assumptions(whole, losses),
+            estimates.check,
+            *budget_sentences(budgets),
             *directions[0],
+            # The diagnosis says so itself where it was done.
+            *((UNSEEN_OFFSETS,) if found is None or not found.done else ()),
         ),
         cautions=(
             *cautions_of(survey, line, corrections, flowing, walls, piezometric, crown, base),
@@ -130,23 +153,39 @@ def reduce(
                 media.gravity,
                 piezometric,
             ),
+            *gentle_cautions(survey, line, flowing, friction, walls, media.gravity),
+            *ailment_cautions(line, flowing),
+            *loss_cautions(whole, losses),
             *directions[1],
         ),
         reaches=tabulate.reach_table(survey, line, flowing),
         runs=tabulate.run_table(survey, media, line, flowing, friction),
-        walls=tabulate.wall_table(walls),
-        fittings=tabulate.fitting_table(line, media, flowing, friction, level=level),
-        taps=tabulate.tap_table(survey, corrections, base, excluded),
+        walls=tabulate.wall_table(walls, of_walls),
+        fittings=tabulate.fitting_table(whole, flowing, friction, losses, walls),
+        taps=tabulate.tap_table(survey, corrections, flowing, base, excluded),
         heads=tabulate.head_table(survey, line, corrections, flowing, excluded),
-        flags=flag_table(survey, corrections, flowing, friction, walls, keep_all=keep_all),
-        budget=tabulate.frame("budget", {name: [] for name in RESULT_TABLES["budget"]}),
+        flags=with_slips(
+            flag_table(
+                survey, corrections, flowing, friction, walls, laws, line=line, keep_all=keep_all, drift=drift
+            ),
+            slips,
+        ),
+        slips=slip_table(slips),
+        budget=tabulate.budget_table(budgets),
+        improvements=tabulate.improvement_table(budgets),
+        likelihood=tabulate.likelihood_table(walls),
         grade_lines=grade_lines,
         layout=tabulate.layout_table(survey, line),
         laminar=tabulate.laminar_table(survey, flowing, friction),
         reading_units=tabulate.reading_unit_table(survey),
-        exponents=tabulate.exponent_table(survey, flowing, friction, walls, level=level),
+        exponents=tabulate.exponent_table(survey, line, flowing, friction, walls, level=level),
+        ailments=tabulate.ailment_table(flowing),
+        ailment_runs=tabulate.ailment_run_table(survey, line, media, flowing, corrections.heads.observed),
+        break_heads=tabulate.break_head_table(survey, line, media, flowing),
         scatter=tabulate.scatter_table(survey, flowing, np.hypot(*stated_readings(survey, corrections))),
         bore_sensitivity=tabulate.bore_table(walls),
+        losses=tabulate.loss_table(whole, losses),
+        loss_runs=tabulate.loss_run_table(survey, whole, flowing, losses),
         inputs=tabulate.input_table(
             survey,
             level=level,
@@ -154,6 +193,7 @@ def reduce(
             keep_all=keep_all,
             exclude=exclude,
             unjudged=None if flowing.fits.search.done else flowing.fits.search.reason,
+            line_unjudged=None if found is None else found.reason,
         ),
         stated_reaches=tabulate.stated_reach_table(survey),
         stated_taps=tabulate.stated_tap_table(survey),
@@ -161,4 +201,16 @@ def reduce(
         level=level,
         gravity=media.gravity,
         friction_law_u=float("nan") if law is None else law,
+        transition=transition_table(survey, line, flowing, friction, walls),
+        laws=law_table(laws),
+        departures=departure_table(laws),
+        conveyance=conveyance_table(survey, flowing, conveyance),
+        wall_conveyance=of_walls,
+        surfaces=surface_table(walls),
+        roughness_checks=roughness_check_table(survey, walls, level=level),
+        carried=carried_of(survey, whole, media, flowing, corrections, walls, losses, level=level),
+        zero_drift=tabulate.frame("zero_drift", {name: [] for name in DRAWING_TABLES["zero_drift"]})
+        if drift is None
+        else drift.table(),
+        fitted_walls=fitted_walls_of(survey, media, flowing, walls),
     )

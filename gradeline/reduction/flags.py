@@ -12,16 +12,24 @@ from scipy.special import stdtrit
 
 from gradeline.fitting.misfit import PATTERNS
 from gradeline.quantities import format_change, parse_unit, rounded
+from gradeline.reduction.ailment_sentences import break_sentence, tap_advice, tap_sentence
 from gradeline.reduction.corrections import Corrections
-from gradeline.reduction.friction import Friction
+from gradeline.reduction.friction import LAMINAR_FAR, Friction
+from gradeline.reduction.laws import WallLaws, departure_flag, likelier_error
+from gradeline.reduction.line import Line
 from gradeline.reduction.runs import Flowing
 from gradeline.reduction.sections import laminar_constant_of, laminar_name
 from gradeline.reduction.tables import RESULT_TABLES
 from gradeline.reduction.tabulate import frame
 from gradeline.reduction.walls import Wall
+from gradeline.reduction.zero_drift import ZeroDrift
 from gradeline.survey import GAUGE_KINDS, Survey
 
-__all__ = ["flag_table"]
+__all__ = ["AT_REST", "LOOK_UP", "flag_table"]
+
+#: What goes where a slip of the pen is named in its place (`gradeline.reduction.slips`).
+LOOK_UP = "; look it up in the record, or read it again"
+AT_REST = ". Since a static run was read: "
 
 Array = NDArray[np.float64]
 
@@ -50,30 +58,40 @@ def flag_table(
     flowing: Flowing,
     friction: Friction,
     walls: tuple[Wall, ...],
+    laws: tuple[WallLaws, ...],
     *,
+    line: Line,
     keep_all: bool,
+    drift: ZeroDrift | None = None,
 ) -> pd.DataFrame:
     """Collect the flags of a reduction.
 
     Parameters
     ----------
-    survey, corrections, flowing, friction, walls
+    survey, corrections, flowing, friction, walls, laws
         What the fits say.
+    line : Line
+        The line's layout.
     keep_all : bool
         Whether flagged readings entered the fits all the same.
+    drift : ZeroDrift or None
+        Of the taps between static runs.
 
     Returns
     -------
     DataFrame
         The table ``flags``, readings first, then runs, then the law.
     """
+    drifts = [] if drift is None else drift.flags()
     found = [
         *_readings(survey, corrections, flowing, keep_all=keep_all),
         *_runs(survey, flowing, walls),
+        *_ailments(survey, corrections, flowing, line),
         *_taps(survey, corrections, flowing),
         *_rising(survey, flowing, friction),
         *_laminar(survey, flowing, friction),
-        *(flag for wall in walls for flag in _law(wall)),
+        *(flag for one in laws for flag in _law(one, survey.stated.friction_law or 0.0)),
+        *(_Flag("tap", tap=tap, score=score, suggestion=text) for tap, score, text in drifts),
     ]
     columns: dict[str, list[Any]] = {
         name: [getattr(flag, name) for flag in found] for name in RESULT_TABLES["flags"]
@@ -97,7 +115,7 @@ def _readings(survey: Survey, corrections: Corrections, flowing: Flowing, *, kee
                 reading,
                 float(expected),
                 float(flowing.fits.score[row, i]),
-                f"{_mean_of(survey, run, i)}{fate}; look it up in the record, or read it again",
+                f"{_mean_of(survey, run, i)}{fate}{LOOK_UP}",
             )
         )
     return found
@@ -135,8 +153,28 @@ def _runs(survey: Survey, flowing: Flowing, walls: tuple[Wall, ...]) -> list[_Fl
     return found
 
 
+def _ailments(survey: Survey, corrections: Corrections, flowing: Flowing, line: Line) -> list[_Flag]:
+    """What ails taps and line over all runs."""
+    found = []
+    for one in flowing.ailments.taps:
+        text = tap_sentence(one)
+        seen = [i for i, other in enumerate(survey.observations) if one.label in (other.label, other.tap)]
+        at_rest = bool(corrections.applied and seen and corrections.known[seen[0]])
+        advice = tap_advice(one, read_at_rest=at_rest)
+        if advice:
+            text = f"{text}. {advice[0].upper()}{advice[1:]}"
+        if one.name == "datum offset" and at_rest:
+            text = f"{text}{AT_REST}{_static_slip(survey, corrections, one.what.offset, seen[0])}"
+        score = np.sqrt(one.what.gain) * (np.sign(np.nansum(one.what.error)) or 1.0)
+        found.append(_Flag("tap", None, one.label, score=float(score), suggestion=text))
+    for broken in dict.fromkeys(other for other, _ in flowing.ailments.names):
+        text = break_sentence(broken, line, flowing)
+        found.append(_Flag("law", score=float(np.sqrt(broken.gain)), suggestion=text))
+    return found
+
+
 def _taps(survey: Survey, corrections: Corrections, flowing: Flowing) -> list[_Flag]:
-    """Taps at which most runs share a misfit, clearest first."""
+    """Taps at which most runs share a misfit that nothing explains, clearest first."""
     misfit = flowing.fits.misfit
     if misfit is None or not misfit.shared:
         return []
@@ -149,14 +187,14 @@ def _taps(survey: Survey, corrections: Corrections, flowing: Flowing) -> list[_F
             "local loss near it or a change of slope; the slopes may be biased until the cause is found"
         )
         if place == 0 and misfit.pattern == 0 and corrections.applied and corrections.known[i]:
-            text = f"off by the same amount in most runs: {_static_slip(survey, corrections, flowing, i)}"
+            error = float(np.nanmedian(flowing.fits.error[:, i]))
+            text = f"off by the same amount in most runs: {_static_slip(survey, corrections, error, i)}"
         found.append(_Flag("tap", None, survey.observations[i].label, score=float(score[i]), suggestion=text))
     return found
 
 
-def _static_slip(survey: Survey, corrections: Corrections, flowing: Flowing, i: int) -> str:
+def _static_slip(survey: Survey, corrections: Corrections, error: float, i: int) -> str:
     """What the static reading of an observation should have been for its flowing readings to be right."""
-    error = float(np.nanmedian(flowing.fits.error[:, i]))
     static = [
         run
         for run in np.flatnonzero(survey.runs["flow"].to_numpy(float) == 0)
@@ -222,22 +260,22 @@ def _laminar(survey: Survey, flowing: Flowing, friction: Friction) -> list[_Flag
         dof = max(flowing.fits.pooled_dof, 1.0) if flowing.fits.pooled_dof else 1e9
         if abs(score) > stdtrit(dof, 1 - _LAW_FALSE_ALARM / 2):
             bore = mean**-0.25 - 1
+            name = f"{laminar_name(laminar_constant_of(reach))} = {rounded(mean, spread)}"
+            remedy = f"a bore {format_change(bore)} {'larger' if bore > 0 else 'smaller'} would make it 1"
+            if not 1 / LAMINAR_FAR < mean < LAMINAR_FAR:
+                remedy = "look at the units of bore, flow and chainage"
             found.append(
                 _Flag(
                     "law",
                     score=float(score),
-                    suggestion=(
-                        f"in the laminar runs of reach {reach.name!r} "
-                        f"{laminar_name(laminar_constant_of(reach))} = {rounded(mean, spread)}: a bore "
-                        f"{format_change(bore)} {'larger' if bore > 0 else 'smaller'} would make it 1"
-                    ),
+                    suggestion=f"in the laminar runs of reach {reach.name!r} {name}: {remedy}",
                 )
             )
     return found
 
 
-def _law(wall: Wall) -> list[_Flag]:
-    fit = wall.fit
+def _law(laws: WallLaws, law_u: float) -> list[_Flag]:
+    wall, fit = laws.wall, laws.wall.fit
     found: list[_Flag] = []
     why = wall.implausible()
     if why is not None:
@@ -245,7 +283,11 @@ def _law(wall: Wall) -> list[_Flag]:
     if not np.isfinite(fit.roughness):
         return found
     beyond = float(stdtrit(fit.dof if np.isfinite(fit.dof) else 1e9, 1 - _LAW_FALSE_ALARM / 2))
-    if np.isfinite(fit.trend) and fit.trend_u > 0 and abs(fit.trend / fit.trend_u) > beyond:
+    of_trend = float(stdtrit(fit.trend_dof if np.isfinite(fit.trend_dof) else 1e9, 1 - _LAW_FALSE_ALARM / 2))
+    other = departure_flag(laws)
+    if other is not None:
+        found.append(_Flag("law", score=other[0], suggestion=other[1]))
+    elif np.isfinite(fit.trend) and fit.trend_u > 0 and abs(fit.trend / fit.trend_u) > of_trend:
         way = "falls" if fit.trend < 0 else "rises"
         found.append(
             _Flag(
@@ -259,9 +301,12 @@ def _law(wall: Wall) -> list[_Flag]:
                 ),
             )
         )
-    score = fit.offset / fit.offset_u if fit.offset_u > 0 else 0.0
+    score = fit.offset / np.hypot(fit.offset_u, law_u) if fit.offset_u > 0 else 0.0
     if fit.roughness == 0 and score < -beyond:
-        bore, flow = float(np.expm1(-fit.offset / 5)), float(-np.expm1(fit.offset / 2))
+        # f goes as D⁵/Q², and the law itself a little with Re.
+        by_reynolds = float(wall.data.law.sensitivities(wall.data.reynolds[fit.used], 0.0)[1].mean())
+        bore = float(np.expm1(-fit.offset / (5 + by_reynolds)))
+        flow = float(-np.expm1(fit.offset / (2 + by_reynolds)))
         found.append(
             _Flag(
                 "law",
@@ -269,7 +314,7 @@ def _law(wall: Wall) -> list[_Flag]:
                 suggestion=(
                     f"wall {wall.name!r}: f lies {format_change(-np.expm1(fit.offset))} below that of a smooth wall, beyond its "
                     f"uncertainty: a bore about {format_change(bore)} larger or flows about {format_change(flow)} smaller than stated "
-                    "would bring it onto the law"
+                    f"would bring it onto the law; {likelier_error(wall, bore, flow)}"
                 ),
             )
         )

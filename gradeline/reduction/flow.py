@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -12,10 +12,13 @@ from gradeline.errors import Problem, SurveyError
 from gradeline.flow_methods import FLOW_METHODS, FlowMethod, FlowSetup
 from gradeline.quantities import Measured
 from gradeline.reduction.drift import drift_uncertainty, flow_drift
-from gradeline.reduction.fluids import fluid_inputs
+from gradeline.reduction.flow_sentences import twice_stated, unstated
+from gradeline.reduction.fluids import FluidInput, fluid_inputs
 from gradeline.reduction.heads import Heads, Input
 from gradeline.reduction.media import Media, media_of
 from gradeline.reduction.meters import FLOWS, MeterReadings
+from gradeline.reduction.swift_flows import swift_cautions
+from gradeline.reduction.tappings import tapping_heads
 from gradeline.survey import Survey
 
 __all__ = ["Metered", "metered_flow", "with_flow_inputs"]
@@ -25,6 +28,7 @@ Array = NDArray[np.float64]
 _FLOWS_APART = 0.02
 #: Part of a standard uncertainty that an input is stepped by: small enough to be first order, large against rounding.
 _PART = 1e-3
+_NOT_READ = frozenset({"run", "file", "line"})
 
 
 @dataclass(frozen=True)
@@ -46,27 +50,34 @@ def metered_flow(survey: Survey) -> Metered:
     Returns
     -------
     Metered
-        With ``flow``, ``flow_u`` and, where the flow drifted, ``flow_drift_u`` (relative) in its runs.
+        With ``flow``, ``flow_u`` and, where the flow drifted, ``flow_drift_u`` (relative) in its runs; with
+        ``flow_power``, the power of its reading that a metered flow goes with.
 
     Raises
     ------
     SurveyError
         Where the repeats of a run have flows that lie further apart than 2 % or three stated uncertainties.
     """
-    if survey.flow.method == "direct":
-        drift = flow_drift(survey)
-        if not drift.any():
-            return Metered(replace(survey, assumptions=(*survey.assumptions, *_steady(survey))))
-        u, assumptions, cautions = drift_uncertainty(survey, drift)
-        return Metered(
-            replace(
-                survey,
-                runs=survey.runs.assign(flow_drift_u=u),
-                assumptions=(*survey.assumptions, *assumptions),
-                cautions=(*survey.cautions, *cautions),
-            )
+    found = _given_directly(survey) if survey.flow.method == "direct" else _from_readings(survey)
+    swift = swift_cautions(found.survey)
+    if not swift:
+        return found
+    return replace(found, survey=replace(found.survey, cautions=(*found.survey.cautions, *swift)))
+
+
+def _given_directly(survey: Survey) -> Metered:
+    drift = flow_drift(survey)
+    if not drift.any():
+        return Metered(replace(survey, assumptions=(*survey.assumptions, *_steady(survey))))
+    u, assumptions, cautions = drift_uncertainty(survey, drift)
+    return Metered(
+        replace(
+            survey,
+            runs=survey.runs.assign(flow_drift_u=u),
+            assumptions=(*survey.assumptions, *assumptions),
+            cautions=(*survey.cautions, *cautions),
         )
-    return _from_readings(survey)
+    )
 
 
 def _from_readings(survey: Survey) -> Metered:
@@ -95,9 +106,18 @@ def _from_readings(survey: Survey) -> Metered:
         change = np.bincount(at, weights=changed - flow, minlength=len(labels)) / np.maximum(count, 1)
         return np.asarray(change / _PART / np.where(per_run > 0, per_run, 1.0))[:, None]
 
+    larger = given
+    for heading in _headings(given, method.primary):
+        larger = _stepped(larger, heading, _PART * given.columns[heading])
     inputs = _inputs(survey, media, given, flow, relative)
-    assumptions = [meter.said(given), *_twice_stated(survey, setup, method), *_steady(survey)]
-    cautions = _unstated(survey, setup, method)
+    gauged = given.tappings
+    assumptions = [
+        meter.said(given),
+        *(gauged.assumptions if gauged is not None else ()),
+        *twice_stated(survey, setup, method),
+        *_steady(survey),
+    ]
+    cautions = [*unstated(survey, setup, method), *(gauged.cautions if gauged is not None else ())]
     if meter.limits is not None and len(flow):
         cautions += [
             f"The {setup.method} is used beyond {meter.standard}: {phrase}. The flow is worked out all the same."
@@ -106,7 +126,9 @@ def _from_readings(survey: Survey) -> Metered:
     return Metered(
         replace(
             survey,
-            runs=survey.runs.assign(flow=per_run, flow_u=flow_u),
+            runs=survey.runs.assign(
+                flow=per_run, flow_u=flow_u, flow_power=np.abs(relative(meter.flow(larger))[:, 0])
+            ),
             assumptions=(*survey.assumptions, *assumptions),
             cautions=(*survey.cautions, *cautions),
         ),
@@ -132,12 +154,10 @@ def _given(
         own |= {f"{key} {outlet.name}": value for key, value in outlet.settings.items()}
     table = survey.flow_readings
     pressure = survey.fluid.line_pressure
+    tappings = tapping_heads(survey, flows) if survey.flow_gauges else None
+    read = {name: table[name].to_numpy(float)[flows] for name in table.columns if name not in _NOT_READ}
     return MeterReadings(
-        columns={
-            name: table[name].to_numpy(float)[flows]
-            for name in table.columns
-            if name not in {"run", "file", "line"}
-        },
+        columns=read if tappings is None else {"differential": tappings.head},
         values={key: value.value for key, value in own.items() if isinstance(value, Measured)},
         words={key: value for key, value in own.items() if isinstance(value, str)},
         setup=setup,
@@ -148,6 +168,8 @@ def _given(
         air=media.air,
         line_pressure=None if pressure is None else pressure.value,
         length=bool({"gauge_fluid", "gauge_fluid_density"} & set(own)),
+        runs=tuple(survey.runs["run"].iloc[at]),
+        tappings=tappings,
     )
 
 
@@ -165,11 +187,16 @@ def _row_uncertainty(given: MeterReadings, method: FlowMethod) -> Array:
     flow_of = FLOWS[given.setup.method].flow
     now = flow_of(given)
     variance = np.zeros(len(now))
+    if given.tappings is not None:
+        step = _PART * given.tappings.head_u
+        variance += ((flow_of(_stepped(given, method.primary, step)) - now) / _PART) ** 2
     for column in method.columns:
-        size = given.values.get(f"u_{column.replace(' ', '_')}", 0.0)
+        key = f"u_{column.replace(' ', '_')}"
+        size = given.values.get(key, 0.0)
         for heading in _headings(given, column) if size else []:
             # An outlet that is shut reads 0 and has no error.
-            step = np.where(given.columns[heading] > 0, _PART * size, 0.0)
+            of = given.columns[heading] if key in given.setup.relative else 1.0
+            step = np.where(given.columns[heading] > 0, _PART * size * of, 0.0)
             variance += ((flow_of(_stepped(given, heading, step)) - now) / _PART) ** 2
     return np.sqrt(variance)
 
@@ -200,10 +227,12 @@ def _inputs(
                 outlet,
                 meter.flow(valued(place, value.value + _PART * value.u)),
             )
-    size = meter.coefficient_u(given) if meter.coefficient_u is not None else 0.0
+    size = meter.coefficient_u(given, flow) if meter.coefficient_u is not None else 0.0
     add("flow discharge coefficient", "", flow * (1.0 + _PART * size))
     primary = _headings(given, method.primary)
     scale, zero = (_PART * given.values.get(key, 0.0) for key in ("u_scale", "u_zero"))
+    if setup.table is not None and "u_zero" in setup.relative:
+        zero *= setup.table.reading[-1]
     scaled, shifted = given, given
     for heading in primary:
         scaled = _stepped(scaled, heading, scale * given.columns[heading])
@@ -217,112 +246,77 @@ def _inputs(
             "",
             flow + _PART * np.interp(given.columns[primary[0]], setup.table.reading, u),
         )
-    found += _media_inputs(survey, media, given, relative)
-    return tuple(found)
+    common = _media_inputs(survey, media, given, relative)
+    apart = {(one.name, one.subject) for one in common}
+    for name, subject, change in given.tappings.errors if given.tappings is not None else ():
+        if (name, subject) in apart:
+            continue  # stepped with the fluid
+        told, whose = ("flow tapping rise", "") if name == "tap elevation" else (f"flow {name}", subject)
+        add(told, whose, meter.flow(_stepped(given, method.primary, _PART * change)))
+    return tuple(found + [one for one in common if np.any(np.abs(one.flow) > 1e-12)])
 
 
 def _media_inputs(
     survey: Survey, media: Media, given: MeterReadings, relative: Callable[[Array], Array]
 ) -> list[Input]:
-    """What density, temperature and gravity change: the same errors as those of the heads, by the same names."""
+    """What density, viscosity, temperature and gravity change: the same errors as those of the heads, by the same names.
+
+    The whole flow is worked out again at both sides, its coefficient iterated anew: a central difference over a
+    thousandth of a standard uncertainty. A complex step is not to be had, as the coefficients of ISO 5167 take real
+    numbers; from one side the kinks of those formulas would count in full.
+    """
     flow_of = FLOWS[given.setup.method].flow
-    found = []
+    now = flow_of(given)
     labels = {name: place for place, name in enumerate(survey.runs["run"])}
     run = np.array([labels[name] for name in survey.flow_readings["run"]], dtype=np.intp)
     at = run[survey.runs["flow"].to_numpy(float)[run] != 0]
+    errors = given.tappings.errors if given.tappings is not None else ()
+    by_gauge = {(name, subject): change for name, subject, change in errors}
+    pressure = survey.fluid.line_pressure
+
+    def effect(name: str, subject: str, step: Callable[[float], MeterReadings]) -> Array:
+        change = by_gauge.get((name, subject), 0.0)
+        sides = [
+            flow_of(_stepped(step(part), "differential", part * change) if np.any(change) else step(part))
+            for part in (_PART, -_PART)
+        ]
+        return relative(now + (sides[0] - sides[1]) / 2.0)
+
+    found = []
     for one in fluid_inputs(survey.fluid, survey.runs["temperature"].to_numpy(float)):
-        stepped = replace(
-            given,
-            density=given.density * (1.0 + _PART * one.density[at]),
-            kinematic_viscosity=given.kinematic_viscosity * (1.0 + _PART * one.viscosity[at]),
-        )
-        pressure = survey.fluid.line_pressure
-        if one.name == "line pressure" and pressure is not None:
-            # The expansibility of the gas goes with it too.
-            stepped = replace(stepped, line_pressure=pressure.value + _PART * (pressure.u or 0.0))
-        found.append(Input(one.name, one.subject, flow=relative(flow_of(stepped))))
-    if survey.stated.temperature:
-        step = media.density_by_temperature[at] * survey.stated.temperature * _PART
-        found.append(
-            Input("temperature", flow=relative(flow_of(replace(given, density=given.density + step))))
-        )
+
+        def fluid(part: float, one: FluidInput = one) -> MeterReadings:
+            stepped = replace(
+                given,
+                density=given.density * (1.0 + part * one.density[at]),
+                kinematic_viscosity=given.kinematic_viscosity * (1.0 + part * one.viscosity[at]),
+            )
+            if one.name == "line pressure" and pressure is not None:
+                # The expansibility of the gas goes with it too.
+                stepped = replace(stepped, line_pressure=pressure.value + part * (pressure.u or 0.0))
+            return stepped
+
+        found.append(Input(one.name, one.subject, flow=effect(one.name, one.subject, fluid)))
+    size = survey.stated.temperature
+    if size:
+
+        def warmer(part: float) -> MeterReadings:
+            return replace(
+                given,
+                temperature=given.temperature + part * size,
+                density=given.density + part * size * media.density_by_temperature[at],
+                kinematic_viscosity=given.kinematic_viscosity
+                * (1.0 + part * size * media.viscosity_by_temperature[at]),
+            )
+
+        found.append(Input("temperature", flow=effect("temperature", "", warmer)))
     if media.gravity_u:
-        changed = flow_of(replace(given, gravity=given.gravity * (1.0 + _PART * media.gravity_u)))
-        found.append(Input("gravity", flow=relative(changed)))
-    return [one for one in found if np.any(np.abs(one.flow) > 1e-12)]
 
+        def heavier(part: float) -> MeterReadings:
+            return replace(given, gravity=given.gravity * (1.0 + part * media.gravity_u))
 
-def _twice_stated(survey: Survey, setup: FlowSetup, method: FlowMethod) -> list[str]:
-    """Tell where [uncertainty] and [flow] both state an uncertainty of the flow."""
-    said = []
-    random = [key for column in method.columns if (key := f"u_{column.replace(' ', '_')}") in setup.settings]
-    if survey.stated.flow is not None and random:
-        said.append(
-            "The flow's random uncertainty is the one stated in [uncertainty]; "
-            f"[flow] {' and '.join(random)} {'is' if len(random) == 1 else 'are'} not used."
-        )
-    shared = [key for key in ("u_scale", "u_coefficient") if key in setup.settings]
-    coefficient = setup.settings.get("discharge_coefficient")
-    if isinstance(coefficient, Measured) and coefficient.u:
-        shared.append("discharge_coefficient")
-    shared += [
-        f"discharge_coefficient of outlet {outlet.name!r}"
-        for outlet in setup.outlets
-        if isinstance(value := outlet.settings.get("discharge_coefficient"), Measured) and value.u
-    ]
-    if survey.stated.flow_scale and shared:
-        said.append(
-            f"[uncertainty] flow_scale is counted beside the uncertainty of [flow] {' and '.join(shared)}: "
-            "keep one if both describe the same calibration."
-        )
-    return said
-
-
-def _unstated(survey: Survey, setup: FlowSetup, method: FlowMethod) -> list[str]:
-    """Tell the uncertainties of the method's readings that nobody stated."""
-    said = []
-    nothing = "it contributes nothing to the results"
-    if survey.stated.flow is None:
-        said += [
-            f"The uncertainty of a reading of {column!r} ([flow] u_{column.replace(' ', '_')}) is not stated: {nothing} "
-            "beyond what repeats show."
-            for column in method.columns
-            if f"u_{column.replace(' ', '_')}" not in setup.settings
-        ]
-    if survey.stated.flow_scale is None:
-        said += [
-            f"The uncertainty of the {'calibration' if key == 'u_scale' else 'zero'} of {method.primary!r} "
-            f"([flow] {key}) is not stated: {nothing}."
-            for key in ("u_scale", "u_zero")
-            if key in method.keys and key not in setup.settings
-        ]
-    if setup.settings.get("gauge_fluid") == "mercury":
-        said.append(
-            "Mercury is poisonous, as a vapour too: fill and bleed such lines over a tray, in moving air, and have a spill kit "
-            "at hand."
-        )
-    bare = [
-        key
-        for key in ("pipe_bore", "throat_bore", "notch_angle", "notch_width")
-        if _bare(setup.settings, key)
-    ]
-    said += [f"The uncertainty of [flow] {key} is not stated: {nothing}." for key in bare]
-    said += [
-        f"The uncertainty of the {key.replace('_', ' ')} of outlet {outlet.name!r} is not stated: {nothing}."
-        for outlet in setup.outlets
-        for key in outlet.settings
-        if _bare(outlet.settings, key)
-    ]
-    if setup.table is not None and np.isnan(setup.table.flow_u).any():
-        said.append(
-            f"The uncertainty of the flows in {setup.table.file} is not stated throughout: {nothing}."
-        )
-    return said
-
-
-def _bare(settings: Mapping[str, Measured | str], key: str) -> bool:
-    value = settings.get(key)
-    return isinstance(value, Measured) and value.u is None
+        found.append(Input("gravity", flow=effect("gravity", "", heavier)))
+    return found
 
 
 def _check_repeats(

@@ -19,9 +19,12 @@ from gradeline.reduction.media import Media
 from gradeline.reduction.runs import Flowing
 from gradeline.reduction.walls import Wall, slope_uncertainty
 
-__all__ = ["Friction", "friction_of"]
+__all__ = ["LAMINAR_FAR", "Friction", "factor_effects", "friction_of"]
 
 Array = NDArray[np.float64]
+
+#: f Re of laminar flow this many times its value, or this part of it, is a wrong unit: no bore is off by the fourth root.
+LAMINAR_FAR = 10.0
 
 
 @dataclass(frozen=True)
@@ -94,7 +97,7 @@ def friction_of(
     for wall in walls:
         if np.isfinite(wall.fit.relative_scatter):
             # No scatter within a run: that of the slopes about the law stands for it.
-            part = np.abs(slope[:, wall.reaches]) * wall.fit.relative_scatter
+            part = wall.scatter_of_slopes(slope[:, wall.reaches])
             random[:, wall.reaches] = part
             shared = np.einsum("fpq,fpq->fp", flowing.effect, flowing.effect)[:, 1 + wall.reaches]
             total[:, wall.reaches] = np.sqrt(part**2 + shared)
@@ -114,7 +117,7 @@ def friction_of(
         np.nan,
     )
     safe = np.where(positive, slope, np.nan)
-    effect = _factor_effects(flowing, safe)
+    effect = factor_effects(flowing, safe)
     own = flowing.own[:, 1 : 1 + len(line.diameter)] / safe - 2.0 * flowing.reach_flow_u
     scatter = np.where(unknown, 0.0, _scatter_variance(random, flowing, line))
     relative = np.sqrt(scatter / safe**2 + own**2 + _squared(effect))
@@ -175,7 +178,7 @@ def _squared(effect: Array) -> Array:
     return np.asarray(np.einsum("fkq,fkq->fk", effect, effect))
 
 
-def _factor_effects(flowing: Flowing, slope: Array) -> Array:
+def factor_effects(flowing: Flowing, slope: Array) -> Array:
     """Change of ln f with each shared input (F, K, q): f goes as D⁵ g S / Q²."""
     reaches = slope.shape[1]
     effect = flowing.effect[:, 1 : 1 + reaches] / slope[:, :, None]

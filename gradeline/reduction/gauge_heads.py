@@ -31,8 +31,13 @@ _HALF = 0.25
 _STATED_AT = 293.15
 
 
-def gas_pressure_of(survey: Survey, gauge: Gauge) -> float | None:
-    """Return the pressure of a gauge's trapped gas against the local atmosphere, Pa; None where it is not known."""
+def gas_pressure_of(survey: Survey, gauge: Gauge) -> float | Array | None:
+    """Return the pressure of a gauge's trapped gas against the local atmosphere, Pa; None where it is not known.
+
+    Where it was read in each run it is an array (R, 1).
+    """
+    if gauge.gas_read:
+        return survey.runs[gauge.gas_column_of(gauge.name)].to_numpy(float)[:, None]
     given = gauge.settings.get("gas_pressure")
     if not isinstance(given, Measured):
         return None
@@ -112,7 +117,8 @@ def gauge_fluid_density(
     value = _named_density(name, at, temperature, "gauge_temperature", steps)
     if name == "air":
         outside = float(standard_atmosphere_pressure(survey.site.altitude or 0.0))
-        inside = outside + (gas_pressure_of(survey, gauge) or 0.0)
+        gas = gas_pressure_of(survey, gauge)
+        inside = outside + (0.0 if gas is None else gas)
         pressed = inside + 1j * STEP * np.asarray(steps.get("gas_pressure", 0.0))
         value = np.asarray(value * pressed / STANDARD_PRESSURE)
     return value

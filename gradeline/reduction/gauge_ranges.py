@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -11,6 +11,7 @@ from gradeline.quantities import Measured
 from gradeline.reduction.corrections import static_corrections
 from gradeline.reduction.heads import Heads, heads_of
 from gradeline.reduction.media import fluid_density, media_of
+from gradeline.reduction.tappings import tapping_survey
 from gradeline.survey import GAUGE_KINDS, Gauge, Survey
 
 __all__ = ["FluidChoice", "GaugeRange", "gauge_ranges"]
@@ -89,8 +90,13 @@ def gauge_ranges(survey: Survey) -> tuple[GaugeRange, ...]:
     Returns
     -------
     tuple of GaugeRange
-        In the order of the gauges; those that read nothing are left out.
+        In the order of the gauges, those of the flow's meter last; those that read nothing are left out.
     """
+    if survey.flow_gauges:
+        run = survey.flow_readings["run"]
+        flows = survey.runs.set_index("run")["flow"].reindex(run).to_numpy(float) != 0
+        line = gauge_ranges(replace(survey, flow_gauges=()))
+        return (*line, *gauge_ranges(tapping_survey(survey, flows))) if flows.any() else line
     media = media_of(survey)
     heads = heads_of(survey, media)
     corrected = static_corrections(

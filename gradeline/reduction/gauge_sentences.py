@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from gradeline.quantities.phrases import told_once
 from gradeline.reduction.accuracy import accuracy_sentences
 from gradeline.reduction.calibrations import calibration_sentences
 from gradeline.reduction.heads import Heads
@@ -26,17 +27,31 @@ def gauge_assumptions(survey: Survey) -> list[str]:
             "Mercury: density by its volume's polynomial in temperature, 13 595.08 kg/m³ at 0 °C, at the gauge's own or "
             "the run's temperature."
         )
+    said += [
+        f"The readings of {gauge.name!r} are piezometric heads z + p/(ρ g) above datum, worked out already: they are taken "
+        "as they are, with no part for the air beside them."
+        for gauge in survey.gauges
+        if gauge.kind == "head"
+    ]
+    each: list[tuple[str, str]] = []
     for gauge in survey.gauges:
         pressure = gauge.settings.get("gas_pressure")
         if isinstance(pressure, Pressure) and pressure.absolute:
-            said.append(
-                f"The gas pressure of gauge {gauge.name!r} is absolute: the atmosphere beside it is taken as the standard "
-                "one at the site's altitude, which the weather changes by some 3 %."
+            each.append(
+                (
+                    gauge.name,
+                    "The gas pressure of {gauge} is absolute: the atmosphere beside it is taken as the standard one at the "
+                    "site's altitude, which the weather changes by some 3 %.",
+                )
             )
         if "gauge_fluid_density" in gauge.settings and "gauge_fluid_expansion" not in gauge.settings:
-            said.append(
-                f"The density of the gauge fluid of {gauge.name!r} is taken as the same at all temperatures."
+            each.append(
+                (
+                    gauge.name,
+                    "The density of the gauge fluid of {gauge} is taken as the same at all temperatures.",
+                )
             )
+    said += told_once(each)
     assumed, _ = calibration_sentences(survey)
     return [*said, *accuracy_sentences(survey), *assumed]
 

@@ -47,6 +47,8 @@ class Input:
         Relative change of gravity.
     laminar_constant : (K,) array or None
         Relative change of f·Re of laminar flow.
+    rectangular : bool
+        Whether a limit of error was stated: a rectangular distribution, else a normal one.
     """
 
     name: str
@@ -57,6 +59,7 @@ class Input:
     viscosity: Array | None = None
     gravity: float = 0.0
     laminar_constant: Array | None = None
+    rectangular: bool = False
 
 
 @dataclass(frozen=True)
@@ -147,17 +150,25 @@ def heads_of(survey: Survey, media: Media) -> Heads:
             (f"density of {fluid} in the legs", head({"leg_density": change}).imag / STEP)
             for fluid, change in chain.density_errors
         ]
-        effects += [(name, of_reading * change) for name, change in accuracy_errors(gauge, readings[:, mine])]
+        gas_u = gauge.settings.get("u_gas_pressure")
+        if gauge.gas_read and isinstance(gas_u, Measured):
+            # Read by one instrument in all runs: its error is that of a stated pressure.
+            effects.append(("gauge gas pressure", head({"gas_pressure": gas_u.value}).imag / STEP))
+        effects += [
+            ("gauge leg elevation", head({"leg_rise": change}).imag / STEP)
+            for change in chain.elevation_errors
+        ]
+        limits = [(name, of_reading * change) for name, change in accuracy_errors(gauge, readings[:, mine])]
         effects += [
             ("gauge calibration", of_reading * change[:, mine])
             for name, change in corrected.errors
             if name == gauge.name
         ]
-        for name, change in effects:
+        for place, (name, change) in enumerate([*effects, *limits]):
             if np.any(np.nan_to_num(change)):
                 whole = np.zeros(readings.shape)
                 whole[:, mine] = change
-                stated.append(Input(name, gauge.name, heads=whole))
+                stated.append(Input(name, gauge.name, heads=whole, rectangular=place >= len(effects)))
     effects_of = _Effects(
         by_zero, by_scale, by_elevation, by_elevation_2, by_temperature, by_density, by_gravity
     )

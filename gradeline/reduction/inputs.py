@@ -9,12 +9,12 @@ from numpy.typing import NDArray
 
 from gradeline.reduction.corrections import Corrections
 from gradeline.reduction.heads import Input
-from gradeline.reduction.line import Line
+from gradeline.reduction.line import Line, change_of_bore_gains
 from gradeline.reduction.offtakes import flow_heads, offtake_inputs
 from gradeline.reduction.sections import dimensions_of
 from gradeline.survey import Survey
 
-__all__ = ["common_errors", "flowing_inputs", "persistent_errors"]
+__all__ = ["common_errors", "flowing_inputs", "persistent_errors", "stated_tap_errors"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -23,7 +23,7 @@ Mask = NDArray[np.bool_]
 _STEADY = frozenset({"static reading", "tap elevation"})
 _ALONG_SLOPE = frozenset({"tap chainage"})
 #: Errors that all readings of one gauge share, and that set it apart from the others.
-_OF_A_GAUGE = frozenset({"gauge zero", "gauge zero reading", "gauge calibration"})
+_OF_A_GAUGE = frozenset({"gauge zero", "gauge zero reading", "gauge calibration", "gauge leg elevation"})
 #: A change of head below this is none, m.
 _NO_HEAD = 1e-9
 
@@ -75,15 +75,18 @@ def flowing_inputs(
     ]
     found = [_of_flow(one, rows, gain, line, sight, heads, loss_head * given_k) for one in found]
     count = len(line.diameter)
+    gains = change_of_bore_gains(survey, line)
     for k, reach in enumerate(survey.reaches):
         here = np.arange(count) == k
         at_tap = heads[:, line.reach_of_tap] * (line.reach_of_tap == k)
         losses = (loss_head * given_k * (line.reference == k)) @ line.passed.T
+        # K of a sudden change of bore follows the bore of the same area.
+        changed = (loss_head * gains[:, k]) @ line.passed.T
         found += [
             Input(
                 one.name,
                 reach.name,
-                (at_tap + losses) @ sight.T * (-2.0 * one.area),
+                (-2.0 * (at_tap + losses) + 0.5 * changed) @ sight.T * one.area,
                 one.diameter * here,
                 # As if the area went as the square of the bore: what it does beyond that stands as a flow.
                 0.0 if reach.section is None else (2.0 * one.diameter - one.area) * here,
@@ -168,6 +171,35 @@ def persistent_errors(inputs: tuple[Input, ...], used: Mask) -> tuple[Array | No
         steady,
         bool(found & _ALONG_SLOPE),
     )
+
+
+def stated_tap_errors(inputs: tuple[Input, ...], shape: tuple[int, int]) -> Array:
+    """Return the stated errors that set single observations apart over all runs.
+
+    Parameters
+    ----------
+    inputs : tuple of Input
+        All shared inputs.
+    shape : (F, n)
+        Of the observations.
+
+    Returns
+    -------
+    (F, n, q) array
+        Change of the observations for one standard uncertainty of each, m: positions, elevations, static readings, and
+        what belongs to a gauge.
+    """
+    parts = [
+        np.nan_to_num(one.heads)
+        for one in inputs
+        if one.heads is not None
+        and (
+            one.name in _STEADY | _ALONG_SLOPE
+            or (one.name.startswith("gauge") and one.name not in _OF_A_GAUGE)
+        )
+        and np.abs(np.nan_to_num(one.heads)).max(initial=0.0) > _NO_HEAD
+    ]
+    return np.stack(parts, axis=2) if parts else np.zeros((*shape, 0))
 
 
 def common_errors(

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from gradeline.hydraulics.friction import entrance_length
 from gradeline.hydraulics.gradelines import passed, path_lengths
-from gradeline.hydraulics.local_losses import change_of_bore_loss_coefficient
+from gradeline.hydraulics.local_losses import change_of_bore_loss_coefficient, change_of_bore_sensitivity
 from gradeline.quantities import Measured
 from gradeline.reduction.sections import area_of, laminar_constant_of, section_assumptions
 from gradeline.survey import Fitting, Reach, Survey
@@ -54,6 +54,8 @@ class Line:
         Cross-sections, m².
     laminar_constant : (K,) array
         f·Re of laminar flow, dimensionless: 64 for a circle, NaN where the shape is not known.
+    column : (M,) int array
+        Parameter of the runs' fits that is each fitted loss; −1 where its coefficient is given.
     """
 
     bounds: Array
@@ -69,6 +71,7 @@ class Line:
     assumptions: tuple[str, ...]
     area: Array
     laminar_constant: Array
+    column: NDArray[np.intp]
 
 
 def line_of(survey: Survey) -> Line:
@@ -112,6 +115,7 @@ def line_of(survey: Survey) -> Line:
     fittings.sort(key=lambda fitting: fitting.at)
     chainage = np.array([tap.chainage for tap in survey.taps])
     at = np.array([fitting.at for fitting in fittings])
+    fitted = np.array([fitting.loss_coefficient is None for fitting in fittings], dtype=bool)
     reach_of_tap = np.clip(np.searchsorted(bounds, chainage, side="left") - 1, 0, len(reaches) - 1)
     return Line(
         bounds=bounds,
@@ -121,18 +125,34 @@ def line_of(survey: Survey) -> Line:
         reach_of_tap=reach_of_tap.astype(np.intp),
         fittings=tuple(fittings),
         reference=np.array([_reference(fitting, bounds, bore) for fitting in fittings], dtype=np.intp),
-        fitted=np.array([fitting.loss_coefficient is None for fitting in fittings], dtype=bool),
+        fitted=fitted,
         lengths=path_lengths(chainage, bounds),
         passed=passed(chainage, at).reshape(len(chainage), len(at)),
         assumptions=tuple(assumptions),
         area=np.array([area_of(reach) for reach in reaches]),
         laminar_constant=np.array([laminar_constant_of(reach) for reach in reaches]),
+        # E₀ and the reaches' slopes stand before them.
+        column=np.where(fitted, len(reaches) + np.cumsum(fitted), -1).astype(np.intp),
     )
 
 
 def _bore(reach: Reach) -> float:
     """Bore of the circle that has a reach's area, m: what counts where the section changes."""
     return reach.diameter.value if reach.section is None else float(np.sqrt(4 * area_of(reach) / np.pi))
+
+
+def change_of_bore_gains(survey: Survey, line: Line) -> Array:
+    """Return how the K that follows from the bores goes with each bore, ∂K/∂ ln D (M, K); 0 where K was given or is fitted."""
+    gains = np.zeros((len(line.fittings), len(survey.reaches)))
+    for m, fitting in enumerate(line.fittings):
+        if not fitting.change_of_bore or fitting.loss_coefficient is None or fitting in survey.fittings:
+            continue
+        after = int(np.searchsorted(line.bounds, fitting.at + 1e-6, side="right") - 1)
+        bores = [_bore(survey.reaches[k]) for k in (after - 1, after)]
+        by_ratio = float(change_of_bore_sensitivity(*bores))
+        small = after - 1 if bores[0] < bores[1] else after
+        gains[m, small], gains[m, 2 * after - 1 - small] = by_ratio, -by_ratio
+    return gains
 
 
 def _reference(fitting: Fitting, bounds: Array, diameter: Array) -> int:
@@ -182,14 +202,19 @@ def disturbed_taps(survey: Survey, line: Line, reynolds: Array) -> tuple[Mask, l
     for fitting in line.fittings:
         upstream = int(np.clip(np.searchsorted(line.bounds, fitting.at, side="left") - 1, 0, last))
         downstream = int(np.clip(np.searchsorted(line.bounds, fitting.at, side="right") - 1, 0, last))
-        before = (fitting.at - line.chainage) / line.diameter[upstream]
-        after = (line.chainage - fitting.at) / line.diameter[downstream]
+        before = (fitting.at - fitting.length / 2 - line.chainage) / line.diameter[upstream]
+        after = (line.chainage - fitting.at - fitting.length / 2) / line.diameter[downstream]
         # A tap at the very place of a loss is upstream of it, and in the midst of its disturbance.
-        near = ((before >= 0) & (before < fitting.approach)) | ((after > 0) & (after < fitting.recovery))
+        above = line.chainage <= fitting.at
+        near = (above & (before < fitting.approach)) | (~above & (after < fitting.recovery))
         disturbed[:, near] = True
         for tap in np.flatnonzero(near):
-            bores, side = (before[tap], "upstream") if before[tap] >= 0 else (after[tap], "downstream")
-            reasons[tap] = f"{bores:.1f} bores {side} of {fitting.name!r}"
+            bores, side = (before[tap], "upstream") if above[tap] else (after[tap], "downstream")
+            reasons[tap] = (
+                f"between the ends of {fitting.name!r}"
+                if bores < 0
+                else f"{bores:.1f} bores {side} of {fitting.name!r}"
+            )
         soon = (after >= fitting.recovery) & (after < CAUTIOUS_RECOVERY)
         cautions += [
             f"Tap {survey.taps[tap].name} lies {after[tap]:.0f} bores downstream of {fitting.name!r}: used, but flow may "

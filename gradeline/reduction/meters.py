@@ -26,10 +26,14 @@ from gradeline.hydraulics.weirs import (
 )
 from gradeline.quantities import Measured
 from gradeline.reduction.media import fluid_density
+from gradeline.reduction.tappings import Tappings
 
 __all__ = ["FLOWS", "Meter", "MeterReadings"]
 
 Array = NDArray[np.float64]
+
+#: Readings beyond a table that are told one by one.
+_TOLD = 6
 
 
 @dataclass(frozen=True)
@@ -52,6 +56,10 @@ class MeterReadings:
         Absolute pressure of flowing air, Pa.
     length : bool
         Whether a differential reading is a deflection.
+    runs : tuple of str
+        The run of each row.
+    tappings : Tappings or None
+        Where gauges read the differential: then the column ``differential`` is their difference of heads, m.
     """
 
     columns: Mapping[str, Array]
@@ -65,6 +73,8 @@ class MeterReadings:
     air: float
     line_pressure: float | None = None
     length: bool = False
+    runs: tuple[str, ...] = ()
+    tappings: Tappings | None = None
 
 
 @dataclass(frozen=True)
@@ -78,7 +88,8 @@ class Meter:
     said : callable
         One sentence on how it was worked out.
     coefficient_u : callable or None
-        Relative standard uncertainty of the standard's own coefficient, 0 where the survey gives its own.
+        Relative standard uncertainty of the standard's own coefficient at the flow of each row, 0 where the survey gives
+        its own.
     limits : callable or None
         The limits of the standard that the meter or its flows lie outside of.
     standard : str
@@ -87,7 +98,7 @@ class Meter:
 
     flow: Callable[[MeterReadings], Array]
     said: Callable[[MeterReadings], str]
-    coefficient_u: Callable[[MeterReadings], float] | None = None
+    coefficient_u: Callable[[MeterReadings, Array], Array | float] | None = None
     limits: Callable[[MeterReadings, Array], list[str]] | None = None
     standard: str = ""
 
@@ -120,6 +131,8 @@ def _meter_type(given: MeterReadings) -> str:
 def _pressure(given: MeterReadings) -> Array:
     """The differential pressure at one level, Pa: a deflection stands in the fluid of the line."""
     reading = given.columns["differential"]
+    if given.tappings is not None:
+        return np.asarray(given.density * given.gravity * reading)
     if not given.length:
         return reading
     fluid = given.words.get("gauge_fluid")
@@ -151,23 +164,30 @@ def _differential_said(given: MeterReadings) -> str:
     meter = _meter_type(given)
     if "discharge_coefficient" in given.values:
         return f"Flow by the {given.setup.method} with the given discharge coefficient {given.values['discharge_coefficient']:g}."
-    size = discharge_coefficient_u(meter, given.values["pipe_bore"], given.values["throat_bore"])
+    size = float(discharge_coefficient_u(meter, given.values["pipe_bore"], given.values["throat_bore"]))
+    at_low = _differential_u(given, _differential(given))
+    more = float(np.max(at_low, initial=size))
+    slow = f" ({100 * more:.2g} % where Re is below 10 000)" if more > size * (1 + 1e-9) else ""
     return (
         f"Flow by ISO 5167 ({meter}), the discharge coefficient iterated on Re; its standard uncertainty is taken as "
-        f"{100 * size:.2g} %, half of what the standard states."
+        f"{100 * size:.2g} %{slow}, half of what the standard states."
     )
 
 
-def _differential_u(given: MeterReadings) -> float:
+def _reynolds(given: MeterReadings, flow: Array) -> Array:
+    return np.asarray(4.0 * flow / (np.pi * given.values["pipe_bore"] * given.kinematic_viscosity))
+
+
+def _differential_u(given: MeterReadings, flow: Array) -> Array | float:
     if "discharge_coefficient" in given.values:
         return 0.0
-    return discharge_coefficient_u(_meter_type(given), given.values["pipe_bore"], given.values["throat_bore"])
+    pipe, throat = given.values["pipe_bore"], given.values["throat_bore"]
+    return discharge_coefficient_u(_meter_type(given), pipe, throat, _reynolds(given, flow))
 
 
 def _differential_limits(given: MeterReadings, flow: Array) -> list[str]:
     pipe, throat = given.values["pipe_bore"], given.values["throat_bore"]
-    reynolds = 4.0 * flow / (np.pi * pipe * given.kinematic_viscosity)
-    return meter_limits(_meter_type(given), pipe, throat, reynolds)
+    return meter_limits(_meter_type(given), pipe, throat, _reynolds(given, flow))
 
 
 def _v_notch(given: MeterReadings) -> Array:
@@ -212,8 +232,8 @@ def _rectangular_said(given: MeterReadings) -> str:
     return f"Flow over the rectangular thin-plate weir by {name} (ISO 1438)."
 
 
-def _weir_u(default: float) -> Callable[[MeterReadings], float]:
-    return lambda given: given.values.get("u_coefficient", default)
+def _weir_u(default: float) -> Callable[[MeterReadings, Array], float]:
+    return lambda given, _: given.values.get("u_coefficient", default)
 
 
 def _pitots(given: MeterReadings) -> Array:
@@ -246,13 +266,19 @@ def _tabled_limits(given: MeterReadings, _: Array) -> list[str]:
     table, at = given.setup.table, given.columns["meter reading"]
     assert table is not None
     low, high = table.reading[0], table.reading[-1]
+    slack = 1e-9 * max(abs(low), abs(high))
+    beyond = np.flatnonzero((at < low - slack) | (at > high + slack))
+    if not len(beyond):
+        return []
+    unit = table.unit
+
+    def shown(value: float) -> str:
+        return f"{unit.from_si(value):.4g}"
+
+    told = [f"{given.runs[row]!r} reads {shown(float(at[row]))} {unit.text}" for row in beyond[:_TOLD]]
+    more = f" and {len(beyond) - _TOLD} more" if len(beyond) > _TOLD else ""
     return [
-        f"a reading of {value:.4g}, where the table holds from {low:.4g} to {high:.4g} (SI)"
-        for value, out in (
-            (at.min(initial=np.inf), at.min(initial=np.inf) < low),
-            (at.max(initial=-np.inf), at.max(initial=-np.inf) > high),
-        )
-        if out
+        f"run {', run '.join(told)}{more}, where {table.file} holds from {shown(low)} to {shown(high)} {unit.text}"
     ]
 
 

@@ -7,32 +7,36 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from gradeline.fitting.diagnosis.shown_flow import shown_velocity_heads
 from gradeline.fitting.pooled import robust_scatter
 from gradeline.fitting.runs import Model, RunFits, fit_runs
 from gradeline.fitting.scatter import Scatter
 from gradeline.hydraulics.friction import (
     colebrook_white,
-    darcy_friction_factor,
     kinetic_energy_coefficient,
-    relative_roughness,
-    velocity_head,
 )
+from gradeline.reduction.ailments import Ailments, look_for_ailments
 from gradeline.reduction.corrections import Corrections
-from gradeline.reduction.heads import Input, observation_kinds
-from gradeline.reduction.inputs import common_errors, flowing_inputs, persistent_errors
-from gradeline.reduction.line import Line, disturbed_taps
+from gradeline.reduction.heads import Input
+from gradeline.reduction.inputs import common_errors, flowing_inputs, persistent_errors, stated_tap_errors
+from gradeline.reduction.kinetic import law_roughness, with_kinetic_correction
+from gradeline.reduction.line import Line
 from gradeline.reduction.media import Media
-from gradeline.reduction.offtakes import flow_heads, reach_flows
-from gradeline.survey import GAUGE_KINDS, Survey
+from gradeline.reduction.offtakes import flow_heads
+from gradeline.reduction.setting import Setting, setting_of
+from gradeline.survey import Survey
 
-__all__ = ["Flowing", "fit_survey", "stated_readings"]
+__all__ = ["Flowing", "fit_survey"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
+#: Looks for what ails taps and line at most: each knows the slopes that the one before left.
+_LOOKS = 3
 #: A slope this small is rounding of the heads.
 _NO_SLOPE = 1e-12
-_PRESSURE_KINDS = frozenset(name for name, kind in GAUGE_KINDS.items() if kind.reading == "pressure")
+#: An effect below this share of what it acts on, or of a slope or head (m) this small, is rounding.
+_ROUNDING, _SMALL = 1e-12, 1e-3
 
 
 @dataclass(frozen=True)
@@ -62,7 +66,7 @@ class Flowing:
     fits : RunFits
         The fits.
     design : (n, p) array
-        E₀, the reaches, the fitted losses, the levels of gauges that float.
+        E₀, the reaches, the fitted losses, the levels of gauges that float, what nobody listed.
     inputs : tuple of Input
         All shared inputs with a stated uncertainty.
     effect : (F, p, q) array
@@ -71,6 +75,8 @@ class Flowing:
         Change of the parameters with the run's own flow error.
     random : (F, p, p) array
         Covariance of the parameters from scatter alone; NaN where the scatter is not known.
+    ailments : Ailments
+        What ails taps and line, and what the fits made of it.
     """
 
     rows: NDArray[np.intp]
@@ -93,12 +99,28 @@ class Flowing:
     effect: Array
     own: Array
     random: Array
+    ailments: Ailments
 
     def slopes(self) -> Array:
         """S of each run and reach (F, K), NaN where the taps do not determine it."""
         slopes = self.fits.lines.parameters[:, 1 : 1 + self.velocity.shape[1]]
         # What is left of equal readings is rounding, not a slope.
         return np.where(np.abs(slopes) < _NO_SLOPE, 0.0, slopes)
+
+
+@dataclass(frozen=True)
+class _Fitted:
+    """One round of fits."""
+
+    used: Mask
+    model: Model
+    first: RunFits
+    slopes: Array
+    heads: Array
+    energy: Array
+    inputs: tuple[Input, ...]
+    felt: Array
+    fits: RunFits
 
 
 def fit_survey(
@@ -109,6 +131,8 @@ def fit_survey(
     excluded: Mask,
     *,
     keep_all: bool,
+    look: bool = True,
+    correct_offsets: bool = False,
 ) -> Flowing:
     """Fit the flowing runs.
 
@@ -120,6 +144,10 @@ def fit_survey(
         Readings left out by hand.
     keep_all : bool
         Whether flagged readings enter all the same.
+    look : bool
+        Whether to look for what ails taps and line over all runs.
+    correct_offsets : bool
+        Whether offsets of taps that the flowing runs show are taken off; else such taps are left out.
 
     Returns
     -------
@@ -127,108 +155,143 @@ def fit_survey(
         Two passes: the second knows the friction that the velocity profile depends on, and the slopes that
         the errors of the tap positions depend on.
     """
-    rows = np.flatnonzero(survey.runs["flow"].to_numpy(float) > 0)
-    flow = survey.runs["flow"].to_numpy(float)[rows]
-    in_reach = reach_flows(survey, rows)
-    flow_gain = flow[:, None] / in_reach
-    velocity = in_reach / line.area
-    reynolds = velocity * line.diameter / media.kinematic_viscosity[rows, None]
-    plain_head = velocity_head(velocity, media.gravity)
-    flow_u = _flow_uncertainty(survey, rows, flow)
-    sight = corrections.heads.taps
-    observed = corrections.heads.observed[rows]
-    read = np.isfinite(observed)
-    disturbed_tap, reasons, cautions = disturbed_taps(survey, line, reynolds)
-    disturbed = disturbed_tap @ (sight != 0).T.astype(float) > 0
-    out = excluded[rows]
-    used = read & ~disturbed & ~out
-    loss_head = plain_head[:, line.reference] if len(line.fittings) else np.zeros((len(rows), 0))
-    given_k = np.array(
-        [0.0 if one.loss_coefficient is None else one.loss_coefficient.value for one in line.fittings]
-    )
-    given = (loss_head * given_k) @ (sight @ line.passed).T
-    design = np.column_stack(
-        [
-            sight.sum(axis=1),
-            -(sight @ line.lengths),
-            -(sight @ line.passed)[:, line.fitted],
-            corrections.heads.levels[:, 1:],
-        ]
-    )
-    kind, _ = observation_kinds(survey)
-    floor, resolution = stated_readings(survey, corrections)
-    repeats = survey.repeats.to_numpy(float)[rows]
-    spreads = survey.spreads.to_numpy(float)[rows] * np.abs(corrections.heads.gain[rows])
-    model = Model(
-        design=design,
-        velocity_head=plain_head.max(axis=1) if len(rows) else np.zeros(0),
-        kind=kind,
-        floor=floor,
-        resolution=resolution,
-        repeats=repeats if (repeats > 1).any() else None,
-        spreads=spreads if (repeats > 1).any() else None,
-    )
-    factor = np.asarray(colebrook_white(np.maximum(reynolds, 1.0), 0.0))
-
-    def energy_of(factor: Array) -> tuple[Array, Array]:
-        heads = np.asarray(kinetic_energy_coefficient(reynolds, factor)) * plain_head
-        return heads, observed + heads[:, line.reach_of_tap] @ sight.T + given
-
-    heads, energy = energy_of(factor)
-    first = fit_runs(energy, used, model, search=False, details=False)
-    slopes = first.lines.parameters[:, 1 : 1 + len(line.diameter)]
-    heads, energy = energy_of(_law_factor(slopes, velocity, reynolds, line, media))
-    flow_effect = 2.0 * flow_u[:, None] * flow_heads(line, sight, heads, loss_head * given_k, flow_gain)
-    # The scatter first as the trimmed readings show it, then as the fit does that knows of the static readings.
-    scatter = robust_scatter(energy, used, model)
-    for last in (False, True) if corrections.applied else (True,):
-        base = _static_scatter(scatter, kind, corrections, repeats, single=len(rows) == 1 or not last)
-        inputs = flowing_inputs(
-            survey, line, corrections, rows, slopes, heads, loss_head, given_k, base, flow_gain
-        )
-        persistent, steady, along_slope = persistent_errors(inputs, used)
-        common, felt = common_errors(inputs, flow_effect, sight.sum(axis=1), used)
-        told = replace(model, persistent=persistent, common=common, steady=steady, along_slope=along_slope)
-        fits = fit_runs(energy, used, told, keep_all=keep_all and last, details=last)
-        scatter = fits.scatter
-    shared = fits.lines.projectors
+    here = setting_of(survey, media, line, corrections, excluded)
+    ailments = Ailments.none(len(here.model.design))
+    if look:
+        ailments = _ailments(here, ailments, correct_offsets=correct_offsets)
+    stage = _fitted(here, ailments, keep_all=keep_all, whole=True)
+    fits = stage.fits
+    before, shared = stage.first.lines.projectors, fits.lines.projectors
     gain = shared.gain[shared.index]
-    columns = [np.zeros(energy.shape) if one.heads is None else one.heads for one in inputs]
-    stacked = np.stack(columns, axis=2) if columns else np.zeros((*energy.shape, 0))
+    inputs = with_kinetic_correction(
+        stage.inputs,
+        line,
+        media,
+        sight=here.sight,
+        slopes=stage.slopes,
+        gain=before.gain[before.index][:, 1 : 1 + len(line.diameter)],
+        velocity=here.velocity,
+        reynolds=here.reynolds,
+        plain_head=here.plain_head,
+    )
+    columns = [np.zeros(stage.energy.shape) if one.heads is None else one.heads for one in inputs]
+    stacked = np.stack(columns, axis=2) if columns else np.zeros((*stage.energy.shape, 0))
     return Flowing(
-        rows=rows,
-        flow=flow,
-        flow_u=flow_u,
-        reach_flow_u=flow_u[:, None] * flow_gain,
-        velocity=velocity,
-        reynolds=reynolds,
-        velocity_heads=heads,
-        energy=energy,
-        given=given,
-        disturbed=disturbed,
-        excluded=out,
-        used=used & (~fits.flagged | keep_all),
-        reasons=reasons,
-        cautions=cautions,
+        rows=here.rows,
+        flow=here.flow,
+        flow_u=here.flow_u,
+        reach_flow_u=here.flow_u[:, None] * here.flow_gain,
+        velocity=here.velocity,
+        reynolds=here.reynolds,
+        velocity_heads=stage.heads,
+        energy=stage.energy,
+        given=here.given,
+        disturbed=here.disturbed,
+        excluded=here.excluded,
+        used=stage.used & (~fits.flagged | keep_all),
+        reasons=here.reasons,
+        cautions=here.cautions,
         fits=fits,
-        design=design,
+        design=stage.model.design,
         inputs=inputs,
-        effect=np.einsum("fpn,fnq->fpq", gain, np.where(np.isfinite(stacked), stacked, 0.0)),
-        own=np.einsum("fpn,fn->fp", gain, np.where(used, felt, 0.0)),
+        effect=_without_rounding(
+            np.einsum("fpn,fnq->fpq", gain, np.where(np.isfinite(stacked), stacked, 0.0)),
+            fits.lines.parameters[:, :, None],
+        ),
+        own=_without_rounding(
+            np.einsum("fpn,fn->fp", gain, np.where(stage.used, stage.felt, 0.0)), fits.lines.parameters
+        ),
         random=fits.random_covariance(),
+        ailments=ailments,
     )
 
 
-def _flow_uncertainty(survey: Survey, rows: NDArray[np.intp], flow: Array) -> Array:
-    """Relative standard uncertainty of each run's own flow: as stated, else from its repeats."""
-    stated = survey.stated.flow
-    if stated is not None:
-        own = np.full(len(flow), stated.value) if stated.relative else stated.value / flow
-    else:
-        own = np.nan_to_num(survey.runs["flow_u"].to_numpy(float)[rows] / flow)
-    if "flow_drift_u" in survey.runs.columns:
-        own = np.hypot(own, survey.runs["flow_drift_u"].to_numpy(float)[rows])
-    return np.asarray(own)
+def _without_rounding(effect: Array, parameter: Array) -> Array:
+    """Take out what is left of effects on a slope or a head that cancel: it would pass for an uncertainty."""
+    size = np.maximum(np.abs(np.nan_to_num(parameter)), _SMALL)
+    return np.where(np.abs(effect) < _ROUNDING * size, 0.0, effect)
+
+
+def _energy(here: Setting, factor: Array, ailments: Ailments) -> tuple[Array, Array]:
+    """Velocity heads with α for a friction factor, and the observed energy heads."""
+    heads = np.asarray(kinetic_energy_coefficient(here.reynolds, factor)) * here.plain_head
+    return heads, here.observed + heads[
+        :, here.line.reach_of_tap
+    ] @ here.sight.T + here.given - ailments.taken_off
+
+
+def _fitted(here: Setting, ailments: Ailments, *, keep_all: bool, whole: bool) -> _Fitted:
+    """All passes with what ails taps and line as far as it is known; `whole`: single readings are judged."""
+    line, corrections = here.line, here.corrections
+    mine = here.used & ~ailments.left_out
+    around = replace(here.model, design=np.hstack([here.model.design, ailments.columns]))
+    smooth = np.asarray(colebrook_white(np.maximum(here.reynolds, 1.0), 0.0))
+    first = fit_runs(_energy(here, smooth, ailments)[1], mine, around, search=False, details=False)
+    slopes = first.lines.parameters[:, 1 : 1 + len(line.diameter)]
+    heads, energy = _energy(
+        here, _law_factor(slopes, here.velocity, here.reynolds, line, here.media), ailments
+    )
+    given = here.loss_head * here.given_k
+    flow_effect = 2.0 * here.flow_u[:, None] * flow_heads(line, here.sight, heads, given, here.flow_gain)
+    # The scatter first as the trimmed readings show it, then as the fit does that knows of the static readings.
+    scatter = robust_scatter(energy, mine, around)
+    for last in (False, True) if corrections.applied and whole else (True,):
+        single = len(here.rows) == 1 or not last
+        base = _static_scatter(scatter, here.kind, corrections, here.repeats, single=single)
+        inputs = flowing_inputs(
+            here.survey,
+            line,
+            corrections,
+            here.rows,
+            slopes,
+            heads,
+            here.loss_head,
+            here.given_k,
+            base,
+            here.flow_gain,
+        )
+        inputs = (*inputs, *ailments.inputs)
+        persistent, steady, along_slope = persistent_errors(inputs, mine)
+        common, felt = common_errors(inputs, flow_effect, here.sight.sum(axis=1), mine)
+        told = replace(around, persistent=persistent, common=common, steady=steady, along_slope=along_slope)
+        judged = last and whole
+        # Judged in the first pass too: else a wrong reading would pass for scatter of the static readings.
+        fits = fit_runs(energy, mine, told, search=whole, keep_all=keep_all and judged, details=judged)
+        scatter = fits.scatter
+    return _Fitted(mine, told, first, slopes, heads, energy, inputs, felt, fits)
+
+
+def _shown_heads(here: Setting, stage: _Fitted) -> Array:
+    """Velocity heads of each run and reach with what its own flow error does to them taken out."""
+    count = stage.slopes.shape[1]
+    u = np.sqrt(np.einsum("fpp->fp", stage.fits.random_covariance())[:, 1 : 1 + count])
+    return np.column_stack(
+        [shown_velocity_heads(here.plain_head[:, k], stage.slopes[:, k], u[:, k]) for k in range(count)]
+    )
+
+
+def _ailments(here: Setting, ailments: Ailments, *, correct_offsets: bool) -> Ailments:
+    """Taps and line before any single reading: an unlisted loss would make outliers of innocent neighbours."""
+    for _ in range(_LOOKS):
+        stage = _fitted(here, ailments, keep_all=False, whole=False)
+        again = look_for_ailments(
+            here.survey,
+            here.line,
+            replace(stage.model, design=here.model.design, persistent=None),
+            here.sight,
+            stage.energy + ailments.taken_off,
+            here.observed,
+            here.used,
+            stage.slopes,
+            _shown_heads(here, stage),
+            stated_tap_errors(stage.inputs, here.used.shape),
+            correct_offsets=correct_offsets,
+        )
+        stands = again.same_as(ailments)
+        ailments = again
+        if stands:
+            break
+    return ailments
 
 
 def _static_scatter(
@@ -253,33 +316,7 @@ def _static_scatter(
     return np.asarray(np.where(known | (not single), base, base / share))
 
 
-def stated_readings(survey: Survey, corrections: Corrections) -> tuple[Array, Array]:
-    """Return (stated uncertainty of one reading of each observation, what its resolution adds), as heads, m.
-
-    0 where nothing is stated.
-    """
-    gain = corrections.heads.spread
-    known = np.isfinite(gain)
-    size = np.where(known, gain, 0.0).sum(axis=0) / np.maximum(known.sum(axis=0), 1)
-    floors, resolutions = [], []
-    for observation in survey.observations:
-        gauge, tap = survey.gauge(observation.gauge), survey.tap(observation.tap)
-        general = {"m": survey.stated.reading, "Pa": survey.stated.reading_pressure}
-        stated = gauge.reading_u if tap.reading_u is None or observation.tap_2 else tap.reading_u
-        if stated is None:
-            stated = general["Pa" if gauge.kind in _PRESSURE_KINDS else "m"]
-        floors.append(stated or 0.0)
-        resolutions.append((gauge.resolution or 0.0) / np.sqrt(12.0))
-    return np.array(floors) * size, np.array(resolutions) * size
-
-
 def _law_factor(slopes: Array, velocity: Array, reynolds: Array, line: Line, media: Media) -> Array:
     """Friction factor of the law at the roughness that the slopes of the first pass show."""
-    turbulent = (reynolds > 4000) & (slopes > 0)
-    factor = darcy_friction_factor(np.where(turbulent, slopes, 1.0), line.diameter, velocity, media.gravity)
-    signed = np.where(turbulent, relative_roughness(factor, np.maximum(reynolds, 1.0)), np.nan)
-    rough = np.zeros(len(line.diameter))
-    for k in range(len(rough)):
-        mine = signed[:, k][np.isfinite(signed[:, k])]
-        rough[k] = np.clip(np.median(mine), 0.0, 0.1) if len(mine) else 0.0
+    rough, _ = law_roughness(slopes, velocity, reynolds, line, media)
     return np.asarray(colebrook_white(np.maximum(reynolds, 1.0), rough))

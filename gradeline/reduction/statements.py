@@ -9,7 +9,9 @@ from numpy.typing import NDArray
 
 from gradeline.fitting.misfit import PATTERNS
 from gradeline.fitting.null import FALSE_ALARM
+from gradeline.quantities.printing import thousands
 from gradeline.reduction.corrections import Corrections
+from gradeline.reduction.faint_flows import faint_flow_cautions
 from gradeline.reduction.fluids import fluid_assumptions
 from gradeline.reduction.gauge_sentences import gauge_assumptions, gauge_cautions
 from gradeline.reduction.line import Line
@@ -84,7 +86,12 @@ def _search_sentence(flowing: Flowing, *, keep_all: bool) -> str:
     if not search.done:
         return f"Single readings were not judged: {search.reason}."
     whole = 1 - (1 - FALSE_ALARM) ** search.runs
-    kept = " Flagged readings were kept in the fits, as asked." if keep_all else ""
+    kept = (
+        " Flagged readings were kept in the fits of their runs, as asked; a run off the friction law is left out of the "
+        "wall's fit all the same."
+        if keep_all
+        else ""
+    )
     return (
         f"Up to {search.most} outlying readings a run were looked for among all sets of readings. In a sound run one is "
         f"flagged by chance in about {100 * FALSE_ALARM:.0f} of 100 runs; over the {search.runs} flowing run{'' if search.runs == 1 else 's'} the "
@@ -114,10 +121,11 @@ def cautions_of(
         Standard deviation of one reading of each observation, m.
     """
     said = [*survey.cautions, *flowing.cautions]
+    said += faint_flow_cautions(survey, flowing)
     said += gauge_cautions(survey, corrections.heads)
     said += _misfit(survey, flowing)
     said += _scatter(flowing)
-    said += _offsets(survey, corrections, base)
+    said += _offsets(survey, corrections, base, {one.label for one in flowing.ailments.taps})
     said += _few_taps(flowing)
     said += _sub_atmospheric(survey, line, flowing, piezometric, crown)
     search, runs = flowing.fits.search, len(flowing.rows)
@@ -156,8 +164,8 @@ def _scatter(flowing: Flowing) -> list[str]:
     return [f"The stated reading uncertainty is doubtful: {search.reason}. No single reading is flagged."]
 
 
-def _offsets(survey: Survey, corrections: Corrections, base: Array) -> list[str]:
-    """Offsets so large that a unit, an elevation or a label is the likelier cause."""
+def _offsets(survey: Survey, corrections: Corrections, base: Array, ailing: set[str]) -> list[str]:
+    """Offsets so large that a unit, an elevation or a label is the likelier cause; of what ails a tap its own words tell."""
     offset = corrections.offset
     known = np.isfinite(offset)
     if not corrections.applied or known.sum() < 3:
@@ -167,9 +175,10 @@ def _offsets(survey: Survey, corrections: Corrections, base: Array) -> list[str]
     with np.errstate(invalid="ignore"):
         large = known & (np.abs(offset) > 20 * base) & (np.abs(offset) > 10 * usual)
     return [
-        f"Tap {survey.observations[i].label} differs from the others by {offset[i]:.4g} m in the static runs, and that is "
+        f"Tap {survey.observations[i].label} differs from the others by {thousands(1000 * offset[i], 4)} mm in the static runs, and that is "
         "taken off: look at its unit, its elevation and its label."
         for i in np.flatnonzero(large)
+        if not ailing & {survey.observations[i].label, survey.observations[i].tap}
     ]
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -9,12 +10,15 @@ from numpy.typing import NDArray
 
 from gradeline.fitting.wall import WallData, WallFit, best_roughness, fit_wall
 from gradeline.hydraulics.friction import TURBULENT_LIMIT, colebrook_white
+from gradeline.quantities.printing import format_number
+from gradeline.reduction.corrections import Corrections
+from gradeline.reduction.faint_flows import faint_flows
 from gradeline.reduction.line import Line
 from gradeline.reduction.media import Media, run_temperature_u
 from gradeline.reduction.runs import Flowing
 from gradeline.survey import Survey
 
-__all__ = ["Wall", "bore_variants", "slope_uncertainty", "walls_of"]
+__all__ = ["Wall", "bore_variants", "runs_off_law", "slope_uncertainty", "walls_of"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -46,6 +50,8 @@ class Wall:
         Slopes of turbulent runs.
     dof : float
         Degrees of freedom of the scatter.
+    unmoved : (F,) bool array
+        Runs left out since their flow is not told from zero.
     """
 
     name: str
@@ -55,6 +61,12 @@ class Wall:
     faint: Mask
     turbulent: Mask
     dof: float
+    unmoved: Mask
+
+    def scatter_of_slopes(self, slope: Array) -> Array:
+        """Scatter of slopes (F, k) as the runs show it about the law, where the readings of a run leave none."""
+        reading = 0.0 if self.data.slope_spread is None else self.fit.reading_scatter * self.data.slope_spread
+        return np.asarray(np.hypot(np.abs(slope) * self.fit.relative_scatter, reading))
 
     def implausible(self) -> str | None:
         """Say why no wall can have the friction that was found, if so; None where one can."""
@@ -66,15 +78,23 @@ class Wall:
         ratio = float(np.median((factor / smooth)[self.fit.used]))
         if typical > _HIGHEST_FACTOR:
             return (
-                f"f = {typical:.3g}, more than any wall gives (the roughest about {_HIGHEST_FACTOR:g}): look at the units of "
+                f"f = {format_number(typical, 2)}, more than any wall gives (the roughest about {_HIGHEST_FACTOR:g}): look at the units of "
                 "bore, flow and chainage"
             )
         if ratio < _LOWEST_RATIO:
             return (
-                f"f is {ratio:.2g} times that of a smooth wall, less than any wall gives: look at the units of bore, flow "
+                f"f is {format_number(ratio, 2)} times that of a smooth wall, less than any wall gives: look at the units of bore, flow "
                 "and readings"
             )
         return None
+
+
+def runs_off_law(walls: Sequence[Wall], reach: int, runs: int) -> Mask:
+    """Return which of the flowing runs lie off the law of a reach's wall, (F,): a slip of the flow, as a rule."""
+    off = np.zeros(runs, dtype=bool)
+    for wall in walls:
+        off |= wall.fit.off_law[:, wall.reaches == reach].any(axis=1)
+    return off
 
 
 def slope_uncertainty(flowing: Flowing, reaches: int) -> tuple[Array, Array]:
@@ -85,12 +105,14 @@ def slope_uncertainty(flowing: Flowing, reaches: int) -> tuple[Array, Array]:
     return np.sqrt(random + shared), np.sqrt(random)
 
 
-def walls_of(survey: Survey, line: Line, media: Media, flowing: Flowing, *, level: float) -> tuple[Wall, ...]:
+def walls_of(
+    survey: Survey, line: Line, media: Media, flowing: Flowing, corrections: Corrections, *, level: float
+) -> tuple[Wall, ...]:
     """Fit every wall of a survey.
 
     Parameters
     ----------
-    survey, line, media, flowing
+    survey, line, media, flowing, corrections
         The survey and what its runs say.
     level : float
         Coverage of the intervals.
@@ -102,23 +124,31 @@ def walls_of(survey: Survey, line: Line, media: Media, flowing: Flowing, *, leve
     """
     slopes = flowing.slopes()
     total, _ = slope_uncertainty(flowing, len(line.diameter))
+    unmoved = faint_flows(survey, flowing)
     found = []
     for name in dict.fromkeys(reach.wall for reach in survey.reaches):
         mine = np.array([k for k, reach in enumerate(survey.reaches) if reach.wall == name], dtype=np.intp)
-        data = _data(survey, line, media, flowing, mine)
+        data = _data(survey, line, media, flowing, corrections, mine)
         turbulent = flowing.reynolds[:, mine] > TURBULENT_LIMIT
-        there = turbulent & np.isfinite(slopes[:, mine])
+        there = turbulent & np.isfinite(slopes[:, mine]) & ~unmoved[:, None]
         with np.errstate(invalid="ignore"):
             faint = there & ~(
                 slopes[:, mine] > np.where(np.isfinite(total[:, mine]), _FAINT * total[:, mine], 0.0)
             )
         dof = flowing.fits.pooled_dof or np.inf
         fit = fit_wall(data, there & ~faint, level=level, dof=dof)
-        found.append(Wall(name, mine, data, fit, faint, turbulent, dof))
+        found.append(Wall(name, mine, data, fit, faint, turbulent, dof, unmoved))
     return tuple(found)
 
 
-def _data(survey: Survey, line: Line, media: Media, flowing: Flowing, mine: NDArray[np.intp]) -> WallData:
+def _data(
+    survey: Survey,
+    line: Line,
+    media: Media,
+    flowing: Flowing,
+    corrections: Corrections,
+    mine: NDArray[np.intp],
+) -> WallData:
     count = len(flowing.rows)
     columns = 1 + mine
     zero, none = np.zeros(len(line.diameter)), np.zeros(count)
@@ -127,6 +157,14 @@ def _data(survey: Survey, line: Line, media: Media, flowing: Flowing, mine: NDAr
     bore = [zero if one.diameter is None else one.diameter for one in inputs]
     viscosity = [none if one.viscosity is None else one.viscosity for one in inputs]
     flow = [np.broadcast_to(one.flow, (count, len(line.diameter)))[:, mine] for one in inputs]
+    shared = flowing.fits.lines.projectors
+    gain = shared.gain[shared.index][:, columns]
+    # The readings of a static run scatter as the others do, and what they do is the same in all runs.
+    axes = None
+    if corrections.applied:
+        variances, vectors = np.linalg.eigh(corrections.covariance)
+        whole = variances > 1e-9 * max(float(variances[-1]), 1e-300)
+        axes = vectors[:, whole] * np.sqrt(variances[whole])
     return WallData(
         slope=flowing.slopes()[:, mine],
         slope_covariance=flowing.random[:, columns[:, None], columns],
@@ -142,6 +180,8 @@ def _data(survey: Survey, line: Line, media: Media, flowing: Flowing, mine: NDAr
         flow_effect=np.stack(flow, axis=2) if flow else np.zeros((count, len(mine), 0)),
         viscosity_effect=np.stack(viscosity, axis=1) if viscosity else np.zeros((count, 0)),
         gravity_effect=np.array([one.gravity for one in inputs]),
+        slope_spread=np.sqrt(np.einsum("fpn,fpn->fp", gain, gain)),
+        static_effect=None if axes is None else -np.einsum("fpn,ns->fps", gain, axes),
     )
 
 

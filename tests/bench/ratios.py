@@ -18,6 +18,7 @@ import tracemalloc
 from collections.abc import Callable
 from pathlib import Path
 
+from tests.bench.monte_carlo import DRAWN_RUNS, draw_factors, draw_normal, run_draws
 from tests.bench.runs import RUNS, SCRIPT_RUNS, batch, bench_runs, frame, run_script, script_readings
 
 TOP = Path(__file__).resolve().parents[2]
@@ -87,12 +88,35 @@ def command(rounds: int, survey: Path) -> None:
         print(f"  {name:24}{value:>8.2f} s {value / seconds['bare imports']:>8.2f} × the bare imports")
 
 
+def monte_carlo(rounds: int, count: int) -> None:
+    """Draws of f against standard normal numbers."""
+    draws = run_draws()
+    taken = alternate(
+        rounds,
+        {"standard_normal": lambda: draw_normal(count), "draws of f": lambda: draw_factors(draws, count)},
+    )
+    seconds = {name: statistics.median(values) for name, values in taken.items()}
+    print(f"{count:,} draws for {DRAWN_RUNS} runs, medians of {rounds} rounds in turn")
+    for name, value in seconds.items():
+        ratio = value / seconds["standard_normal"]
+        print(
+            f"  {name:24}{1e9 * value / count / DRAWN_RUNS:>8.1f} ns a value {ratio:>8.2f} × standard_normal"
+        )
+    tracemalloc.start()
+    draw_factors(draws, 20_000)
+    peak = tracemalloc.get_traced_memory()[1]
+    tracemalloc.stop()
+    print(f"  peak memory of the draws: {peak / 1e6:.0f} MB")
+
+
 def main() -> None:
     """Measure and print."""
     parser = argparse.ArgumentParser(description=__doc__.split("\n", maxsplit=1)[0])
     parser.add_argument("--rounds", type=int, default=7)
     parser.add_argument("--survey", type=Path, default=TOP / "data_demo" / "copper_bench")
+    parser.add_argument("--draws", type=int, default=1_000_000)
     asked = parser.parse_args()
+    monte_carlo(min(asked.rounds, 3), asked.draws)
     per_run(asked.rounds)
     command(asked.rounds, asked.survey)
 

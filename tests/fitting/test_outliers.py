@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 from scipy.stats import t as student
 
-from gradeline.fitting.null import critical_falls, null_runs
+from gradeline.fitting.null import critical_falls, null_runs, scale_moments
 from gradeline.fitting.outliers import (
     deletion_residuals,
     most_removable,
@@ -267,6 +267,47 @@ def test_critical_values_for_a_known_scatter_hold_one_per_cent(n, p):
     # Five standard errors of the binomial, and as much again for the simulated critical value and the design.
     assert first == pytest.approx(0.01, abs=10 * np.sqrt(0.01 * 0.99 / count))
     assert np.isinf(critical[most:]).all()
+
+
+@pytest.mark.parametrize(("n", "p"), [(34, 3), (60, 2), (150, 4), (200, 2), (320, 2)])
+def test_long_runs_hold_one_per_cent_by_values_between_those_tabled(n, p, monkeypatch):
+    """Fresh noise on random designs; nothing is simulated on the spot, which takes minutes for hundreds of taps."""
+    monkeypatch.setattr("gradeline.fitting.null.null_runs", None)
+    rng = np.random.default_rng(98)
+    count = 4000
+    design = straight(n) if p == 2 else rng.standard_normal((n, p))
+    shared = project(design, np.ones((1, 1)), np.ones((1, n), dtype=bool))
+    q = rng.standard_normal((count, n)) @ shared.weight[0]
+    critical = critical_falls(n, p, 1000, stated=True, independent=True)
+    best = subset_falls(q, shared.weight[0], shared.used[0], 2)
+    first = (best.fall[:, 0] > critical[0]).mean()
+    # Three standard errors of the binomial, and a fifth for the tabled value.
+    assert first == pytest.approx(0.01, abs=3 * np.sqrt(0.01 * 0.99 / count) + 0.002)
+    # The sum of squares without the best one, or two, is that of the scale.
+    mean, freedom = scale_moments(n, p)
+    left = np.einsum("rn,rn->r", q, q) - best.fall[:, 1]
+    assert mean == pytest.approx(left.mean(), rel=0.01)
+    assert freedom == pytest.approx(2 * left.mean() ** 2 / left.var(), rel=0.15)
+
+
+def test_the_best_pair_of_a_long_run_is_the_best_of_all():
+    """Against every pair one by one, two bad neighbours at the end of the line among them."""
+    n = 40
+    rng = np.random.default_rng(12)
+    heads = rng.standard_normal((30, n))
+    heads[:10, :2] += 6.0
+    shared = project(straight(n), np.ones((1, 1)), np.ones((1, n), dtype=bool))
+    weight = shared.weight[0]
+    q = heads @ weight
+    found = subset_falls(q, weight, shared.used[0], 2)
+    for run in range(30):
+        falls = {
+            pair: q[run, list(pair)] @ np.linalg.solve(weight[np.ix_(pair, pair)], q[run, list(pair)])
+            for pair in itertools.combinations(range(n), 2)
+        }
+        best = max(falls, key=lambda pair: falls[pair])
+        assert tuple(found.members[run, 1, :2]) == best
+        assert found.fall[run, 1] == pytest.approx(falls[best], rel=1e-9)
 
 
 def test_the_critical_values_of_the_issue_for_ten_taps():

@@ -300,3 +300,18 @@ def test_a_wall_of_two_reaches_shares_one_roughness():
     first = both & np.array([True, False])
     assert fit_wall(data, both).roughness == pytest.approx(fit_wall(data, first).roughness, rel=1e-5)
     assert fit_wall(data, both).high < fit_wall(data, first).high
+
+
+@pytest.mark.parametrize("trend", [0.0, -0.05])
+def test_the_trends_interval_holds_it_where_the_scatter_is_that_off_the_law(trend):
+    """95 % of surveys, and no wider than it need be: with the trend left in the scatter it was twice too wide."""
+    rng = np.random.default_rng(11)
+    held, found, u = 0, [], []
+    for _ in range(60):
+        data = two_tap(rng, roughness=2e-4, trend=trend)
+        fit = fit_wall(data, np.isfinite(data.slope))
+        held += abs(fit.trend - trend) < student.ppf(0.975, fit.trend_dof) * fit.trend_u
+        found.append(fit.trend)
+        u.append(fit.trend_u)
+    assert held / 60 >= 0.95 - 3 * np.sqrt(0.95 * 0.05 / 60)
+    assert np.median(u) == pytest.approx(np.std(found), rel=0.3)

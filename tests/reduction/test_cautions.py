@@ -7,10 +7,13 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from gradeline.quantities import rounded
 from gradeline.reduction import reduce
+from gradeline.report import summarise
 from tests.reduction.benches import FAST, TAPS, hilly, main, on_pressure_gauges, tube, with_gauge
 from tests.simulate.surveys import NominalFitting, Uncertainties
 
+SLOW_TO_FAST = np.geomspace(3e-4, 1.8e-3, 9)
 HILL = np.array([0.3, 1.2, 2.1, 2.6, 2.0, 1.1, 0.4, -0.3, -0.8, 0.1])
 
 
@@ -73,16 +76,21 @@ def test_a_head_that_rises_within_the_scatter_is_not_told():
 
 @pytest.mark.parametrize("seed", range(3))
 def test_an_unlisted_loss_is_no_set_of_outliers(seed):
-    """An unlisted K = 1 in the middle of the line: its step is shared by all runs, and no reading is flagged."""
+    """An unlisted K = 1 in the middle of the line: its step is shared by all runs, and no reading is flagged for it."""
     flows = np.linspace(3e-4, 1.4e-3, 9)
-    survey, _ = tube(flows, sigma=1e-3, seed=seed, fittings=[NominalFitting(2.75, 1.0, None)])
+    survey, truth = tube(flows, sigma=1e-3, seed=seed, fittings=[NominalFitting(2.75, 1.0, None)])
     found = reduce(survey)
-    cautions = said(found, "Most runs share a misfit, growing with the")
+    cautions = said(found, "a loss that nobody listed")
     assert len(cautions) == 1
-    assert "No single reading is flagged in this survey" in cautions[0]
-    assert not (found.flags["kind"] == "reading").any()
+    assert cautions[0].startswith(
+        "Between 2.467 m and 3.033 m (95 %) there is a loss that nobody listed, K = "
+    )
     assert not (found.heads["flag"] == "outlier").any()
-    assert any(text.startswith("Single readings were not judged") for text in found.assumptions)
+    row = found.ailments.squeeze()
+    assert abs(row["loss_coefficient"] - 1.0) < 3 * row["loss_coefficient_u"]
+    # unlisted it would bias S by a third; fitted, S is the truth within its uncertainty
+    score = (found.runs["slope"].to_numpy(float) - truth.slope[:, 0]) / found.runs["slope_u"].to_numpy(float)
+    assert np.abs(score).max() < 3.5
 
 
 def test_a_listed_loss_is_no_misfit():
@@ -178,8 +186,43 @@ def test_an_offset_beyond_all_others_is_told():
         stated=Uncertainties(reading=5e-4),
         offsets=np.where(np.arange(len(TAPS)) == 3, 2.0, 0.0),
     )
-    (text,) = said(reduce(survey), f"Tap {survey.observations[3].label} differs from the others by ")
-    assert abs(float(text.split("by ")[1].split(" m")[0]) - 2.0) < 5e-3
+    found = reduce(survey)
+    (text,) = said(found, f"Tap {survey.observations[3].label} differs from the others by ")
+    shown, unit, _ = text.split("by ")[1].split(" ", 2)
+    assert unit == "mm"
+    assert abs(float(shown.replace("\u202f", "")) - 2000) < 5
+    # Said once: the summary leaves it to the caution.
+    assert not any("datum offset" in one for one in summarise(found).look)
+
+
+def test_an_offset_at_rest_that_stands_out_is_told_without_a_flag():
+    """5.8 mm at one tap, the others sound to 1 mm: taken off, and worth a word."""
+    survey, _ = tube((0.0, *SLOW_TO_FAST), sigma=1e-3, seed=5)
+    assert reduce(survey, monte_carlo=False).taps["diagnosis"].isna().all()
+    readings = survey.readings.copy()
+    readings["T5"] += 0.0058
+    found = reduce(replace(survey, readings=readings), monte_carlo=False)
+    (tap,) = found.taps[found.taps["diagnosis"].notna()].to_dict("records")
+    assert tap["tap"] == "T5"
+    assert abs(tap["offset"] - 0.0058) < 3 * tap["offset_u"]
+    shown = f"({rounded(1000 * tap['offset'], 1000 * tap['offset_u'])}) mm".replace("(", "(+")
+    assert tap["diagnosis"] == f"datum offset {shown}, measured by the static run and taken off"
+    assert not len(found.flags)
+    assert f"Tap T5: {tap['diagnosis']}." in summarise(found).look
+    kept = reduce(replace(survey, readings=readings), correct="none", monte_carlo=False)
+    assert not any("measured by the static run" in str(one) for one in kept.taps["diagnosis"])
+
+
+def test_a_tap_with_an_ailment_has_no_second_word_on_its_offset():
+    """A line that is blocked stands still at rest as well, far from the others."""
+    survey, _ = tube((0.0, *SLOW_TO_FAST), sigma=1e-3, seed=5)
+    readings = survey.readings.copy()
+    readings["T4"] = readings["T4"].iloc[-1]
+    found = reduce(replace(survey, readings=readings), monte_carlo=False)
+    diagnosis = found.taps.set_index("tap")["diagnosis"].dropna()
+    assert list(diagnosis.index) == ["T4"]
+    assert diagnosis["T4"].startswith("sluggish or blocked line")
+    assert not said(found, "differs from the others")
 
 
 def test_what_was_left_out_by_hand_is_told():

@@ -198,7 +198,7 @@ def test_flagged_readings_are_kept_as_asked():
     assert found.runs["observations_used"].tolist() == [10] * 4
     energy = found.heads[found.heads["run"] == "3"]["energy_head"].to_numpy(float)
     assert found.runs["slope"][2] == pytest.approx(-np.polyfit(TAPS, energy, 1)[0], rel=1e-9)
-    assert any("kept in the fits, as asked" in text for text in found.assumptions)
+    assert any("kept in the fits of their runs, as asked" in text for text in found.assumptions)
 
 
 def test_a_pressure_is_expected_in_pascals():

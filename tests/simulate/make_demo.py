@@ -208,6 +208,7 @@ wall = "cast iron"
 [[fitting]]
 name = "gate valve"
 at = "{valve:.0f} m"
+kind = "gate valve"
 loss_coefficient = "fit"
 
 [gauge.logger]

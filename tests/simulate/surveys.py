@@ -109,6 +109,7 @@ def make_survey(
     resolution: float | None = None,
     gravity: float = 9.80665,
     draw: bool = True,
+    same_pipe: Truth | None = None,
 ) -> tuple[Survey, Truth]:
     """Build a survey of open columns on one board and the truth behind it.
 
@@ -134,6 +135,8 @@ def make_survey(
         Stated and true, m/s².
     draw : bool
         Whether the inputs are drawn from their stated uncertainties.
+    same_pipe : Truth, optional
+        Of an earlier survey: its bores and tap positions are the true ones here too.
 
     Returns
     -------
@@ -149,17 +152,20 @@ def make_survey(
     stated_temperature = np.broadcast_to(np.asarray(temperature, dtype=float), stated_flow.shape)
     runs, taps = stated_flow.size, stated_x.size
 
+    bores = [reach.diameter + float(error(reach.diameter_u)) for reach in reaches]
+    if same_pipe is not None:
+        bores = [reach.diameter for reach in same_pipe.line.reaches]
     line = TrueLine(
         tuple(
-            TrueReach(
-                reach.start, reach.end, reach.diameter + float(error(reach.diameter_u)), reach.roughness
-            )
-            for reach in reaches
+            TrueReach(reach.start, reach.end, bore, reach.roughness)
+            for reach, bore in zip(reaches, bores, strict=True)
         ),
         tuple(TrueLoss(fitting.at, fitting.true_coefficient) for fitting in fittings),
         gravity,
     )
     x = stated_x + error(stated.chainage, taps)
+    if same_pipe is not None:
+        x = same_pipe.chainage
     flow = stated_flow * (1 + error(stated.flow_scale) + error(stated.flow, runs))
     kelvin = stated_temperature + error(stated.temperature) + error(stated.temperature_run, runs)
     zero = BOARD_ZERO + float(error(stated.zero))

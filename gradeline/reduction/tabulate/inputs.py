@@ -41,6 +41,7 @@ def input_table(
     keep_all: bool,
     exclude: Sequence[str],
     unjudged: str | None,
+    line_unjudged: str | None,
 ) -> pd.DataFrame:
     """Return what the survey and the caller stated, a missing value where nobody stated one.
 
@@ -52,12 +53,14 @@ def input_table(
         As `gradeline.reduce` was called.
     unjudged : str or None
         Why single readings were not judged; None where they were.
+    line_unjudged : str or None
+        Why taps and line were not judged over all runs; None where they were.
     """
     rows = [
         *_medium(survey),
         *_fittings(survey),
         *_side_valves(survey),
-        *(row for gauge in survey.gauges for row in _gauge(gauge)),
+        *(row for gauge in (*survey.gauges, *survey.flow_gauges) for row in _gauge(gauge)),
         *flow_rows(survey.flow),
         *_stated(survey),
         ("options", "", "level of the intervals", None, "relative", level, None),
@@ -65,18 +68,39 @@ def input_table(
             "options",
             "",
             "correction by static runs",
-            {"static": "tap offsets", "none": "none"}[correct],
+            {
+                "static": "tap offsets",
+                "offsets": "tap offsets, those of the flowing runs too",
+                "none": "none",
+            }[correct],
             None,
             None,
             None,
         ),
         ("options", "", "left out by hand", ", ".join(exclude) or "nothing", None, None, None),
-        ("options", "", "flagged readings", "kept in the fits" if keep_all else "left out", None, None, None),
+        (
+            "options",
+            "",
+            "flagged single readings",
+            "kept in the fits" if keep_all else "left out",
+            None,
+            None,
+            None,
+        ),
         (
             "options",
             "",
             "single readings",
             f"not judged: {unjudged}" if unjudged else "judged",
+            None,
+            None,
+            None,
+        ),
+        (
+            "options",
+            "",
+            "taps and line over all runs",
+            f"not judged: {line_unjudged}" if line_unjudged else "judged",
             None,
             None,
             None,
@@ -124,7 +148,11 @@ def _medium(survey: Survey) -> list[_Row]:
 def _fittings(survey: Survey) -> list[_Row]:
     rows: list[_Row] = []
     for fitting in survey.fittings:
+        if fitting.kind is not None:
+            rows.append(("fitting", fitting.name, "kind", fitting.kind, None, None, None))
         rows.append(("fitting", fitting.name, "at", None, "chainage", fitting.at, None))
+        if fitting.length:
+            rows.append(("fitting", fitting.name, "length", None, "length", fitting.length, None))
         if fitting.loss_coefficient is None:
             rows.append(("fitting", fitting.name, "loss coefficient", "to be fitted", None, None, None))
         else:
@@ -160,7 +188,10 @@ def _gauge(gauge: Gauge) -> list[_Row]:
     if gauge.calibration is not None:
         rows.append(("gauge", gauge.name, "calibration", gauge.calibration.file, None, None, None))
     for place, leg in enumerate(gauge.legs, start=1):
-        ends = [end if isinstance(end, str) else f"{end:g} m" for end in (leg.start, leg.end)]
+        ends = [
+            end if isinstance(end, str) else f"{end:g} m" + (f" ± {1000 * u:.2g} mm" if u else "")
+            for end, u in ((leg.start, leg.start_u), (leg.end, leg.end_u))
+        ]
         text = f"{leg.fluid} from {ends[0]} to {ends[1]}"
         rows.append(("gauge", gauge.name, f"leg {place}", text, None, None, None))
     small = _SMALL[kind.reading]

@@ -8,10 +8,12 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
+from gradeline.reduction.ailment_sentences import static_offset_words, tap_sentence
 from gradeline.reduction.corrections import Corrections
 from gradeline.reduction.heads import observation_kinds
 from gradeline.reduction.line import Line
 from gradeline.reduction.runs import Flowing
+from gradeline.reduction.static_offsets import standing_offsets
 from gradeline.reduction.tables import DRAWING_TABLES, RESULT_TABLES
 from gradeline.reduction.tabulate.frames import frame
 from gradeline.survey import Survey
@@ -20,7 +22,6 @@ __all__ = ["head_table", "scatter_table", "tap_table"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
-_LATER = "not estimated in this version"
 
 
 def head_table(
@@ -53,12 +54,16 @@ def head_table(
         both = [flowing.reasons[place[name]] for name in (one.tap, one.tap_2) if name is not None]
         part[flowing.disturbed[:, i], i] = "disturbed"
         why[flowing.disturbed[:, i], i] = "; ".join(filter(None, both))
+    for i, text in enumerate(flowing.ailments.why):
+        if text:
+            left = flowing.ailments.left_out[i] & ~flowing.disturbed[:, i]
+            part[left, i], why[left, i] = "excluded", text
     part[flowing.excluded], why[flowing.excluded] = "excluded", "left out by hand"
     part[flowing.fits.flagged] = "outlier"
     why[flowing.fits.flagged] = "outlying against the other taps of the run"
     flag[rows], reason[rows] = part, why
     at_rest = np.isin(np.arange(shape[0]), static)[:, None]
-    flag[at_rest & excluded] = "excluded"
+    flag[at_rest & excluded], reason[at_rest & excluded] = "excluded", "left out by hand"
     unread = ~np.isfinite(head)
     flag[unread], reason[unread] = None, "not read"
     chainage = [line.chainage[place[one.tap]] for one in survey.observations]
@@ -91,35 +96,51 @@ def _at_rest(head: Array, used: Mask, levels: Array) -> Array:
     return np.asarray(levels @ np.linalg.lstsq(levels[used], head[used], rcond=None)[0])
 
 
-def tap_table(survey: Survey, corrections: Corrections, base: Array, excluded: Mask) -> pd.DataFrame:
-    """Return the table of taps, with their offsets in the static runs."""
+def tap_table(
+    survey: Survey, corrections: Corrections, flowing: Flowing, base: Array, excluded: Mask
+) -> pd.DataFrame:
+    """Return the table of taps: offsets, in the static runs or else over the others, edge coefficients, what ails them."""
     rows: dict[str, list[Any]] = {name: [] for name in RESULT_TABLES["taps"]}
     noise = np.nan_to_num(base) * np.sqrt(np.diagonal(corrections.covariance))
     own = {one.tap: i for i, one in enumerate(survey.observations) if one.tap_2 is None}
+    ailments = flowing.ailments
+    found, place = (
+        ailments.diagnosis,
+        {name: s for s, (name, is_tap) in enumerate(ailments.subjects) if is_tap},
+    )
+    standing = standing_offsets(survey, corrections, noise, flowing.fits.pooled_dof)
+    named = {
+        survey.observations[i].tap: static_offset_words(corrections.offset[i], noise[i])
+        for i in np.flatnonzero(standing)
+    }
+    named |= {one.label: tap_sentence(one) for one in ailments.taps if one.is_tap}
     for tap in survey.taps:
-        i = own.get(tap.name)
+        i, s = own.get(tap.name), place.get(tap.name)
         offset = np.nan if i is None else corrections.offset[i]
-        known = i is not None and np.isfinite(offset) and base[i] > 0
+        offset_u = noise[i] if i is not None and np.isfinite(offset) and base[i] > 0 else np.nan
+        edge = edge_u = np.nan
         why = (
             "read only through differential gauges"
             if i is None
             else "left out by hand"
             if excluded[:, i].all()
-            else "no static run read this tap"
-            if not np.isfinite(offset)
             else "offset against the mean of the taps in the static runs"
-            if corrections.applied
+            if np.isfinite(offset) and corrections.applied
             else "offset in the static runs, not taken off"
+            if np.isfinite(offset)
+            else "no static run read this tap"
         )
-        values = (
-            tap.name,
-            offset,
-            noise[i] if known else np.nan,
-            np.nan,
-            np.nan,
-            None,
-            f"{why}; edge coefficient and diagnosis: {_LATER}",
-        )
+        if found is None or not found.done or s is None:
+            reason = None if found is None else found.reason
+            why += f"; edge coefficient and diagnosis: {reason or 'no reading of its own'}"
+        else:
+            edge, edge_u = found.edge[s], found.edge_u[s]
+            if not np.isfinite(offset) and np.isfinite(found.offset[s]):
+                offset, offset_u = found.offset[s], found.offset_u[s]
+                why += ": offset over the flowing runs, if all other taps are sound; not taken off"
+            if not np.isfinite(edge):
+                why += "; edge coefficient: the runs do not tell it from the line and the offset"
+        values = (tap.name, offset, offset_u, edge, edge_u, named.get(tap.name), why)
         for name, entry in zip(rows, values, strict=True):
             rows[name].append(entry)
     return frame("taps", rows)
@@ -134,7 +155,7 @@ def scatter_table(survey: Survey, flowing: Flowing, floor: Array) -> pd.DataFram
         note = (
             "no freedom left in the runs"
             if not np.isfinite(part.pooled)
-            else f"found {1000 * part.pooled:.2g} mm over all runs; the stated one holds"
+            else f"as stated; the runs themselves show no more than that ({1000 * part.pooled:.2g} mm)"
             if stated > part.pooled
             else "found over all runs"
         )

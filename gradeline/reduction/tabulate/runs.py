@@ -7,6 +7,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from gradeline.fitting.straightness import FEWEST_TAPS, run_straightness, shared_curve
+from gradeline.reduction.faint_flows import FAINT_FLOW, faint_flows
 from gradeline.reduction.friction import Friction
 from gradeline.reduction.line import Line
 from gradeline.reduction.media import Media
@@ -33,6 +34,7 @@ def run_table(survey: Survey, media: Media, line: Line, flowing: Flowing, fricti
     reasons = np.full((runs, reaches), None, dtype=object)
     reasons[:] = "static run"
     reasons[flowing.rows] = _run_reasons(flowing, friction)
+    reasons[flowing.rows[faint_flows(survey, flowing)]] = FAINT_FLOW
     regimes = np.full((runs, reaches), "static", dtype=object)
     regimes[flowing.rows] = friction.regime
     positive = friction.roughness_signed >= 0

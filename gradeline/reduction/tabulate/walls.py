@@ -1,4 +1,4 @@
-"""Walls and fittings over all runs."""
+"""Walls over all runs."""
 
 from __future__ import annotations
 
@@ -8,28 +8,24 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from gradeline.fitting.losses import fit_loss_coefficient
 from gradeline.hydraulics.friction import roughness_reynolds
-from gradeline.reduction.friction import Friction
-from gradeline.reduction.line import Line
-from gradeline.reduction.media import Media
-from gradeline.reduction.runs import Flowing
+from gradeline.reduction.faint_flows import FAINT_FLOW
 from gradeline.reduction.tables import DRAWING_TABLES, RESULT_TABLES
 from gradeline.reduction.tabulate.frames import frame
 from gradeline.reduction.walls import Wall, bore_variants
 
-__all__ = ["bore_table", "fitting_table", "wall_table"]
+__all__ = ["bore_table", "wall_table"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 _MISSING = {"roughness_resolved": None, "hydraulically_smooth": None}
-_LATER = "not estimated in this version"
 #: Changes of the bore for which the roughness is worked out again.
 _BORE_CHANGES = (-0.05, -0.02, -0.01, 0.0, 0.01, 0.02, 0.05)
 
 
-def wall_table(walls: tuple[Wall, ...]) -> pd.DataFrame:
-    """Return the table of walls."""
+def wall_table(walls: tuple[Wall, ...], conveyance: pd.DataFrame) -> pd.DataFrame:
+    """Return the table of walls; `conveyance` has Hazen–Williams C and Manning n of each at its highest flow."""
+    at_highest = {str(row["wall"]): row for row in conveyance.to_dict("records")}
     rows: dict[str, list[Any]] = {name: [] for name in RESULT_TABLES["walls"]}
     for wall in walls:
         fit = wall.fit
@@ -52,9 +48,10 @@ def wall_table(walls: tuple[Wall, ...]) -> pd.DataFrame:
         rows["law_trend"].append(fit.trend)
         rows["law_trend_u"].append(fit.trend_u)
         rows["runs_used"].append(int(fit.used.any(axis=1).sum()))
-        rows["hazen_williams_c"].append(np.nan)
-        rows["manning_n"].append(np.nan)
-        rows["reason"].append("; ".join(_wall_reasons(wall)))
+        older = at_highest.get(wall.name, {})
+        for name in ("hazen_williams_c", "manning_n"):
+            rows[name].append(older.get(name, np.nan))
+        rows["reason"].append("; ".join(filter(None, [*_wall_reasons(wall), older.get("caution")])))
     return frame("walls", rows)
 
 
@@ -75,13 +72,18 @@ def _wall_reasons(wall: Wall) -> list[str]:
     elif fit.low == 0:
         reasons.append("the roughness is not told from zero: the upper bound is what the readings say")
     if wall.faint.any():
-        reasons.append(
-            f"{int(wall.faint.any(axis=1).sum())} runs left out: S does not exceed twice its uncertainty"
-        )
+        faint = int(wall.faint.any(axis=1).sum())
+        reasons.append(f"{_runs(faint)} left out: S does not exceed twice its uncertainty")
+    still = int((wall.turbulent.any(axis=1) & wall.unmoved).sum())
+    if still:
+        reasons.append(f"{_runs(still)} left out: {FAINT_FLOW}")
     if not np.isfinite(fit.trend):
         reasons.append("no trend over Re: too few turbulent runs")
-    reasons.append(f"Hazen–Williams C and Manning n: {_LATER}")
     return reasons
+
+
+def _runs(count: int) -> str:
+    return "1 run" if count == 1 else f"{count} runs"
 
 
 def _fastest(wall: Wall) -> tuple[float, float]:
@@ -110,66 +112,3 @@ def bore_table(walls: tuple[Wall, ...]) -> pd.DataFrame:
             for name, entry in zip(rows, (wall.name, change, (1 + change) ** 5 - 1, roughness), strict=True):
                 rows[name].append(entry)
     return frame("bore_sensitivity", rows)
-
-
-def fitting_table(
-    line: Line, media: Media, flowing: Flowing, friction: Friction, *, level: float
-) -> pd.DataFrame:
-    """Return the table of fittings: fitted ones over all runs, given ones as they were given."""
-    rows: dict[str, list[Any]] = {name: [] for name in RESULT_TABLES["fittings"]}
-    column = 1 + len(line.diameter)
-    fastest = int(flowing.flow.argmax()) if len(flowing.flow) else None
-    for m, fitting in enumerate(line.fittings):
-        k = line.reference[m]
-        if fitting.loss_coefficient is not None:
-            given = fitting.loss_coefficient
-            value, u, low, high = given.value, np.nan if given.u is None else given.u, np.nan, np.nan
-            reason: str | None = "given, not fitted"
-        else:
-            head = flowing.velocity[:, k] ** 2 / (2 * media.gravity)
-            estimate = flowing.fits.lines.parameters[:, column] / head
-            own = flowing.own[:, column] / head - 2 * estimate * flowing.reach_flow_u[:, k]
-            effect = flowing.effect[:, column] / head[:, None] + estimate[:, None] * _head_effects(
-                flowing, int(k)
-            )
-            fit = fit_loss_coefficient(
-                estimate,
-                flowing.random[:, column, column] / head**2 + own**2,
-                effect,
-                level=level,
-                dof=flowing.fits.pooled_dof or np.inf,
-            )
-            value, u, low, high = fit.coefficient, fit.u, fit.low, fit.high
-            reason = None if np.isfinite(value) else _no_coefficient(line, m, estimate)
-            column += 1
-        length = np.nan
-        if fastest is not None and np.isfinite(value) and np.isfinite(friction.factor[fastest, k]):
-            length = value * line.diameter[k] / friction.factor[fastest, k]
-        for name, entry in zip(rows, (fitting.name, value, u, low, high, length, reason), strict=True):
-            rows[name].append(entry)
-    return frame("fittings", rows)
-
-
-def _head_effects(flowing: Flowing, k: int) -> Array:
-    """Relative change of K by the velocity head it is counted in, for each run and shared input."""
-    shape = flowing.velocity.shape
-    found = [
-        (0.0 if one.diameter is None else 4.0 * float(one.diameter[k]))
-        - 2.0 * np.broadcast_to(one.flow, shape)[:, k]
-        + one.gravity
-        for one in flowing.inputs
-    ]
-    return np.stack(found, axis=1) if found else np.zeros((shape[0], 0))
-
-
-def _no_coefficient(line: Line, m: int, estimate: Array) -> str:
-    if not len(estimate):
-        return "no flowing run"
-    if np.isfinite(estimate).any():
-        return (
-            "one line through as many readings as it has parameters: no weight without a stated uncertainty"
-        )
-    at = line.fittings[m].at
-    same = [other.name for i, other in enumerate(line.fittings) if i != m and line.fitted[i]]
-    between = f", and {' and '.join(same)} may lie between the same taps" if same else ""
-    return f"the usable taps do not separate the loss at {at:g} m from the friction of the reaches beside it{between}"
