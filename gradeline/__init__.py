@@ -10,17 +10,40 @@ import importlib
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from gradeline.comparison import Comparison, compare
     from gradeline.errors import GradelineError
-    from gradeline.loader import read_survey
+    from gradeline.loader import read_plan, read_survey
+    from gradeline.planning import Plan, plan
+    from gradeline.prediction import Prediction, predict
     from gradeline.reduction import Reduction, reduce
     from gradeline.survey import Survey
 
-__all__ = ["GradelineError", "Reduction", "Survey", "read_survey", "reduce"]
+__all__ = [
+    "Comparison",
+    "GradelineError",
+    "Plan",
+    "Prediction",
+    "Reduction",
+    "Survey",
+    "compare",
+    "plan",
+    "predict",
+    "read_plan",
+    "read_survey",
+    "reduce",
+]
 
 _HOMES = {
+    "Comparison": "gradeline.comparison",
+    "compare": "gradeline.comparison",
     "GradelineError": "gradeline.errors",
+    "Plan": "gradeline.planning",
     "Reduction": "gradeline.reduction",
     "Survey": "gradeline.survey",
+    "Prediction": "gradeline.prediction",
+    "plan": "gradeline.planning",
+    "predict": "gradeline.prediction",
+    "read_plan": "gradeline.loader",
     "read_survey": "gradeline.loader",
     "reduce": "gradeline.reduction",
 }

@@ -24,10 +24,7 @@ def main() -> None:
     except Exception as error:
         if os.environ.get("GRADELINE_TRACEBACK"):
             raise
-        said = " ".join(str(error).split())[:200]
-        print(
-            f"gradeline met an error that it does not know ({type(error).__name__}: {said}). Please report it, with "
-            "the survey if you can; GRADELINE_TRACEBACK=1 in the environment shows where it happened.",
-            file=sys.stderr,
-        )
+        from gradeline.cli.outcome import unknown_error  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+        print(unknown_error(error), file=sys.stderr)
         sys.exit(1)

@@ -6,23 +6,25 @@ command line are answered at once.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated, Literal
+from typing import Annotated, Any, Literal
 
 import typer
+from typer.core import TyperGroup
 
-from gradeline.errors import GradelineError, OutputError, SurveyError, UsageError
-
-if TYPE_CHECKING:
-    from gradeline.survey import Survey
+from gradeline.cli import compare as compare_command
+from gradeline.cli import plan as plan_command
+from gradeline.cli import predict as predict_command
+from gradeline.cli.outcome import NOT_WRITTEN, Outcome, attempt
+from gradeline.errors import OutputError, UsageError
 
 __all__ = ["FORMATS", "app"]
 
 #: What can be written, by the name that ``--formats`` takes.
-FORMATS = ("html", "json", "csv", "svg", "png")
-
-_WRONG_USE, _SURVEY_PROBLEMS, _NOT_WRITTEN = 2, 3, 4
+FORMATS = ("html", "json", "csv", "svg", "png", "pdf", "xlsx")
+#: What is written unless somebody asks for another choice.
+DEFAULT_FORMATS = FORMATS[:5]
 
 # For one table of heads, which says nothing of its line.
 _Diameter = Annotated[
@@ -35,16 +37,29 @@ _Temperature = Annotated[
     str | None,
     typer.Option("--temperature", metavar="Q", help='Temperature, for one table of heads: "18 degC".'),
 ]
+_Json = Annotated[bool, typer.Option("--json", help="Print the result as JSON, for other programs.")]
 _SURVEYS = "Surveys: folders, .xlsx workbooks, or tables of heads (.csv)."
+
+
+class _Commands(TyperGroup):
+    """The commands; of a wrong choice the rule is told, not the name of an exception."""
+
+    def invoke(self, ctx: Any) -> Any:
+        try:
+            return super().invoke(ctx)
+        except typer.BadParameter as error:
+            error.message = error.message.removeprefix("Value error, ")
+            raise
+
 
 app = typer.Typer(
     name="gradeline",
+    cls=_Commands,
     help="From manometer and gauge readings along a pipe to head loss, friction factor and wall roughness, each "
     "with its uncertainty.\n\nExample: gradeline reduce data_demo/copper_bench",
     epilog="Exit codes: 0 done (flags are results, not failures), 1 an error that gradeline does not know, 2 wrong "
     "use, 3 the survey has problems, 4 output could not be written; of several surveys the highest.",
     no_args_is_help=True,
-    add_completion=False,
     pretty_exceptions_enable=False,
     rich_markup_mode=None,
     context_settings={"help_option_names": ["-h", "--help"]},
@@ -73,14 +88,22 @@ def _say(text: str) -> None:
     typer.echo(text, err=True)
 
 
-def _tell_problems(source: Path, error: GradelineError) -> None:
-    if isinstance(error, SurveyError):
-        count = len(error.problems)
-        _say(f"{source}: {count} problem{'s' * (count != 1)}")
-        for problem in error.problems:
-            _say(f"  {problem}")
-    else:
-        _say(f"{source}: {error}")
+def _tell(outcome: Outcome) -> None:
+    for line in outcome.lines():
+        _say(line)
+
+
+def _print_json(value: Any) -> None:
+    from gradeline.cli.plain import print_json  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+    print_json(value)
+
+
+def _leave(outcomes: Sequence[Outcome]) -> None:
+    """End with the highest exit code."""
+    code = max(outcome.code for outcome in outcomes)
+    if code:
+        raise typer.Exit(code)
 
 
 @app.command(short_help="Tell every problem of surveys, and what was understood.")
@@ -89,30 +112,49 @@ def check(
     diameter: _Diameter = None,
     flow: _Flow = None,
     temperature: _Temperature = None,
+    as_json: _Json = False,
 ) -> None:
     """Load surveys, tell every problem at once, and say what was understood.
 
     Example: gradeline check data_demo/copper_bench
     """
 
-    def one(source: Path) -> None:
-        from gradeline.cli.understood import understood  # noqa: PLC0415 (loaded when asked for: start-up time)
+    def one(source: Path) -> dict[str, Any] | None:
         from gradeline.loader import read_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
 
         read = read_survey(source, diameter=diameter, flow=flow, temperature=temperature)
+        if as_json:
+            from gradeline.cli.plain import survey_record  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+            return survey_record(read)
+        from gradeline.cli.understood import understood  # noqa: PLC0415 (loaded when asked for: start-up time)
+
         if source != surveys[0]:
             typer.echo()
         typer.echo(understood(read))
         _say(f"{source}: no problems")
+        return None
 
-    code = max(_attempt(one, source) for source in surveys)
-    if code:
-        raise typer.Exit(code)
+    outcomes = []
+    for source in surveys:
+        outcomes.append(attempt(lambda source=source: one(source), source))  # type: ignore[misc]
+        _tell(outcomes[-1])
+    if as_json:
+        _print_outcomes(outcomes, "survey")
+    _leave(outcomes)
+
+
+def _print_outcomes(outcomes: Sequence[Outcome], name: str) -> None:
+    """What became of each survey as JSON, its result under a name."""
+    from gradeline.cli.plain import outcome_record  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+    _print_json({"surveys": [outcome_record(outcome, **{name: outcome.result}) for outcome in outcomes]})
 
 
 @app.command(short_help="Tell what each gauge can show, and which gauge fluid suits.")
 def gauges(
     surveys: Annotated[list[Path], typer.Argument(metavar="SURVEY...", help=_SURVEYS)],
+    as_json: _Json = False,
 ) -> None:
     """Tell the range of head that each gauge can show, its resolution as head, and the gauge fluid that suits.
 
@@ -122,11 +164,10 @@ def gauges(
     Example: gradeline gauges data_demo/copper_bench
     """
 
-    def one(source: Path) -> None:
-        from gradeline.cli.gauges import gauges_told  # noqa: PLC0415 (loaded when asked for: start-up time)
+    def one(source: Path) -> list[dict[str, Any]] | None:
         from gradeline.loader import read_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
 
-        if source != surveys[0]:
+        if source != surveys[0] and not as_json:
             typer.echo()
         try:
             survey = read_survey(source)
@@ -134,16 +175,68 @@ def gauges(
             raise UsageError(
                 "one table of heads has no gauges; give a survey that describes them in survey.toml"
             ) from None
-        typer.echo(gauges_told(survey))
+        if as_json:
+            from gradeline.cli.plain import plain  # noqa: PLC0415 (loaded when asked for: start-up time)
+            from gradeline.reduction.gauge_ranges import gauge_ranges  # noqa: PLC0415 (loaded when asked for: start-up time)
 
-    code = max(_attempt(one, source) for source in surveys)
-    if code:
-        raise typer.Exit(code)
+            return [plain(each) for each in gauge_ranges(survey)]
+        from gradeline.cli.gauges import gauges_told  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+        typer.echo(gauges_told(survey))
+        return None
+
+    outcomes = []
+    for source in surveys:
+        outcomes.append(attempt(lambda source=source: one(source), source))  # type: ignore[misc]
+        _tell(outcomes[-1])
+    if as_json:
+        _print_outcomes(outcomes, "gauges")
+    _leave(outcomes)
+
+
+@app.command(short_help="Write a blank recording sheet to print.")
+def sheet(
+    survey: Annotated[
+        Path,
+        typer.Argument(
+            metavar="SURVEY", help="Survey, with or without readings: a folder or an .xlsx workbook."
+        ),
+    ],
+    out: Annotated[
+        Path | None,
+        typer.Option("--out", metavar="FILE", help="The PDF: SURVEY/recording_sheet.pdf by default."),
+    ] = None,
+    runs: Annotated[int, typer.Option("--runs", min=1, max=500, help="Flowing runs to leave rows for.")] = 10,
+    repeats: Annotated[int, typer.Option("--repeats", min=1, max=50, help="Rows of each run.")] = 1,
+    paper: Annotated[Literal["a4", "letter"], typer.Option("--paper", help="Size of the sheets.")] = "a4",
+    overwrite: Annotated[
+        bool, typer.Option("--overwrite", help="Replace a sheet that is there already.")
+    ] = False,
+    as_json: _Json = False,
+) -> None:
+    """Write a blank recording sheet to print, column for column as readings.csv has or will have them.
+
+    Example: gradeline sheet data_demo/copper_bench --runs 10 --repeats 2 --paper letter
+    """
+    from gradeline.cli.sheet import write_sheet  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+    outcome = attempt(
+        lambda: write_sheet(survey, out, runs=runs, repeats=repeats, paper=paper, overwrite=overwrite), survey
+    )
+    _tell(outcome)
+    if as_json:
+        from gradeline.cli.plain import outcome_record  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+        _print_json(outcome_record(outcome, **(outcome.result or {"written_to": None, "columns": []})))
+    elif outcome.result is not None:
+        _say(f"Written to {outcome.result['written_to']}")
+    _leave([outcome])
 
 
 @app.command(short_help="Write a commented survey to fill in.")
 def new(
     folder: Annotated[Path, typer.Argument(metavar="DIR", help="Folder to make; absent or empty.")],
+    as_json: _Json = False,
 ) -> None:
     """Write a commented survey to fill in.
 
@@ -154,8 +247,12 @@ def new(
     try:
         write_new(folder)
     except OutputError as error:
+        if as_json:
+            _print_json({"folder": str(folder), "exit_code": NOT_WRITTEN, "message": str(error), "files": []})
         _say(str(error))
-        raise typer.Exit(_NOT_WRITTEN) from None
+        raise typer.Exit(NOT_WRITTEN) from None
+    if as_json:
+        _print_json({"folder": str(folder), "exit_code": 0, "message": None, "files": list(NEW_FILES)})
     _say(f"Written to {folder}: {', '.join(NEW_FILES)}")
     _say(f"Fill in the values that begin with '?', then run: gradeline check {folder}")
 
@@ -174,6 +271,32 @@ def _formats(value: str) -> str:
     return value
 
 
+# How a survey is to be reduced.
+_Level = Annotated[
+    float, typer.Option("--level", metavar="P", callback=_level, help="Coverage of the intervals.")
+]
+_Correct = Annotated[
+    Literal["static", "offsets", "none"],
+    typer.Option(
+        "--correct",
+        help="Which offsets of the taps are taken off: those of the static runs; those too that the flowing runs show; none.",
+    ),
+]
+_KeepAll = Annotated[
+    bool,
+    typer.Option("--keep-all", help="Fit with the flagged single readings too; runs off the law stay out."),
+]
+_Exclude = Annotated[
+    list[str] | None,
+    typer.Option("--exclude", metavar="TAP|RUN:TAP", help="Leave a reading out; may be repeated."),
+]
+_NoMonteCarlo = Annotated[
+    bool,
+    typer.Option("--no-monte-carlo", help="Leave the intervals of S, f and K as first order has them."),
+]
+_Overwrite = Annotated[bool, typer.Option("--overwrite", help="Replace results that are there already.")]
+
+
 @app.command(short_help="Reduce surveys and write their reports.")
 def reduce(
     surveys: Annotated[list[Path], typer.Argument(metavar="SURVEY...", help=_SURVEYS)],
@@ -186,12 +309,8 @@ def reduce(
             "file; of several surveys, a folder in DIR each.",
         ),
     ] = None,
-    overwrite: Annotated[
-        bool, typer.Option("--overwrite", help="Replace results that are there already.")
-    ] = False,
-    level: Annotated[
-        float, typer.Option("--level", metavar="P", callback=_level, help="Coverage of the intervals.")
-    ] = 0.95,
+    overwrite: _Overwrite = False,
+    level: _Level = 0.95,
     formats: Annotated[
         str,
         typer.Option(
@@ -200,19 +319,29 @@ def reduce(
             callback=_formats,
             help=f"What to write, set apart by commas: any of {', '.join(FORMATS)}.",
         ),
-    ] = ",".join(FORMATS),
-    correct: Annotated[
-        Literal["static", "none"],
-        typer.Option("--correct", help="Whether the static runs correct the offsets of the taps."),
-    ] = "static",
-    keep_all: Annotated[bool, typer.Option("--keep-all", help="Fit with the flagged readings too.")] = False,
-    exclude: Annotated[
-        list[str] | None,
-        typer.Option("--exclude", metavar="TAP|RUN:TAP", help="Leave a reading out; may be repeated."),
-    ] = None,
+    ] = ",".join(DEFAULT_FORMATS),
+    units: Annotated[
+        Literal["si", "us"],
+        typer.Option(
+            "--units",
+            help="Units of page, PDF, figures and terminal: SI or US customary; json, csv and xlsx are always SI.",
+        ),
+    ] = "si",
+    paper: Annotated[Literal["a4", "letter"], typer.Option("--paper", help="Sheets of the PDF.")] = "a4",
+    correct: _Correct = "static",
+    keep_all: _KeepAll = False,
+    exclude: _Exclude = None,
+    no_monte_carlo: _NoMonteCarlo = False,
     diameter: _Diameter = None,
     flow: _Flow = None,
     temperature: _Temperature = None,
+    as_json: Annotated[
+        bool,
+        typer.Option(
+            "--json",
+            help="Print the results as JSON, for other programs; files are then written only where --out is given.",
+        ),
+    ] = False,
 ) -> None:
     """Reduce surveys: fit every run, find wrong readings, estimate the wall, write the report.
 
@@ -221,75 +350,98 @@ def reduce(
     A table with the columns chainage [m] and head [mm] alone: gradeline reduce heads.csv --diameter "26.6 mm" --flow
     "0.84 L/s" --temperature "18 degC"
     """
-    chosen = tuple(each.strip() for each in formats.split(","))
-    targets = _targets(surveys, out)
-    excluded = tuple(exclude or ())
+    from gradeline.cli.reducing import Choices, reduce_surveys, targets_of  # noqa: PLC0415 (loaded when asked for: start-up time)
 
-    def one(source: Path, target: Path) -> None:
-        from gradeline.loader import read_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
-
-        read = read_survey(source, diameter=diameter, flow=flow, temperature=temperature)
-        _check_exclusions(excluded, read)
-        from gradeline.reduction import reduce as reduce_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
-        from gradeline.report import terminal_summary, write  # noqa: PLC0415 (loaded when asked for: start-up time)
-
-        reduction = reduce_survey(read, level=level, correct=correct, keep_all=keep_all, exclude=excluded)
-        write(reduction, target, formats=chosen, overwrite=overwrite)
-        typer.echo(terminal_summary(reduction))
-        _say(f"Written to {target / 'report.html' if 'html' in chosen else target}")
-
-    code = max(_attempt(one, source, target) for source, target in zip(surveys, targets, strict=True))
+    targets = targets_of(surveys, out)
+    choices = Choices(
+        level=level,
+        correct=correct,
+        keep_all=keep_all,
+        exclude=tuple(exclude or ()),
+        monte_carlo=not no_monte_carlo,
+        diameter=diameter,
+        flow=flow,
+        temperature=temperature,
+    )
+    code = reduce_surveys(
+        surveys,
+        [None] * len(surveys) if as_json and out is None else targets,
+        choices,
+        formats=tuple(each.strip() for each in formats.split(",")),
+        overwrite=overwrite,
+        units=units,
+        paper=paper,
+        as_json=as_json,
+    )
     if code:
         raise typer.Exit(code)
 
 
-def _attempt(action: Callable[..., None], source: Path, *targets: Path) -> int:
-    """Do one survey; return the exit code that its errors ask for."""
-    try:
-        action(source, *targets)
-    except typer.BadParameter as error:
-        _say(f"{source}: {error.message}")
-        return _WRONG_USE
-    except UsageError as error:
-        _say(f"{source}: {error}")
-        return _WRONG_USE
-    except OutputError as error:
-        _say(f"{source}: {error}")
-        return _NOT_WRITTEN
-    except GradelineError as error:
-        _tell_problems(source, error)
-        return _SURVEY_PROBLEMS
-    return 0
+@app.command(short_help="Reduce a survey again whenever it is saved, in an open page.")
+def watch(
+    survey: Annotated[
+        Path,
+        typer.Argument(metavar="SURVEY", help="A folder, an .xlsx workbook, or a table of heads (.csv)."),
+    ],
+    out: Annotated[
+        Path | None,
+        typer.Option(
+            "--out", metavar="DIR", help="Folder for the results; by default one that is removed at the end."
+        ),
+    ] = None,
+    overwrite: _Overwrite = False,
+    open_browser: Annotated[bool, typer.Option("--open", help="Open the page in the browser.")] = False,
+    level: _Level = 0.95,
+    correct: _Correct = "static",
+    keep_all: _KeepAll = False,
+    exclude: _Exclude = None,
+    no_monte_carlo: _NoMonteCarlo = False,
+    units: Annotated[
+        Literal["si", "us"], typer.Option("--units", help="Units of the page: SI or US customary.")
+    ] = "si",
+    diameter: _Diameter = None,
+    flow: _Flow = None,
+    temperature: _Temperature = None,
+    as_json: Annotated[
+        bool,
+        typer.Option("--json", help="Print each event as JSON on a line of its own, for other programs."),
+    ] = False,
+) -> None:
+    """Reduce a survey again whenever one of its files is saved, and keep the open page up to date.
+
+    While the survey has problems the last good page stays, with a note of them. The page is served to this machine alone;
+    Ctrl-C ends it.
+
+    Example: gradeline watch data_demo/copper_bench --open
+    """
+    from gradeline.cli.reducing import Choices  # noqa: PLC0415 (loaded when asked for: start-up time)
+    from gradeline.cli.watch.following import watch_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+    choices = Choices(
+        level=level,
+        correct=correct,
+        keep_all=keep_all,
+        exclude=tuple(exclude or ()),
+        monte_carlo=not no_monte_carlo,
+        diameter=diameter,
+        flow=flow,
+        temperature=temperature,
+    )
+    code = watch_survey(
+        survey,
+        choices,
+        out=out,
+        overwrite=overwrite,
+        units=units,
+        open_browser=open_browser,
+        as_json=as_json,
+    )
+    if code:
+        raise typer.Exit(code)
 
 
-def _targets(surveys: Sequence[Path], out: Path | None) -> list[Path]:
-    """Where the results of each survey go."""
-    if out is None:
-        return [
-            source.with_name(f"{source.stem}_reduction") if source.is_file() else source / "reduction"
-            for source in surveys
-        ]
-    if len(surveys) == 1:
-        return [out]
-    targets = [out / (source.stem if source.is_file() else source.resolve().name) for source in surveys]
-    for place, target in enumerate(targets):
-        if target in targets[:place]:
-            raise typer.BadParameter(
-                f"two surveys are called {target.name!r}; reduce them to different --out"
-            )
-    return targets
-
-
-def _check_exclusions(excluded: Sequence[str], survey: Survey) -> None:
-    """Every exclusion names readings that the survey has."""
-    taps, runs = set(survey.readings.columns), set(survey.readings.index)
-    for text in excluded:
-        if text in taps:
-            continue
-        run, _, tap = text.rpartition(":")
-        if tap not in taps:
-            raise typer.BadParameter(
-                f"--exclude {text}: there is no tap {tap!r}; taps are {', '.join(map(str, survey.readings.columns))}"
-            )
-        if run not in runs:
-            raise typer.BadParameter(f"--exclude {text}: there is no run {run!r}; write --exclude RUN:TAP")
+app.command(short_help="Tell before a test what it will show, and what buys most.")(plan_command.plan)
+app.command(short_help="Predict head losses at other flows from a reduction.")(predict_command.predict)
+app.command(short_help="Compare surveys: is a change of the wall real, and how fast does it age.")(
+    compare_command.compare
+)

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import textwrap
 from importlib.resources import files
 from pathlib import Path
 
 from gradeline.cli.flow_lines import flow_template
 from gradeline.errors import OutputError
+from gradeline.fitting_kinds import CHANGES_OF_BORE, fitting_kinds
 from gradeline.gauge_kinds import GAUGE_KINDS, GaugeKey
 from gradeline.loader.gauge_keys import EXAMPLES
 
@@ -18,7 +20,7 @@ NEW_FILES = ("survey.toml", "taps.csv", "readings.csv")
 _LEGS = (
     "#   [[gauge.board.leg]]           # from the upstream tap on, as many as there are",
     '#   fluid = "mercury"             # or any name with density = "1594 kg/m^3"',
-    '#   from = "T1"                   # a tap, an elevation such as "1.2 m", or the name of a level',
+    '#   from = "T1"                   # a tap, an elevation such as "1.2 m +/- 1 mm", or the name of a level',
     "#   to = \"a\"                     # that is read: then readings.csv has a column 'board a [mm]'",
 )
 
@@ -48,10 +50,19 @@ def write_new(folder: Path) -> None:
                     text.replace("{kinds}", _kinds())
                     .replace("{keys}", _gauge_keys())
                     .replace("{flow}", flow_template())
+                    .replace("{fittings}", _fittings())
                 )
             folder.joinpath(name).write_text(text, encoding="utf-8")
     except OSError as error:
         raise OutputError(f"{folder} cannot be written ({error.strerror}); name another folder") from error
+
+
+def _fittings() -> str:
+    """The kinds of fittings as comments; those at a change of bore stand between two reaches."""
+    named = ", ".join(name for name in fitting_kinds() if name not in CHANGES_OF_BORE)
+    changes = ", ".join(CHANGES_OF_BORE)
+    told = textwrap.wrap(f"{named}; and between two reaches: {changes}", 86)
+    return "\n".join(f"{'#':<32}# {line}" for line in told)
 
 
 def _kinds() -> str:
@@ -80,7 +91,8 @@ def _gauge_keys() -> str:
         seen |= {f"{name} {key.meaning}" for name, key in known.keys.items()}
     for text, kinds in list(told.items())[1:]:
         named = " or ".join(f'"{kind}"' for kind in kinds)
-        lines += [f"# kind = {named} takes:", text]
+        none = f"# kind = {named} takes none: its readings are piezometric heads, worked out already"
+        lines += [f"# kind = {named} takes:", text] if text else [none]
     return "\n".join(lines)
 
 

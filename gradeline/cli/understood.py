@@ -59,6 +59,20 @@ def understood(survey: Survey) -> str:
             ],
         ),
         _table(
+            "Known of the walls",
+            ("wall", "published, mm", "source", "earlier, mm", "source"),
+            [
+                (
+                    one.wall,
+                    "" if one.published is None else _measured(one.published, 1000),
+                    one.published_source or "",
+                    "" if one.earlier is None else _measured(one.earlier, 1000),
+                    one.earlier_source or "",
+                )
+                for one in survey.wall_histories
+            ],
+        ),
+        _table(
             "Off-takes",
             ("off-take", "at, m", "takes, L/s"),
             [
@@ -76,7 +90,7 @@ def understood(survey: Survey) -> str:
             ("fitting", "at, m", "loss coefficient", "velocity head"),
             [
                 (
-                    fitting.name + (" (change of bore)" if fitting.change_of_bore else ""),
+                    fitting.name + (f" ({fitting.kind})" if fitting.kind else ""),
                     f"{fitting.at:g}",
                     "to be fitted"
                     if fitting.loss_coefficient is None
@@ -91,7 +105,7 @@ def understood(survey: Survey) -> str:
             ("gauge", "kind", "settings", "stated"),
             [
                 (gauge.name, gauge.kind, _settings(survey, gauge), _gauge_uncertainties(survey, gauge))
-                for gauge in survey.gauges
+                for gauge in (*survey.gauges, *survey.flow_gauges)
             ],
         ),
         _taps(survey),
@@ -171,12 +185,15 @@ def _settings(survey: Survey, gauge: Gauge) -> str:
         )
     if gauge.calibration is not None:
         found.append(f"calibration {gauge.calibration.file} ({len(gauge.calibration.reading)} points)")
-    found += [f"leg of {leg.fluid} from {_end(leg.start)} to {_end(leg.end)}" for leg in gauge.legs]
+    found += [
+        f"leg of {leg.fluid} from {_end(leg.start, leg.start_u)} to {_end(leg.end, leg.end_u)}"
+        for leg in gauge.legs
+    ]
     return ", ".join(found)
 
 
-def _end(end: float | str) -> str:
-    return end if isinstance(end, str) else f"{end:g} m"
+def _end(end: float | str, u: float | None) -> str:
+    return end if isinstance(end, str) else f"{end:g} m" + (f" ± {1000 * u:.2g} mm" if u else "")
 
 
 def _unit(survey: Survey, place: str, dimension: str, usual: Mapping[str, str]) -> Unit:

@@ -11,13 +11,15 @@ from typing import TYPE_CHECKING, Any
 from gradeline.report.formats import FORMATS
 
 if TYPE_CHECKING:
+    from gradeline.report.brief import one_line
     from gradeline.report.output import write
     from gradeline.report.sentences import summarise
     from gradeline.report.terminal import terminal_summary
 
-__all__ = ["FORMATS", "summarise", "terminal_summary", "write"]
+__all__ = ["FORMATS", "one_line", "summarise", "terminal_summary", "write"]
 
 _HOMES = {
+    "one_line": "gradeline.report.brief",
     "summarise": "gradeline.report.sentences",
     "terminal_summary": "gradeline.report.terminal",
     "write": "gradeline.report.output",

@@ -9,19 +9,29 @@ from collections.abc import Collection
 from importlib.metadata import PackageNotFoundError
 from importlib.metadata import version as installed_version
 from pathlib import Path
+from typing import Literal
 
 from gradeline.errors import OutputError
 from gradeline.quantities.printing import SI_DISPLAY, Display
 from gradeline.reduction.tables import RESULT_TABLES, Reduction
-from gradeline.report.formats import FORMATS
-from gradeline.report.record import as_csv, as_json
+from gradeline.report.formats import DEFAULT_FORMATS, FORMATS, PAPERS
+from gradeline.report.record import as_csv, as_json, carried_json
 
 __all__ = ["program_version", "write"]
 
 _FIGURE = re.compile(
-    r"(grade_lines_\d{2,}(_[A-Za-z0-9_-]{1,40})?|grade_lines_sheet_\d+|residuals|slope_velocity|friction_factor)\.(svg|png)"
+    r"(grade_lines_\d{2,}(_[A-Za-z0-9_-]{1,40})?|grade_lines_sheet_\d+|residuals|slope_velocity|friction_factor|tap_error_\d+|unlisted_\d+|uncertainty_budget|likelihood_\d+|loss_coefficient_\d+)\.(svg|png)"
 )
-_FILES = frozenset({"report.html", "reduction.json", *(f"{table}.csv" for table in RESULT_TABLES)})
+_FILES = frozenset(
+    {
+        "report.html",
+        "reduction.json",
+        "carried.json",
+        "report.pdf",
+        "reduction.xlsx",
+        *(f"{table}.csv" for table in RESULT_TABLES),
+    }
+)
 #: Left behind by file managers; nobody's work.
 _LITTER = frozenset({".DS_Store", "Thumbs.db", "desktop.ini"})
 
@@ -38,9 +48,10 @@ def write(
     reduction: Reduction,
     folder: Path,
     *,
-    formats: Collection[str] = FORMATS,
+    formats: Collection[str] = DEFAULT_FORMATS,
     overwrite: bool = False,
     display: Display = SI_DISPLAY,
+    paper: Literal["a4", "letter"] = "a4",
 ) -> None:
     """Write a reduction to a folder: page, record, tables and figures, all of them or none.
 
@@ -55,22 +66,26 @@ def write(
         The target. It may be absent or empty.
     formats : collection of str
         Any of ``html`` (report.html), ``json`` (reduction.json), ``csv`` (one file a table), ``svg`` and ``png``
-        (the folder ``figures``).
+        (the folder ``figures``), ``pdf`` (report.pdf) and ``xlsx`` (reduction.xlsx). The last two only where asked for.
     overwrite : bool
         Whether an earlier report in `folder` may be replaced. Files that are no part of a report are never removed.
     display : Display
-        Units of page and figures; record and tables are SI.
+        Units of page, PDF and figures; json, csv and xlsx are SI.
+    paper : {"a4", "letter"}
+        Sheets of the PDF.
 
     Raises
     ------
     OutputError
         Where the folder is not empty and `overwrite` is off, where it holds files of somebody else, where `formats`
-        names an unknown format, or where the disk refuses.
+        names an unknown format or `paper` an unknown size, or where the disk refuses.
     """
     unknown = sorted(set(formats) - set(FORMATS))
     if unknown or not formats:
         named = f"unknown format {unknown[0]!r}" if unknown else "no format is named"
         raise OutputError(f"{named}; choose from {', '.join(FORMATS)}")
+    if paper not in PAPERS:
+        raise OutputError(f"unknown paper {paper!r}; choose from {', '.join(PAPERS)}")
     folder = Path(folder)
     try:
         target = folder.resolve()
@@ -86,7 +101,7 @@ def write(
         work = Path(tempfile.mkdtemp(prefix=f".{target.name}-", dir=target.parent))
         fresh = work / "new"
         fresh.mkdir()
-        _fill(reduction, fresh, frozenset(formats), display)
+        _fill(reduction, fresh, frozenset(formats), display, paper)
         _check(target, folder, overwrite=overwrite)  # again: drawing took its time
         _swap(fresh, target, work / "old")
         done = True
@@ -171,21 +186,37 @@ def _swap(fresh: Path, target: Path, old: Path) -> None:
         raise
 
 
-def _fill(reduction: Reduction, folder: Path, formats: frozenset[str], display: Display) -> None:
+def _fill(
+    reduction: Reduction,
+    folder: Path,
+    formats: frozenset[str],
+    display: Display,
+    paper: Literal["a4", "letter"],
+) -> None:
     """Make every file of a report in an empty folder."""
     version = program_version()
-    if "json" in formats or "csv" in formats:
-        if "json" in formats:
-            (folder / "reduction.json").write_bytes(as_json(reduction, version))
-        if "csv" in formats:
-            for table in RESULT_TABLES:
-                (folder / f"{table}.csv").write_bytes(as_csv(reduction, table))
-    if not formats & {"html", "svg", "png"}:
+    if "json" in formats:
+        (folder / "reduction.json").write_bytes(as_json(reduction, version))
+        (folder / "carried.json").write_bytes(carried_json(reduction))
+    if "csv" in formats:
+        for table in RESULT_TABLES:
+            (folder / f"{table}.csv").write_bytes(as_csv(reduction, table))
+    if "xlsx" in formats:
+        from gradeline.report.xlsx import as_xlsx  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+        (folder / "reduction.xlsx").write_bytes(as_xlsx(reduction, version))
+    if not formats & {"html", "svg", "png", "pdf"}:
         return
-    # matplotlib and jinja2 only where something is drawn or a page is made
+    # matplotlib, jinja2 and fpdf2 only where something is drawn or a page is made
     from gradeline.report.figures import pictures  # noqa: PLC0415 (loaded when asked for: start-up time)
 
-    drawn = pictures(reduction, svg=bool(formats & {"html", "svg"}), png="png" in formats, display=display)
+    drawn = pictures(
+        reduction,
+        svg=bool(formats & {"html", "svg"}),
+        png="png" in formats,
+        paper="pdf" in formats,
+        display=display,
+    )
     for kind in sorted(formats & {"svg", "png"}):
         (folder / "figures").mkdir(exist_ok=True)
         for picture in drawn:
@@ -198,3 +229,7 @@ def _fill(reduction: Reduction, folder: Path, formats: frozenset[str], display: 
         (folder / "report.html").write_bytes(
             page(reduction, drawn, version, display).encode("utf-8", "backslashreplace")
         )
+    if "pdf" in formats:
+        from gradeline.report.pdf import as_pdf  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+        (folder / "report.pdf").write_bytes(as_pdf(reduction, drawn, version, display, paper))

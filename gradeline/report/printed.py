@@ -21,6 +21,7 @@ __all__ = [
     "name_column",
     "percent",
     "records",
+    "together",
     "truth",
 ]
 
@@ -144,3 +145,21 @@ def name_column(key: str, head: str | None = None, *, always: bool = True) -> Ta
     return TableColumn(
         head or key, lambda row: MISSING if row[key] is None else str(row[key]), text=True, always=always
     )
+
+
+def together(text: str) -> str:
+    r"""Return a text in which a value and its uncertainty, and a number and its unit, stay on one line.
+
+    Examples
+    --------
+    >>> ascii(together("(3.2 ± 0.1) % of 12 mm"))
+    "'(3.2\\xa0\\xb1\\xa00.1)\\xa0% of 12 mm'"
+    """
+    joined = str(text).replace(" ± ", "\u00a0±\u00a0")
+    for unit in ("%", "mm", "m", "kPa", "ft", "psi"):
+        joined = (
+            joined.replace(f" {unit}.", f"\u00a0{unit}.")
+            .replace(f" {unit} ", f"\u00a0{unit} ")
+            .replace(f" {unit})", f"\u00a0{unit})")
+        )
+    return joined

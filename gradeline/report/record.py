@@ -14,7 +14,7 @@ import pandas as pd
 from gradeline.reduction.tables import RESULT_TABLES, Column, Reduction
 from gradeline.report.printed import records
 
-__all__ = ["as_csv", "as_json"]
+__all__ = ["as_csv", "as_json", "carried_json", "guarded", "table_rows"]
 
 #: Numbers that count something are written without a decimal point.
 _COUNTS = frozenset({"slope_dof", "observations_used", "runs_used"})
@@ -43,10 +43,38 @@ def as_json(reduction: Reduction, version: str) -> bytes:
         "cautions": _dump(list(reduction.cautions)),
     }
     for table in RESULT_TABLES:
-        rows = [_dump(row) for row in _rows(table, getattr(reduction, table))]
+        rows = [_dump(row) for row in table_rows(table, getattr(reduction, table))]
         parts[table] = "[\n  " + ",\n  ".join(rows) + "\n ]" if rows else "[]"
     text = "{\n " + ",\n ".join(f'"{key}": {value}' for key, value in parts.items()) + "\n}\n"
     # a file name that was not UTF-8 holds surrogates, which JSON may carry as \udcXX
+    return text.encode("utf-8", errors="backslashreplace")
+
+
+def carried_json(reduction: Reduction) -> bytes:
+    """Return ``carried.json``: what a prediction needs beside the tables, keys in alphabetical order, a list a line.
+
+    Parameters
+    ----------
+    reduction : Reduction
+        What is written; SI units.
+
+    Returns
+    -------
+    bytes
+        UTF-8. A missing value is null; NaN and Infinity never occur.
+    """
+    parts = []
+    for key, value in sorted(reduction.carried.items()):
+        if isinstance(value, list) and value:
+            rows = ",\n  ".join(
+                json.dumps(one, ensure_ascii=False, allow_nan=False, sort_keys=True) for one in value
+            )
+            parts.append(f"{_dump(key)}: [\n  {rows}\n ]")
+        else:
+            parts.append(
+                f"{_dump(key)}: {json.dumps(value, ensure_ascii=False, allow_nan=False, sort_keys=True)}"
+            )
+    text = "{\n " + ",\n ".join(parts) + "\n}\n"
     return text.encode("utf-8", errors="backslashreplace")
 
 
@@ -70,7 +98,7 @@ def as_csv(reduction: Reduction, table: str) -> bytes:
     writer = csv.writer(out, lineterminator="\n")
     columns = RESULT_TABLES[table]
     writer.writerow(columns)
-    for row in _rows(table, getattr(reduction, table)):
+    for row in table_rows(table, getattr(reduction, table)):
         writer.writerow([_cell(row[name], column) for name, column in columns.items()])
     return out.getvalue().encode("utf-8", errors="backslashreplace")
 
@@ -79,8 +107,8 @@ def _dump(value: object) -> str:
     return json.dumps(value, ensure_ascii=False, allow_nan=False)
 
 
-def _rows(table: str, data: pd.DataFrame) -> list[dict[str, Any]]:
-    """The rows of a table with exactly its keys, values of plain Python types."""
+def table_rows(table: str, data: pd.DataFrame) -> list[dict[str, Any]]:
+    """Return the rows of a result table with exactly its keys, values of plain Python types, None where missing."""
     columns = RESULT_TABLES[table]
     return [
         {name: _value(row[name], column, count=name in _COUNTS) for name, column in columns.items()}
@@ -122,7 +150,17 @@ def _cell(value: Any, column: Column) -> str:
     if column.kind == "number":
         return repr(value)
     # a bare carriage return would end the row
-    text = str(value).replace("\r\n", "\n").replace("\r", "\n")
+    return guarded(str(value).replace("\r\n", "\n").replace("\r", "\n"))
+
+
+def guarded(text: str) -> str:
+    """Return a text that no spreadsheet takes for a formula: a leading apostrophe where it could, but for numbers.
+
+    Examples
+    --------
+    >>> guarded("=2+3"), guarded("-5"), guarded("wall")
+    ("'=2+3", '-5', 'wall')
+    """
     # tab and line end count too: spreadsheets skip them and see what follows
     if text[:1] in ("=", "+", "-", "@", "\t", "\n") and not _PLAIN_NUMBER.fullmatch(text):
         return "'" + text

@@ -16,9 +16,16 @@ from gradeline.quantities.printing import (
     rounded,
     thousands,
 )
+from gradeline.reduction.friction import LAMINAR_FAR
 from gradeline.reduction.tables import Reduction
+from gradeline.report.cautions import further_cautions
+from gradeline.report.converted import converted
+from gradeline.report.laws import telling_laws
+from gradeline.report.losses import is_unlisted, loss_sentence, not_told_from_zero
 from gradeline.report.printed import known, percent, records
+from gradeline.report.smoothness import smooth_sentence
 from gradeline.report.tables import elevations_known, flagged_value, reading_names, reading_units
+from gradeline.report.uncertainty import best_improvement
 
 __all__ = ["JUDGEMENT", "Summary", "summarise"]
 
@@ -71,28 +78,38 @@ def summarise(reduction: Reduction, display: Display = SI_DISPLAY) -> Summary:
     -------
     Summary
     """
+    reduction = converted(reduction, display)
     walls, runs, fittings = (
         records(table) for table in (reduction.walls, reduction.runs, reduction.fittings)
     )
     flags = records(reduction.flags)
+    laws = telling_laws(reduction, display)
     found = [
         _survey(reduction, runs),
-        *(_wall(wall, reduction.level, display) for wall in walls if known(wall["roughness"])),
+        *(
+            f"{_wall(wall, reduction.level, display)} {smooth_sentence(reduction, wall)}".rstrip()
+            for wall in walls
+            if known(wall["roughness"])
+        ),
         *_friction(runs, flags),
         *_laminar(reduction),
         *_exponents(reduction),
-        *(_fitting(fitting, reduction.level) for fitting in fittings if known(fitting["loss_coefficient_u"])),
+        *laws[0],
+        *_fittings(reduction, fittings, display),
+        best_improvement(reduction, display),
     ]
     look = [
         *_law(walls, flags),
+        *laws[1],
         *_readings(reduction, flags),
         *_runs(flags),
-        *_taps(flags),
+        *_taps(reduction, flags),
+        *_static_offsets(reduction),
         *_unflagged(reduction, flags),
         *_by_hand(reduction),
         *_crown(reduction, display),
-        *_cautions(reduction),
     ]
+    look += _cautions(reduction, look)
     return Summary(tuple(filter(None, found)), tuple(look), tuple(_missing(walls, runs, fittings)))
 
 
@@ -166,8 +183,6 @@ def _wall(wall: dict[str, Any], level: float, display: Display) -> str:
         )
     else:
         words = f"The roughness of the wall {name} is not resolved, {runs}."
-    if wall["hydraulically_smooth"]:
-        words += " Even at that bound the wall is hydraulically smooth at every flow measured."
     return words
 
 
@@ -218,7 +233,11 @@ def _laminar(reduction: Reduction) -> Iterable[str]:
     constants = {f"{row['constant']:.4g}" for row in rows}
     over = f"f·Re/{constants.pop()}" if len(constants) == 1 else "f·Re over its value for the section's shape"
     words = f"In laminar flow {over}, which is 1 for the true bore and flow, is {_list(texts)}"
-    if off:
+    far = [str(row["run"]) for row in rows if not 1 / LAMINAR_FAR < row["ratio"] < LAMINAR_FAR]
+    if far:
+        # No bore is so far off: its fourth root is no help.
+        yield f"{words}. In run {_list(far)} that is far from 1: look at the units of bore, flow and chainage."
+    elif off:
         yield (
             f"{words}. In run {_list(off)} that is not 1 within "
             f"{'2 %' if unknown else 'two standard uncertainties'}: check the bore (it enters as D⁴), the flow and "
@@ -240,16 +259,26 @@ def _exponents(reduction: Reduction) -> Iterable[str]:
         for row in rows
     ]
     if texts:
-        yield f"The friction slope grows as Vⁿ with n = {_list(texts)}."
+        yield f"The friction slope grows as Qⁿ with n = {_list(texts)}."
+
+
+def _fittings(reduction: Reduction, fittings: Sequence[dict[str, Any]], display: Display) -> Iterable[str]:
+    beside = {row["fitting"]: row for row in records(reduction.losses)}
+    for fitting in fittings:
+        # What nobody listed is told, with its K, among what deserves a look.
+        if known(fitting["loss_coefficient_u"]) and not is_unlisted(fitting["fitting"]):
+            words = _fitting(fitting, reduction.level)
+            yield loss_sentence(fitting, beside.get(fitting["fitting"]), words, display)
 
 
 def _fitting(fitting: dict[str, Any], level: float) -> str:
     value = rounded(fitting["loss_coefficient"], fitting["loss_coefficient_u"])
-    words = f"The loss coefficient of {fitting['fitting']} is K = {value}"
+    untold = " not told from zero:" if not_told_from_zero(fitting) else ""
+    words = f"The loss coefficient of {fitting['fitting']} is{untold} K = {value}"
     if known(fitting["loss_coefficient_low"]) and known(fitting["loss_coefficient_high"]):
         interval = format_interval(fitting["loss_coefficient_low"], fitting["loss_coefficient_high"])
         words += f" ({percent(level)} interval {interval})"
-    return words + "."
+    return words
 
 
 def _law(walls: Sequence[dict[str, Any]], flags: Sequence[dict[str, Any]]) -> Iterable[str]:
@@ -257,7 +286,9 @@ def _law(walls: Sequence[dict[str, Any]], flags: Sequence[dict[str, Any]]) -> It
     flagged = [flag for flag in flags if flag["kind"] == "law"]
     for flag in flagged:
         if flag["suggestion"]:
-            yield f"The friction law does not fit: {flag['suggestion'].rstrip('.')}."
+            # A wall's flag is of its law; the others (a break of the line, a rising head) speak for themselves.
+            of_wall = flag["suggestion"].startswith("wall ")
+            yield _sentence(f"{'The friction law does not fit: ' if of_wall else ''}{flag['suggestion']}")
     if not any(flag["suggestion"] is None for flag in flagged):
         return
     for wall in walls:
@@ -316,14 +347,27 @@ def _runs(flags: Sequence[dict[str, Any]]) -> Iterable[str]:
         yield f"So do {_list(rest)}."
 
 
-def _taps(flags: Sequence[dict[str, Any]]) -> Iterable[str]:
+def _taps(reduction: Reduction, flags: Sequence[dict[str, Any]]) -> Iterable[str]:
+    gauges = set(reduction.ailments["name"][(reduction.ailments["what"] == "gauge").to_numpy(bool)])
     for flag in [flag for flag in flags if flag["kind"] == "tap"][:_MOST_NAMED]:
         suggestion = (
             f": {flag['suggestion']}"
             if flag["suggestion"]
             else " reads off the line in the same way in most runs"
         )
-        yield _sentence(f"Tap {flag['tap']}{suggestion}")
+        yield _sentence(f"{'Gauge' if flag['tap'] in gauges else 'Tap'} {flag['tap']}{suggestion}")
+
+
+def _static_offsets(reduction: Reduction) -> Iterable[str]:
+    """Offsets that a static run measured and that stand out: taken off, no flag, but worth a look at the tap."""
+    for tap in records(reduction.taps):
+        words = str(tap["diagnosis"] or "")
+        # The caution about one that is far too large says as much and more.
+        told = any(
+            text.startswith(f"Tap {tap['tap']} differs from the others") for text in reduction.cautions
+        )
+        if words.endswith("measured by the static run and taken off") and not told:
+            yield f"Tap {tap['tap']}: {words}."
 
 
 def _unflagged(reduction: Reduction, flags: Sequence[dict[str, Any]]) -> Iterable[str]:
@@ -341,7 +385,8 @@ def _unflagged(reduction: Reduction, flags: Sequence[dict[str, Any]]) -> Iterabl
 def _by_hand(reduction: Reduction) -> Iterable[str]:
     """The readings left out by hand: by tap, with its runs where they are not all."""
     heads = reduction.heads
-    out = (heads["flag"] == "excluded").to_numpy(bool)
+    # What was left out for an ailment is told with it.
+    out = ((heads["flag"] == "excluded") & (heads["reason"] == "left out by hand")).to_numpy(bool)
     if not out.any():
         return
     read = np.isfinite(heads["head"].to_numpy(float, na_value=np.nan))
@@ -389,8 +434,8 @@ def _crown(reduction: Reduction, display: Display) -> Iterable[str]:
     )
 
 
-def _cautions(reduction: Reduction) -> Iterable[str]:
-    cautions, assumptions = len(reduction.cautions), len(reduction.assumptions)
+def _cautions(reduction: Reduction, told: Sequence[str]) -> Iterable[str]:
+    cautions, assumptions = len(further_cautions(reduction, told)), len(reduction.assumptions)
     parts = []
     if cautions:
         parts.append(_plural(cautions, "caution"))
@@ -409,7 +454,9 @@ def _missing(
             yield _because(f"The roughness of the wall {wall['wall']}", wall["reason"])
     for fitting in fittings:
         if not known(fitting["loss_coefficient"]):
-            yield _because(f"The loss coefficient of {fitting['fitting']}", fitting["reason"])
+            name = fitting["fitting"]
+            quoted = repr(name) if is_unlisted(name) else name
+            yield _because(f"The loss coefficient of {quoted}", fitting["reason"])
     without: dict[str | None, list[str]] = {}
     for row in runs:
         if not known(row["slope"]) and row["regime"] != "static":

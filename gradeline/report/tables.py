@@ -15,6 +15,8 @@ from gradeline.quantities.printing import (
     thousands,
 )
 from gradeline.reduction.tables import Reduction
+from gradeline.report.flag_words import flag_words
+from gradeline.report.losses import equivalent_length_uncertainties
 from gradeline.report.printed import (
     PrintedTable,
     Row,
@@ -30,7 +32,6 @@ from gradeline.report.printed import (
 
 __all__ = [
     "bore_table",
-    "budget_table",
     "elevations_known",
     "exponent_table",
     "fitting_table",
@@ -111,8 +112,23 @@ def _probability(value: float | None) -> str:
     return f"{value:.2f}" if value >= 0.095 else f"{value:.2g}"
 
 
-def wall_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
-    """Return the walls: roughness with interval and bound, resolved or not, smooth or not, misfit of the law."""
+def wall_table(
+    reduction: Reduction, display: Display = SI_DISPLAY, *, conveyance: bool = True
+) -> PrintedTable:
+    """Return the walls: roughness with interval and bound, resolved or not, smooth or not, misfit of the law.
+
+    With `conveyance`, Hazen–Williams C and Manning n at the highest flow too, and the cautions on them.
+    """
+    older = {row["wall"]: row for row in records(reduction.wall_conveyance)} if conveyance else {}
+    rows = records(reduction.walls)
+    for row in rows if not conveyance else ():
+        row["reason"] = "; ".join(
+            part for part in str(row["reason"] or "").split("; ") if " formula is meant for " not in part
+        )
+
+    def measure(name: str) -> Callable[[Row], str]:
+        return lambda row: rounded(row[name], older.get(row["wall"], {}).get(f"{name}_u"))
+
     level = percent(reduction.level)
     bound = (
         ""
@@ -126,7 +142,7 @@ def wall_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTa
     return lay_out(
         "Walls, from all turbulent runs together. ε⁺ is the roughness Reynolds number of the fastest run; the trend "
         f"is that of f against the friction law.{bound}",
-        records(reduction.walls),
+        rows,
         [
             name_column("wall"),
             TableColumn(display.head("roughness ε", "roughness"), within("roughness")),
@@ -142,10 +158,14 @@ def wall_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTa
                 "trend of f (%/decade of Re)", lambda row: _hundredfold(row["law_trend"], row["law_trend_u"])
             ),
             TableColumn("runs used", lambda row: count(row["runs_used"])),
-            TableColumn(
-                "Hazen–Williams C", lambda row: format_number(row["hazen_williams_c"], 3), always=False
+            *(
+                [
+                    TableColumn("Hazen–Williams C", measure("hazen_williams_c"), always=False),
+                    TableColumn("Manning n", measure("manning_n"), always=False),
+                ]
+                if conveyance
+                else []
             ),
-            TableColumn("Manning n", lambda row: format_number(row["manning_n"], 3), always=False),
         ],
     )
 
@@ -157,8 +177,10 @@ def _hundredfold(value: float | None, u: float | None) -> str:
 def fitting_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
     """Return the fittings with their loss coefficients."""
     level = percent(reduction.level)
+    length_u = equivalent_length_uncertainties(reduction)
     return lay_out(
-        "Fittings. K refers to the velocity head that the survey names, the smaller bore's otherwise.",
+        "Fittings. K refers to the velocity head that the survey names, the smaller bore's otherwise; the equivalent length is "
+        "that of straight pipe that loses as much in the fastest run.",
         records(reduction.fittings),
         [
             name_column("fitting"),
@@ -171,26 +193,12 @@ def fitting_table(reduction: Reduction, display: Display = SI_DISPLAY) -> Printe
             ),
             TableColumn(
                 display.head("equivalent length", "length"),
-                lambda row: display.text("length", row["equivalent_length"], digits=2),
+                lambda row: display.text(
+                    "length", row["equivalent_length"], length_u.get(row["fitting"]), digits=2
+                ),
                 always=False,
             ),
         ],
-    )
-
-
-def budget_table(reduction: Reduction) -> PrintedTable:
-    """Return the uncertainty budget: what each input adds."""
-    return lay_out(
-        "Uncertainty budget, SI units: each input's share of the variance.",
-        records(reduction.budget),
-        [
-            name_column("quantity"),
-            name_column("subject"),
-            name_column("input"),
-            TableColumn("contribution", lambda row: format_number(row["contribution_u"], 2)),
-            TableColumn("share of variance (%)", lambda row: _hundredfold(row["variance_share"], None)),
-        ],
-        note=None,
     )
 
 
@@ -225,10 +233,12 @@ def _curve(p: float | None) -> str:
 
 
 def exponent_table(reduction: Reduction) -> PrintedTable:
-    """Return the exponents n of S ∝ Vⁿ."""
+    """Return the exponents n of S ∝ Qⁿ."""
     level = percent(reduction.level)
     return lay_out(
-        "Exponent n of S ∝ Vⁿ: 1 in laminar flow, about 1.75 where the wall is smooth, 2 where it is fully rough.",
+        "Exponent n of S ∝ Qⁿ, and of Vⁿ: 1 in laminar flow, about 1.75 where the wall is smooth, 2 where it is fully rough. "
+        "Runs of different temperature are brought to one viscosity. An error in the same proportion of all flows or slopes "
+        "leaves n as it is; an offset of the flow meter does not, and is not in its uncertainty.",
         records(reduction.exponents),
         [
             name_column("reach"),
@@ -322,7 +332,9 @@ def _signed(fraction: float | None) -> str:
     return f"+{text}" if fraction > 0 else text
 
 
-def flag_table(reduction: Reduction, *, limit: int | None = None) -> PrintedTable:
+def flag_table(
+    reduction: Reduction, display: Display = SI_DISPLAY, *, limit: int | None = None
+) -> PrintedTable:
     """Return the flags with what was read and what was expected."""
     rows = records(reduction.flags if limit is None else reduction.flags.iloc[:limit])
     units = reading_units(reduction)
@@ -336,10 +348,11 @@ def flag_table(reduction: Reduction, *, limit: int | None = None) -> PrintedTabl
         rows,
         [
             name_column("kind"),
-            name_column("run"),
-            name_column("tap"),
-            TableColumn("read", reading("reading")),
-            TableColumn("expected", reading("expected")),
+            TableColumn("what", flag_words(reduction, display), text=True),
+            name_column("run", always=False),
+            name_column("tap", always=False),
+            TableColumn("read", reading("reading"), always=False),
+            TableColumn("expected", reading("expected"), always=False),
             TableColumn("score", lambda row: format_number(row["score"], 2)),
             name_column("suggestion", always=False),
         ],

@@ -8,6 +8,8 @@ from collections.abc import Iterable, Sequence
 
 from gradeline.quantities.printing import SI_DISPLAY, Display
 from gradeline.reduction.tables import Reduction
+from gradeline.report.cautions import further_cautions
+from gradeline.report.converted import converted
 from gradeline.report.printed import PrintedTable
 from gradeline.report.sentences import summarise
 from gradeline.report.tables import fitting_table, flag_table, run_table, wall_table
@@ -35,6 +37,7 @@ def terminal_summary(reduction: Reduction, display: Display = SI_DISPLAY) -> str
     str
         Plain text, no line longer than 100 columns, no line end after the last line.
     """
+    reduction = converted(reduction, display)
     summary = summarise(reduction, display)
     title = str(reduction.survey.get("title") or "Survey")
     date = reduction.survey.get("date")
@@ -51,18 +54,19 @@ def terminal_summary(reduction: Reduction, display: Display = SI_DISPLAY) -> str
     blocks.append(
         _table("Runs", run_table(reduction, display, limit=_MOST_RUNS), drop, "runs.csv", runs - _MOST_RUNS)
     )
-    drop = {"hydraulically smooth", "ε⁺", "Hazen", "Manning"}
-    blocks.append(_table("Walls", wall_table(reduction, display), drop))
+    drop = {"hydraulically smooth", "ε⁺"}
+    blocks.append(_table("Walls", wall_table(reduction, display, conveyance=False), drop))
     if len(reduction.fittings):
         blocks.append(_table("Fittings", fitting_table(reduction, display), set()))
     if len(reduction.flags):
         flags = len(reduction.flags)
-        table = flag_table(reduction, limit=_MOST_FLAGS)
+        table = flag_table(reduction, display, limit=_MOST_FLAGS)
         blocks.append(_table("Flags", table, {"suggestion"}, "flags.csv", flags - _MOST_FLAGS))
-    if reduction.cautions:
-        shown = list(reduction.cautions[:_MOST_CAUTIONS])
-        if len(reduction.cautions) > _MOST_CAUTIONS:
-            shown.append(f"{len(reduction.cautions) - _MOST_CAUTIONS} more in reduction.json")
+    cautions = further_cautions(reduction, summary.look)
+    if cautions:
+        shown = list(cautions[:_MOST_CAUTIONS])
+        if len(cautions) > _MOST_CAUTIONS:
+            shown.append(f"{len(cautions) - _MOST_CAUTIONS} more in reduction.json")
         blocks.append("\n".join(["Cautions", *_bullets(shown)]))
     blocks.append("\n".join(_wrapped(summary.close)))
     return "\n\n".join(blocks)

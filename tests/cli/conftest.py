@@ -71,7 +71,8 @@ def rooms(monkeypatch: pytest.MonkeyPatch) -> SimpleNamespace:
 
     reduction, report = ModuleType("gradeline.reduction"), ModuleType("gradeline.report")
     reduction.reduce = reduce
-    report.write, report.terminal_summary = write, lambda reduction: f"summary of {reduction.title}"
+    report.write, report.terminal_summary = write, lambda reduction, _display: f"summary of {reduction.title}"
+    report.one_line = lambda reduction, _display: f"line of {reduction.title}"
     monkeypatch.setitem(sys.modules, "gradeline.reduction", reduction)
     monkeypatch.setitem(sys.modules, "gradeline.report", report)
     return calls

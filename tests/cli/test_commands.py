@@ -8,8 +8,11 @@ from typer.testing import CliRunner
 
 import gradeline
 from gradeline.cli import main
-from gradeline.cli.app import FORMATS, app
+from gradeline.cli.app import DEFAULT_FORMATS, app
 from gradeline.errors import OutputError, ReductionError
+from gradeline.quantities.printing import SI_DISPLAY, US_DISPLAY
+
+SI_ON_A4 = {"display": SI_DISPLAY, "paper": "a4"}
 
 
 def run(*arguments):
@@ -26,7 +29,10 @@ def python(code, *, encoding="utf-8", **environment):
     )
 
 
-HEAVY = ("scipy", "pandas", "matplotlib", "pint", "pydantic", "numpy", "uncertainties", "jinja2", "chemicals")
+HEAVY = (
+    *("scipy", "pandas", "matplotlib", "pint", "pydantic", "numpy", "uncertainties", "jinja2", "chemicals"),
+    *("fpdf", "xlsxwriter"),
+)
 
 
 def test_help_loads_nothing_heavy():
@@ -50,7 +56,7 @@ def test_reading_loads_nothing_that_only_reduces_or_draws(survey):
     assert done.stdout == "[]\n", done.stderr
 
 
-@pytest.mark.parametrize("command", ["check", "new", "reduce"])
+@pytest.mark.parametrize("command", ["check", "gauges", "new", "reduce", "watch"])
 def test_every_command_shows_an_example(command):
     result = run(command, "--help")
     assert result.exit_code == 0
@@ -127,7 +133,7 @@ def test_help_tells_exit_codes_and_formats():
     told = " ".join(run("--help").stdout.split())
     assert "Exit codes: 0 done" in told
     assert "2 wrong use, 3 the survey has problems, 4 output could not be written" in told
-    assert "any of html, json, csv, svg, png." in " ".join(run("reduce", "--help").stdout.split())
+    assert "any of html, json, csv, svg, png, pdf, xlsx." in " ".join(run("reduce", "--help").stdout.split())
 
 
 def test_a_terminal_without_the_signs_is_no_error(survey):
@@ -219,16 +225,22 @@ def test_reduce_passes_its_options_on(survey, rooms):
     assert result.stdout == "summary of Bench line\n"
     assert result.stderr == f"Written to {survey / 'reduction' / 'report.html'}\n"
     assert rooms.reduced == [
-        ("Bench line", {"level": 0.95, "correct": "static", "keep_all": False, "exclude": ()})
+        (
+            "Bench line",
+            {"level": 0.95, "correct": "static", "keep_all": False, "exclude": (), "monte_carlo": True},
+        )
     ]
-    assert rooms.written == [("Bench line", survey / "reduction", {"formats": FORMATS, "overwrite": False})]
+    assert rooms.written == [
+        ("Bench line", survey / "reduction", {"formats": DEFAULT_FORMATS, "overwrite": False, **SI_ON_A4})
+    ]
 
 
 def test_reduce_passes_every_option_on(survey, rooms, tmp_path):
     out = tmp_path / "out"
     result = run(
         *("reduce", survey, "--out", out, "--overwrite", "--level", "0.99", "--formats", "json,csv"),
-        *("--correct", "none", "--keep-all", "--exclude", "T2", "--exclude", "3:T1"),
+        *("--units", "us", "--paper", "letter"),
+        *("--correct", "none", "--keep-all", "--exclude", "T2", "--exclude", "3:T1", "--no-monte-carlo"),
     )
     assert result.exit_code == 0, result.output
     assert result.stderr == f"Written to {out}\n"
@@ -237,8 +249,12 @@ def test_reduce_passes_every_option_on(survey, rooms, tmp_path):
         "correct": "none",
         "keep_all": True,
         "exclude": ("T2", "3:T1"),
+        "monte_carlo": False,
     }
-    assert rooms.written[0][1:] == (out, {"formats": ("json", "csv"), "overwrite": True})
+    assert rooms.written[0][1:] == (
+        out,
+        {"formats": ("json", "csv"), "overwrite": True, "display": US_DISPLAY, "paper": "letter"},
+    )
 
 
 def test_one_bad_survey_does_not_stop_the_others(survey, bad_survey, rooms, tmp_path):
@@ -269,8 +285,8 @@ def test_what_cannot_be_reduced_is_a_problem_of_the_survey(survey, rooms):
         (("--level", "95"), "95 is no coverage; it lies between 0 and 1, such as 0.95"),
         (("--level", "1"), "1 is no coverage"),
         (("--level", "nan"), "nan is no coverage"),
-        (("--formats", "html,pdf"), "unknown format 'pdf'; choose from html,json,csv,svg,png"),
-        (("--correct", "all"), "'all' is not one of 'static', 'none'"),
+        (("--formats", "html,docx"), "unknown format 'docx'; choose from html,json,csv,svg,png,pdf,xlsx"),
+        (("--correct", "all"), "'all' is not one of 'static', 'offsets', 'none'"),
         (("--exclude", "T9"), "--exclude T9: there is no tap 'T9'; taps are T1, T2, T3"),
         (("--exclude", "9:T1"), "--exclude 9:T1: there is no run '9'; write --exclude RUN:TAP"),
         (("--colour",), "No such option: --colour"),
@@ -280,6 +296,7 @@ def test_wrong_use_is_told(survey, rooms, arguments, message):
     result = run("reduce", survey, *arguments)
     assert result.exit_code == 2
     assert message in " ".join(result.stderr.split())
+    assert "Value error" not in result.stderr
     assert not rooms.written
 
 
@@ -308,7 +325,20 @@ def test_an_unforeseen_error_is_one_line(survey, rooms, monkeypatch, capsys):
 
 
 def test_the_package_names_its_interface():
-    assert sorted(gradeline.__all__) == ["GradelineError", "Reduction", "Survey", "read_survey", "reduce"]
+    assert sorted(gradeline.__all__) == [
+        "Comparison",
+        "GradelineError",
+        "Plan",
+        "Prediction",
+        "Reduction",
+        "Survey",
+        "compare",
+        "plan",
+        "predict",
+        "read_plan",
+        "read_survey",
+        "reduce",
+    ]
     assert dir(gradeline) == sorted(gradeline.__all__)
     assert gradeline.read_survey.__module__ == "gradeline.loader.read"
     with pytest.raises(AttributeError, match="has no attribute 'nothing'"):

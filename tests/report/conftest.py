@@ -327,6 +327,42 @@ def reduction_of(
         "exponents": exponents,
         "scatter": [{"gauge": gauge, "base": sigma, "surge": 0.002, "stated": NAN, "dof": 61, "note": None}],
         "bore_sensitivity": sensitivity,
+        "losses": [
+            {
+                "fitting": name,
+                "kind": "gate valve",
+                "length": 0.0,
+                "runs_used": sum(flow > 0 for flow in flows),
+                "taps_upstream": 3,
+                "taps_downstream": 4,
+                "reynolds": 3.1e5,
+                "equivalent_length_u": 0.21,
+                "published": 0.11,
+                "published_low": 0.06,
+                "published_high": 0.17,
+                "published_for": "gate valve fully open",
+                "source": "a handbook",
+                "verdict": "above",
+                "trend": -0.12,
+                "trend_u": 0.2,
+                "trend_p": 0.55,
+                "depends_on_reynolds": False,
+            }
+            for name, _, _ in fittings
+        ],
+        "loss_runs": [
+            {
+                "run": row["run"],
+                "fitting": name,
+                "reynolds": row["reynolds"],
+                "loss_coefficient": k + 0.02 * (-1) ** n,
+                "loss_coefficient_u": 0.05,
+                "used": n > 0,
+                "reason": None if n else "off the friction law",
+            }
+            for name, _, k in fittings
+            for n, row in enumerate(run for run in runs if run["reach"] == reaches[0][0] and run["reynolds"])
+        ],
         "inputs": [
             {"group": "fluid", "name": "water", "what": "name", "text": "water"},
             {"group": "gauge", "name": gauge, "what": "kind", "text": "piezometer"},
@@ -378,7 +414,7 @@ def reduction_of(
         level=0.95,
         gravity=9.80665,
         friction_law_u=0.02,
-        **{name: frame(name, rows) for name, rows in tables.items()},
+        **{name: frame(name, tables.get(name, [])) for name in (*RESULT_TABLES, *DRAWING_TABLES)},
     )
 
 

@@ -46,7 +46,7 @@ def test_two_writes_are_equal_to_the_byte(written: Path, bench: Reduction, tmp_p
 @pytest.mark.parametrize(
     ("formats", "expected"),
     [
-        (("json",), {"reduction.json"}),
+        (("json",), {"reduction.json", "carried.json"}),
         (("csv",), {f"{table}.csv" for table in RESULT_TABLES}),
         (("html",), {"report.html"}),
     ],
@@ -58,26 +58,26 @@ def test_only_the_formats_asked_for(
     assert set(files(tmp_path / "out")) == expected
 
 
-@pytest.mark.parametrize("formats", [("pdf",), ()])
+@pytest.mark.parametrize("formats", [("docx",), ()])
 def test_an_unknown_format_names_the_choices(
     field: Reduction, tmp_path: Path, formats: tuple[str, ...]
 ) -> None:
-    with pytest.raises(OutputError, match="choose from html, json, csv, svg, png"):
+    with pytest.raises(OutputError, match="choose from html, json, csv, svg, png, pdf, xlsx"):
         write(field, tmp_path / "out", formats=formats)
     assert list(tmp_path.iterdir()) == []
-    assert FORMATS == ("html", "json", "csv", "svg", "png")
+    assert FORMATS == ("html", "json", "csv", "svg", "png", "pdf", "xlsx")
 
 
 def test_an_empty_folder_is_taken(field: Reduction, tmp_path: Path) -> None:
     (tmp_path / "out").mkdir()
     write(field, tmp_path / "out", formats=("json",))
-    assert set(files(tmp_path / "out")) == {"reduction.json"}
+    assert set(files(tmp_path / "out")) == {"reduction.json", "carried.json"}
 
 
 def test_a_folder_with_something_in_it_is_refused(field: Reduction, tmp_path: Path) -> None:
     write(field, tmp_path / "out", formats=("json",))
     before = files(tmp_path / "out")
-    with pytest.raises(OutputError, match=r"is not empty \(it holds reduction.json\).*--overwrite"):
+    with pytest.raises(OutputError, match=r"is not empty \(it holds carried.json\).*--overwrite"):
         write(field, tmp_path / "out", formats=("csv",))
     assert files(tmp_path / "out") == before
 
@@ -88,7 +88,7 @@ def test_overwrite_replaces_an_earlier_report_whole(
     write(field, tmp_path / "out", formats=("json", "csv", "svg", "png"))
     (tmp_path / "out" / ".DS_Store").write_bytes(b"")  # file managers leave it everywhere
     write(bench, tmp_path / "out", formats=("json",), overwrite=True)
-    assert set(files(tmp_path / "out")) == {"reduction.json"}
+    assert set(files(tmp_path / "out")) == {"reduction.json", "carried.json"}
     assert b"Copper" in files(tmp_path / "out")["reduction.json"]
 
 

@@ -16,7 +16,8 @@ from gradeline.reduction.tables import Reduction
 from gradeline.report import summarise, terminal_summary
 from gradeline.report.figures import pictures
 from gradeline.report.inputs import raw_reading_tables
-from gradeline.report.page import handling, page
+from gradeline.report.outline import handling
+from gradeline.report.page import page
 from gradeline.report.tables import (
     flag_table,
     reach_table,
@@ -146,6 +147,7 @@ def test_readings_left_out_by_hand_are_named_by_tap(bench: Reduction) -> None:
     out = (heads["tap"] == "T2") | ((heads["tap"] == "T9") & heads["run"].isin(["R3", "R5"]))
     out |= (heads["tap"] == "T10") & (heads["run"] == "R4")
     heads.loc[out, "flag"] = "excluded"
+    heads.loc[out, "reason"] = "left out by hand"
     text = " ".join(summarise(dataclasses.replace(bench, heads=heads)).look)
     assert "Left out by hand: T2 in all runs; T9 in runs R3 and R5; T10 in run R4." in text
     assert "by hand" not in " ".join(summarise(bench).look)
@@ -283,7 +285,7 @@ def test_tables_round_to_two_digits_of_the_uncertainty_and_note_what_is_missing(
     assert u == pytest.approx(run["slope_u"] * 1e3, rel=0.05)
     walls = wall_table(bench)
     assert "Hazen–Williams C" not in walls.heads  # nothing to show yet
-    assert flag_table(bench).rows[0][:3] == ("reading", "R7", "T4")
+    assert flag_table(bench).rows[0][:4] == ("reading", "outlying reading", "R7", "T4")
 
 
 class Reader(HTMLParser):
@@ -346,7 +348,9 @@ def test_the_sections_stand_in_order(bench_page: str) -> None:
         "summary",
         "grade-lines",
         "residuals-by-tap",
+        "taps-and-line",
         "laws",
+        "what-the-laws-say",
         "tables",
         "flags",
         "readings",

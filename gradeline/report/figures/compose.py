@@ -11,10 +11,14 @@ from matplotlib.figure import Figure
 
 from gradeline.quantities.printing import Display
 from gradeline.reduction.tables import Reduction
+from gradeline.report.figures.ailments import BreakArtists, TapErrorArtists
 from gradeline.report.figures.differences import head_axis
-from gradeline.report.figures.grade_lines import draw_grade_lines, pipe_fits_the_scale
+from gradeline.report.figures.grade_lines import draw_grade_lines, flagged_words, pipe_fits_the_scale
 from gradeline.report.figures.laws import FrictionFactorArtists, SlopeVelocityArtists
+from gradeline.report.figures.likelihood import LikelihoodArtists
+from gradeline.report.figures.losses import LossArtists
 from gradeline.report.figures.pipe import draw_pipe
+from gradeline.report.figures.reading_marks import RING
 from gradeline.report.figures.residuals import ResidualArtists
 from gradeline.report.figures.style import MUTED, shorten
 
@@ -26,7 +30,16 @@ _LEFT, _BREADTH = 0.15, 0.82
 
 
 def single(
-    draw: Callable[[Axes], ResidualArtists | FrictionFactorArtists | SlopeVelocityArtists],
+    draw: Callable[
+        [Axes],
+        ResidualArtists
+        | FrictionFactorArtists
+        | SlopeVelocityArtists
+        | LossArtists
+        | LikelihoodArtists
+        | TapErrorArtists
+        | BreakArtists,
+    ],
     title: str,
     *,
     height: float = 4.0,
@@ -54,12 +67,15 @@ def single(
     return figure
 
 
-def _head(figure: Figure, ax: Axes, title: str, rows: int) -> None:
-    """Write the title at the top and lower the axes until their legend has room under it."""
+def _head(figure: Figure, ax: Axes, title: str, rows: int, note: str = "") -> None:
+    """Write the title at the top, a note under it, and lower the axes until their legend has room under both."""
     inches = float(figure.get_figheight())
     figure.text(0.012, 1 - 0.07 / inches, title, fontsize=10.5, fontweight="bold", va="top")
+    if note:
+        figure.text(0.012, 1 - 0.27 / inches, note, fontsize=8.5, color=RING, va="top")
     left, bottom, width, _ = ax.get_position().bounds
-    ax.set_position((left, bottom, width, 1 - (0.36 + 0.178 * rows) / inches - bottom))
+    taken = (0.54 if note else 0.36) + 0.178 * rows
+    ax.set_position((left, bottom, width, 1 - taken / inches - bottom))
 
 
 class Canvases:
@@ -101,7 +117,7 @@ def grade_line_figure(
     figure = blanks.blank(with_pipe=with_pipe, limits=_chainage_limits(reduction, display))
     ax = figure.axes[0]
     drawn = draw_grade_lines(ax, reduction, run, with_pipe=with_pipe, display=display)
-    _head(figure, ax, title, drawn.legend_rows)
+    _head(figure, ax, title, drawn.legend_rows, flagged_words(reduction, run))
     if with_pipe:
         return figure
     ax.set_xlabel("")
@@ -166,12 +182,23 @@ def sheet_figure(reduction: Reduction, runs: list[str], display: Display) -> Fig
             continue
         ax.set_xlim(limits)
         drawn = draw_grade_lines(ax, reduction, runs[n], small=True, display=display)
-        for artist in (drawn.band, drawn.hgl, drawn.egl, drawn.used, drawn.left_out, drawn.flagged):
+        for artist in (
+            drawn.band,
+            drawn.hgl,
+            drawn.egl,
+            drawn.used,
+            drawn.falls,
+            drawn.left_out,
+            drawn.flagged,
+        ):
             if artist is not None:
                 named.setdefault(str(artist.get_label()), artist)
         flow = reduction.runs["flow"][(reduction.runs["run"] == runs[n]).to_numpy(bool)].iloc[0]
         ax.set_title(
-            f"{shorten(runs[n], 12)} · {display.text('flow', flow, digits=3, unit=True)}", fontsize=8.5, pad=3
+            f"{shorten(runs[n], 12)} · {display.text('flow', flow, digits=3, unit=True)}"
+            f"{', flagged' if flagged_words(reduction, runs[n]) else ''}",
+            fontsize=8.5,
+            pad=3,
         )
         ax.tick_params(labelsize=7.5, length=2.5)
         ax.locator_params(axis="x", nbins=4)

@@ -9,14 +9,15 @@ import numpy as np
 import pandas as pd
 from matplotlib.artist import Artist
 from matplotlib.axes import Axes
-from matplotlib.collections import FillBetweenPolyCollection
+from matplotlib.collections import FillBetweenPolyCollection, LineCollection
 from matplotlib.lines import Line2D
 from matplotlib.text import Annotation
 
-from gradeline.quantities.printing import SI_DISPLAY, Display, thousands
+from gradeline.quantities.printing import SI_DISPLAY, Display, format_number, thousands
 from gradeline.reduction.tables import Reduction
-from gradeline.report.figures.differences import head_axis, measured_falls, only_differences
+from gradeline.report.figures.differences import draw_falls, head_axis, marks
 from gradeline.report.figures.pipe import Array, PipeArtists, column, draw_pipe, of_run
+from gradeline.report.figures.reading_marks import RING, draw_readings
 from gradeline.report.figures.style import COLOURS, INK, MUTED, legend_above, shorten
 from gradeline.report.tables import elevations_known
 
@@ -25,11 +26,14 @@ __all__ = [
     "PipeArtists",
     "draw_grade_lines",
     "draw_pipe",
+    "energy_line_is_cut",
+    "flagged_words",
     "pipe_fits_the_scale",
     "run_title",
 ]
 
-_RING = COLOURS["vermilion"]
+#: A velocity head above so many times the fall of the hydraulic grade line leaves nothing to be seen of the latter.
+_DWARFS = 5.0
 
 
 @dataclass(frozen=True)
@@ -44,10 +48,14 @@ class GradeLineArtists:
         The fitted line's interval at the level of the reduction.
     below_crown : FillBetweenPolyCollection or None
         Where the hydraulic grade line lies below the pipe's crown.
-    used, left_out, flagged : Line2D or None
-        Readings in the fit; readings left out as disturbed or by hand; rings around the flagged ones.
+    used, falls : Line2D or None
+        Readings in the fit: heads at their taps, and differences between two taps at the downstream one.
+    steps : LineCollection or None
+        Each difference as a step from the fitted head upstream.
+    left_out, flagged : Line2D or None
+        Readings left out as disturbed or by hand; rings around the flagged ones.
     labels : tuple of Annotation
-        Tap and reason beside each ring.
+        Tap and reason beside each ring, and beside the readings of taps that were left out for an ailment.
     pipe : PipeArtists or None
         The pipe, where it was drawn on the same axes.
     legend_rows : int
@@ -59,6 +67,8 @@ class GradeLineArtists:
     band: FillBetweenPolyCollection | None
     below_crown: FillBetweenPolyCollection | None
     used: Line2D | None
+    falls: Line2D | None
+    steps: LineCollection | None
     left_out: Line2D | None
     flagged: Line2D | None
     labels: tuple[Annotation, ...]
@@ -91,6 +101,23 @@ def run_title(reduction: Reduction, run: str, display: Display = SI_DISPLAY) -> 
     return " · ".join(parts)
 
 
+def flagged_words(reduction: Reduction, run: str) -> str:
+    """Return what stands under the title of a run that lies off the friction law; empty for the others."""
+    flags = reduction.flags
+    if not ((flags["kind"] == "run") & (flags["run"] == run)).to_numpy(bool).any():
+        return ""
+    return "flagged: off the law of the other runs; its readings do not enter the wall's fit"
+
+
+def energy_line_is_cut(reduction: Reduction, run: str) -> bool:
+    """Whether a run lies off the law and its velocity head dwarfs its fall, so that both lines on one axis show nothing."""
+    lines = of_run(reduction.grade_lines, run)
+    if not len(lines) or not flagged_words(reduction, run):
+        return False
+    hgl, egl = column(lines, "piezometric_head"), column(lines, "energy_head")
+    return bool(np.isfinite(egl).all() and np.max(egl - hgl) > _DWARFS * max(float(np.ptp(hgl)), 1e-3))
+
+
 def pipe_fits_the_scale(reduction: Reduction, run: str) -> bool:
     """Whether the pipe can share the scale of the heads: they come near it, or lie on a hill or dale.
 
@@ -101,6 +128,8 @@ def pipe_fits_the_scale(reduction: Reduction, run: str) -> bool:
     if not len(lines):
         return False
     hgl, egl = column(lines, "piezometric_head"), column(lines, "energy_head")
+    if energy_line_is_cut(reduction, run):
+        egl = hgl
     axis, crown = column(lines, "elevation"), column(lines, "crown")
     if elevations_known(reduction) and np.any(hgl < crown):
         return True
@@ -122,7 +151,7 @@ def draw_grade_lines(
 ) -> GradeLineArtists:
     """Draw a run's hydraulic and energy grade line with its readings, chainage to the right.
 
-    Where differences alone are read, each is a mark at its downstream tap, as far below the fitted head upstream.
+    A difference between two taps is a mark at the downstream one, as far below the fitted head upstream.
 
     Parameters
     ----------
@@ -144,22 +173,26 @@ def draw_grade_lines(
     GradeLineArtists
     """
     lines, heads = of_run(reduction.grade_lines, run), of_run(reduction.heads, run)
-    falls = only_differences(reduction)
-    heads = measured_falls(reduction, lines, heads) if falls else heads[heads["tap_2"].isna().to_numpy(bool)]
+    heads = marks(reduction, lines, heads)
+    fall = heads["tap_2"].notna().to_numpy(bool)
     scale, along = display.factor("head"), display.factor("chainage")
     x, y = column(heads, "chainage") * along, column(heads, "head") * scale
     used = heads["used"].fillna(False).to_numpy(bool)
     flags = heads["flag"].to_numpy(object)
     outlying = np.array([flag == "outlier" for flag in flags], bool)
+    # Left out for what ails the tap: named as well, but not ringed.
+    ailing = np.array([str(reason).startswith("left out: ") for reason in heads["reason"]], bool)
     size = 3.5 if small else 5.0
 
+    cut = energy_line_is_cut(reduction, run)
     hgl = egl = band = below = None
     half_band = 0.0
     if len(lines):
         places = column(lines, "chainage") * along
         low_line, high_line = (column(lines, name) * scale for name in ("piezometric_head", "energy_head"))
         half = coverage_factor(reduction, run) * column(lines, "energy_head_u") * scale
-        if np.isfinite(half).any():
+        # Of a line that is cut off the band would be that of the velocity head, and hide the other.
+        if np.isfinite(half).any() and not cut:
             half_band = float(np.nanmax(half))
             band = ax.fill_between(
                 places,
@@ -171,9 +204,13 @@ def draw_grade_lines(
                 label=f"{100 * reduction.level:.3g} % band",
                 zorder=1.5,
             )
-        (egl,) = ax.plot(
+        egl = Line2D(
             places, high_line, color=COLOURS["black"], linewidth=1.1, linestyle=(0, (5, 2)), label="EGL"
         )
+        # As a mere artist it does not stretch the axis.
+        (ax.add_artist if cut else ax.add_line)(egl)
+        if cut:
+            _tell_cut(ax, float(np.max(high_line - low_line)), display, small=small)
         (hgl,) = ax.plot(places, low_line, color=COLOURS["blue"], linewidth=1.4, label="HGL")
         crown = column(lines, "crown") * scale
         if with_pipe and elevations_known(reduction) and np.any(low_line < crown):
@@ -184,47 +221,23 @@ def draw_grade_lines(
                 where=low_line < crown,
                 interpolate=True,
                 facecolor="none",
-                edgecolor=_RING,
+                edgecolor=RING,
                 hatch="////",
                 linewidth=0,
                 label="HGL below crown",
             )
-    drawn: dict[str, Line2D | None] = {"used": None, "left_out": None, "flagged": None}
-    out = ~used & np.isfinite(y)
-    if used.any():
-        (drawn["used"],) = ax.plot(
-            x[used],
-            y[used],
-            "o",
-            markersize=size,
-            color=COLOURS["blue"],
-            label="fall from the tap upstream" if falls else "reading used",
-            zorder=3,
-        )
-    if out.any():
-        (drawn["left_out"],) = ax.plot(
-            x[out],
-            y[out],
-            "o",
-            markersize=size,
-            color=INK,
-            markerfacecolor="white",
-            label="left out",
-            zorder=3,
-        )
+    steps = draw_falls(ax, heads[fall], along, scale)
+    drawn = draw_readings(
+        ax,
+        x,
+        y,
+        used=used,
+        flagged=outlying,
+        fall=fall,
+        size=size,
+        words="reading used for S" if flagged_words(reduction, run) else "reading used",
+    )
     labels: list[Annotation] = []
-    if outlying.any():
-        (drawn["flagged"],) = ax.plot(
-            x[outlying],
-            y[outlying],
-            "o",
-            markersize=2.3 * size,
-            markerfacecolor="none",
-            markeredgecolor=_RING,
-            markeredgewidth=1.6,
-            label="flagged",
-            zorder=4,
-        )
     pipe = draw_pipe(ax, reduction, run, display=display) if with_pipe else None
     if pipe is not None:  # room for the names of the taps under the lowest part of the pipe
         low, high = ax.get_ylim()
@@ -242,17 +255,27 @@ def draw_grade_lines(
             fontsize=8.5,
             color=MUTED,
         )
-    if outlying.any():
+    named = outlying | (ailing & np.isfinite(y))
+    if named.any():
         labels = _ring_labels(
-            ax, heads[outlying], x[outlying], y[outlying], lines=(hgl, egl), small=small, with_pipe=with_pipe
+            ax,
+            heads[named],
+            x[named],
+            y[named],
+            lines=(hgl, hgl if cut else egl),
+            small=small,
+            with_pipe=with_pipe,
         )
     rows = 0
     if not small:
         handles: list[Artist | None] = [
             band if _visible(ax, half_band) else None,
             hgl,
-            egl,
-            *drawn.values(),
+            None if cut else egl,
+            drawn.used,
+            drawn.falls,
+            drawn.left_out,
+            drawn.flagged,
             below,
         ]
         if pipe is not None:
@@ -265,7 +288,32 @@ def draw_grade_lines(
             flowing=not at_rest,
         )
     return GradeLineArtists(
-        hgl, egl, band, below, drawn["used"], drawn["left_out"], drawn["flagged"], tuple(labels), pipe, rows
+        hgl,
+        egl,
+        band,
+        below,
+        drawn.used,
+        drawn.falls,
+        steps,
+        drawn.left_out,
+        drawn.flagged,
+        tuple(labels),
+        pipe,
+        rows,
+    )
+
+
+def _tell_cut(ax: Axes, rise: float, display: Display, *, small: bool) -> None:
+    """Say in a corner how far above the axis the energy line lies, in its unit."""
+    where = f"the EGL lies {format_number(rise, 3)} {display.unit('head')} above and is cut off"
+    ax.text(
+        0.02,
+        0.955,
+        "EGL cut off" if small else where,
+        transform=ax.transAxes,
+        va="center",
+        fontsize=7 if small else 8.5,
+        color=MUTED,
     )
 
 
@@ -317,7 +365,9 @@ def _ring_labels(
     for n, head in enumerate(heads.to_dict("records")):
         text = shorten(head["tap"], 14)
         if not small and head["reason"]:
-            text = f"{text}: {shorten(head['reason'], 44)}"
+            # "left out: datum offset" goes on from the tap's name; of an outlier only the reason is told.
+            joint = " " if head["flag"] == "excluded" else ": "
+            text = f"{text}{joint}{shorten(head['reason'], 52)}"
         up = with_pipe or not head["residual"] < 0
         wide = 0.56 * size * len(text) / width * (right - left)
         start = min(x[n], right - wide) if up else max(x[n] - wide, left)
@@ -341,7 +391,7 @@ def _ring_labels(
                 zorder=5,
                 arrowprops={
                     "arrowstyle": "-",
-                    "color": _RING,
+                    "color": RING,
                     "linewidth": 0.8,
                     "shrinkA": 0,
                     "shrinkB": 5,

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 from statistics import NormalDist
+from typing import Literal
 
 import numpy as np
 import numpy.typing as npt
@@ -19,9 +20,10 @@ from matplotlib.patches import Polygon, Rectangle
 from matplotlib.text import Annotation
 
 from gradeline.hydraulics.friction import LAMINAR_LIMIT, TURBULENT_LIMIT, colebrook_white
+from gradeline.hydraulics.sand_grain import sand_grain
 from gradeline.quantities.printing import SI_DISPLAY, Display, rounded
 from gradeline.reduction.tables import Reduction
-from gradeline.report.figures.run_labels import drawn_lines, run_labels
+from gradeline.report.figures.run_labels import drawn_lines, flagged_runs, run_labels
 from gradeline.report.figures.style import (
     INK,
     MUTED,
@@ -36,6 +38,9 @@ __all__ = ["FrictionFactorArtists", "SlopeVelocityArtists", "draw_friction_facto
 
 _Array = npt.NDArray[np.float64]
 _ERRORBARS = 400
+_Corner = Literal["upper left", "lower right", "upper right", "lower left"]
+#: Room that a legend inside the axes takes, as shares of them.
+_LEGEND_WIDTH, _LEGEND_MARGIN, _LEGEND_ROW = 0.5, 0.05, 0.08
 
 
 @dataclass(frozen=True)
@@ -50,11 +55,17 @@ class SlopeVelocityArtists:
         S proportional to V^n, by reach and regime.
     open_ends : tuple of Line2D
         Arrowheads at the edge where an interval goes on beyond the axis, downwards and upwards.
+    transition : Rectangle or Polygon or None
+        From the last laminar to the first turbulent velocity, all reaches and directions together.
+    flagged : Line2D or None
+        Rings around the runs that are flagged; the powers are those of the others.
     """
 
     runs: dict[tuple[str, str], ErrorbarContainer]
     powers: dict[tuple[str, str], Line2D]
     open_ends: tuple[Line2D, ...]
+    transition: Rectangle | Polygon | None = None
+    flagged: Line2D | None = None
 
 
 @dataclass(frozen=True)
@@ -69,6 +80,8 @@ class FrictionFactorArtists:
         The friction law at the wall's roughness, by reach.
     bands : mapping of str to PolyCollection
         Its band, by reach: the roughness interval and the law's own uncertainty.
+    sand : mapping of str to Line2D
+        The sand-grain law at the roughness that suits it, by reach, where the runs follow it.
     laminar, smooth : Line2D or None
         f = 64/Re (another constant where the section is no circle), and the law of a smooth wall.
     critical : Rectangle or Polygon or None
@@ -86,6 +99,7 @@ class FrictionFactorArtists:
     runs: dict[tuple[str, str], ErrorbarContainer]
     fitted: dict[str, Line2D]
     bands: dict[str, PolyCollection]
+    sand: dict[str, Line2D]
     laminar: Line2D | None
     smooth: Line2D | None
     critical: Rectangle | Polygon | None
@@ -189,7 +203,7 @@ def draw_slope_velocity(
     ax : Axes
         Where to draw.
     reduction : Reduction
-        Its tables ``runs``, ``reaches`` and ``exponents`` are read.
+        Its tables ``runs``, ``reaches``, ``exponents`` and ``flags`` are read.
     display : Display
         Units of the axes.
 
@@ -203,14 +217,17 @@ def draw_slope_velocity(
     fast = display.factor("velocity")
     shown = runs.assign(velocity=_column(runs, "velocity") * fast)
     drawn = _scatter_runs(ax, shown, "velocity", "slope", scale=scale, colours=colours)
+    off = np.isin(shown["run"].to_numpy(object), flagged_runs(reduction))
     powers: dict[tuple[str, str], Line2D] = {}
     for row in reduction.exponents.to_dict("records"):
         key = (str(row["reach"]), str(row["regime"]))
         if key not in drawn or not math.isfinite(row["exponent"]):
             continue
-        velocity, slope = (np.asarray(data, float) for data in drawn[key].lines[0].get_data())
+        velocity, slope, weight = _entered(shown, key, scale, off)
+        if not velocity.size:
+            continue
         ends = np.array([velocity.min() / 1.05, velocity.max() * 1.05])
-        middle = (np.log(velocity).mean(), np.log(slope).mean())
+        middle = (np.average(np.log(velocity), weights=weight), np.average(np.log(slope), weights=weight))
         (powers[key],) = ax.plot(
             ends,
             np.exp(middle[1] + row["exponent"] * (np.log(ends) - middle[0])),
@@ -226,11 +243,18 @@ def draw_slope_velocity(
     open_ends = _open_ends(ax, drawn)
     ax.set_xlabel(display.head("mean velocity V", "velocity"))
     ax.set_ylabel(display.head("friction slope S", "slope"))
+    turning = _transition(ax, reduction, fast)
+    x, y = _column(shown, "velocity"), _column(shown, "slope") * scale
+    with np.errstate(invalid="ignore"):
+        seen = (x > 0) & (y > 0)
+    _, flagged = run_labels(ax, reduction, x, y, seen & off, drawn_lines(drawn, powers.values()))
     if drawn:
         order: list[Artist] = []
         for key, container in drawn.items():
             order += [_mark(container), *([powers[key]] if key in powers else [])]
-        ax.legend(handles=order, loc="upper left", handlelength=1.8, labelspacing=0.35)
+        order += [artist for artist in (flagged, turning) if artist is not None]
+        corner = _clearest_corner(ax, x[seen], y[seen], len(order))
+        ax.legend(handles=order, loc=corner, handlelength=1.8, labelspacing=0.35)
     else:
         ax.text(
             0.5,
@@ -240,7 +264,52 @@ def draw_slope_velocity(
             ha="center",
             color=MUTED,
         )
-    return SlopeVelocityArtists(drawn, powers, open_ends)
+    return SlopeVelocityArtists(drawn, powers, open_ends, turning, flagged)
+
+
+def _entered(
+    runs: pd.DataFrame, key: tuple[str, str], scale: float, off: npt.NDArray[np.bool_]
+) -> tuple[_Array, _Array, _Array]:
+    """V, S and weights of the runs of a reach and regime that the exponent is of."""
+    velocity, slope = _column(runs, "velocity"), _column(runs, "slope")
+    mine = (runs["reach"].to_numpy(object) == key[0]) & (runs["regime"].to_numpy(object) == key[1]) & ~off
+    with np.errstate(invalid="ignore", divide="ignore"):
+        mine &= (velocity > 0) & (slope > 0)
+        weight = (slope / _column(runs, "slope_u_random"))[mine] ** 2
+    if not (np.isfinite(weight).all() and (weight > 0).all()):
+        weight = np.ones(int(mine.sum()))
+    return velocity[mine], scale * slope[mine], weight
+
+
+def _clearest_corner(ax: Axes, x: _Array, y: _Array, rows: int) -> _Corner:
+    """The corner in which a legend of so many rows covers the fewest marks."""
+    at = ax.transAxes.inverted().transform(ax.transData.transform(np.column_stack([x, y])))
+    wide, tall = _LEGEND_WIDTH, _LEGEND_MARGIN + _LEGEND_ROW * rows
+    left, right = at[:, 0] < wide, at[:, 0] > 1 - wide
+    low, high = at[:, 1] < tall, at[:, 1] > 1 - tall
+    covered: dict[_Corner, int] = {
+        "upper left": int((left & high).sum()),
+        "lower right": int((right & low).sum()),
+        "upper right": int((right & high).sum()),
+        "lower left": int((left & low).sum()),
+    }
+    return min(covered, key=lambda corner: covered[corner])
+
+
+def _transition(ax: Axes, reduction: Reduction, scale: float) -> Rectangle | Polygon | None:
+    """Shade the velocities between the last laminar and the first turbulent run."""
+    table = reduction.transition
+    low, high = _column(table, "lower_from"), _column(table, "upper_to")
+    if not (np.isfinite(low).any() and np.isfinite(high).any()) or np.nanmin(low) >= np.nanmax(high):
+        return None
+    return ax.axvspan(
+        float(np.nanmin(low)) * scale,
+        float(np.nanmax(high)) * scale,
+        color="#eceff1",
+        linewidth=0,
+        zorder=0.5,
+        label="critical velocities",
+    )
 
 
 def draw_friction_factor(ax: Axes, reduction: Reduction) -> FrictionFactorArtists:
@@ -290,6 +359,7 @@ def draw_friction_factor(ax: Axes, reduction: Reduction) -> FrictionFactorArtist
             label="critical zone",
         )
     fitted: dict[str, Line2D] = {}
+    sand: dict[str, Line2D] = {}
     bands: dict[str, PolyCollection] = {}
     if grid_high.size:
         (smooth,) = ax.plot(
@@ -318,6 +388,18 @@ def draw_friction_factor(ax: Axes, reduction: Reduction) -> FrictionFactorArtist
                 grid_high, law, color=colours[reach], linewidth=1.5, label=f"fitted law{name}", zorder=2.2
             )
             heights.append(law)
+        for reach, law in _sand_grain_laws(reduction, grid_high):
+            name = f", {shorten(reach, 18)}" if several else ""
+            (sand[reach],) = ax.plot(
+                grid_high,
+                law,
+                color=colours[reach],
+                linewidth=1.5,
+                linestyle=(0, (6, 1.5, 1.5, 1.5)),
+                label=f"sand-grain law{name}",
+                zorder=2.3,
+            )
+            heights.append(law)
     log_ticks(ax, "x", low, high)
     bars = np.concatenate([_column(runs, f"friction_factor_{end}")[seen] for end in ("low", "high")])
     middle = np.tile(factor[seen], 2)
@@ -325,15 +407,17 @@ def draw_friction_factor(ax: Axes, reduction: Reduction) -> FrictionFactorArtist
         heights.append(bars[(bars > middle / 2) & (bars < middle * 2)])
     log_ticks(ax, "y", *_limits(np.concatenate(heights), 0.05))
     open_ends = _open_ends(ax, drawn)
-    lines = drawn_lines(drawn, (line, *fitted.values()))
+    lines = drawn_lines(drawn, (line, *fitted.values(), *sand.values()))
     labels, flagged = run_labels(ax, reduction, reynolds, factor, seen, lines)
     ax.set_xlabel("Reynolds number Re")
     ax.set_ylabel("Darcy friction factor f")
-    rows = legend_above(ax, _law_handles(drawn, fitted, bands, line, smooth, critical, flagged), columns=4)
+    rows = legend_above(
+        ax, _law_handles(drawn, fitted, bands, *sand.values(), line, smooth, critical, flagged), columns=4
+    )
     if not seen.any():
         ax.text(0.5, 0.5, "no run has a friction factor", transform=ax.transAxes, ha="center", color=MUTED)
     return FrictionFactorArtists(
-        drawn, fitted, bands, line, smooth, critical, flagged, labels, open_ends, rows
+        drawn, fitted, bands, sand, line, smooth, critical, flagged, labels, open_ends, rows
     )
 
 
@@ -358,6 +442,20 @@ def _law_handles(
         handles += [fitted[reach]] if reach in fitted else []
     handles += list(bands.values())[:1]
     return handles + [artist for artist in others if artist is not None]
+
+
+def _sand_grain_laws(reduction: Reduction, reynolds: _Array) -> list[tuple[str, _Array]]:
+    """The sand-grain law of each reach whose wall's runs follow it."""
+    sizes = {
+        row["wall"]: row["roughness"]
+        for row in reduction.laws.to_dict("records")
+        if row["law"] == row["verdict"] == "sand-grain"
+    }
+    return [
+        (str(reach["reach"]), sand_grain(reynolds, sizes[reach["wall"]] / reach["diameter"]))
+        for reach in reduction.reaches.to_dict("records")
+        if reach["wall"] in sizes
+    ]
 
 
 def _fitted_laws(

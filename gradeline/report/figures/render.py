@@ -11,17 +11,31 @@ from functools import partial
 
 import matplotlib as mpl
 import numpy as np
+from matplotlib.axes import Axes
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.backends.backend_svg import FigureCanvasSVG
 from matplotlib.figure import Figure
 
 from gradeline.quantities.printing import SI_DISPLAY, Display
 from gradeline.reduction.tables import Reduction
+from gradeline.report.converted import converted
+from gradeline.report.figures.ailments import (
+    BreakArtists,
+    TapErrorArtists,
+    ailing_taps,
+    break_title,
+    broken_places,
+    draw_break,
+    draw_tap_error,
+)
+from gradeline.report.figures.budget import budget_alt, budget_figure
 from gradeline.report.figures.compose import Canvases, grade_line_figure, sheet_figure, single
-from gradeline.report.figures.differences import drawn_runs, only_differences
-from gradeline.report.figures.grade_lines import run_title
+from gradeline.report.figures.differences import drawn_runs
+from gradeline.report.figures.grade_lines import flagged_words, run_title
 from gradeline.report.figures.laws import draw_friction_factor, draw_slope_velocity
-from gradeline.report.figures.residuals import draw_residuals
+from gradeline.report.figures.likelihood import LikelihoodArtists, draw_likelihood, drawn_walls
+from gradeline.report.figures.losses import LossArtists, draw_loss_coefficient, drawn_losses
+from gradeline.report.figures.residuals import any_left_over, draw_residuals
 from gradeline.report.figures.style import shorten, styled
 
 __all__ = ["Picture", "embedded", "pictures"]
@@ -30,7 +44,12 @@ __all__ = ["Picture", "embedded", "pictures"]
 SINGLE_RUNS = 24
 PANELS_A_SHEET = 12
 MOST_PANELS = 120
+#: Fitted losses, and walls, that get a figure.
+_MOST_LOSSES, _MOST_WALLS = 12, 6
+#: Ailing taps that get a figure.
+_MOST_TAPS = 4
 _DPI = 125
+_PAPER_DPI = 200
 
 
 @dataclass(frozen=True)
@@ -45,10 +64,13 @@ class Picture:
         One line for the page's caption.
     alt : str
         What it shows, for readers who do not see it.
-    group : {"grade lines", "residuals", "slope velocity", "friction factor"}
+    group : {"grade lines", "residuals", "ailments", "slope velocity", "friction factor", "fittings", "budget", "likelihood"}
         The section of the page it belongs to.
     svg, png : bytes
         Empty where that format was not asked for.
+    paper : bytes
+        For a PDF, empty where that was not asked for: SVG whose words are drawn as shapes; a PNG of 200 dpi where the
+        figure is hatched, since SVG patterns are not understood there.
     """
 
     name: str
@@ -57,10 +79,16 @@ class Picture:
     group: str
     svg: bytes
     png: bytes
+    paper: bytes = b""
 
 
 def pictures(
-    reduction: Reduction, *, svg: bool = True, png: bool = True, display: Display = SI_DISPLAY
+    reduction: Reduction,
+    *,
+    svg: bool = True,
+    png: bool = True,
+    paper: bool = False,
+    display: Display = SI_DISPLAY,
 ) -> tuple[Picture, ...]:
     """Draw every figure of a reduction.
 
@@ -68,8 +96,8 @@ def pictures(
     ----------
     reduction : Reduction
         What is drawn.
-    svg, png : bool
-        Which formats are wanted.
+    svg, png, paper : bool
+        Which formats are wanted; `paper` is what a PDF embeds.
     display : Display
         Units of the axes.
 
@@ -79,11 +107,12 @@ def pictures(
         Grade lines run by run (or sheets of panels where there are more than 24 runs), residuals by tap, slope
         against velocity, friction factor against Reynolds number.
     """
+    reduction = converted(reduction, display)
     with styled(), warnings.catch_warnings():
         # a name in a script that the font lacks: the SVG keeps the text, the PNG shows a box
         warnings.filterwarnings("ignore", message=r"Glyph .* missing from", category=UserWarning)
         plans = _plans(reduction, display, Canvases())
-        return tuple(_render(*plan, svg=svg, png=png) for plan in plans)
+        return tuple(_render(*plan, svg=svg, png=png, paper=paper) for plan in plans)
 
 
 _Plan = tuple[str, str, str, str, Callable[[], Figure]]
@@ -114,13 +143,34 @@ def _plans(reduction: Reduction, display: Display, blanks: Canvases) -> Iterator
                 "grade lines",
                 partial(sheet_figure, reduction, sheet, display),
             )
-    yield (
-        "residuals",
-        "Residuals by tap, all runs",
-        "Measured minus fitted energy head of every reading, the taps in order of chainage, flagged readings ringed.",
-        "residuals",
-        lambda: single(lambda ax: draw_residuals(ax, reduction, display=display), "Residuals by tap"),
-    )
+    if any_left_over(reduction):
+        yield (
+            "residuals",
+            "Residuals by tap, all runs",
+            "Measured minus fitted energy head of every reading, the taps in order of chainage, flagged readings ringed.",
+            "residuals",
+            lambda: single(lambda ax: draw_residuals(ax, reduction, display=display), "Residuals by tap"),
+        )
+    for n, row in enumerate(ailing_taps(reduction)[:_MOST_TAPS], 1):
+        title = f"{str(row['what']).capitalize()} {shorten(row['name'], 20)}: {row['ailment']}"
+        yield (
+            f"tap_error_{n}",
+            title,
+            f"{title}. Its error in every run, as the other readings show it, with its interval, and what the error would be "
+            "by the patterns that fit.",
+            "ailments",
+            partial(single, partial(_tap_error, reduction, str(row["name"]), display), title),
+        )
+    for n, row in broken_places(reduction):
+        title = break_title(row, display)
+        yield (
+            f"unlisted_{n + 1}",
+            title,
+            f"{title}. Energy heads of all runs against chainage, the straight line taken out, over the velocity head for a loss and "
+            "over the friction slope for a change of slope; the stretch that holds the place is shaded.",
+            "ailments",
+            partial(single, partial(_break, reduction, n, display), title),
+        )
     yield (
         "slope_velocity",
         "Friction slope against velocity",
@@ -140,6 +190,50 @@ def _plans(reduction: Reduction, display: Display, blanks: Canvases) -> Iterator
             lambda ax: draw_friction_factor(ax, reduction), "Friction factor and Reynolds number", height=4.4
         ),
     )
+    for n, name in enumerate(drawn_losses(reduction)[:_MOST_LOSSES], 1):
+        title = f"Loss coefficient of {shorten(name, 24)} and Reynolds number"
+        yield (
+            f"loss_coefficient_{n}",
+            title,
+            f"{title}: K of each run with its interval, the mean over all runs with its band, and the published value of "
+            "the kind where there is one.",
+            "fittings",
+            partial(single, partial(_loss, reduction, name), title),
+        )
+    if len(reduction.budget):
+        yield (
+            "uncertainty_budget",
+            "Where the uncertainty comes from",
+            budget_alt(reduction),
+            "budget",
+            partial(budget_figure, reduction),
+        )
+    for n, wall in enumerate(drawn_walls(reduction)[:_MOST_WALLS], 1):
+        title = f"Likelihood of the roughness, {shorten(wall, 40)}"
+        yield (
+            f"likelihood_{n}",
+            title,
+            f"{title}: relative likelihood against the roughness with its interval, the 95 % upper bound and the roughness at "
+            "which the roughness Reynolds number of the fastest run is 5.",
+            "likelihood",
+            partial(single, partial(_likelihood, reduction, wall, display), title, height=3.4),
+        )
+
+
+def _likelihood(reduction: Reduction, wall: str, display: Display, ax: Axes) -> LikelihoodArtists:
+    return draw_likelihood(ax, reduction, wall, display=display)
+
+
+def _tap_error(reduction: Reduction, name: str, display: Display, ax: Axes) -> TapErrorArtists:
+    return draw_tap_error(ax, reduction, name, display=display)
+
+
+def _break(reduction: Reduction, number: int, display: Display, ax: Axes) -> BreakArtists:
+    return draw_break(ax, reduction, number, display=display)
+
+
+def _loss(reduction: Reduction, name: str, ax: Axes) -> LossArtists:
+    return draw_loss_coefficient(ax, reduction, name)
 
 
 def chosen_runs(reduction: Reduction) -> list[str]:
@@ -161,31 +255,56 @@ def chosen_runs(reduction: Reduction) -> list[str]:
 def _readings_in_words(reduction: Reduction, run: str) -> str:
     heads = reduction.heads[(reduction.heads["run"] == run).to_numpy(bool)]
     used = int(heads["used"].fillna(False).to_numpy(bool).sum())
-    names = heads["gauge" if only_differences(reduction) else "tap"]
+    names = heads["gauge"].where(heads["tap_2"].notna(), heads["tap"])
     flagged = [str(name) for name, flag in zip(names, heads["flag"], strict=True) if flag == "outlier"]
-    words = f"{used} readings in the fit"
+    about = flagged_words(reduction, run)
+    words = f"{about[0].upper()}{about[1:]}. " if about else ""
+    words += f"{used} readings in the fit" + (" of its line" if about else "")
     return f"{words}; flagged: {', '.join(flagged)}." if flagged else f"{words}; none flagged."
 
 
 def _render(
-    name: str, title: str, alt: str, group: str, draw: Callable[[], Figure], *, svg: bool, png: bool
+    name: str,
+    title: str,
+    alt: str,
+    group: str,
+    draw: Callable[[], Figure],
+    *,
+    svg: bool,
+    png: bool,
+    paper: bool,
 ) -> Picture:
     mpl.rcParams["svg.hashsalt"] = name
     figure = draw()
-    as_svg, as_png = io.BytesIO(), io.BytesIO()
-    if svg:
-        FigureCanvasSVG(figure).print_svg(  # type: ignore[no-untyped-call]  # the library has no types
-            as_svg, metadata={"Date": None, "Creator": None}
-        )
-    if png:
-        figure.set_dpi(_DPI)
-        canvas = FigureCanvasAgg(figure)
-        canvas.print_png(  # type: ignore[no-untyped-call]  # the library has no types
-            as_png, metadata={"Software": None}, pil_kwargs={"compress_level": 1}
-        )
-    return Picture(name, title, alt, group, as_svg.getvalue(), as_png.getvalue())
+    as_svg = _as_svg(figure) if svg else b""
+    for_paper = b""
+    if paper:
+        with mpl.rc_context({"svg.fonttype": "path"}):
+            for_paper = _METADATA.sub(b"", _as_svg(figure), count=1)
+        if b"<pattern" in for_paper:
+            for_paper = _as_png(figure, _PAPER_DPI)
+    return Picture(name, title, alt, group, as_svg, _as_png(figure, _DPI) if png else b"", for_paper)
 
 
+def _as_svg(figure: Figure) -> bytes:
+    out = io.BytesIO()
+    FigureCanvasSVG(figure).print_svg(  # type: ignore[no-untyped-call]  # the library has no types
+        out, metadata={"Date": None, "Creator": None}
+    )
+    return out.getvalue()
+
+
+def _as_png(figure: Figure, dpi: int) -> bytes:
+    out = io.BytesIO()
+    figure.set_dpi(dpi)
+    canvas = FigureCanvasAgg(figure)
+    canvas.print_png(  # type: ignore[no-untyped-call]  # the library has no types
+        out, metadata={"Software": None}, pil_kwargs={"compress_level": 1}
+    )
+    return out.getvalue()
+
+
+_METADATA = re.compile(rb"<metadata>.*?</metadata>", re.DOTALL)
 _TAG = re.compile(r"<[a-zA-Z][^>]*>")
 _IDENTITY = re.compile(r"""\bid="([^"]*)"|url\(#([^)]*)\)|href="#([^"]*)\"""")
 

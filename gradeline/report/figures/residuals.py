@@ -24,7 +24,7 @@ from gradeline.report.figures.style import (
     shorten,
 )
 
-__all__ = ["ResidualArtists", "draw_residuals"]
+__all__ = ["ResidualArtists", "any_left_over", "draw_residuals"]
 
 _MANY_MARKS = 4000
 #: A residual below this, in the unit of the axis, is no more than the rounding of the arithmetic.
@@ -63,6 +63,15 @@ class ResidualArtists:
     fastest: PolyCollection | None
     legend_rows: int
     beyond: bool
+
+
+def any_left_over(reduction: Reduction) -> bool:
+    """Whether any reading of a flowing run lies off its line by more than the rounding of the arithmetic."""
+    flowing = reduction.runs["run"][(reduction.runs["regime"] != "static").to_numpy(bool)]
+    mine = reduction.heads["run"].isin(set(flowing)).to_numpy(bool)
+    residual = reduction.heads["residual"].to_numpy(float, na_value=np.nan)[mine]
+    with np.errstate(invalid="ignore"):
+        return bool((np.abs(residual) > 1e-3 * _ROUNDING).any())
 
 
 def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISPLAY) -> ResidualArtists:

@@ -14,13 +14,19 @@ from matplotlib.text import Annotation
 from gradeline.reduction.tables import Reduction
 from gradeline.report.figures.style import COLOURS, INK, shorten
 
-__all__ = ["drawn_lines", "run_labels"]
+__all__ = ["drawn_lines", "flagged_runs", "run_labels"]
 
 _Array = npt.NDArray[np.float64]
 _NAMED_RUNS = 20
 _LABEL_SIZE = 8
 #: Where the label of a run may stand about its mark, the best place first: to the right or left, up or down.
 _LABEL_PLACES = ((1, 1), (1, -1), (-1, -1), (-1, 1), (1, 0), (-1, 0))
+
+
+def flagged_runs(reduction: Reduction) -> list[str]:
+    """Return the runs that a flag calls off the law of the others."""
+    flags = reduction.flags
+    return list(dict.fromkeys(flags["run"][(flags["kind"] == "run").to_numpy(bool)]))
 
 
 def run_labels(
@@ -52,8 +58,7 @@ def run_labels(
         The labels and the rings.
     """
     names = reduction.runs["run"].to_numpy(object)
-    flags = reduction.flags
-    flagged = set(flags["run"][(flags["kind"] == "run").to_numpy(bool)])
+    flagged = set(flagged_runs(reduction))
     ringed = np.array([name in flagged for name in names], bool) & seen
     ring = None
     if ringed.any():
