@@ -132,9 +132,9 @@ def likely_scatter(data: OffLaw) -> tuple[float, float]:
     Examples
     --------
     >>> rng = np.random.default_rng(1)
-    >>> slope = np.geomspace(0.01, 0.3, 20)
-    >>> none = np.zeros(20)
-    >>> data = OffLaw(rng.normal(0, 0.001 / slope), none, none, 1 / slope, np.zeros((20, 0)), np.zeros((20, 0)))
+    >>> slope = np.geomspace(0.01, 0.3, 60)
+    >>> none, nothing = np.zeros(60), np.zeros((60, 0))
+    >>> data = OffLaw(rng.normal(0, 0.001 / slope), none, none, 1 / slope, nothing, nothing)
     >>> bool(0.0007 < likely_scatter(data)[1] < 0.0013)
     True
     """

@@ -49,7 +49,7 @@ def hazen_williams_c(velocity: npt.ArrayLike, diameter: npt.ArrayLike, slope: np
     Examples
     --------
     >>> print(hazen_williams_c(2.0, 0.3, 0.01).round(1))
-    144.7
+    144.8
     """
     radius = _positive(diameter) / 4.0
     return np.asarray(

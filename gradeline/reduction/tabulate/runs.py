@@ -100,6 +100,10 @@ def _run_reasons(flowing: Flowing, friction: Friction) -> NDArray[np.object_]:
     reasons[unknown] = (
         "one line through as many readings as it has parameters: no uncertainty without a stated one"
     )
+    reasons[unknown & np.isfinite(friction.factor_u)] = (
+        "the scatter of the readings is not known, and nothing that was stated moves S: no uncertainty of S; in that of f "
+        "the uncertainty holds the stated errors alone"
+    )
     reasons[friction.slope <= 0] = "no loss of head could be measured: S is not above zero"
     missing = ~np.isfinite(friction.slope)
     reasons[missing] = (
