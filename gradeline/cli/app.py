@@ -137,7 +137,7 @@ def check(
 
     outcomes = []
     for source in surveys:
-        outcomes.append(attempt(lambda source=source: one(source), source))  # type: ignore[misc]
+        outcomes.append(attempt(lambda source=source: one(source), source))  # type: ignore[misc]  # the default binds this source
         _tell(outcomes[-1])
     if as_json:
         _print_outcomes(outcomes, "survey")
@@ -187,7 +187,7 @@ def gauges(
 
     outcomes = []
     for source in surveys:
-        outcomes.append(attempt(lambda source=source: one(source), source))  # type: ignore[misc]
+        outcomes.append(attempt(lambda source=source: one(source), source))  # type: ignore[misc]  # the default binds this source
         _tell(outcomes[-1])
     if as_json:
         _print_outcomes(outcomes, "gauges")
