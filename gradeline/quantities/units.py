@@ -1,7 +1,7 @@
 """Dimensions and units: a unit's text to its conversion into SI.
 
-Units are read by `pint`, which is imported when the first unit is read: with its registry it takes a third of a
-second.
+Units are read by `pint`. With its registry it takes a third of a second to import, so the commonest units are written
+out here (a test holds them against it) and it is imported when the first other one is read.
 """
 
 from __future__ import annotations
@@ -118,6 +118,25 @@ _SPELLINGS: Mapping[str, Mapping[str, str]] = {
     },
     "flow": {"lps": "L/s", "lpm": "L/min", "lph": "L/h", "cumec": "m^3/s", "cumecs": "m^3/s"},
     "dynamic viscosity": {"mpa.s": "mPa s", "pa.s": "Pa s"},
+}
+# The units that most surveys are written in, as (factor, divisor): what pint says of them, without importing it.
+_COMMON: Mapping[str, Mapping[str, tuple[float, float]]] = {
+    "length": {
+        "m": (1.0, 1.0),
+        "mm": (1.0, 1000.0),
+        "cm": (1.0, 100.0),
+        "in": (0.0254, 1.0),
+        "ft": (0.3048, 1.0),
+    },
+    "pressure": {"Pa": (1.0, 1.0), "kPa": (1000.0, 1.0), "bar": (100000.0, 1.0), "mbar": (100.0, 1.0)},
+    "flow": {"L/s": (1.0, 1000.0), "m^3/s": (1.0, 1.0), "m^3/h": (1.0, 3600.0), "L/min": (1.0, 60000.0)},
+    "temperature difference": {"K": (1.0, 1.0)},
+    "dimensionless": {"%": (1.0, 100.0)},
+    "angle": {"deg": (math.pi / 180.0, 1.0)},
+    "density": {"kg/m^3": (1.0, 1.0)},
+    "mass": {"kg": (1.0, 1.0), "g": (1.0, 1000.0)},
+    "time": {"s": (1.0, 1.0), "min": (60.0, 1.0)},
+    "velocity": {"m/s": (1.0, 1.0)},
 }
 _OFFSETS = {"degree_Celsius": (1.0, 273.15), "degree_Fahrenheit": (5 / 9, 459.67)}
 
@@ -254,7 +273,6 @@ def parse_unit(text: str, dimension: str) -> Unit:
         ...
     gradeline.errors.QuantityError: the unit 'gal' is ambiguous; say US_gal or imp_gal
     """
-    wanted = DIMENSIONS[dimension]
     stripped = text.strip()
     if not stripped:
         raise QuantityError(f"a unit is missing; {offer(dimension)}")
@@ -265,6 +283,17 @@ def parse_unit(text: str, dimension: str) -> Unit:
         raise QuantityError(
             f"the unit {stripped!r} asks for absolute pressure; give pressures against the local atmosphere"
         )
+    if stripped in _COMMON.get(dimension, {}):
+        return Unit(stripped, dimension, *_COMMON[dimension][stripped])
+    if (stripped, dimension) == ("degC", "temperature"):
+        factor, offset = _OFFSETS["degree_Celsius"]
+        return Unit(stripped, dimension, factor, 1.0, offset)
+    return _by_pint(stripped, dimension)
+
+
+def _by_pint(stripped: str, dimension: str) -> Unit:
+    """The unit as pint reads it, checked to be of the dimension."""
+    wanted = DIMENSIONS[dimension]
     unit = _pint_unit(stripped, dimension)
     names = dict(unit._units)
     found = _dimension_of(unit)
