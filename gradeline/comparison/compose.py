@@ -19,6 +19,7 @@ from gradeline.comparison.sayings import assumptions_of, cautions_of
 from gradeline.comparison.tables import Comparison, table_of
 from gradeline.errors import UsageError
 from gradeline.fitting.joint import JointLevels, Part, freedom_of, joint_levels
+from gradeline.fitting.one_thread import one_thread
 from gradeline.hydraulics.friction import TURBULENT_LIMIT
 from gradeline.reduction import reduce
 from gradeline.reduction.fitted import FittedWall
@@ -32,6 +33,7 @@ Array = NDArray[np.float64]
 _MANY = 1e9
 
 
+@one_thread
 def compare(
     surveys: Sequence[Survey | Reduction],
     *,

@@ -10,6 +10,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from gradeline.errors import ReductionError
+from gradeline.fitting.one_thread import one_thread
 from gradeline.planning import tabulate
 from gradeline.planning.accuracy import Accuracy, accuracy_of
 from gradeline.planning.assumed import (
@@ -51,6 +52,7 @@ class _Flows:
     changes: tuple[Change, ...] = ()
 
 
+@one_thread
 def plan(
     survey: Survey,
     *,

@@ -12,6 +12,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from gradeline.errors import UsageError
+from gradeline.fitting.one_thread import one_thread
 from gradeline.prediction.carried import Carried, carried_from
 from gradeline.prediction.line import Answer, PipeLine
 from gradeline.prediction.losses import Conditions
@@ -34,6 +35,7 @@ _HOUR = 3600.0
 _LONGEST_YEAR = 8784.0
 
 
+@one_thread
 def predict(
     source: Reduction | Mapping[str, Any] | str | Path,
     *,

@@ -6,6 +6,7 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from gradeline.fitting.one_thread import one_thread
 from gradeline.reduction import tabulate
 from gradeline.reduction.ailment_sentences import ailment_assumptions, ailment_cautions
 from gradeline.reduction.budget import budget_sentences, run_budgets, wall_budgets
@@ -34,6 +35,7 @@ from gradeline.survey import Survey
 __all__ = ["reduce"]
 
 
+@one_thread
 def reduce(
     survey: Survey,
     *,

@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gradeline.errors import ReductionError
+from gradeline.fitting.one_thread import one_thread
 from gradeline.reduction.choices import CORRECTIONS, excluded_readings
 from gradeline.reduction.corrections import Corrections, static_corrections
 from gradeline.reduction.drift import steadied
@@ -63,6 +64,7 @@ class Estimates:
     check: str
 
 
+@one_thread
 def estimates_of(
     survey: Survey,
     *,

@@ -42,9 +42,10 @@ def frame(table: str, columns: Mapping[str, Values]) -> pd.DataFrame:
     return pd.DataFrame({name: _column(columns[name], kind) for name, kind in specification.items()})
 
 
-def _column(values: Values, column: Column) -> pd.Series[Any]:
+def _column(values: Values, column: Column) -> Array | pd.api.extensions.ExtensionArray | pd.Series[Any]:
+    # Arrays rather than a Series each: a reduction has some three hundred columns.
     if column.kind == "number":
-        return pd.Series(np.asarray(values, dtype=float), dtype=float)
+        return np.asarray(values, dtype=float)
     if column.kind == "truth":
-        return pd.Series(pd.array(list(values), dtype="boolean"))
+        return pd.array(list(values), dtype="boolean")
     return pd.Series([None if value in (None, "") else str(value) for value in values], dtype=object)
