@@ -53,6 +53,7 @@ def check_gauges(
             continue
         kind = GAUGE_KINDS[gauge.kind]
         _check_together(ledger, gauge, kind)
+        _check_run_temperatures(ledger, gauge, kind, temperatures)
         check_tension(ledger, gauge, kind, fluid)
         if kind.fluid_side is not None:
             _check_fluid(ledger, gauge, kind, fluid, temperatures)
@@ -130,6 +131,30 @@ def _check_fluid(
         f"{name!r} ({here:g} kg/m³) is not {kind.fluid_side} than the fluid in the lines ({beside:g} kg/m³), as in "
         f"kind {gauge.kind!r}; mend the fluid, or is it kind = {other!r}?",
     )
+
+
+def _check_run_temperatures(
+    ledger: Ledger, gauge: GaugeTable, kind: GaugeKind, temperatures: Sequence[float]
+) -> None:
+    """A density that goes with the runs' temperature needs one, also where the flowing fluid does without."""
+    values = gauge.values or {}
+    if not np.isnan(np.asarray(temperatures, dtype=float)).any():
+        return
+    if kind.level_key is not None:
+        _note(
+            ledger,
+            gauge,
+            "kind",
+            "the weight of the trapped gas goes with the temperature, and that of a run is missing; give "
+            "'temperature [degC]' with the runs",
+        )
+    elif values.get("gauge_fluid_expansion") is not None and values.get("gauge_temperature") is None:
+        _note(
+            ledger,
+            gauge,
+            "gauge_fluid_expansion",
+            "the gauge fluid expands with its temperature, and that of a run is missing; add gauge_temperature",
+        )
 
 
 def _check_temperature(

@@ -10,6 +10,7 @@ from gradeline.errors import SurveyError
 from gradeline.reduction.gauge_ranges import gauge_ranges
 from tests.gauges.conftest import NAMES, RHO, heads
 from tests.gauges.test_reduction import ENDS, FALL, LEGS, MERCURY, UTUBE
+from tests.published.example import write_example
 
 DEFLECTION = 1000 * FALL * RHO / (MERCURY - RHO)
 COLUMN = {"m1 [mm]": DEFLECTION}
@@ -279,3 +280,31 @@ def test_the_one_limb_of_a_well_begins_at_0(bench):
     assert found.low == 0.0
     # handbooks: what stands in the limb and what the well fell by, 1.02 of the reading
     assert found.high == pytest.approx(1.2 * 1.02 * (MERCURY / RHO - 1), rel=1e-6)
+
+
+@pytest.mark.parametrize(
+    ("gauge", "columns", "told"),
+    [
+        (
+            '[gauge.g]\nkind = "closed multitube manometer"\nzero = "0 m"\n',
+            {"T1 [m]": 1.0, "T2 [m]": 0.5},
+            "survey.toml gauge.g.kind: the weight of the trapped gas goes with the temperature, and that of a run is "
+            "missing; give 'temperature [degC]' with the runs",
+        ),
+        (
+            '[gauge.m]\nkind = "u-tube"\nupstream = "T1"\ndownstream = "T2"\ngauge_fluid = "heavy"\n'
+            'gauge_fluid_density = "1600 kg/m^3"\ngauge_fluid_expansion = "0.0012 1/K"\n',
+            {"m [m]": 0.1},
+            "survey.toml gauge.m.gauge_fluid_expansion: the gauge fluid expands with its temperature, and that of a run is "
+            "missing; add gauge_temperature",
+        ),
+    ],
+)
+def test_a_fluid_of_given_density_leaves_the_gauge_without_a_temperature(tmp_path, gauge, columns, told):
+    """Both read as not taken before, without a word; with a temperature they are read."""
+    given = {"gauge": "g" if "gauge.g" in gauge else "", "elevations": (0.0, 1.0)}
+    bare = write_example(tmp_path / "bare", gauge, {"flow [L/s]": 2, **columns}, **given)
+    assert problems_of(bare) == [told]
+    full = {"flow [L/s]": 2, "temperature [degC]": 20, **columns}
+    survey = gradeline.read_survey(write_example(tmp_path / "full", gauge, full, **given))
+    assert np.isfinite(gradeline.reduce(survey, correct="none").runs["slope"]).all()

@@ -15,7 +15,8 @@ from gradeline.hydraulics.differential import (
     inverted_u_tube_difference,
     u_tube_difference,
 )
-from gradeline.hydraulics.manometry import pressure_gauge_head
+from gradeline.hydraulics.manometry import closed_multitube_head, piezometer_head, pressure_gauge_head
+from gradeline.reduction.media import fluid_density
 
 LEVEL = {"tap_elevation": 0.0, "tap_2_elevation": 0.0}
 KPA = 1000.0
@@ -158,3 +159,85 @@ def test_a_transducer_between_two_taps_equals_a_gauge_at_each():
         gravity=g,
     )
     assert difference == pytest.approx(heads[0] - heads[1], abs=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("bore", "density", "tension", "angle", "rise", "tolerance"),
+    [
+        # Choudhary and Om Prakash, ex. 2.6, 9.81 m/s²: 14.88 mm of water, -4.914 mm of mercury in 2 mm
+        (2e-3, 1000.0, 0.073, 0.0, 14.88e-3, 5e-6),
+        (2e-3, 13600.0, 0.510, 130.0, -4.914e-3, 5e-7),
+        # Cengel and Cimbala, capillary rise of water in a glass tube of 0.6 mm, 0.073 N/m (from memory, reproduced): 5.0 cm
+        (0.6e-3, 1000.0, 0.073, 0.0, 5.0e-2, 5e-4),
+        # Munson, ex. 1.8, 9.789 kN/m³ and 0.0728 N/m (from memory, reproduced): 29.8 mm of bore for 1.0 mm
+        (29.8e-3, 9789 / 9.81, 0.0728, 0.0, 1.0e-3, 2e-6),
+    ],
+)
+def test_an_open_column_stands_for_less_than_its_height(bore, density, tension, angle, rise, tolerance):
+    head = piezometer_head(
+        rise,
+        tap_elevation=0.0,
+        density=density,
+        column_density=density,
+        air_density=0.0,
+        gravity=9.81,
+        bore=bore,
+        surface_tension=tension,
+        contact_angle=np.radians(angle),
+    )
+    assert head == pytest.approx(0.0, abs=tolerance)
+
+
+@pytest.mark.parametrize(
+    ("fluid", "pascal", "tolerance"), [("water", 248.84, 0.005), ("mercury", 3376.85, 0.005 + 3e-6 * 3376.85)]
+)
+def test_an_inch_of_column_at_60_fahrenheit(fluid, pascal, tolerance):
+    # NIST SP 811, appendix B.8 (from memory): inch of water and of mercury (60 degF) in Pa. Our mercury lies up to 3 ppm
+    # below that of the older tables
+    rho = fluid_density(fluid, np.array([288.7056]))
+    head = piezometer_head(
+        FOOT / 12, tap_elevation=0.0, density=rho, column_density=rho, air_density=0.0, gravity=9.80665
+    )
+    assert rho * 9.80665 * head == pytest.approx(pascal, abs=tolerance)
+
+
+def test_gas_on_a_column_in_the_tank_of_the_chain():
+    # Cengel and Cimbala Ex. 3-6 again: the air of 129.647 kPa in the tank (85.6 kPa outside) stands on 0.1 m of water; oil
+    # 0.2 m and mercury 0.35 m lead from its foot to the air. Both ways the water's foot has one head.
+    foot = -0.35 + 0.2
+    p = chain_pressure([850.0, 13600.0], [foot, -0.35], [-0.35, 0.0], gravity=9.81)
+    under_gas = closed_multitube_head(
+        0.1,
+        zero=foot,
+        tap_elevation=foot,
+        density=1000.0,
+        column_density=1000.0,
+        gauge_density=0.0,
+        air_density=0.0,
+        gravity=9.81,
+        gas_pressure=(129.647 - 85.6) * KPA,
+    )
+    assert under_gas == pytest.approx(foot + p / (1000.0 * 9.81), abs=0.5 / 9810)
+    # Ex. 3-5: gas of 100.6 kPa (96 kPa outside) holds a liquid of 0.85 down by 55 cm; and Douglas Ex. 2.9: two columns under
+    # one gas, 0.3 m apart
+    given = {"tap_elevation": 0.0, "gauge_density": 0.0, "air_density": 0.0, "gravity": 9.81}
+    held = closed_multitube_head(
+        0.0, density=850.0, column_density=850.0, gas_pressure=(100.6 - 96) * KPA, **given
+    )
+    assert held == pytest.approx(0.55, abs=50 / (850 * 9.81))
+    columns = closed_multitube_head(
+        np.array([0.25, 0.55]), density=1000.0, column_density=1000.0, gas_pressure=20e3, **given
+    )
+    # A stands 0.1 m below B, so its column of 0.25 m stands for p_A = 1000 g (h + 0.1): p_B - p_A = 1962 Pa
+    assert 1000 * 9.81 * (columns[1] - columns[0] - 0.1) == pytest.approx(1962.0, abs=0.05)
+
+
+def test_a_line_forty_kelvin_cooler_is_one_per_cent():
+    # IAPWS-95 densities: 988.03505 kg/m³ at 50 °C in the pipe, 999.70247 at 10 °C in the line and the column
+    pipe, line = 988.03505, 999.70247
+    common = {"tap_elevation": 0.0, "density": pipe, "air_density": 0.0, "gravity": 9.81}
+    cool = piezometer_head(2.0, column_density=line, **common)
+    assert cool / piezometer_head(2.0, column_density=pipe, **common) - 1 == pytest.approx(0.0118, abs=5e-5)
+    gauge = {"gauge_elevation": 2.0, **common}
+    cool = pressure_gauge_head(0.0, line_density=line, **gauge)
+    assert cool / pressure_gauge_head(0.0, line_density=pipe, **gauge) - 1 == pytest.approx(0.0118, abs=5e-5)
