@@ -13,7 +13,8 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import block_diag
 
-from gradeline.fitting.wall import WallData, WallFit, _errors, _law_gradient, _loose_of, law_log_slope
+from gradeline.fitting.wall.covariance import log_slope_errors, scatter_of
+from gradeline.fitting.wall.data import WallData, WallFit, law_gradient, law_log_slope
 
 __all__ = ["JointLevels", "JointLine", "Part", "freedom_of", "joint_levels", "joint_line"]
 
@@ -146,7 +147,7 @@ def _stack(parts: Sequence[Part], roughness: Array) -> _Stack:
     seen: dict[int, set[int]] = {}
     for number, (part, size) in enumerate(zip(parts, roughness, strict=True)):
         data, used = part.data, part.fit.used
-        errors = _errors(data, float(size), _loose_of(part.fit))
+        errors = log_slope_errors(data, float(size), scatter_of(part.fit))
         runs, reaches = data.slope.shape
         pick = np.flatnonzero(used.ravel())
         same = (pick[:, None] // reaches) == (pick[None, :] // reaches)
@@ -182,13 +183,13 @@ def _residual(part: Part, roughness: float) -> Array:
     edge = max(roughness, 0.0)
     law = law_log_slope(part.data, edge)
     if roughness < 0:
-        law = law + _law_gradient(part.data, part.fit.used, 0.0) * roughness
+        law = law + law_gradient(part.data, part.fit.used, 0.0) * roughness
     used = part.fit.used
     return np.asarray((np.log(np.where(used, part.data.slope, 1.0)) - law)[used])
 
 
 def _gradient(part: Part, roughness: float) -> Array:
-    return np.asarray(_law_gradient(part.data, part.fit.used, max(roughness, 0.0))[part.fit.used])
+    return np.asarray(law_gradient(part.data, part.fit.used, max(roughness, 0.0))[part.fit.used])
 
 
 def _fitted(stack: _Stack, design: Array, residual: Array) -> tuple[Array, Array, Array]:
@@ -239,8 +240,8 @@ def joint_levels(parts: Sequence[Part], reynolds: float, diameter: float) -> Joi
     --------
     The bore, uncertain by 0.1 %, is common to both; the calibration of the flow is not.
 
-    >>> from gradeline.fitting.wall import _example, fit_wall
-    >>> data = _example()
+    >>> from gradeline.fitting.wall import example_wall, fit_wall
+    >>> data = example_wall()
     >>> fit = fit_wall(data, np.isfinite(data.slope))
     >>> both = [Part(data, fit, ("bore", (n, "flow")), True) for n in range(2)]
     >>> found = joint_levels(both, 1e5, 0.05)
@@ -307,8 +308,8 @@ def freedom_of(found: JointLevels | JointLine, weights: Array) -> float:
     Two surveys whose scatter is all there is, each with 7 degrees of freedom, have 14 together in their difference.
 
     >>> from dataclasses import replace
-    >>> from gradeline.fitting.wall import _example, fit_wall
-    >>> data = replace(_example(), flow_u=np.zeros(8), diameter_effect=np.zeros((1, 2)), flow_effect=np.zeros(2))
+    >>> from gradeline.fitting.wall import example_wall, fit_wall
+    >>> data = replace(example_wall(), flow_u=np.zeros(8), diameter_effect=np.zeros((1, 2)), flow_effect=np.zeros(2))
     >>> fit = replace(fit_wall(data, np.isfinite(data.slope)), dof=7.0)
     >>> both = [Part(data, fit, ("bore", "flow"), True)] * 2
     >>> round(freedom_of(joint_levels(both, 1e5, 0.05), np.array([-1.0, 1.0])), 6)
@@ -348,8 +349,8 @@ def joint_line(parts: Sequence[Part], times: Array) -> JointLine:
 
     Examples
     --------
-    >>> from gradeline.fitting.wall import _example, fit_wall
-    >>> data = _example()
+    >>> from gradeline.fitting.wall import example_wall, fit_wall
+    >>> data = example_wall()
     >>> fit = fit_wall(data, np.isfinite(data.slope))
     >>> found = joint_line([Part(data, fit, ("bore", "flow"), True)] * 3, np.array([0.0, 1.0, 4.0]))
     >>> round(found.level, 9), abs(found.rate) < 1e-12

@@ -16,8 +16,9 @@ from importlib import resources
 import numpy as np
 from numpy.typing import NDArray
 
-from gradeline.fitting.outliers import MOST_OUTLIERS, most_removable, subset_falls, trimming
+from gradeline.fitting.outliers import most_removable, trimming
 from gradeline.fitting.slope import fit_lines, project
+from gradeline.fitting.subsets import MOST_OUTLIERS, subset_falls
 
 __all__ = [
     "FALSE_ALARM",

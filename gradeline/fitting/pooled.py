@@ -9,9 +9,10 @@ from numpy.typing import NDArray
 
 from gradeline.fitting.model import Model
 from gradeline.fitting.null import scale_moments
-from gradeline.fitting.outliers import most_removable, subset_falls, trimming
+from gradeline.fitting.outliers import most_removable, trimming
 from gradeline.fitting.scatter import Scatter, estimate_scatter, scatter_variance
 from gradeline.fitting.slope import LineFits, fit_lines, project
+from gradeline.fitting.subsets import subset_falls
 
 __all__ = ["fit_model", "reading_variance", "redundancy", "robust_scatter", "sample_of", "scatter_of"]
 

@@ -14,16 +14,14 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import stdtrit
 
-from gradeline.fitting.wall import (
-    WallData,
-    WallFit,
-    _Covariance,
-    _errors,
-    _Loose,
-    _loose_of,
-    law_log_slope,
+from gradeline.fitting.wall.covariance import (
+    LogSlopeCovariance,
+    SlopeScatter,
+    log_slope_errors,
+    scatter_of,
 )
-from gradeline.fitting.wall_errors import likelihood_rise
+from gradeline.fitting.wall.data import ROUGHEST, WallData, WallFit, law_log_slope
+from gradeline.fitting.wall.likelihood import likelihood_rise
 
 __all__ = ["LossErrors", "Posterior", "WallPart", "joint_posterior"]
 
@@ -36,7 +34,7 @@ _POINTS, _FEWER, _MANY_RUNS = 121, 41, 20000
 _WIDEST, _WIDER = 25.0, 1.5
 #: Parts of the likelihood smaller than this share of the largest are rounding.
 _ROUNDING = 1e-13
-_SMOOTHEST, _ROUGHEST = 1e-9, 0.1
+_SMOOTHEST = 1e-9
 
 
 @dataclass(frozen=True)
@@ -134,8 +132,8 @@ def joint_posterior(
     --------
     Exact runs say nothing of the shared errors at the true roughness, and less than before of how large they may be.
 
-    >>> from gradeline.fitting.wall import _example, fit_wall
-    >>> data = _example()
+    >>> from gradeline.fitting.wall import example_wall, fit_wall
+    >>> data = example_wall()
     >>> part = WallPart(np.array([0]), data, fit_wall(data, np.isfinite(data.slope)))
     >>> none = LossErrors(np.zeros((0, 0)), np.zeros((0, 2)), np.zeros((8, 1, 0)), np.zeros((8, 0)))
     >>> found = joint_posterior(data, [part], np.array([0]), none)
@@ -219,7 +217,7 @@ def _grid(part: WallPart, runs: int) -> Array:
     if not np.isfinite(fit.upper95) and not np.isfinite(fit.low):
         return np.array([fit.roughness])
     bore = float(data.diameter.max())
-    coarse = np.concatenate([[0.0], bore * np.geomspace(_SMOOTHEST, _ROUGHEST, 161)])
+    coarse = np.concatenate([[0.0], bore * np.geomspace(_SMOOTHEST, ROUGHEST, 161)])
     t = float(stdtrit(fit.dof if np.isfinite(fit.dof) else 1e9, 0.5 + fit.level / 2))
     inside = likelihood_rise(data, fit, coarse) <= max(_WIDEST, _WIDER * t**2)
     inside |= coarse == coarse[np.abs(coarse - fit.roughness).argmin()]
@@ -251,20 +249,20 @@ def _used(data: WallData, walls: Sequence[WallPart]) -> Mask:
     return used
 
 
-def _covariance(data: WallData, walls: Sequence[WallPart]) -> tuple[_Covariance, Array, Array]:
+def _covariance(data: WallData, walls: Sequence[WallPart]) -> tuple[LogSlopeCovariance, Array, Array]:
     """C over all reaches, the effects of the shared inputs (R, K, q and static readings) and of the runs' own flows."""
     used, rough = _used(data, walls), _each(data, walls)
     known = replace(
         data, slope_covariance=np.where(np.isfinite(data.slope_covariance), data.slope_covariance, 0.0)
     )
     # The law takes a roughness for each reach as well as one for all.
-    whole = _errors(known, rough, _Loose(float("nan")))  # type: ignore[arg-type]
+    whole = log_slope_errors(known, rough, SlopeScatter(float("nan")))
     random, effect = whole.random, whole.effect
     static = np.zeros((*used.shape, 0))
     for part in walls:
         if not np.isfinite(part.fit.relative_scatter):
             continue
-        own = _errors(part.data, part.fit.roughness, _loose_of(part.fit))
+        own = log_slope_errors(part.data, part.fit.roughness, scatter_of(part.fit))
         at = part.reaches
         random[:, at, :] = 0.0
         random[:, :, at] = 0.0
@@ -287,4 +285,4 @@ def _covariance(data: WallData, walls: Sequence[WallPart]) -> tuple[_Covariance,
     effect = np.where(used[:, :, None], effect, 0.0)
     turned = np.einsum("rkl,rlq->rkq", inverse, effect)
     core = np.linalg.pinv(np.eye(effect.shape[2]) + np.einsum("rkp,rkq->pq", effect, turned), hermitian=True)
-    return _Covariance(inverse, variance, effect, core), effect, whole.own
+    return LogSlopeCovariance(inverse, variance, effect, core), effect, whole.own

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from gradeline.fitting.misfit import SharedMisfit, shared_misfit
 from gradeline.fitting.model import Model
 from gradeline.fitting.null import MANY_RUNS, critical_falls
-from gradeline.fitting.outliers import MOST_OUTLIERS, deletion_residuals, most_removable, search_outliers
+from gradeline.fitting.outliers import deletion_residuals, most_removable, search_outliers
 from gradeline.fitting.pooled import (
     fit_model,
     reading_variance,
@@ -21,6 +21,7 @@ from gradeline.fitting.pooled import (
 )
 from gradeline.fitting.scatter import Scatter
 from gradeline.fitting.slope import LineFits, replace_runs
+from gradeline.fitting.subsets import MOST_OUTLIERS
 
 __all__ = ["Model", "RunFits", "Search", "fit_runs"]
 

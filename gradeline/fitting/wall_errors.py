@@ -1,4 +1,4 @@
-"""What each input does to a wall's roughness, what half of it would do, and the likelihood of ε."""
+"""What each input does to a wall's roughness, and what half of it would do."""
 
 from __future__ import annotations
 
@@ -7,22 +7,12 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from gradeline.fitting.wall import (
-    WallData,
-    WallFit,
-    _covariance,
-    _errors,
-    _grid,
-    _interval,
-    _law_gradient,
-    _loose_of,
-    _residual,
-    _squares,
-    law_log_slope,
-    scatter_is_known,
-)
+from gradeline.fitting.wall.covariance import log_slope_covariance, log_slope_errors, scatter_of
+from gradeline.fitting.wall.data import WallData, WallFit, law_gradient, law_log_slope
+from gradeline.fitting.wall.likelihood import likelihood_interval
+from gradeline.fitting.wall.minimum import roughness_grid
 
-__all__ = ["WallErrors", "expected_interval", "halved", "likelihood_rise", "wall_errors"]
+__all__ = ["WallErrors", "expected_interval", "halved", "wall_errors"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -84,17 +74,17 @@ def wall_errors(data: WallData, fit: WallFit, at: float | None = None) -> WallEr
     --------
     The bore of the example is uncertain by 0.1 %, the flow's calibration by 0.3 %, each flow by 0.4 %.
 
-    >>> from gradeline.fitting.wall import _example, fit_wall
-    >>> data = _example()
+    >>> from gradeline.fitting.wall import example_wall, fit_wall
+    >>> data = example_wall()
     >>> fit = fit_wall(data, np.isfinite(data.slope))
     >>> errors = wall_errors(data, fit)
     >>> (np.abs(errors.shared) / fit.roughness).round(3).tolist(), round(errors.own_flow / fit.roughness, 3)
     ([0.024, 0.027], 0.017)
     """
-    scatter = _loose_of(fit)
-    errors = _errors(data, fit.roughness, scatter)
-    covariance = _covariance(data, fit.roughness, fit.used, scatter)
-    direction = _law_gradient(data, fit.used, fit.roughness if at is None else at)
+    scatter = scatter_of(fit)
+    errors = log_slope_errors(data, fit.roughness, scatter)
+    covariance = log_slope_covariance(data, fit.roughness, fit.used, scatter)
+    direction = law_gradient(data, fit.used, fit.roughness if at is None else at)
     turned = covariance.solve(direction)
     gain = turned / float((direction * turned).sum())
     moved = np.einsum("rk,rkq->q", gain, errors.effect)
@@ -132,8 +122,8 @@ def halved(data: WallData, fit: WallFit, what: Mask | str) -> tuple[WallData, Wa
 
     Examples
     --------
-    >>> from gradeline.fitting.wall import _example, fit_wall
-    >>> data = _example()
+    >>> from gradeline.fitting.wall import example_wall, fit_wall
+    >>> data = example_wall()
     >>> fit = fit_wall(data, np.isfinite(data.slope))
     >>> half = halved(data, fit, np.array([True, False]))[0]
     >>> half.diameter_effect.tolist(), half.flow_effect.tolist()
@@ -183,47 +173,14 @@ def expected_interval(data: WallData, fit: WallFit) -> tuple[float, float, float
 
     Examples
     --------
-    >>> from gradeline.fitting.wall import _example, fit_wall
-    >>> data = _example()
+    >>> from gradeline.fitting.wall import example_wall, fit_wall
+    >>> data = example_wall()
     >>> fit = fit_wall(data, np.isfinite(data.slope))
     >>> bool(np.allclose(expected_interval(data, fit), (fit.low, fit.high, fit.upper95), rtol=1e-6))
     True
     """
     ideal = replace(data, slope=np.exp(law_log_slope(data, fit.roughness)))
-    covariance = _covariance(ideal, fit.roughness, fit.used, _loose_of(fit))
-    return _interval(ideal, fit.used, covariance, fit.roughness, _grid(ideal), fit.dof, fit.level)
-
-
-def likelihood_rise(data: WallData, fit: WallFit, roughness: Array) -> Array:
-    """Return how far each roughness lies above the best one in the sum of squares.
-
-    Parameters
-    ----------
-    data : WallData
-        What was fitted.
-    fit : WallFit
-        The outcome.
-    roughness : (G,) array
-        ε, m, at least 0.
-
-    Returns
-    -------
-    (G,) array
-        Δχ² = r' C⁻¹ r less its minimum, with C as the fit left it, dimensionless; the interval is where it is at most
-        t²(ν). exp(−Δχ²/2) is the likelihood relative to its greatest where the scatter is known. NaN for a single slope
-        of unknown scatter.
-
-    Examples
-    --------
-    >>> from gradeline.fitting.wall import _example, fit_wall
-    >>> data = _example()
-    >>> fit = fit_wall(data, np.isfinite(data.slope))
-    >>> likelihood_rise(data, fit, np.array([fit.low, fit.roughness, fit.high])).round(2).tolist()
-    [3.84, 0.0, 3.84]
-    """
-    if not scatter_is_known(data, fit, fit.used):
-        return np.full(len(roughness), np.nan)
-    covariance = _covariance(data, fit.roughness, fit.used, _loose_of(fit))
-    residual = _residual(data, fit.used, roughness[:, None, None])
-    least = float(_squares(covariance, _residual(data, fit.used, fit.roughness)))
-    return np.asarray(_squares(covariance, residual) - least)
+    covariance = log_slope_covariance(ideal, fit.roughness, fit.used, scatter_of(fit))
+    return likelihood_interval(
+        ideal, fit.used, covariance, fit.roughness, roughness_grid(ideal), fit.dof, fit.level
+    )

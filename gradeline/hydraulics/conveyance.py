@@ -5,6 +5,8 @@ from __future__ import annotations
 import numpy as np
 import numpy.typing as npt
 
+from gradeline.hydraulics.positive import positive
+
 __all__ = ["hazen_williams_c", "manning_n"]
 
 Array = npt.NDArray[np.float64]
@@ -12,11 +14,6 @@ Array = npt.NDArray[np.float64]
 #: 1.318 of the formula in feet, in metres.
 _HAZEN_WILLIAMS = 0.8492
 RADIUS_POWER, SLOPE_POWER = 0.63, 0.54
-
-
-def _positive(value: npt.ArrayLike) -> Array:
-    array = np.asarray(value, dtype=np.float64)
-    return np.where(array > 0, array, np.nan)
 
 
 def hazen_williams_c(velocity: npt.ArrayLike, diameter: npt.ArrayLike, slope: npt.ArrayLike) -> Array:
@@ -51,9 +48,9 @@ def hazen_williams_c(velocity: npt.ArrayLike, diameter: npt.ArrayLike, slope: np
     >>> print(hazen_williams_c(2.0, 0.3, 0.01).round(1))
     144.8
     """
-    radius = _positive(diameter) / 4.0
+    radius = positive(diameter) / 4.0
     return np.asarray(
-        _positive(velocity) / (_HAZEN_WILLIAMS * radius**RADIUS_POWER * _positive(slope) ** SLOPE_POWER)
+        positive(velocity) / (_HAZEN_WILLIAMS * radius**RADIUS_POWER * positive(slope) ** SLOPE_POWER)
     )
 
 
@@ -88,5 +85,5 @@ def manning_n(velocity: npt.ArrayLike, diameter: npt.ArrayLike, slope: npt.Array
     >>> print(manning_n(2.0, 0.3, 0.01).round(5))
     0.00889
     """
-    radius = _positive(diameter) / 4.0
-    return np.asarray(radius ** (2.0 / 3.0) * np.sqrt(_positive(slope)) / _positive(velocity))
+    radius = positive(diameter) / 4.0
+    return np.asarray(radius ** (2.0 / 3.0) * np.sqrt(positive(slope)) / positive(velocity))

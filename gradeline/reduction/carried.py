@@ -14,10 +14,11 @@ from gradeline.fitting.posterior import LossErrors, Posterior, WallPart, joint_p
 from gradeline.reduction.corrections import Corrections
 from gradeline.reduction.heads import Input
 from gradeline.reduction.line import Line, change_of_bore_gains
-from gradeline.reduction.losses import Loss, _per_run
+from gradeline.reduction.losses import Loss
 from gradeline.reduction.media import Media
+from gradeline.reduction.run_losses import per_run
 from gradeline.reduction.runs import Flowing
-from gradeline.reduction.walls import Wall, _data
+from gradeline.reduction.walls import Wall, wall_data
 from gradeline.survey import Survey
 
 __all__ = ["VERSION", "carried_of"]
@@ -63,7 +64,7 @@ def carried_of(
     fitted = tuple(one for one in losses if one.fit.runs)
     sound = [wall if wall.implausible() is None else None for wall in walls]
     posterior = joint_posterior(
-        _data(survey, line, media, flowing, corrections, everywhere),
+        wall_data(survey, line, media, flowing, corrections, everywhere),
         [WallPart(wall.reaches, wall.data, wall.fit) for wall in sound if wall is not None],
         kept,
         _loss_errors(line, media, flowing, fitted),
@@ -127,7 +128,7 @@ def _loss_errors(line: Line, media: Media, flowing: Flowing, losses: tuple[Loss,
     share = np.zeros((count, size, parameters))
     own, effect = np.zeros((count, size)), np.zeros((size, len(flowing.inputs)))
     for n, loss in enumerate(losses):
-        run = _per_run(line, media, flowing, loss.place)
+        run = per_run(line, media, flowing, loss.place)
         weight, mine = loss.fit.weight, loss.fit.weight > 0
         fitting = line.fittings[loss.place]
         inside = _inside(line, fitting.at, fitting.length)

@@ -8,7 +8,8 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
-from gradeline.fitting.laws import NONE, Departures, LawComparison, compare_laws, measure_departures
+from gradeline.fitting.departures import Departures, measure_departures
+from gradeline.fitting.laws import NONE, LawComparison, compare_laws
 from gradeline.hydraulics.friction_laws import SAND_GRAIN
 from gradeline.quantities.printing import format_change, format_number, rounded
 from gradeline.reduction.tables import DRAWING_TABLES

@@ -19,10 +19,11 @@ from gradeline.reduction.budget import (
     half_of_largest,
 )
 from gradeline.reduction.line import Line
-from gradeline.reduction.losses import Loss, _per_run
+from gradeline.reduction.losses import Loss
 from gradeline.reduction.media import Media
 from gradeline.reduction.monte_carlo import SHARE, Checked, differs, is_bounded
 from gradeline.reduction.published_losses import compare
+from gradeline.reduction.run_losses import per_run
 from gradeline.reduction.runs import Flowing
 
 __all__ = ["checked_losses", "loss_budgets"]
@@ -87,7 +88,7 @@ class _LossErrors:
 
 
 def _errors_of(line: Line, media: Media, flowing: Flowing, loss: Loss) -> _LossErrors:
-    run = _per_run(line, media, flowing, loss.place)
+    run = per_run(line, media, flowing, loss.place)
     weight = loss.fit.weight
     mine = np.flatnonzero(weight > 0)
     mine = mine[np.argsort(-weight[mine], kind="stable")]

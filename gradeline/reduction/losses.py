@@ -15,6 +15,7 @@ from gradeline.reduction.friction import Friction
 from gradeline.reduction.line import Line
 from gradeline.reduction.media import Media
 from gradeline.reduction.published_losses import Published, compare, published_loss
+from gradeline.reduction.run_losses import PerRun, per_run
 from gradeline.reduction.runs import Flowing
 from gradeline.reduction.walls import Wall
 
@@ -87,26 +88,6 @@ class Loss:
         return bool(self.trend.p < _TREND_FALSE_ALARM) if np.isfinite(self.trend.p) else None
 
 
-@dataclass(frozen=True)
-class _PerRun:
-    """K of each run as the line gives it, and all that moves it."""
-
-    value: Array  # (F,)
-    head: Array  # (F,) V²/2g
-    scatter: Array  # (F,) variance from the readings
-    with_slope: Array  # (F,) covariance with S of the reach that K refers to, from the readings
-    own: Array  # (F,) of the loss by the run's own flow, per V²/2g; the velocity head's share is still to be added
-    effect: Array  # (F, q) the same of the shared inputs
-    by_head: Array  # (F, q) relative change of K by the velocity head
-    own_head: Array  # (F,)
-
-    def moved(self, coefficient: float | Array) -> tuple[Array, Array]:
-        """Variance of each run's own errors and the effect of the shared ones, at a given K."""
-        whole = np.broadcast_to(coefficient, self.value.shape)
-        own = self.own - 2.0 * whole * self.own_head
-        return self.scatter + own**2, self.effect + whole[:, None] * self.by_head
-
-
 def losses_of(
     line: Line,
     media: Media,
@@ -154,7 +135,7 @@ def _loss(
     m = places[number]
     k = int(line.reference[m])
     reynolds = flowing.reynolds[:, k]
-    run = _per_run(line, media, flowing, m)
+    run = per_run(line, media, flowing, m)
     counts = _taps_beside(line, taps, places, number)
     enough = (counts >= FEWEST_TAPS).all(axis=1)
     off = _off_law(line, walls, m, len(reynolds))
@@ -198,40 +179,6 @@ def _loss(
     )
 
 
-def _per_run(line: Line, media: Media, flowing: Flowing, m: int) -> _PerRun:
-    """K of each run: the fitted step, and the friction of a straight pipe over the fitting's own length."""
-    fitting, k = line.fittings[m], int(line.reference[m])
-    ends = fitting.at - fitting.length / 2, fitting.at + fitting.length / 2
-    inside = np.clip(np.minimum(ends[1], line.bounds[1:]) - np.maximum(ends[0], line.bounds[:-1]), 0.0, None)
-    through = np.flatnonzero(inside > 0)
-    columns = np.concatenate([line.column[[m]], 1 + through])
-    share = np.concatenate([[1.0], inside[through]])
-    head = flowing.velocity[:, k] ** 2 / (2 * media.gravity)
-    block = flowing.random[:, columns[:, None], columns]
-    return _PerRun(
-        value=flowing.fits.lines.parameters[:, columns] @ share / head,
-        head=head,
-        scatter=np.einsum("p,fpq,q->f", share, block, share) / head**2,
-        with_slope=flowing.random[:, columns, 1 + k] @ share / head,
-        own=flowing.own[:, columns] @ share / head,
-        effect=np.einsum("p,fpq->fq", share, flowing.effect[:, columns]) / head[:, None],
-        by_head=_head_effects(flowing, k),
-        own_head=flowing.reach_flow_u[:, k],
-    )
-
-
-def _head_effects(flowing: Flowing, k: int) -> Array:
-    """Relative change of K by the velocity head it is counted in, for each run and shared input."""
-    shape = flowing.velocity.shape
-    found = [
-        (0.0 if one.diameter is None else 4.0 * float(one.diameter[k]))
-        - 2.0 * np.broadcast_to(one.flow, shape)[:, k]
-        + one.gravity
-        for one in flowing.inputs
-    ]
-    return np.stack(found, axis=1) if found else np.zeros((shape[0], 0))
-
-
 def _taps_beside(line: Line, taps: Mask, places: list[int], number: int) -> NDArray[np.intp]:
     """Usable taps of each run between a fitting and the next fitted one on either side (F, 2)."""
     at = [line.fittings[place].at for place in places]
@@ -256,7 +203,7 @@ def _equivalent_length(
     friction: Friction,
     k: int,
     fast: int,
-    run: _PerRun,
+    run: PerRun,
     fit: LossFit,
     effect: Array,
     excess: float,
@@ -324,7 +271,7 @@ def _runs(which: Mask) -> str:
     return f"{count} run{'' if count == 1 else 's'}"
 
 
-def _no_coefficient(line: Line, m: int, run: _PerRun, taps: NDArray[np.intp], off: Mask) -> str:
+def _no_coefficient(line: Line, m: int, run: PerRun, taps: NDArray[np.intp], off: Mask) -> str:
     if not len(run.value):
         return "no flowing run"
     determined = np.isfinite(run.value)

@@ -15,7 +15,7 @@ import pandas as pd
 from scipy.optimize import minimize_scalar
 from scipy.special import stdtrit
 
-from gradeline.fitting.laws import likelihood_rise
+from gradeline.fitting.wall import likelihood_rise
 from gradeline.quantities import Measured
 from gradeline.reduction.tables import DRAWING_TABLES
 from gradeline.reduction.tabulate.frames import frame

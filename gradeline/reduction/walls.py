@@ -18,7 +18,7 @@ from gradeline.reduction.media import Media, run_temperature_u
 from gradeline.reduction.runs import Flowing
 from gradeline.survey import Survey
 
-__all__ = ["Wall", "bore_variants", "runs_off_law", "slope_uncertainty", "walls_of"]
+__all__ = ["Wall", "bore_variants", "runs_off_law", "slope_uncertainty", "wall_data", "walls_of"]
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -128,7 +128,7 @@ def walls_of(
     found = []
     for name in dict.fromkeys(reach.wall for reach in survey.reaches):
         mine = np.array([k for k, reach in enumerate(survey.reaches) if reach.wall == name], dtype=np.intp)
-        data = _data(survey, line, media, flowing, corrections, mine)
+        data = wall_data(survey, line, media, flowing, corrections, mine)
         turbulent = flowing.reynolds[:, mine] > TURBULENT_LIMIT
         there = turbulent & np.isfinite(slopes[:, mine]) & ~unmoved[:, None]
         with np.errstate(invalid="ignore"):
@@ -141,7 +141,7 @@ def walls_of(
     return tuple(found)
 
 
-def _data(
+def wall_data(
     survey: Survey,
     line: Line,
     media: Media,
@@ -149,6 +149,20 @@ def _data(
     corrections: Corrections,
     mine: NDArray[np.intp],
 ) -> WallData:
+    """Return the slopes of some reaches, and all that moves them, as the fits take them.
+
+    Parameters
+    ----------
+    survey, line, media, flowing, corrections
+        The survey, its line and what its runs say.
+    mine : (k,) int array
+        Places of the reaches.
+
+    Returns
+    -------
+    WallData
+        Of these reaches, in their order.
+    """
     count = len(flowing.rows)
     columns = 1 + mine
     zero, none = np.zeros(len(line.diameter)), np.zeros(count)

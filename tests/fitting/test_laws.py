@@ -9,7 +9,8 @@ import pytest
 from scipy.optimize import minimize_scalar
 from scipy.stats import chi2
 
-from gradeline.fitting.laws import NONE, NOT_TOLD, compare_laws, likelihood_rise, measure_departures
+from gradeline.fitting.departures import measure_departures
+from gradeline.fitting.laws import NONE, NOT_TOLD, compare_laws
 from gradeline.fitting.wall import WallData, fit_wall, law_log_slope
 from gradeline.hydraulics.friction_laws import COLEBROOK_WHITE, SAND_GRAIN, SMOOTH
 
@@ -169,10 +170,3 @@ def test_departures_of_sound_runs_are_spread_as_they_say():
         beyond += found.trend.beyond_chance + found.intercept.beyond_chance
     assert np.std(scores, axis=0) == pytest.approx([1.0, 1.0], abs=0.2)
     assert beyond <= 9  # of 300; 3 expected, three standard errors above
-
-
-def test_the_likelihood_ends_where_the_interval_does():
-    data = wall_data()
-    fit = fitted(data)
-    rise = likelihood_rise(data, fit, np.array([fit.low, fit.roughness, fit.high, fit.upper95]))
-    assert rise == pytest.approx([chi2.ppf(0.95, 1), 0.0, chi2.ppf(0.95, 1), chi2.ppf(0.90, 1)], abs=1e-5)

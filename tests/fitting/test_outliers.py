@@ -13,11 +13,11 @@ from gradeline.fitting.outliers import (
     deletion_residuals,
     most_removable,
     search_outliers,
-    subset_falls,
     trimming,
 )
 from gradeline.fitting.runs import Model, fit_runs
 from gradeline.fitting.slope import fit_lines, project
+from gradeline.fitting.subsets import subset_falls
 
 
 def refit_sum(y, design, weight, left_out):

@@ -9,8 +9,8 @@ import numpy as np
 import pytest
 from scipy.stats import norm
 
-from gradeline.fitting.wall import WallData, best_roughness, fit_wall
-from gradeline.fitting.wall_errors import expected_interval, halved, likelihood_rise, wall_errors
+from gradeline.fitting.wall import WallData, best_roughness, fit_wall, likelihood_rise
+from gradeline.fitting.wall_errors import expected_interval, halved, wall_errors
 
 G, RUNS = 9.81, 7
 BORES, NU = np.array([0.05, 0.04]), 1.1e-6

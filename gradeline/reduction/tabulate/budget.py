@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 from scipy.special import stdtrit
 
-from gradeline.fitting.wall_errors import likelihood_rise
+from gradeline.fitting.wall import likelihood_rise
 from gradeline.hydraulics.friction import roughness_reynolds
 from gradeline.reduction.budget import Budget
 from gradeline.reduction.tables import DRAWING_TABLES, RESULT_TABLES
