@@ -70,6 +70,8 @@ class GaugeKind:
         The key without which the level of its columns is not known: then it is free in each run.
     together : tuple of tuple of str
         Keys that need others: (key, needed, …).
+    assumption : str
+        What is assumed of its readings, told in every report, with the place ``{gauge}`` for its name; empty: nothing.
     """
 
     reading: Literal["length", "pressure"]
@@ -80,6 +82,7 @@ class GaugeKind:
     legs: bool = False
     level_key: str | None = None
     together: tuple[tuple[str, ...], ...] = ()
+    assumption: str = ""
 
 
 @dataclass(frozen=True)
@@ -289,6 +292,11 @@ GAUGE_KINDS: Mapping[str, GaugeKind] = MappingProxyType(
             reading="pressure", keys={**_TAPS, **_PRESSURE_KEYS}, differential=True, together=_ACCURACY
         ),
         # No instrument: piezometric heads above datum that somebody worked out already.
-        "head": GaugeKind(reading="length", keys={}),
+        "head": GaugeKind(
+            reading="length",
+            keys={},
+            assumption="The readings of {gauge!r} are piezometric heads z + p/(ρ g) above datum, worked out already: they "
+            "are taken as they are, with no part for the air beside them.",
+        ),
     }
 )

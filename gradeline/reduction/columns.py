@@ -156,7 +156,8 @@ RESULT_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
             "quantity": TEXT,
             "subject": TEXT,
             "input": TEXT,
-            "contribution_u": NUMBER,
+            # m of a roughness, without dimension of S, f and K
+            "contribution_u": number("1 or m"),
             "variance_share": NUMBER,
         },
     }

@@ -50,7 +50,14 @@ DRAWING_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
             "reynolds": NUMBER,
         },
         # the unit in which each column of readings was read, and how many SI units it has
-        "reading_units": {"tap": TEXT, "gauge": TEXT, "kind": TEXT, "unit": TEXT, "si_per_unit": NUMBER},
+        "reading_units": {
+            "tap": TEXT,
+            "gauge": TEXT,
+            "kind": TEXT,
+            "dimension": TEXT,
+            "unit": TEXT,
+            "si_per_unit": NUMBER,
+        },
         # S proportional to V^n, per reach and regime
         "exponents": {
             "reach": TEXT,

@@ -28,10 +28,9 @@ def gauge_assumptions(survey: Survey) -> list[str]:
             "the run's temperature."
         )
     said += [
-        f"The readings of {gauge.name!r} are piezometric heads z + p/(ρ g) above datum, worked out already: they are taken "
-        "as they are, with no part for the air beside them."
+        GAUGE_KINDS[gauge.kind].assumption.format(gauge=gauge.name)
         for gauge in survey.gauges
-        if gauge.kind == "head"
+        if GAUGE_KINDS[gauge.kind].assumption
     ]
     each: list[tuple[str, str]] = []
     for gauge in survey.gauges:

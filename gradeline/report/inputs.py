@@ -26,6 +26,7 @@ __all__ = [
     "side_valve_table",
     "stated_reach_table",
     "stated_tap_table",
+    "stated_words",
     "statements",
     "uncertainty_table",
 ]
@@ -55,8 +56,8 @@ def _with_unit(display: Display, quantity: str, text: str) -> str:
     return f"({text}){space}{unit}" if " ± " in text else f"{text}{space}{unit}"
 
 
-def _cell(display: Display, row: Row) -> str:
-    """The value of a row of ``inputs`` with its unit, or its words."""
+def stated_words(display: Display, row: Row) -> str:
+    """Return the value of a row of ``inputs`` with its unit, or its words."""
     if row["quantity"] is None:
         return MISSING if row["text"] is None else str(row["text"])
     quantity = str(row["quantity"])
@@ -99,8 +100,10 @@ def stated_tap_table(reduction: Reduction, display: Display = SI_DISPLAY) -> Pri
     rows = records(reduction.stated_taps)
     pressure = {
         gauge
-        for gauge, kind in zip(reduction.reading_units["gauge"], reduction.reading_units["kind"], strict=True)
-        if kind in ("pressure gauge", "transducer")
+        for gauge, dimension in zip(
+            reduction.reading_units["gauge"], reduction.reading_units["dimension"], strict=True
+        )
+        if dimension == "pressure"
     }
 
     def of(quantity: str, key: str) -> Callable[[Row], str]:
@@ -145,7 +148,7 @@ def _crossed(rows: Sequence[Row], display: Display, caption: str, first: str) ->
     heads = list(dict.fromkeys(str(row["what"]) for row in rows))
     lines: dict[str, dict[str, Any]] = {}
     for row in rows:
-        lines.setdefault(str(row["name"]), {"name": row["name"]})[str(row["what"])] = _cell(display, row)
+        lines.setdefault(str(row["name"]), {"name": row["name"]})[str(row["what"])] = stated_words(display, row)
 
     def column(what: str) -> TableColumn:
         return TableColumn(what, lambda line: str(line.get(what, MISSING)), text=what in _IN_WORDS)
@@ -186,7 +189,7 @@ def uncertainty_table(reduction: Reduction, display: Display = SI_DISPLAY) -> Pr
         "Standard uncertainties stated for the whole survey. One that is not stated contributes nothing, unless a gauge "
         "or a tap states its own.",
         _group(reduction, "stated"),
-        [name_column("what", "of"), TableColumn("u", lambda row: _cell(display, row))],
+        [name_column("what", "of"), TableColumn("u", lambda row: stated_words(display, row))],
         note=None,
     )
 
@@ -198,13 +201,13 @@ def statements(reduction: Reduction, display: Display = SI_DISPLAY) -> tuple[tup
         rows = _group(reduction, group)
         if rows:
             parts = [
-                _cell(display, row) if row["what"] == "name" else f"{row['what']} {_cell(display, row)}"
+                stated_words(display, row) if row["what"] == "name" else f"{row['what']} {stated_words(display, row)}"
                 for row in rows
             ]
             found.append((head, ", ".join(parts)))
     for row in _group(reduction, "options"):
         what = str(row["what"])
-        found.append((what[:1].upper() + what[1:], _cell(display, row)))
+        found.append((what[:1].upper() + what[1:], stated_words(display, row)))
     return tuple(found)
 
 

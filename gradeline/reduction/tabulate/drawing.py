@@ -166,7 +166,7 @@ def reading_unit_table(survey: Survey) -> pd.DataFrame:
         dimension = GAUGE_KINDS[kind].reading
         text = survey.units.get(one.label, "m" if dimension == "length" else "Pa")
         scale = parse_unit(text, dimension).difference_to_si(1.0)
-        for name, entry in zip(rows, (one.label, one.gauge, kind, text, scale), strict=True):
+        for name, entry in zip(rows, (one.label, one.gauge, kind, dimension, text, scale), strict=True):
             rows[name].append(entry)
     return frame("reading_units", rows)
 
