@@ -24,7 +24,9 @@ Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 _ROUNDS = 12
-_NEAR = 1e-4  # a step beyond this share of ε is no polish
+_NEAR = 1e-2  # a step beyond this share of ε is no polish
+_ROUNDING = 1e-13  # what the last step is at most, as a share of ε
+_COARSE, _FINE = 1e-4, 1e-9  # share of ε that a search leaves: where steps take it from there, and where they do not
 
 
 @dataclass(frozen=True)
@@ -125,17 +127,17 @@ def robust_start(data: WallData, used: Mask, grid: RoughnessGrid) -> float:
     return float(grid.roughness[int(np.abs(residual).sum(axis=(1, 2)).argmin())])
 
 
-def _minimum(squares: Callable[[float], float], at_grid: Array, grid: Array) -> float:
-    """Minimise over ε >= 0, from a grid that cannot miss the basin."""
+def _minimum(squares: Callable[[float], float], at_grid: Array, grid: Array, within: float) -> float:
+    """Minimise over ε >= 0, from a grid that cannot miss the basin, to within a share of ε."""
     best = int(np.argmin(at_grid))
     if best == 0:
         # Between 0 and the first step the slope decides.
         inside = minimize_scalar(
-            squares, bounds=(0.0, float(grid[1])), method="bounded", options={"xatol": 1e-16}
+            squares, bounds=(0.0, float(grid[1])), method="bounded", options={"xatol": 1e-7 * float(grid[1])}
         )
         return float(inside.x) if inside.fun < at_grid[0] - 1e-12 else 0.0
     low, high = float(grid[best - 1]), float(grid[min(best + 1, len(grid) - 1)])
-    found = minimize_scalar(squares, bounds=(low, high), method="bounded", options={"xatol": 1e-9 * high})
+    found = minimize_scalar(squares, bounds=(low, high), method="bounded", options={"xatol": within * high})
     return float(found.x)
 
 
@@ -172,8 +174,28 @@ def settle(
     >>> round(found, 9)
     0.0001
     """
-    covariance = log_slope_covariance(data, roughness, used, scatter)
     residual = grid.residual(data, used)
+    found, covariance, stands = _polished(
+        data, used, *_searched(data, used, grid, residual, roughness, scatter, _COARSE), scatter
+    )
+    if stands:
+        return found, covariance
+    # The minimum is an edge, or a flat one: the search alone has to find it.
+    searched = _searched(data, used, grid, residual, found, scatter, _FINE)
+    return _polished(data, used, *searched, scatter)[:2]
+
+
+def _searched(
+    data: WallData,
+    used: Mask,
+    grid: RoughnessGrid,
+    residual: Array,
+    roughness: float,
+    scatter: SlopeScatter,
+    within: float,
+) -> tuple[float, LogSlopeCovariance]:
+    """Search for the minimum to within a share of ε, the covariance renewed until ε stands."""
+    covariance = log_slope_covariance(data, roughness, used, scatter)
     for _ in range(_ROUNDS):
         at_grid = covariance.squares(residual)
         fixed = covariance
@@ -181,34 +203,34 @@ def settle(
         def squares(value: float, fixed: LogSlopeCovariance = fixed) -> float:
             return float(fixed.squares(log_residual(data, used, value)))
 
-        new = _minimum(squares, at_grid, grid.roughness)
+        new = _minimum(squares, at_grid, grid.roughness, within)
         covariance = log_slope_covariance(data, new, used, scatter)
-        done = abs(new - roughness) <= 1e-6 * max(new, roughness)
+        done = abs(new - roughness) <= max(10 * within, 1e-6) * max(new, roughness)
         roughness = new
         if done:
             break
-    return _polished(data, used, roughness, scatter, covariance)
+    return roughness, covariance
 
 
 def _polished(
-    data: WallData, used: Mask, roughness: float, scatter: SlopeScatter, covariance: LogSlopeCovariance
-) -> tuple[float, LogSlopeCovariance]:
-    """Take ε from eight digits, all that a search for a minimum can give, to rounding, by Gauss–Newton steps."""
+    data: WallData, used: Mask, roughness: float, covariance: LogSlopeCovariance, scatter: SlopeScatter
+) -> tuple[float, LogSlopeCovariance, bool]:
+    """Take ε from the digits that a search for a minimum gives to rounding, by Gauss–Newton steps; say whether they stand."""
+    if roughness == 0:
+        return roughness, covariance, True
     for _ in range(_ROUNDS):
-        if not roughness > 0:
-            break
         gradient = law_gradient(data, used, roughness)
         turned = covariance.solve(gradient)
         information = float((gradient * turned).sum())
         step = (
             float((turned * log_residual(data, used, roughness)).sum()) / information
             if information > 0
-            else 0.0
+            else float("inf")
         )
         if not abs(step) <= _NEAR * roughness:
-            break  # the minimum is an edge, or a flat one: the search stands
+            return roughness, covariance, False
         roughness += step
         covariance = log_slope_covariance(data, roughness, used, scatter)
-        if abs(step) <= 1e-15 * roughness:
-            break
-    return roughness, covariance
+        if abs(step) <= _ROUNDING * roughness:
+            return roughness, covariance, True
+    return roughness, covariance, False
