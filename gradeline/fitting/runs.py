@@ -123,6 +123,7 @@ def fit_runs(
     search: bool = True,
     keep_all: bool = False,
     details: bool = True,
+    together: Mask | None = None,
 ) -> RunFits:
     """Fit all runs and judge their readings.
 
@@ -140,6 +141,9 @@ def fit_runs(
         Whether flagged readings enter the fits all the same.
     details : bool
         Whether to work out deletion residuals and their scores for every reading.
+    together : (R, n) bool array, optional
+        Readings that are known to be wrong two in a run: flagged beforehand, even where the run has too few of them for
+        a search.
 
     Returns
     -------
@@ -162,7 +166,8 @@ def fit_runs(
     >>> np.argwhere(fits.flagged).tolist()
     [[1, 4]]
     """
-    known = used & np.isfinite(observations)
+    read = used & np.isfinite(observations)
+    known = read if together is None else read & ~together
     runs = len(observations)
     first = robust_scatter(observations, known, model)
     variance = reading_variance(first, model)
@@ -190,6 +195,11 @@ def fit_runs(
         scatter = scatter_of(kept, known & ~flagged, renewed, model, first)
         variance, renewed = renewed, reading_variance(scatter, model)
         every = _renew(every, observations, known, variance, renewed, model)
+    if known is not read and not np.array_equal(known, read):
+        every = fit_model(observations, read, renewed, model)
+        flagged = flagged | (read & ~known)
+        kept = _without(every, observations, read & ~flagged, flagged, renewed, model)
+        known = read
     if keep_all or not flagged.any():
         kept = every
     else:

@@ -10,9 +10,9 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.special import chdtri
+from scipy.special import chdtri, fdtrc
 
-__all__ = ["Scatter", "estimate_scatter", "scatter_variance"]
+__all__ = ["Scatter", "estimate_scatter", "runs_that_tell", "scatter_variance"]
 
 Array = NDArray[np.float64]
 
@@ -24,6 +24,8 @@ _SURGE_EVIDENCE = 2.71
 _LONE_EVIDENCE = 6.63
 #: No run's scatter counts for more than this many times what the model expects.
 _MOST_RATIO = 6.0
+#: At most one run in so many is left out of the scatter, where so many others stay, at this chance in a sound survey.
+_LONE_SHARE, _FEWEST_OTHERS, _LONE_ALARM = 5, 3, 1e-3
 
 
 @dataclass(frozen=True)
@@ -115,6 +117,9 @@ def estimate_scatter(
         return Scatter(base=base, surge=0.0, pooled=np.nan, dof=0.0, stands=stated > 0)
     variance = squares[sound] / expected[sound]
     freedom, head = shape[sound], velocity_head[sound]
+    kept = runs_that_tell(variance, freedom, head)
+    variance, freedom, head = variance[kept], freedom[kept], head[kept]
+    dof = float(freedom.sum())
     flat = _fit(variance, freedom, np.zeros((len(head), 0)))
     base2, surge2 = float(flat[0]), 0.0
     if len(variance) >= 4 and np.ptp(head) > 0:
@@ -129,6 +134,49 @@ def estimate_scatter(
     # No contradiction: the pooled variance lies below the 95 % point of its chi-square about the stated one.
     stands = stated > 0 and dof * base2 <= float(chdtri(dof, 0.05)) * floor**2
     return Scatter(max(pooled, floor, _ROUNDING), float(np.sqrt(surge2)), pooled, dof, stands)
+
+
+def runs_that_tell(variance: Array, freedom: Array, head: Array) -> NDArray[np.bool_]:
+    """Return which runs tell the scatter of all.
+
+    A few runs that scatter beyond all that the others do have wrong readings, more than were trimmed. The worst run is
+    held against the scatter and the surge of the others, whichever makes it larger, by the F test (0.1 % over all runs;
+    at most one run in five).
+
+    Parameters
+    ----------
+    variance : (R,) array
+        Of each run, m² or any other unit.
+    freedom : (R,) array
+        Its degrees of freedom, dimensionless.
+    head : (R,) array
+        V²/2g of each run, m.
+
+    Returns
+    -------
+    (R,) bool array
+        False for those that stand apart.
+
+    Examples
+    --------
+    >>> runs_that_tell(np.array([1.1, 0.8, 90.0, 0.7, 1.3]), np.full(5, 3.0), np.linspace(0.1, 1.0, 5)).tolist()
+    [True, True, False, True, True]
+    """
+    kept = np.ones(len(variance), dtype=bool)
+    for _ in range(len(variance) // _LONE_SHARE):
+        worst = int(np.where(kept, variance, -1.0).argmax())
+        rest = kept.copy()
+        rest[worst] = False
+        if variance[worst] <= _MOST_RATIO * float(np.median(variance[kept])) or rest.sum() < _FEWEST_OTHERS:
+            break
+        flat = float(_fit(variance[rest], freedom[rest], np.zeros((int(rest.sum()), 0)))[0])
+        steep = _fit(variance[rest], freedom[rest], (head[rest] ** 2)[:, None])
+        model = max(flat, float(steep[0] + steep[1] * head[worst] ** 2))
+        chance = float(fdtrc(freedom[worst], freedom[rest].sum(), variance[worst] / model))
+        if chance * len(variance) > _LONE_ALARM:
+            break
+        kept = rest
+    return kept
 
 
 def _fit(variance: Array, freedom: Array, extra: Array) -> Array:

@@ -224,6 +224,7 @@ def _fitted(here: Setting, ailments: Ailments, *, keep_all: bool, whole: bool) -
     """All passes with what ails taps and line as far as it is known; `whole`: single readings are judged."""
     line, corrections = here.line, here.corrections
     mine = here.used & ~ailments.left_out
+    together = None if ailments.diagnosis is None else ailments.diagnosis.together & mine
     around = replace(here.model, design=np.hstack([here.model.design, ailments.columns]))
     smooth = np.asarray(colebrook_white(np.maximum(here.reynolds, 1.0), 0.0))
     first = fit_runs(_energy(here, smooth, ailments)[1], mine, around, search=False, details=False)
@@ -234,7 +235,7 @@ def _fitted(here: Setting, ailments: Ailments, *, keep_all: bool, whole: bool) -
     given = here.loss_head * here.given_k
     flow_effect = 2.0 * here.flow_u[:, None] * flow_heads(line, here.sight, heads, given, here.flow_gain)
     # The scatter first as the trimmed readings show it, then as the fit does that knows of the static readings.
-    scatter = robust_scatter(energy, mine, around)
+    scatter = robust_scatter(energy, mine if together is None else mine & ~together, around)
     for last in (False, True) if corrections.applied and whole else (True,):
         single = len(here.rows) == 1 or not last
         base = _static_scatter(scatter, here.kind, corrections, here.repeats, single=single)
@@ -256,7 +257,15 @@ def _fitted(here: Setting, ailments: Ailments, *, keep_all: bool, whole: bool) -
         told = replace(around, persistent=persistent, common=common, steady=steady, along_slope=along_slope)
         judged = last and whole
         # Judged in the first pass too: else a wrong reading would pass for scatter of the static readings.
-        fits = fit_runs(energy, mine, told, search=whole, keep_all=keep_all and judged, details=judged)
+        fits = fit_runs(
+            energy,
+            mine,
+            told,
+            search=whole,
+            keep_all=keep_all and judged,
+            details=judged,
+            together=together,
+        )
         scatter = fits.scatter
     return _Fitted(mine, told, first, slopes, heads, energy, inputs, felt, fits)
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,7 +23,7 @@ class Candidate:
 
     Parameters
     ----------
-    kind : {"reading", "tap", "free tap", "step", "kink", "curve", "free step", "free kink", "free curve"}
+    kind : {"readings", "tap", "free tap", "step", "kink", "curve", "free step", "free kink", "free curve"}
         What it is; ``free``: with a size of its own in each run.
     place : int
         Subject, gap or curve, or the flat index of a reading.
@@ -33,6 +33,8 @@ class Candidate:
         What it explains in χ², and what chance would: dimensionless.
     pattern : str
         How the error of a tap goes over the runs.
+    second : int or None
+        Flat index of another reading of the same run that is wrong beside the first.
     """
 
     kind: str
@@ -41,6 +43,7 @@ class Candidate:
     gain: float
     price: float
     pattern: str = ""
+    second: int | None = None
 
 
 @dataclass
@@ -55,11 +58,14 @@ class State:
         What was taken up.
     barred : set of (str, int)
         Suspicions that rest on one run alone.
+    together : set of int
+        Flat indices of readings that are wrong two in a run, and no other two would do.
     """
 
     used: Mask
     found: list[Candidate]
     barred: set[tuple[str, int]]
+    together: set[int] = field(default_factory=set)
 
 
 @dataclass(frozen=True)

@@ -87,6 +87,30 @@ class Evidence:
         sound = own > _NOTHING * np.maximum(before, 1e-300)
         return np.where(sound, turned**2 / np.where(sound, own, 1.0), 0.0)
 
+    def pair_gains(self, run: int) -> Array:
+        """Gain in χ² of taking out each two readings of a run together (n, n), all else fitted anew; 0 on the diagonal."""
+        own, turned = self._of_run(run)
+        each = np.diagonal(own)
+        product = np.outer(each, each)
+        determinant = product - own**2
+        sound = (determinant > _NOTHING * product) & (product > 0)
+        both = np.outer(turned**2, each)
+        gain = both + both.T - 2.0 * own * np.outer(turned, turned)
+        return np.where(sound, gain / np.where(sound, determinant, 1.0), 0.0)
+
+    def swap_gains(self, run: int) -> Array:
+        """The same of each two neighbours (n − 1,) that are off by one amount, one up and one down."""
+        own, turned = self._of_run(run)
+        information = np.diagonal(own)[:-1] + np.diagonal(own)[1:] - 2.0 * np.diagonal(own, 1)
+        sound = information > _NOTHING * (np.diagonal(own)[:-1] + np.diagonal(own)[1:])
+        along = turned[:-1] - turned[1:]
+        return np.where(sound, along**2 / np.where(sound, information, 1.0), 0.0)
+
+    def _of_run(self, run: int) -> tuple[Array, Array]:
+        """Information on each reading of a run (n, n), all else fitted anew, and its right-hand side (n,)."""
+        weight, along = self.weight[run], self.weight[run] @ self.basis[run]
+        return weight - along @ self.basis_inverse @ along.T, weight @ self.rest[run]
+
     def errors_along(self, direction: Array) -> tuple[Array, Array]:
         """Error of each run along a direction (n,), as its other readings show it, and its standard deviation, (F,)."""
         turned, core, _ = _projected(self, direction[:, None])

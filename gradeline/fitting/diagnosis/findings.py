@@ -108,8 +108,8 @@ class Diagnosis:
         Errors of taps and gauges.
     breaks : tuple of Break
         Steps and kinks of the line.
-    aside : (F, n) bool array
-        Single readings that were set aside while looking.
+    together : (F, n) bool array
+        Readings that are wrong two in a run, such as two that changed places, where no other two would do.
     offset, offset_u, edge, edge_u : (s,) array
         Of each subject, all others taken as what was found of them, the two fitted together: m, dimensionless; NaN where not to be had.
     scatter : SteadyScatter or None
@@ -120,7 +120,7 @@ class Diagnosis:
     reason: str | None
     taps: tuple[Ailment, ...]
     breaks: tuple[Break, ...]
-    aside: Mask
+    together: Mask
     offset: Array
     offset_u: Array
     edge: Array

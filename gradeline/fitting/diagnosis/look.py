@@ -163,13 +163,40 @@ class Look:
         for one in self.candidates(state, scatter, evidence):
             if one.gain > one.price and (best is None or one.gain - one.price > best.gain - best.price):
                 best = one
-        readings = evidence.reading_gains()
-        place = int(readings.argmax())
-        price = beyond(_READING_ALARM / max(int(state.used.sum()), 1), 1, scatter.dof)
-        gain = float(readings.flat[place])
-        if gain > price and (best is None or gain - price > best.gain - best.price):
-            return Candidate("reading", place, (), gain, price)
+        for one in self.readings(state, scatter, evidence):
+            if one.gain > one.price and (best is None or one.gain - one.price > best.gain - best.price):
+                best = one
         return best
+
+    def readings(self, state: State, scatter: SteadyScatter, evidence: Evidence) -> Iterator[Candidate]:
+        """The single reading, and the two of one run, that would explain most by being wrong.
+
+        Two neighbours that changed places in one run look like a break of the line there, or like nothing one by one.
+        """
+        gains = evidence.reading_gains()
+        place = int(gains.argmax())
+        alarm = _READING_ALARM / max(int(state.used.sum()), 1)
+        yield Candidate("readings", place, (), float(gains.flat[place]), beyond(alarm, 1, scatter.dof))
+        # A run that two readings spoil stands out by what is left of it.
+        left = np.einsum("ri,rij,rj->r", evidence.rest, evidence.weight, evidence.rest)
+        run, n = int(left.argmax()), self.y.shape[1]
+        pairs = evidence.pair_gains(run)
+        first, second = divmod(int(pairs.argmax()), n)
+        alarm *= 2.0 / max(n - 1, 1)
+        price, further = beyond(alarm, 2, scatter.dof), beyond(_FURTHER, 1, scatter.dof)
+        gain, pattern = float(pairs[first, second]), ""
+        if (np.triu(pairs, 1) > gain - further).sum() == 1:
+            pattern = "no other two"
+        else:
+            # Few readings: other pairs would do as well, but two neighbours that changed places are off by the same, one up
+            # and one down.
+            both = np.diagonal(pairs, 1)
+            swapped = both - evidence.swap_gains(run) < beyond(0.01, 1, scatter.dof)
+            swapped &= (both > max(gain - further, price)) & (self.model.kind[:-1] == self.model.kind[1:])
+            if swapped.sum() == 1:
+                first = int(swapped.argmax())
+                second, pattern, gain = first + 1, "changed places", float(both[first])
+        yield Candidate("readings", run * n + first, (), gain, price, pattern, run * n + second)
 
     def lone_run(self, evidence: Evidence, scatter: SteadyScatter, one: Candidate) -> int | None:
         """The run without which too little of the evidence would remain; None where there is no such run."""
@@ -188,7 +215,10 @@ class Look:
             )
             along = np.einsum("rid,ri->rd", turned, evidence.rest)
             each = np.einsum("rd,rde,re->r", along, core, along)
-            return int(each.argmax()) if each.sum() - each.max() < _WITHOUT_ONE * one.price else None
+            unknowns = self.directions(one).shape[1]
+            # Each run has sizes of its own, which chance fills: the others have to show more than that.
+            far = each > beyond(0.002, unknowns, scatter.dof)
+            return int(each.argmax()) if far.sum() < max(3, int(0.2 * len(each))) else None
         turned = np.einsum("rij,rj->ri", evidence.weight, column)
         own = np.einsum("ri,ri->r", column, turned)
         along = np.einsum("ri,ri->r", evidence.rest, turned)

@@ -61,8 +61,9 @@ def diagnose(
     Gains in χ² are exact for the model at hand (`evidence`). A candidate is taken up where its gain exceeds the point of
     χ² (of F, where the scatter is judged from few readings) at a probability shared out over all candidates of its kind
     (C. E. Bonferroni); the one that exceeds it by most goes first. Patterns with more unknowns pay for each. One run
-    alone proves nothing: without the run that speaks loudest half of what it takes must remain, else its reading is set
-    aside. When nothing more is found, each finding is tested once more beside the others.
+    alone proves nothing: without the run that speaks loudest half of what it takes must remain, else its readings are set
+    aside; where each run has a size of its own, a fifth of the runs must show one. Single readings, and any two of a run,
+    are rivals of all that. When nothing more is found, each finding is tested once more beside the others.
 
     Examples
     --------
@@ -111,8 +112,10 @@ def diagnose(
         best = look.best(state, scatter, evidence)
         if best is None:
             break
-        if best.kind == "reading":
-            state.used.flat[best.place] = False
+        if best.kind == "readings":
+            places = [best.place] if best.second is None else [best.place, best.second]
+            state.used.flat[places] = False
+            state.together |= set(places) if best.pattern else set()
         elif (run := look.lone_run(evidence, scatter, best)) is not None:
             if "tap" in best.kind:
                 state.used[run] &= ~(some.sight[:, best.place] != 0)
@@ -140,9 +143,11 @@ def diagnose(
     scatter = look.scatter(state) or scatter
     taps, breaks = look.describe(state, scatter)
     offset, offset_u, edge, edge_u = look.each(state, scatter)
-    aside = np.zeros(used.shape, dtype=bool)
-    aside[pick] = used[pick] & ~state.used
-    return Diagnosis(True, None, taps, breaks, aside, offset, offset_u, edge, edge_u, scatter)
+    picked = np.zeros(state.used.shape, dtype=bool)
+    picked.flat[list(state.together)] = True
+    together = np.zeros(used.shape, dtype=bool)
+    together[pick] = picked
+    return Diagnosis(True, None, taps, breaks, together, offset, offset_u, edge, edge_u, scatter)
 
 
 def picked_runs(runs: int, n: int, suspects: Suspects) -> NDArray[np.intp]:

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from gradeline.fitting.model import Model
-from gradeline.fitting.scatter import Scatter, estimate_scatter, scatter_variance
+from gradeline.fitting.scatter import Scatter, estimate_scatter, runs_that_tell, scatter_variance
 from gradeline.fitting.slope import project
 
 __all__ = ["SteadyScatter", "steady_scatter"]
@@ -102,7 +102,8 @@ def steady_scatter(
     variance = np.broadcast_to(start**2, used.shape).copy()
     if model.repeats is not None:
         variance = variance / np.maximum(model.repeats, 1)
-    sound = used.copy()
+    sound = used & _in_line(y, used, design, variance, model)[:, None]
+    aside = int((used & ~sound).sum())
     parts: tuple[Scatter, ...] = ()
     for turn in range(_PASSES):
         # Common errors have a size in metres: they are weighed once the scatter is known.
@@ -118,7 +119,7 @@ def steady_scatter(
         score = score * np.sqrt(variance / new)
         worst = np.abs(score).argmax(axis=1)
         gone = np.abs(score[np.arange(runs), worst]) > _FAR
-        room = int(_MOST_SHARE * used.sum()) - int((used & ~sound).sum())
+        room = int(_MOST_SHARE * used.sum()) - int((used & ~sound).sum()) + aside
         settled = bool(np.allclose(new, variance, rtol=0.01))
         variance = new
         if turn and ((not gone.any() and settled) or room < gone.sum()):
@@ -126,6 +127,21 @@ def steady_scatter(
         sound[np.flatnonzero(gone), worst[gone]] = False
     judged = [part.dof for part in parts if not part.stands]
     return SteadyScatter(parts, variance, float(sum(judged)) if judged else float("inf"))
+
+
+def _in_line(y: Array, used: Mask, design: Array, variance: Array, model: Model) -> Mask:
+    """Runs whose readings scatter about their line as those of the others do, steady errors and all.
+
+    With few runs the steady errors would take up part of what one run alone has wrong, and spread it over the others.
+    """
+    shared = project(design, variance, used)
+    weight = shared.weight[shared.index] / shared.scale[:, None, None]
+    freedom = np.einsum("rii,ri->r", weight, variance)
+    squares = np.einsum("ri,rij,rj->r", y, weight, y)
+    tells = freedom > _BOUND
+    found = np.ones(len(y), dtype=bool)
+    found[tells] = runs_that_tell(squares[tells] / freedom[tells], freedom[tells], model.velocity_head[tells])
+    return found
 
 
 def _left(y: Array, weight: Array, variance: Array, columns: Array) -> tuple[Array, Array]:
