@@ -113,9 +113,9 @@ def diagnose(
         if best is None:
             break
         if best.kind == "readings":
-            places = [best.place] if best.second is None else [best.place, best.second]
-            state.used.flat[places] = False
-            state.together |= set(places) if best.pattern else set()
+            wrong = [best.place] if best.second is None else [best.place, best.second]
+            state.used.flat[wrong] = False
+            state.together |= set(wrong) if best.pattern else set()
         elif (run := look.lone_run(evidence, scatter, best)) is not None:
             if "tap" in best.kind:
                 state.used[run] &= ~(some.sight[:, best.place] != 0)
