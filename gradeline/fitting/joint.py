@@ -63,7 +63,8 @@ class JointLevels:
     gain : (n, N) array
         By which each `log_factor` follows ln S of all slopes, dimensionless.
     scatter_covariance : tuple of (N_i, N_i) array
-        Random covariance of ln S of each survey's slopes, dimensionless.
+        The covariance of ln S of each survey's slopes that `dof` belongs to, dimensionless: what readings show of it, or,
+        where the runs alone tell their scatter about the law, that with the runs' own errors.
     dof : (n,) array
         Degrees of freedom of each survey's scatter, dimensionless; infinite where it is known.
     roughness : (n,) array
@@ -104,7 +105,8 @@ class JointLine:
     gain : (2, N) array
         By which level and rate follow ln S of all slopes, m and m per unit of time.
     scatter_covariance : tuple of (N_i, N_i) array
-        Random covariance of ln S of each survey's slopes, dimensionless.
+        The covariance of ln S of each survey's slopes that `dof` belongs to, dimensionless: what readings show of it, or,
+        where the runs alone tell their scatter about the law, that with the runs' own errors.
     dof : (n,) array
         Degrees of freedom of each survey's scatter, dimensionless.
     settled : bool
@@ -127,7 +129,7 @@ class _Stack:
     """All slopes in use, one under the other."""
 
     index: tuple[NDArray[np.intp], ...]  # slopes in use of each part, flat
-    scatter: tuple[Array, ...]  # random covariance of ln S of each part
+    scatter: tuple[Array, ...]  # covariance of ln S that readings or runs of each part show
     block: Array  # B (N, N)
     effect: Array  # J (N, Q)
     to_all: NDArray[np.bool_]  # errors common to all parts (Q,)
@@ -156,7 +158,8 @@ def _stack(parts: Sequence[Part], roughness: Array) -> _Stack:
         own, thin = errors.own.ravel()[pick], errors.thin.ravel()[pick]
         block = random + np.where(same, np.outer(own, own) + np.outer(thin, thin), 0.0)
         index.append(pick)
-        scatters.append(random)
+        # What the runs show about the law is their scatter with their own errors, not the scatter alone.
+        scatters.append(block if np.isfinite(part.fit.relative_scatter) else random)
         blocks.append(block)
         inverses.append(np.linalg.inv(block))
         flat = errors.effect.reshape(runs * reaches, -1)[pick]

@@ -16,6 +16,7 @@ from gradeline.errors import QuantityError
 from gradeline.loader.delimited import POINTED, WITH_COMMA, read_rows, separator_of, without_marks
 from gradeline.loader.ledger import PLACEHOLDER, Ledger
 from gradeline.quantities import Unit, parse_number
+from gradeline.quantities.meant import beyond_meaning
 
 __all__ = [
     "Cells",
@@ -32,7 +33,6 @@ __all__ = [
 
 _NOT_NUMERIC = re.compile(r"[^0-9eE.+\-\n]")
 _TO_FILL_IN = "the value is still to be filled in"
-_TOO_LARGE = 1e100
 _LISTED = 12
 _HINTED = 20
 
@@ -340,16 +340,19 @@ def numbers(
             values = np.array([float(cell) if cell else np.nan for cell in column], dtype=float)
         except ValueError:
             values = None
-        if values is not None and (np.abs(values) > _TOO_LARGE).any():
-            values = None
+        if values is not None and values.size:
+            with np.errstate(invalid="ignore", over="ignore"):
+                sizes = np.abs(unit.to_si(values[~np.isnan(values)]))
+            if sizes.size and beyond_meaning(float(sizes.max()), unit.dimension):
+                values = None
     if values is None:
         values = np.array(
-            [_number(ledger, cells, index, row, text, remedy) for row, text in enumerate(column)]
+            [_number(ledger, cells, index, row, text, unit, remedy) for row, text in enumerate(column)]
         )
     return unit.difference_to_si(values) if difference else unit.to_si(values)
 
 
-def _number(ledger: Ledger, cells: Cells, index: int, row: int, text: str, remedy: str) -> float:
+def _number(ledger: Ledger, cells: Cells, index: int, row: int, text: str, unit: Unit, remedy: str) -> float:
     """One cell, `text` with a decimal point, with its problem noted; taken where a column holds anything unusual."""
     cell = cells.columns[index][row]
     if not cell:
@@ -362,7 +365,7 @@ def _number(ledger: Ledger, cells: Cells, index: int, row: int, text: str, remed
         except QuantityError as error:
             message = str(error) if text == cell else f"{cell!r} is not a number"
         else:
-            if abs(value) <= _TOO_LARGE:
+            if not beyond_meaning(unit.to_si(value), unit.dimension):
                 return value
             message = f"{cell!r} is too large to be meant"
     ledger.problem(cells.file, cells.lines[row], cells.headings[index].text, f"{message}; {remedy}")

@@ -3,15 +3,19 @@
 from __future__ import annotations
 
 import csv
-import io
 import re
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 
-__all__ = ["POINTED", "WITH_COMMA", "read_rows", "separator_of", "without_marks"]
+__all__ = ["LONGEST_LINE", "POINTED", "WITH_COMMA", "read_rows", "separator_of", "without_marks"]
 
 _SEPARATORS = (",", ";", "\t")
 _HINT = re.compile(r"\s*sep=(.)[^\S\n]*(?=\r?\n|\r)")
 _HEAD = 1_000_000
+_LINE = re.compile(r"[^\r\n]+(?:\r\n?|\n)?|\r\n?|\n")
+_MOST_LINES = 1000
+
+#: A longer line is refused, in characters: as cells, each character may take a hundred bytes.
+LONGEST_LINE = 2_000_000
 
 #: A number whose decimals are set off by a comma.
 WITH_COMMA = re.compile(r"[+\-−]?[0-9]*,[0-9]+(?:[eE][+-]?[0-9]+)?")
@@ -57,12 +61,23 @@ def read_rows(text: str, separator: str) -> tuple[list[list[str]], list[int], tu
         text = text[hint.end() :]  # its line break stays, and with it the count of lines
     rows: list[list[str]] = []
     lines: list[int] = []
-    reader = csv.reader(
-        io.StringIO(text, newline=""), delimiter=separator, strict=True, skipinitialspace=True
-    )
+    in_row = 0
+
+    def bounded() -> Iterator[str]:
+        nonlocal in_row
+        for found in _LINE.finditer(text):
+            if found.end() - found.start() > LONGEST_LINE:
+                raise csv.Error(f"it has more than {LONGEST_LINE} characters")
+            if in_row >= _MOST_LINES:
+                raise csv.Error(f"it goes on over {_MOST_LINES} lines")
+            in_row += 1
+            yield found[0]
+
+    reader = csv.reader(bounded(), delimiter=separator, strict=True, skipinitialspace=True)
     line = 1
     try:
         for row in reader:
+            in_row = 0
             if any(row) and "".join(row).strip():
                 rows.append(row)
                 lines.append(line)

@@ -42,6 +42,7 @@ from gradeline.loader.keys import (
     written,
 )
 from gradeline.loader.ledger import PLACEHOLDER, Ledger
+from gradeline.loader.logger.settings import LoggerTable
 from gradeline.loader.tables import read_data
 from gradeline.loader.toml import DOCUMENT
 from gradeline.loader.walls import WallTable, read_walls
@@ -238,6 +239,7 @@ class Document:
     flow: FlowTable | None = field(default_factory=FlowTable)
     flow_gauges: Mapping[str, GaugeTable] = field(default_factory=dict)
     walls: Mapping[str, WallTable] = field(default_factory=dict)
+    logger: LoggerTable | None = None
 
 
 @functools.cache
@@ -263,11 +265,12 @@ def _gauge_model(kind: str) -> type[_Table]:
     return create_model("Gauge", __base__=_Table, kind=(Text, ...), **fields)
 
 
-_SINGLE: Mapping[str, type[_Table]] = {
+_SINGLE: Mapping[str, type[BaseModel]] = {
     "survey": SurveyTable,
     "fluid": FluidTable,
     "site": SiteTable,
     "uncertainty": UncertaintyTable,
+    "logger": LoggerTable,
 }
 _LISTS: Mapping[str, type[_Table]] = {
     "reach": ReachTable,
@@ -320,6 +323,7 @@ def read_document(ledger: Ledger) -> Document | None:
         flow=_with_gauges(ledger, flow, flow_gauges, gauges),
         flow_gauges=flow_gauges,
         walls=read_walls(ledger, data.get("wall"), _validate),
+        logger=single["logger"] if "logger" in data else LoggerTable(),  # type: ignore[arg-type]
     )
 
 
@@ -394,7 +398,8 @@ def _list(ledger: Ledger, model: type[_Table], data: object, name: str) -> tuple
         ledger.problem(NAME, None, name, f"{written(data)} stands here; begin each one with {header}")
         return (None,)
     return tuple(
-        _validate(ledger, model, each, f"{name}[{place}]") for place, each in enumerate(data, start=1)
+        _validate(ledger, model, each, f"{name}[{place}]")  # type: ignore[misc]  # a list holds its own table
+        for place, each in enumerate(data, start=1)
     )
 
 
@@ -447,7 +452,7 @@ def _legs(
     return _list(ledger, LegTable, table["leg"], f"{path}.leg"), rest  # type: ignore[return-value]
 
 
-def _validate(ledger: Ledger, model: type[_Table], data: object, path: str) -> _Table | None:
+def _validate(ledger: Ledger, model: type[BaseModel], data: object, path: str) -> BaseModel | None:
     """One table through its model; its faults are noted under their key paths."""
     if not isinstance(data, dict):
         ledger.problem(
@@ -463,7 +468,7 @@ def _validate(ledger: Ledger, model: type[_Table], data: object, path: str) -> _
         return None
 
 
-def _told(model: type[_Table], fault: Any, key: str) -> str:
+def _told(model: type[BaseModel], fault: Any, key: str) -> str:
     """A fault as pydantic tells it, in the words of this program."""
     fields = {known.alias or name: known for name, known in model.model_fields.items()}
     if fault["type"] == "missing":

@@ -166,7 +166,7 @@ def check_flows(rows: Rows, table: FlowTable | None) -> None:
                 "'temperature [degC]', or gauge_fluid_density in place of gauge_fluid in [flow]",
             )
     for label, places in by_name(rows.labels).items():
-        if len(set(still[places].tolist())) > 1:
+        if label and len(set(still[places].tolist())) > 1:
             columns.problem(
                 places[-1],
                 "run",

@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import hashlib
+import os
 import re
+from collections.abc import Callable
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -14,13 +16,19 @@ from gradeline.survey import SourceFile
 if TYPE_CHECKING:
     from gradeline.loader.tables import Source
 
-__all__ = ["CONTROL", "LARGEST_FILE", "PLACEHOLDER", "Ledger"]
+__all__ = ["CONTROL", "LARGEST_FILE", "MOST_PROBLEMS", "PLACEHOLDER", "Ledger"]
 
 #: A value that `gradeline new` leaves to be filled in begins with this sign.
 PLACEHOLDER = "?"
 
 #: A larger file is refused, in bytes: a survey of a million runs stays below it.
 LARGEST_FILE = 200_000_000
+_ADD_IT = "; add it to the folder"
+#: What is said of a file that has yet to be written.
+_ADD = {"readings.csv": f"{_ADD_IT} (before there are readings: gradeline plan, gradeline sheet)"}
+
+#: Where this many problems are noted, reading stops.
+MOST_PROBLEMS = 1000
 
 #: Characters that no text needs and that some terminal or XML reader acts on or refuses.
 CONTROL = re.compile(r"[\x00-\x08\x0b\x0c\x0e-\x1f\x7f-\x84\x86-\x9f\ufffe\uffff]")
@@ -55,6 +63,10 @@ class Ledger:
         Where the survey's tables are; None stands for files in the folder.
     planned : bool
         Whether the readings are still to be taken, so that none need be there.
+    progress : callable or None
+        Is told the share of a logger's file that was read, 0 to 1.
+    threads : int or None
+        Cores that may read a logger's file; None: all that there are.
     """
 
     folder: Path
@@ -65,10 +77,16 @@ class Ledger:
     order: dict[str, int] = field(default_factory=dict)
     source: Source | None = None
     planned: bool = False
+    progress: Callable[[float], None] | None = None
+    threads: int | None = None
 
     def problem(self, file: str, row: int | None, column: str | None, message: str) -> None:
-        """Note one fault at its place."""
+        """Note one fault at its place; so many that nobody reads them end the reading (SurveyError)."""
         self.problems.append(Problem(file, row, column, message))
+        if len(self.problems) >= MOST_PROBLEMS:
+            said = f"reading stopped after {MOST_PROBLEMS} problems; mend the first ones and read the survey again"
+            self.problems.append(Problem(file, row, None, said))
+            self.raise_problems()
 
     def raise_problems(self) -> None:
         """Raise SurveyError with all that was noted, where there is anything."""
@@ -85,29 +103,32 @@ class Ledger:
             key = key[: max(key.rfind("."), key.rfind("["), 0)]
         return self.order.get(key, -1 if not problem.column else len(self.order))
 
-    def text_of(self, name: str, *, required: bool = True) -> str | None:
-        """Return the text of a file in the folder, None (with a problem noted) where there is none.
+    def text_of(self, name: str, *, required: bool = True, largest: int = LARGEST_FILE) -> str | None:
+        """Return the text of a file in the folder, None (with a problem noted) where there is none or it is too large.
 
         UTF-8 with or without a byte order mark and UTF-16 are read.
         """
-        content = self.content_of(name, required=required)
+        content = self.content_of(name, required=required, largest=largest)
         return None if content is None else self._decode(name, content)
 
     def content_of(self, name: str, *, required: bool = True, largest: int = LARGEST_FILE) -> bytes | None:
         """Return the bytes of a file in the folder, at most `largest`; None (with a problem noted) where that fails."""
         path = self.folder / name
         if not path.is_file():
-            if required:
+            if path.exists():
+                what = "a folder" if path.is_dir() else "no file but a device or a pipe"
+                self.problem(name, None, None, f"this is {what}; put the file in its place")
+            elif required:
                 other = self._beside(path)
-                self.problem(name, None, None, f"the file is missing{other or '; add it to the folder'}")
+                self.problem(name, None, None, f"the file is missing{other or _ADD.get(name, _ADD_IT)}")
             return None
         try:
-            if path.stat().st_size > largest:
+            content = _bounded(path, largest)
+            if len(content) > largest:
                 self.problem(
                     name, None, None, f"the file is larger than {largest // 10**6} MB; split the survey"
                 )
                 return None
-            content = path.read_bytes()
         except OSError as error:
             self.problem(
                 name, None, None, f"the file cannot be read ({error.strerror}); check its permissions"
@@ -171,6 +192,18 @@ class Ledger:
 
     def _binary(self, name: str) -> None:
         self.problem(name, None, None, f"the file is binary, not text; save it as {path_kind(name)}")
+
+
+def _bounded(path: Path, largest: int) -> bytes:
+    """The bytes of a file, or more than `largest` of them where it is longer, whatever its length is said to be.
+
+    Opened so that what turns out to be a pipe without a writer does not wait for one.
+    """
+    flags = os.O_RDONLY | getattr(os, "O_NONBLOCK", 0) | getattr(os, "O_BINARY", 0)
+    with os.fdopen(os.open(path, flags), "rb") as stream:
+        if os.fstat(stream.fileno()).st_size > largest:
+            return bytes(largest + 1)
+        return stream.read(largest + 1)
 
 
 def path_kind(name: str) -> str:

@@ -127,11 +127,13 @@ def check_branches(ledger: Ledger, rows: Rows, branches: Sequence[Branch]) -> No
                 )
     if not branches:
         return
+    read = [one.column for one in branches if one.flow is None and one.column in rows.columns]
+    only = next((one.text for one in rows.columns.cells.headings if [one.name] == read), None)
     for row in np.flatnonzero((total >= rows.flow) & (total > 0)).tolist():
         ledger.problem(
             rows.columns.cells.file,
             rows.lines[row],
-            None,
+            only,
             f"the off-takes take {1000 * total[row]:g} L/s of a flow of {1000 * rows.flow[row]:g} L/s; some must be left "
             "downstream: mend a flow or its unit, or end the line at the off-take",
         )

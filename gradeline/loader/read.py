@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import replace
 from pathlib import Path
 
@@ -28,6 +28,7 @@ from gradeline.loader.line import (
     check_gauge_temperatures,
     check_given_fluid,
 )
+from gradeline.loader.logger.read import Logged, read_logger
 from gradeline.loader.offtakes import Branch, build_branches
 from gradeline.loader.readings import read_runs
 from gradeline.loader.repeats import RunTable
@@ -56,18 +57,24 @@ def read_survey(
     diameter: str | None = None,
     flow: str | None = None,
     temperature: str | None = None,
+    progress: Callable[[float], None] | None = None,
+    threads: int | None = None,
 ) -> Survey:
     """Return the survey that a folder, a workbook or one table of heads holds.
 
     Parameters
     ----------
     path : str or path
-        A folder with ``survey.toml``, ``taps.csv`` and ``readings.csv``, and ``runs.csv`` where the readings are
+        A folder with ``survey.toml``, ``taps.csv`` and ``readings.csv`` (or ``logger.csv`` or ``logger.parquet``), and ``runs.csv`` where the readings are
         listed one a row (the tables may be ``.parquet`` instead); an ``.xlsx`` with the sheets ``survey``, ``taps``,
         ``readings`` and perhaps ``runs``; or one table with columns such as ``chainage [m]`` and ``head [mm]``.
     diameter, flow, temperature : str or None
         For one table of heads, and only for it: bore, flow and temperature with their units, such as
         ``"26.6 mm +/- 0.1 mm"``, ``"0.84 L/s"`` and ``"18 degC"``.
+    progress : callable or None
+        Is told the share of a logger's file that was read, 0 to 1.
+    threads : int or None
+        Cores that may read a logger's file; None: all that this process may use.
 
     Returns
     -------
@@ -90,7 +97,7 @@ def read_survey(
     gradeline.errors.SurveyError: no such folder: there is no such folder; give the folder that holds survey.toml
     """
     path = Path(path)
-    ledger = Ledger(path.parent if path.is_file() else path)
+    ledger = Ledger(path.parent if path.is_file() else path, progress=progress, threads=threads)
     ledger.source = source_of(ledger, path, {"diameter": diameter, "flow": flow, "temperature": temperature})
     if ledger.source is None:
         ledger.raise_problems()
@@ -118,9 +125,13 @@ def read_from(ledger: Ledger, path: Path) -> Survey:
     calibrations = {
         name: read_calibration(ledger, gauge) for name, gauge in {**described, **at_meter}.items()
     }
+    columns = None if taps is None else with_gauge_columns(taps, described)
+    logged = read_logger(ledger, document, columns, branches)
+    if logged is not None:
+        ledger.source = logged
     runs = read_runs(
         ledger,
-        None if taps is None else with_gauge_columns(taps, described),
+        columns,
         is_water=None if fluid is None else fluid.is_water,
         rule=temperature_rule(fluid),
         branches=branches,
@@ -168,6 +179,7 @@ def read_from(ledger: Ledger, path: Path) -> Survey:
         runs=runs,
         path=path,
         histories=histories,
+        logged=logged,
     )
 
 
@@ -186,6 +198,7 @@ def _compose(
     runs: RunTable,
     path: Path,
     histories: tuple[WallHistory, ...],
+    logged: Logged | None,
 ) -> Survey:
     """The parts, sound each by itself, as one survey."""
     gauges = tuple(
@@ -255,4 +268,5 @@ def _compose(
             **{f"taps.csv {column}": unit for column, unit in table.units.items()},
             **runs.units,
         },
+        record=None if logged is None else logged.record,
     )

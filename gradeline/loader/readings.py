@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 from types import MappingProxyType
 
@@ -243,12 +243,12 @@ def _wide_readings(
     rows.values = np.concatenate([values for _, values, _ in blocks]) if blocks else np.empty(0)
     rows.given = np.concatenate([given for _, _, given in blocks]) if blocks else np.empty(0, bool)
 
-    def told(reading: int) -> str:
+    def placed(reading: int) -> tuple[str, int, str]:
         block, row = divmod(reading, len(cells))
-        column, unit = cells.columns[places[block]], cells.headings[places[block]].unit
-        return f"{column[row]} {unit} ({cells.file} row {cells.lines[row]})"
+        column, heading = cells.columns[places[block]], cells.headings[places[block]]
+        return f"{column[row]} {heading.unit}", cells.lines[row], heading.text
 
-    rows.told = told
+    _place(rows, cells, placed)
     return units
 
 
@@ -291,15 +291,25 @@ def _long_readings(
     rows.values, rows.given = values[sound], given[sound]
     places = np.flatnonzero(sound)
     unit_texts = columns.raw("unit") if "unit" in columns else None
-    own = cells.headings[column_index(cells, "reading") or 0].unit
+    heading = cells.headings[column_index(cells, "reading") or 0]
+
+    def placed(reading: int) -> tuple[str, int, str]:
+        row = int(places[reading])
+        unit = unit_texts[row] if unit_texts is not None else heading.unit
+        return f"{columns.raw('reading')[row]} {unit}", cells.lines[row], heading.text
+
+    _place(rows, cells, placed)
+    return units
+
+
+def _place(rows: Rows, cells: Cells, placed: Callable[[int], tuple[str, int, str]]) -> None:
+    """Let `rows` say how each reading stands in its file."""
 
     def told(reading: int) -> str:
-        row = int(places[reading])
-        unit = unit_texts[row] if unit_texts is not None else own
-        return f"{columns.raw('reading')[row]} {unit} ({cells.file} row {cells.lines[row]})"
+        text, line, _ = placed(reading)
+        return f"{text} ({cells.file} row {line})"
 
-    rows.told = told
-    return units
+    rows.placed, rows.told = placed, told
 
 
 def _unknown_labels(

@@ -79,12 +79,19 @@ class Recording:
         Each gauge with its kind.
     taken_from : str or None
         The file whose headings they are; None where there is none yet.
+    listed : tuple of str
+        The columns of ``readings.csv`` where it lists its readings one a row; `columns` are then those of ``runs.csv``, or
+        the run alone. Empty where a run has a row.
+    read : tuple of Recorded
+        What each row of such a list is of, in order of chainage: the tap, and in which unit it is read.
     """
 
     title: str
     columns: tuple[Recorded, ...]
     gauges: tuple[tuple[str, str], ...]
     taken_from: str | None = None
+    listed: tuple[str, ...] = ()
+    read: tuple[Recorded, ...] = ()
 
 
 def read_recording(path: str | os.PathLike[str]) -> Recording:
@@ -141,7 +148,8 @@ def read_recording(path: str | os.PathLike[str]) -> Recording:
     title = (header.title if header is not None else None) or (
         path.stem if path.is_file() else path.resolve().name
     )
-    headings, taken_from = _written(ledger, columns)
+    headings, taken_from, listed = _written(ledger, columns)
+    read = _rows_listed(ledger, columns, places) if listed else ()
     if not headings:
         headings = _new_headings(document, columns, known)
     primary = _primary(document.flow)
@@ -153,6 +161,8 @@ def read_recording(path: str | os.PathLike[str]) -> Recording:
         ),
         gauges=tuple((gauge.name, gauge.kind or "") for gauge in described.values()),
         taken_from=taken_from,
+        listed=listed,
+        read=read,
     )
 
 
@@ -178,20 +188,32 @@ def _primary(table: FlowTable | None) -> frozenset[str]:
     return frozenset(name for name, of in table.column_names.items() if of == table.method.primary)
 
 
-def _written(ledger: Ledger, taps: TapTable) -> tuple[list[str], str | None]:
-    """The headings of the readings that are there already, wide; none where there are none."""
+def _written(ledger: Ledger, taps: TapTable) -> tuple[list[str], str | None, tuple[str, ...]]:
+    """The headings of the readings that are there already, and those of a list of readings; none where there are none."""
     quiet = Ledger(ledger.folder, source=ledger.source)
     place = place_of(quiet, "readings")
     if place is None:
-        return [], None
+        return [], None, ()
     cells = read_table(quiet, "readings", required=False)
+    headings = _headings(quiet, place)
     if cells is None or column_index(cells, "tap") is None:
-        headings = _headings(quiet, place)
-        return headings, place if headings else None
+        return headings, place if headings else None, ()
     runs = place_of(quiet, "runs")
     read_table(quiet, "runs", required=False)
-    first = ["run"] if runs is None else _headings(quiet, runs)
-    return [*first, *_listed(cells, taps)], place
+    return ["run"] if runs is None else _headings(quiet, runs), place, tuple(headings)
+
+
+def _rows_listed(ledger: Ledger, taps: TapTable, places: Mapping[str, str]) -> tuple[Recorded, ...]:
+    """The taps that a list of readings names, with their units, in order of chainage."""
+    cells = read_table(Ledger(ledger.folder, source=ledger.source), "readings", required=False)
+    if cells is None:
+        return ()
+    found = []
+    for text in _listed(cells, taps):
+        name = parse_heading(text).name
+        unit = text.removeprefix(name).strip(" []")
+        found.append(Recorded(name, f"{places[name]}, {unit}" if name in places else unit))
+    return tuple(found)
 
 
 def _headings(ledger: Ledger, file: str) -> list[str]:

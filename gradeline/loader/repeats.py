@@ -45,7 +45,7 @@ class RunTable:
 class Rows:
     """Rows of runs and single readings, before they are averaged: one reading is (run, tap, value, given).
 
-    `told` says how a reading stands in its file, by its place among the readings.
+    `told` says how a reading stands in its file, by its place among the readings; `placed` its text, line and heading.
     """
 
     labels: list[str]
@@ -61,6 +61,7 @@ class Rows:
     present: frozenset[str] = frozenset()
     referenced: bool = False
     told: Callable[[int], str] = str
+    placed: Callable[[int], tuple[str, int | None, str | None]] = lambda reading: (str(reading), None, None)
 
 
 def check_repeated_flows(rows: Rows, flow_u: Stated | None) -> None:

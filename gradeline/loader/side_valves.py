@@ -53,6 +53,8 @@ def _where(at: float | None, taps: Sequence[Tap]) -> str:
         return f"between {taps[0].name} and {taps[-1].name}" if len(taps) > 1 else f"by {taps[0].name}"
     before = [tap.name for tap in taps if tap.chainage <= at + _SAME_PLACE]
     after = [tap.name for tap in taps if tap.chainage > at + _SAME_PLACE]
+    if not before and not after:
+        return ""  # no tap's chainage could be read, which is told
     if not before:
         return f"upstream of {after[0]}"
     return f"between {before[-1]} and {after[0]}" if after else f"downstream of {before[-1]}"

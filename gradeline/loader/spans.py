@@ -39,10 +39,12 @@ def check_spans(ledger: Ledger, file: str, rows: Rows, taps: TapTable) -> None:
         shown = " to ".join(f"{unit.from_si(end):g}" for end in span)
         for place in beyond[: 1 if len(beyond) > TOLD_SINGLY else None].tolist():
             more = f", and so do {len(beyond) - 1} more readings" if len(beyond) > TOLD_SINGLY else ""
+            text, line, heading = rows.placed(place)
+            whose = "" if heading is None or heading.startswith(name) else f" of {name!r}"
             ledger.problem(
                 file,
-                None,
-                name,
-                f"{rows.told(place)} lies beyond the scale of gauge {taps.gauge_of.get(name)!r}, {shown} {unit.text}"
+                line,
+                heading or name,
+                f"{text}{whose} lies beyond the scale of gauge {taps.gauge_of.get(name)!r}, {shown} {unit.text}"
                 f"{more}; mend the reading or the gauge's range",
             )

@@ -17,7 +17,7 @@ from gradeline.loader.heads import GIVEN, TableOfHeads, given_values
 from gradeline.loader.keyed import SurveySheet, read_survey_sheet
 from gradeline.loader.ledger import Ledger
 from gradeline.loader.parquet import read_parquet
-from gradeline.loader.toml import DOCUMENT, parse_toml
+from gradeline.loader.toml import DOCUMENT, LARGEST_DOCUMENT, parse_toml
 from gradeline.loader.workbook import Workbook, open_workbook, trimmed
 
 __all__ = ["ONE_FILE", "READERS", "Source", "place_of", "read_data", "read_table", "source_of"]
@@ -52,11 +52,13 @@ class Folder:
 
     def data(self, ledger: Ledger) -> dict[str, Any] | None:
         """Return what ``survey.toml`` says."""
-        text = ledger.text_of(DOCUMENT)
+        text = ledger.text_of(DOCUMENT, largest=LARGEST_DOCUMENT)
         return None if text is None else parse_toml(ledger, text)
 
     def _files(self, ledger: Ledger, name: str) -> list[str]:
-        return [name + ending for ending in READERS if (ledger.folder / (name + ending)).is_file()]
+        names = [name + ending for ending in READERS if (ledger.folder / (name + ending)).exists()]
+        files = [each for each in names if (ledger.folder / each).is_file()]
+        return files or names[:1]  # what is no file is told where it is read
 
     def table(self, ledger: Ledger, name: str, *, required: bool = True) -> Cells | None:
         """Return the file of a table as cells."""
@@ -203,6 +205,14 @@ def source_of(ledger: Ledger, path: Path, given: Mapping[str, str | None]) -> So
         Where something is given that the survey says itself, or is missing beside a table of heads.
     """
     here = {name: text for name in GIVEN if (text := given.get(name)) is not None}
+    if path.is_dir() and path.suffix.casefold() in ONE_FILE and not (path / DOCUMENT).exists():
+        ledger.problem(
+            str(path),
+            None,
+            None,
+            f"this is a folder without {DOCUMENT}, not a file; give the survey's file or folder",
+        )
+        return None
     if path.is_dir():
         _refuse(here)
         return Folder()

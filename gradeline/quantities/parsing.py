@@ -12,6 +12,7 @@ import re
 import warnings
 
 from gradeline.errors import QuantityError
+from gradeline.quantities.meant import beyond_meaning
 from gradeline.quantities.measured import Measured
 from gradeline.quantities.units import DIMENSIONS, Unit, offer, parse_unit
 
@@ -164,8 +165,8 @@ def parse_quantity(text: str, dimension: str) -> Measured:
     Raises
     ------
     QuantityError
-        Where the text is no finite number, where a unit is missing, ambiguous or of another dimension, or where
-        the uncertainty is negative.
+        Where the text is no finite number or too large to be meant, where a unit is missing, ambiguous or of another
+        dimension, or where the uncertainty is negative.
 
     Examples
     --------
@@ -180,6 +181,14 @@ def parse_quantity(text: str, dimension: str) -> Measured:
     """
     if len(text) > _LONGEST:
         raise QuantityError(f"{_shorten(text)!r} is too long for a number with a unit")
+    found = _quantity(text, dimension)
+    if any(beyond_meaning(size, dimension) for size in (found.value, found.u or 0.0)):
+        raise QuantityError(f"{_shorten(text)!r} is too large to be meant; mend the number or its unit")
+    return found
+
+
+def _quantity(text: str, dimension: str) -> Measured:
+    """What `parse_quantity` returns, of any size."""
     plain = _signs(text)
     if plain.count("±") > 1:
         raise QuantityError(f"{text!r} has more than one ±; state one uncertainty")

@@ -88,6 +88,9 @@ _DEFINITIONS = (
     "barg = bar",
 )
 
+#: A gallon as sentences write it.
+_GALLONS = re.compile(r"\b(US|imp) gal\b")
+
 # Units that mean one thing in one country or trade and another elsewhere, by pint's own name for each.
 _AMBIGUOUS = {
     "gallon": "say US_gal or imp_gal",
@@ -177,6 +180,11 @@ class Unit:
     factor: float
     divisor: float = 1.0
     offset: float = 0.0
+
+    @property
+    def label(self) -> str:
+        """The unit as sentences print it."""
+        return self.text.replace("_gal", " gal")
 
     @overload
     def to_si(self, values: float) -> float: ...
@@ -273,7 +281,7 @@ def parse_unit(text: str, dimension: str) -> Unit:
         ...
     gradeline.errors.QuantityError: the unit 'gal' is ambiguous; say US_gal or imp_gal
     """
-    stripped = text.strip()
+    stripped = _GALLONS.sub(r"\1_gal", text.strip())
     if not stripped:
         raise QuantityError(f"a unit is missing; {offer(dimension)}")
     if len(stripped) > _LONGEST:

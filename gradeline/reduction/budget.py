@@ -192,7 +192,7 @@ def run_budgets(
     return [*slopes, *factors]
 
 
-def wall_budgets(flowing: Flowing, walls: tuple[Wall, ...]) -> list[Budget]:
+def wall_budgets(flowing: Flowing, walls: tuple[Wall, ...], *, improve: bool = True) -> list[Budget]:
     """Return the budget of the roughness of each wall, of its upper bound where it is not told from zero.
 
     Parameters
@@ -201,6 +201,8 @@ def wall_budgets(flowing: Flowing, walls: tuple[Wall, ...]) -> list[Budget]:
         Its inputs.
     walls : tuple of Wall
         The walls.
+    improve : bool
+        Whether to work out what pays most, which takes a fit for every input.
 
     Returns
     -------
@@ -227,7 +229,9 @@ def wall_budgets(flowing: Flowing, walls: tuple[Wall, ...]) -> list[Budget]:
                 wall.name,
                 fit.roughness if resolved else fit.upper95,
                 parts,
-                _wall_improvement(wall, names, parts, scattered, resolved=bool(resolved)),
+                _wall_improvement(wall, names, parts, scattered, resolved=bool(resolved))
+                if improve
+                else None,
             )
         )
     return found

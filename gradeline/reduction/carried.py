@@ -71,6 +71,7 @@ def carried_of(
     )
     freedoms = [wall.fit.dof for wall in walls if np.isfinite(wall.fit.dof)]
     temperature = survey.runs["temperature"].to_numpy(float)[flowing.rows]
+    tested = _tested(walls, len(line.diameter))
     found = {
         "version": VERSION,
         "title": survey.title,
@@ -92,6 +93,8 @@ def carried_of(
                 "area": line.area[k],
                 "laminar_constant": line.laminar_constant[k],
                 "circle": reach.section is None,
+                "reynolds_low": tested[k, 0],
+                "reynolds_high": tested[k, 1],
             }
             for k, reach in enumerate(survey.reaches)
         ],
@@ -107,6 +110,17 @@ def carried_of(
         "notes": _notes(flowing),
     }
     return _plain(found)  # type: ignore[no-any-return]
+
+
+def _tested(walls: tuple[Wall, ...], reaches: int) -> Array:
+    """Least and largest Re of the runs behind a wall, in each of its reaches (K, 2); NaN where there are none."""
+    found = np.full((reaches, 2), np.nan)
+    for wall in walls:
+        for n, k in enumerate(wall.reaches):
+            own = wall.data.reynolds[:, n][wall.fit.used[:, n]]
+            if own.size:
+                found[k] = own.min(), own.max()
+    return found
 
 
 def _stays(one: Input) -> bool:

@@ -11,6 +11,7 @@ __all__ = [
     "FLOW",
     "METRES",
     "NUMBER",
+    "RECORD_TABLES",
     "RESULT_TABLES",
     "TEXT",
     "TRUTH",
@@ -159,6 +160,39 @@ RESULT_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
             # m of a roughness, without dimension of S, f and K
             "contribution_u": number("1 or m"),
             "variance_share": NUMBER,
+        },
+    }
+)
+
+#: Tables that stand beside them where the runs come from a logger's record, each with its columns in order.
+RECORD_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
+    {
+        # the stretches of the record whose means are the runs, from its beginning; begins and ends as its file tells time;
+        # the change of the flow over the window, over its mean
+        "windows": {
+            "run": TEXT,
+            "start": number("s"),
+            "end": number("s"),
+            "length": number("s"),
+            "begins": TEXT,
+            "ends": TEXT,
+            "samples": NUMBER,
+            "effective_samples": NUMBER,
+            "flow_drift": NUMBER,
+            "flow_drift_u": NUMBER,
+            "found": TRUTH,
+            "reason": TEXT,
+        },
+        # what is wrong with the record
+        "record_flags": {
+            "column": TEXT,
+            "kind": TEXT,
+            "start": number("s"),
+            "end": number("s"),
+            "begins": TEXT,
+            "ends": TEXT,
+            "run": TEXT,
+            "what": TEXT,
         },
     }
 )

@@ -9,9 +9,10 @@ import numpy as np
 from gradeline.fitting.one_thread import one_thread
 from gradeline.reduction import tabulate
 from gradeline.reduction.ailment_sentences import ailment_assumptions, ailment_cautions
+from gradeline.reduction.beside import drawing_tables, no_drawing_tables
 from gradeline.reduction.budget import budget_sentences, run_budgets, wall_budgets
 from gradeline.reduction.carried import carried_of
-from gradeline.reduction.conveyance import conveyance_of, conveyance_table, wall_conveyance_table
+from gradeline.reduction.conveyance import conveyance_of, wall_conveyance_table
 from gradeline.reduction.directions import compare_directions
 from gradeline.reduction.estimates import estimates_of
 from gradeline.reduction.fitted import fitted_walls_of
@@ -19,16 +20,13 @@ from gradeline.reduction.flags import flag_table
 from gradeline.reduction.fluids import air_cautions
 from gradeline.reduction.gentle import gentle_cautions
 from gradeline.reduction.heads import observation_kinds
-from gradeline.reduction.laws import UNSEEN_OFFSETS, departure_table, law_table, laws_of
+from gradeline.reduction.laws import UNSEEN_OFFSETS, laws_of
 from gradeline.reduction.loss_errors import loss_budgets
 from gradeline.reduction.losses import loss_assumptions, loss_cautions
 from gradeline.reduction.monte_carlo import SEED
-from gradeline.reduction.setting import stated_readings
 from gradeline.reduction.slips import slip_table, slips_of, with_slips
 from gradeline.reduction.statements import assumptions_of, cautions_of
-from gradeline.reduction.surfaces import roughness_check_table, surface_table
 from gradeline.reduction.tables import DRAWING_TABLES, Reduction
-from gradeline.reduction.transition import transition_table
 from gradeline.reduction.zero_drift import zero_drift_of
 from gradeline.survey import Survey
 
@@ -45,6 +43,7 @@ def reduce(
     exclude: Sequence[str] = (),
     monte_carlo: bool = True,
     seed: int = SEED,
+    results_alone: bool = False,
 ) -> Reduction:
     """Reduce a survey: head loss, friction factor, roughness and loss coefficients, each with its uncertainty.
 
@@ -65,6 +64,9 @@ def reduce(
         Whether the intervals of S, f and K are held against Monte Carlo; where the two differ, its limits stand.
     seed : int
         Of the Monte Carlo draws: the same seed gives the same limits.
+    results_alone : bool
+        Whether the tables of `DRAWING_TABLES` that the results do without stay empty, as for thousands of surveys: it
+        takes less time, and what is drawn of such a reduction shows less.
 
     Returns
     -------
@@ -103,7 +105,7 @@ def reduce(
     )
     budgets = [
         *run_budgets(survey, flowing, friction, walls),
-        *wall_budgets(flowing, walls),
+        *wall_budgets(flowing, walls, improve=not results_alone),
         *loss_budgets(whole, media, flowing, losses),
     ]
     directions = compare_directions(survey, line, flowing, friction, walls, level=level)
@@ -119,12 +121,28 @@ def reduce(
     crown = grade_lines["crown"].to_numpy(float).reshape(shape)
     law = survey.stated.friction_law
     slips = slips_of(survey, corrections, flowing, walls)
+    beside = (
+        no_drawing_tables()
+        if results_alone
+        else drawing_tables(
+            estimates,
+            budgets=budgets,
+            laws=laws,
+            conveyance=conveyance,
+            level=level,
+            correct=correct,
+            keep_all=keep_all,
+            exclude=exclude,
+        )
+    )
     return Reduction(
         survey={
             "title": survey.title,
             "date": survey.date,
             "source": survey.source,
             "files": {file.name: file.sha256 for file in survey.files},
+            "units": {name: survey.units[name] for name in ("flow", "temperature") if name in survey.units},
+            **tabulate.record_facts(survey),
         },
         assumptions=(
             *assumptions_of(
@@ -157,7 +175,7 @@ def reduce(
             ),
             *gentle_cautions(survey, line, flowing, friction, walls, media.gravity),
             *ailment_cautions(line, flowing),
-            *loss_cautions(whole, losses),
+            *loss_cautions(whole, losses, survey.runs["run"].iloc[flowing.rows].tolist()),
             *directions[1],
         ),
         reaches=tabulate.reach_table(survey, line, flowing),
@@ -174,45 +192,17 @@ def reduce(
         ),
         slips=slip_table(slips),
         budget=tabulate.budget_table(budgets),
-        improvements=tabulate.improvement_table(budgets),
-        likelihood=tabulate.likelihood_table(walls),
+        windows=tabulate.window_table(survey),
+        record_flags=tabulate.record_flag_table(survey),
         grade_lines=grade_lines,
-        layout=tabulate.layout_table(survey, line),
-        laminar=tabulate.laminar_table(survey, flowing, friction),
-        reading_units=tabulate.reading_unit_table(survey),
-        exponents=tabulate.exponent_table(survey, line, flowing, friction, walls, level=level),
-        ailments=tabulate.ailment_table(flowing),
-        ailment_runs=tabulate.ailment_run_table(survey, line, media, flowing, corrections.heads.observed),
-        break_heads=tabulate.break_head_table(survey, line, media, flowing),
-        scatter=tabulate.scatter_table(survey, flowing, np.hypot(*stated_readings(survey, corrections))),
-        bore_sensitivity=tabulate.bore_table(walls),
-        losses=tabulate.loss_table(whole, losses),
-        loss_runs=tabulate.loss_run_table(survey, whole, flowing, losses),
-        inputs=tabulate.input_table(
-            survey,
-            level=level,
-            correct=correct,
-            keep_all=keep_all,
-            exclude=exclude,
-            unjudged=None if flowing.fits.search.done else flowing.fits.search.reason,
-            line_unjudged=None if found is None else found.reason,
-        ),
-        stated_reaches=tabulate.stated_reach_table(survey),
-        stated_taps=tabulate.stated_tap_table(survey),
-        raw_readings=tabulate.raw_reading_table(survey),
         level=level,
         gravity=media.gravity,
         friction_law_u=float("nan") if law is None else law,
-        transition=transition_table(survey, line, flowing, friction, walls),
-        laws=law_table(laws),
-        departures=departure_table(laws),
-        conveyance=conveyance_table(survey, flowing, conveyance),
         wall_conveyance=of_walls,
-        surfaces=surface_table(walls),
-        roughness_checks=roughness_check_table(survey, walls, level=level),
         carried=carried_of(survey, whole, media, flowing, corrections, walls, losses, level=level),
         zero_drift=tabulate.frame("zero_drift", {name: [] for name in DRAWING_TABLES["zero_drift"]})
         if drift is None
         else drift.table(),
-        fitted_walls=fitted_walls_of(survey, media, flowing, walls),
+        fitted_walls=() if results_alone else fitted_walls_of(survey, media, flowing, walls),
+        **beside,
     )

@@ -299,5 +299,15 @@ DRAWING_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
         },
         # one row a run and observation, as read
         "raw_readings": {"run": TEXT, "tap": TEXT, "reading": number("m or Pa"), "repeats": NUMBER},
+        # a logger's record, thinned for drawing: from the least to the greatest sample of each stretch, in the file's unit
+        "record_trace": {
+            "column": TEXT,
+            "role": TEXT,
+            "unit": TEXT,
+            "time": number("s"),
+            "low": NUMBER,
+            "mean": NUMBER,
+            "high": NUMBER,
+        },
     }
 )

@@ -21,6 +21,7 @@ from gradeline.reduction.loss_errors import checked_losses
 from gradeline.reduction.losses import Loss, losses_of
 from gradeline.reduction.media import Media, media_of, run_temperature_u
 from gradeline.reduction.monte_carlo import SEED, check_sentence, checked_friction
+from gradeline.reduction.record import with_record_read
 from gradeline.reduction.runs import Flowing, fit_survey
 from gradeline.reduction.unlisted_losses import with_coefficients, with_unlisted_losses
 from gradeline.reduction.walls import Wall, walls_of
@@ -108,6 +109,7 @@ def estimates_of(
         raise ReductionError(f"the level of the intervals is between 0 and 1, such as 0.95; found {level}")
     if correct not in CORRECTIONS:
         raise ReductionError(f"to correct: {correct!r} is not one of {', '.join(CORRECTIONS)}")
+    survey = with_record_read(survey)
     metered = metered_flow(survey)
     survey = metered.survey
     excluded = excluded_readings(survey, exclude)

@@ -63,7 +63,7 @@ def faint_flow_cautions(survey: Survey, flowing: Flowing) -> list[str]:
         flow = unit.from_si(float(flowing.flow[row]))
         said.append(
             f"The flow of run {survey.runs['run'].iloc[flowing.rows[row]]}, "
-            f"({rounded(flow, float(relative[row]) * flow)}) {unit.text}, is not told from zero: its reading is below twice "
+            f"({rounded(flow, float(relative[row]) * flow)}) {unit.label}, is not told from zero: its reading is below twice "
             "its standard uncertainty. If nothing flowed, enter 0 for the reading of the flow: the run is then a static one. "
             "It is left out of the wall's fit."
         )

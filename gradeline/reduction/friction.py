@@ -23,6 +23,9 @@ __all__ = ["LAMINAR_FAR", "Friction", "factor_effects", "friction_of"]
 
 Array = NDArray[np.float64]
 
+#: Logarithm of the widest interval of f, beyond which no wall lies: e⁵⁰ times and more.
+_WIDEST = 50.0
+
 #: f Re of laminar flow this many times its value, or this part of it, is a wrong unit: no bore is off by the fourth root.
 LAMINAR_FAR = 10.0
 
@@ -231,7 +234,8 @@ def _roughness_interval(
         effect = effect - along + relative[:, :, None] * np.stack(bore, axis=1)
     rest = own - by_reynolds * flowing.reach_flow_u
     u = np.sqrt(scatter + rest**2 + (by_reynolds * thin) ** 2 + _squared(effect))
-    low = relative_roughness(np.where(turbulent, factor * np.exp(-times * u), 1.0), reynolds) * line.diameter
-    high = relative_roughness(np.where(turbulent, factor * np.exp(times * u), 1.0), reynolds) * line.diameter
+    wide = np.minimum(times * u, _WIDEST)
+    low = relative_roughness(np.where(turbulent, factor * np.exp(-wide), 1.0), reynolds) * line.diameter
+    high = relative_roughness(np.where(turbulent, factor * np.exp(wide), 1.0), reynolds) * line.diameter
     known = turbulent & np.isfinite(u)
     return np.where(known, np.maximum(low, 0.0), np.nan), np.where(known, np.maximum(high, 0.0), np.nan)

@@ -157,7 +157,7 @@ def _remedy(
         )
     # What a run of this survey has shown to do goes before what a law says.
     shown = min(flowing.flow[enough].tolist(), default=np.inf)
-    said = f"{float(f'{unit.from_si(min(flow, shown)):.2g}'):g} {unit.text}"
+    said = f"{float(f'{unit.from_si(min(flow, shown)):.2g}'):g} {unit.label}"
     if faint and flow < shown:
         return f"Even a smooth pipe would reach that at about {said}, if the uncertainty stays what it is."
     return f"From about {said} on it would not be, if the uncertainty stays what it is."

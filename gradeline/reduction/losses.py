@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import ndtri
 
 from gradeline.fitting.losses import LossFit, LossTrend, fit_loss_coefficient, fit_loss_trend
 from gradeline.hydraulics.friction import TURBULENT_LIMIT
@@ -28,6 +30,8 @@ Mask = NDArray[np.bool_]
 FEWEST_TAPS = 2
 #: K depends on Re where a trend by chance is less likely than this.
 _TREND_FALSE_ALARM = 0.01
+#: Chance that a sound survey whose K are all zero is told of a rise, and the runs that are named.
+_RISING, _NAMED_RISES = 0.01, 4
 #: The velocity head's own errors depend on K: so often it is worked out with the K of all runs.
 _PASSES = 3
 
@@ -330,8 +334,28 @@ def loss_assumptions(line: Line, losses: tuple[Loss, ...]) -> tuple[str, ...]:
     return tuple(said)
 
 
-def loss_cautions(line: Line, losses: tuple[Loss, ...]) -> tuple[str, ...]:
-    """Say where K depends on the Reynolds number."""
+def loss_cautions(line: Line, losses: tuple[Loss, ...], runs: Sequence[str]) -> tuple[str, ...]:
+    """Say where the head rises at a loss, and where K depends on the Reynolds number; `runs` are the flowing ones, by name."""
+    return (*_rising(line, losses, runs), *_with_reynolds(line, losses))
+
+
+def _rising(line: Line, losses: tuple[Loss, ...], runs: Sequence[str]) -> Iterator[str]:
+    """Runs whose K lies below zero by more than their uncertainty, were it zero: one false word in a hundred surveys."""
+    tried = sum(int((np.isfinite(one.value) & (one.u > 0)).sum()) for one in losses)
+    for one in losses:
+        with np.errstate(invalid="ignore"):
+            below = np.flatnonzero((one.u > 0) & (one.value < -ndtri(1 - _RISING / max(tried, 1)) * one.u))
+        if not below.size:
+            continue
+        shown = [f"{runs[n]} (K = {rounded(one.value[n], one.u[n])})" for n in below[:_NAMED_RISES]]
+        more = f" and {below.size - _NAMED_RISES} more" if below.size > _NAMED_RISES else ""
+        yield (
+            f"The head rises at {line.fittings[one.place].name!r} in run {', '.join(shown)}{more}, beyond its uncertainty, which "
+            "no loss can do: look at the readings on either side, at the chainage of the fitting and at the static run."
+        )
+
+
+def _with_reynolds(line: Line, losses: tuple[Loss, ...]) -> tuple[str, ...]:
     return tuple(
         f"K of {line.fittings[one.place].name!r} {'falls' if one.trend.slope < 0 else 'rises'} with Re, by "
         f"{rounded(abs(one.trend.slope), one.trend.slope_u)} per decade: the value given is that of the fast runs, which "

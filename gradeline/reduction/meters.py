@@ -275,10 +275,10 @@ def _tabled_limits(given: MeterReadings, _: Array) -> list[str]:
     def shown(value: float) -> str:
         return f"{unit.from_si(value):.4g}"
 
-    told = [f"{given.runs[row]!r} reads {shown(float(at[row]))} {unit.text}" for row in beyond[:_TOLD]]
+    told = [f"{given.runs[row]!r} reads {shown(float(at[row]))} {unit.label}" for row in beyond[:_TOLD]]
     more = f" and {len(beyond) - _TOLD} more" if len(beyond) > _TOLD else ""
     return [
-        f"run {', run '.join(told)}{more}, where {table.file} holds from {shown(low)} to {shown(high)} {unit.text}"
+        f"run {', run '.join(told)}{more}, where {table.file} holds from {shown(low)} to {shown(high)} {unit.label}"
     ]
 
 

@@ -179,6 +179,8 @@ def _flow_uncertainty(survey: Survey, rows: NDArray[np.intp], flow: Array) -> Ar
     stated = survey.stated.flow
     if stated is not None:
         own = np.full(len(flow), stated.value) if stated.relative else stated.value / flow
+        if survey.record is not None:
+            own = np.hypot(own, np.nan_to_num(survey.runs["flow_u"].to_numpy(float)[rows] / flow))
     else:
         own = np.nan_to_num(survey.runs["flow_u"].to_numpy(float)[rows] / flow)
     if "flow_drift_u" in survey.runs.columns:

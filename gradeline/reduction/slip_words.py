@@ -70,7 +70,7 @@ class Explained:
 def _words(explained: Explained, repair: Repair) -> str:
     """What a repair would mean, as a question."""
     number = explained.number_of(repair)
-    written, column, unit = number.written, number.column, number.column.unit.text
+    written, column, unit = number.written, number.column, number.column.unit.label
     shown = column.shown
     if repair.kind == "copied":
         above = explained.runs[number.run - 1]

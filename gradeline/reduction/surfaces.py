@@ -22,7 +22,7 @@ from gradeline.reduction.tabulate.frames import frame
 from gradeline.reduction.walls import Wall
 from gradeline.survey import Survey
 
-__all__ = ["Surface", "known_surfaces", "roughness_check_table", "surface_table"]
+__all__ = ["Surface", "known_surfaces", "one_spelling", "roughness_check_table", "surface_table"]
 
 #: Titles of the sources that the list of surfaces names in short.
 SOURCES = {
@@ -31,6 +31,7 @@ SOURCES = {
 }
 #: A single published value stands for surfaces this much smoother and rougher (common practice).
 _SINGLE = 1.3
+_SPELLINGS = (("galvanis", "galvaniz"), ("bituminis", "bituminiz"), ("aluminum", "aluminium"))
 _MOST = 3
 _TELLING = 4
 BETTER, WORSE, SAME = "better", "worse", "not distinguishable"
@@ -81,6 +82,20 @@ def known_surfaces() -> tuple[Surface, ...]:
     return tuple(sorted(found, key=lambda one: one.middle))
 
 
+def one_spelling(name: str) -> str:
+    """Return a name in small letters, British and American spellings of the list's words made one.
+
+    Examples
+    --------
+    >>> one_spelling("Galvanised iron"), one_spelling("aluminum")
+    ('galvanized iron', 'aluminium')
+    """
+    plain = name.strip().casefold()
+    for other, ours in _SPELLINGS:
+        plain = plain.replace(other, ours)
+    return plain
+
+
 def surface_table(walls: tuple[Wall, ...]) -> pd.DataFrame:
     """Return the published surfaces nearest to each wall, up to three that its interval allows, else the nearest one.
 
@@ -110,7 +125,7 @@ def surface_table(walls: tuple[Wall, ...]) -> pd.DataFrame:
 
 def _words(name: str) -> set[str]:
     """The words of a name that tell something."""
-    return {word for word in re.findall(r"[a-z]+", name.lower()) if len(word) >= _TELLING}
+    return {word for word in re.findall(r"[a-z]+", one_spelling(name)) if len(word) >= _TELLING}
 
 
 def _distance(surface: Surface, roughness: float) -> float:

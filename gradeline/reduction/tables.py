@@ -10,21 +10,31 @@ import pandas as pd
 
 from gradeline.quantities.printing import MISSING, SI_DISPLAY
 from gradeline.quantities.shown import Shown, counted, rows_of, shown
-from gradeline.reduction.columns import RESULT_TABLES, Column
+from gradeline.reduction.columns import RECORD_TABLES, RESULT_TABLES, Column
 from gradeline.reduction.drawing_columns import DRAWING_TABLES
 
 if TYPE_CHECKING:
     from gradeline.reduction.fitted import FittedWall
 
-__all__ = ["DRAWING_TABLES", "RESULT_TABLES", "Column", "Reduction"]
+__all__ = ["DRAWING_TABLES", "RECORD_TABLES", "RESULT_TABLES", "Column", "Reduction", "empty"]
 
 
-def _empty(table: str) -> pd.DataFrame:
-    """A table of `DRAWING_TABLES` without rows."""
+def empty(table: str) -> pd.DataFrame:
+    """Return a table of `DRAWING_TABLES` or `RECORD_TABLES` without rows.
+
+    Parameters
+    ----------
+    table : str
+        Its name.
+
+    Examples
+    --------
+    >>> len(empty("likelihood"))
+    0
+    """
     kinds = {"text": "object", "number": "float", "truth": "boolean"}
-    return pd.DataFrame(
-        {name: pd.Series([], dtype=kinds[column.kind]) for name, column in DRAWING_TABLES[table].items()}
-    )
+    columns = RECORD_TABLES.get(table) or DRAWING_TABLES[table]
+    return pd.DataFrame({name: pd.Series([], dtype=kinds[column.kind]) for name, column in columns.items()})
 
 
 @dataclass(frozen=True, repr=False)
@@ -59,6 +69,10 @@ class Reduction:
         Tables of `DRAWING_TABLES`: what ails taps and line, run by run.
     improvements, likelihood : DataFrame
         Tables of `DRAWING_TABLES`: what better inputs would do, and the likelihood of each wall's roughness.
+    windows, record_flags : DataFrame
+        The tables of `RECORD_TABLES`: the windows of a logger's record and what is wrong with it; no rows without one.
+    record_trace : DataFrame
+        Table of `DRAWING_TABLES`: the record, thinned.
     carried : mapping
         What `gradeline.predict` needs beside the tables: as it stands in ``carried.json``.
     fitted_walls : tuple of FittedWall
@@ -93,19 +107,22 @@ class Reduction:
     level: float
     gravity: float
     friction_law_u: float
-    transition: pd.DataFrame = field(default_factory=lambda: _empty("transition"))
-    laws: pd.DataFrame = field(default_factory=lambda: _empty("laws"))
-    departures: pd.DataFrame = field(default_factory=lambda: _empty("departures"))
-    conveyance: pd.DataFrame = field(default_factory=lambda: _empty("conveyance"))
-    wall_conveyance: pd.DataFrame = field(default_factory=lambda: _empty("wall_conveyance"))
-    surfaces: pd.DataFrame = field(default_factory=lambda: _empty("surfaces"))
-    roughness_checks: pd.DataFrame = field(default_factory=lambda: _empty("roughness_checks"))
-    zero_drift: pd.DataFrame = field(default_factory=lambda: _empty("zero_drift"))
-    slips: pd.DataFrame = field(default_factory=lambda: _empty("slips"))
-    ailment_runs: pd.DataFrame = field(default_factory=lambda: _empty("ailment_runs"))
-    break_heads: pd.DataFrame = field(default_factory=lambda: _empty("break_heads"))
-    improvements: pd.DataFrame = field(default_factory=lambda: _empty("improvements"))
-    likelihood: pd.DataFrame = field(default_factory=lambda: _empty("likelihood"))
+    transition: pd.DataFrame = field(default_factory=lambda: empty("transition"))
+    laws: pd.DataFrame = field(default_factory=lambda: empty("laws"))
+    departures: pd.DataFrame = field(default_factory=lambda: empty("departures"))
+    conveyance: pd.DataFrame = field(default_factory=lambda: empty("conveyance"))
+    wall_conveyance: pd.DataFrame = field(default_factory=lambda: empty("wall_conveyance"))
+    surfaces: pd.DataFrame = field(default_factory=lambda: empty("surfaces"))
+    roughness_checks: pd.DataFrame = field(default_factory=lambda: empty("roughness_checks"))
+    zero_drift: pd.DataFrame = field(default_factory=lambda: empty("zero_drift"))
+    slips: pd.DataFrame = field(default_factory=lambda: empty("slips"))
+    ailment_runs: pd.DataFrame = field(default_factory=lambda: empty("ailment_runs"))
+    break_heads: pd.DataFrame = field(default_factory=lambda: empty("break_heads"))
+    improvements: pd.DataFrame = field(default_factory=lambda: empty("improvements"))
+    likelihood: pd.DataFrame = field(default_factory=lambda: empty("likelihood"))
+    windows: pd.DataFrame = field(default_factory=lambda: empty("windows"))
+    record_flags: pd.DataFrame = field(default_factory=lambda: empty("record_flags"))
+    record_trace: pd.DataFrame = field(default_factory=lambda: empty("record_trace"))
     carried: Mapping[str, Any] = field(default_factory=dict)
     fitted_walls: tuple[FittedWall, ...] = ()
 

@@ -8,6 +8,7 @@ from gradeline.gauge_kinds import GAUGE_KINDS, Calibration, GaugeKey, GaugeKind,
 from gradeline.survey.fluid import BEYOND, Fluid, PropertyTable
 from gradeline.survey.gauges import Gauge, Observation
 from gradeline.survey.line import Fitting, Offtake, Reach, Section, SideValve, Site, Tap, WallHistory
+from gradeline.survey.record import Clock, Record, Target, Window, still
 from gradeline.survey.stated import Stated, StatedUncertainties
 from gradeline.survey.whole import SourceFile, Survey
 
@@ -15,6 +16,7 @@ __all__ = [
     "BEYOND",
     "GAUGE_KINDS",
     "Calibration",
+    "Clock",
     "Fitting",
     "Fluid",
     "Gauge",
@@ -26,6 +28,7 @@ __all__ = [
     "Pressure",
     "PropertyTable",
     "Reach",
+    "Record",
     "Section",
     "SideValve",
     "Site",
@@ -34,5 +37,8 @@ __all__ = [
     "StatedUncertainties",
     "Survey",
     "Tap",
+    "Target",
     "WallHistory",
+    "Window",
+    "still",
 ]

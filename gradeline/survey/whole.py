@@ -15,6 +15,7 @@ from gradeline.survey.faults import faults
 from gradeline.survey.fluid import Fluid
 from gradeline.survey.gauges import Gauge, Observation
 from gradeline.survey.line import Fitting, Offtake, Reach, SideValve, Site, Tap, WallHistory
+from gradeline.survey.record import Record
 from gradeline.survey.stated import StatedUncertainties
 
 __all__ = ["SourceFile", "Survey"]
@@ -86,6 +87,9 @@ class Survey:
         The gauges at the tappings of the flow's meter that ``[flow]`` names; empty where its differential is a column.
     wall_histories : tuple of WallHistory
         What was known of the walls beforehand.
+    record : Record or None
+        What a logger wrote; its runs' means, uncertainties and, where they are to be found, windows are worked out by the
+        reduction, and until then `readings` has plain means of the given windows, or of the whole record.
 
     Raises
     ------
@@ -120,6 +124,7 @@ class Survey:
     written: pd.DataFrame = field(default_factory=pd.DataFrame)
     flow_gauges: tuple[Gauge, ...] = ()
     wall_histories: tuple[WallHistory, ...] = ()
+    record: Record | None = None
 
     def __post_init__(self) -> None:
         problems = [Problem(self.source or "survey", None, None, text) for text in faults(self)]

@@ -288,7 +288,7 @@ def test_the_page_shows_the_flow_in_units_of_a_bench(write_flow, case, keys, tol
 def test_check_tells_the_flow_that_was_worked_out(write_flow):
     toml, columns = CASES["weighing tank"]
     text = understood(gradeline.read_survey(write_flow(toml, cells(columns))))
-    assert "Flow (SI): weighing tank, air_density 1.2" in text
+    assert "Flow: weighing tank, air density 1.2 kg/m³" in text
     assert "  1    0.4 " in text
 
 

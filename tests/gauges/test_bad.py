@@ -78,7 +78,7 @@ ONE_CHANGE = [
     (
         "a limb beyond the board",
         (UTUBE + 'range = "0 to 0.33 m"\n', LIMBS, ENDS),
-        f"readings.csv m1 right: {float(LIMBS['m1 right [mm]'][5])!r} mm (readings.csv row 7) lies beyond the scale of gauge "
+        f"readings.csv row 7, m1 right [mm]: {float(LIMBS['m1 right [mm]'][5])!r} mm lies beyond the scale of gauge "
         "'m1', 0 to 0.33 m; mend the reading or the gauge's range",
     ),
     (

@@ -177,7 +177,7 @@ def test_every_unit_that_a_message_offers_is_taken():
             assert parse_unit(unit, name).dimension == name
 
 
-@given(st.floats(allow_nan=False, allow_infinity=False, min_value=-1e60, max_value=1e60))
+@given(st.floats(allow_nan=False, allow_infinity=False, min_value=-1e8, max_value=1e8))
 def test_a_printed_number_is_read_back(value):
     assert parse_number(repr(value)) == value
     assert parse_quantity(f"{value!r} m", "length").value == value

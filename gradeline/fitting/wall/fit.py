@@ -126,6 +126,8 @@ def fit_wall(data: WallData, usable: Mask, *, level: float = 0.95, dof: float = 
     )
     ones = used.astype(float)
     weight = float((ones * covariance.solve(ones)).sum())
+    with np.errstate(over="ignore"):  # of a run that is off by more than numbers reach nothing is expected
+        expected = np.exp(law_log_slope(data, roughness) + shift)
     return WallFit(
         roughness=roughness,
         low=low,
@@ -135,15 +137,16 @@ def fit_wall(data: WallData, usable: Mask, *, level: float = 0.95, dof: float = 
         used=used,
         off_law=candidates & ~used,
         score=score,
-        expected_slope=np.where(candidates, np.exp(law_log_slope(data, roughness) + shift), np.nan),
+        expected_slope=np.where(candidates & np.isfinite(expected), expected, np.nan),
         relative_scatter=scatter.relative,
         reading_scatter=scatter.reading,
         dof=float(freedom),
         trend=trend,
         trend_u=trend_u,
         trend_dof=trend_dof,
-        offset=float((ones * covariance.solve(residual)).sum()) / weight,
-        offset_u=float("nan") if lone else float(weight**-0.5),
+        # No weight: errors that differ by more than numbers can hold leave a covariance that is singular to rounding.
+        offset=float((ones * covariance.solve(residual)).sum()) / weight if weight > 0 else float("nan"),
+        offset_u=weight**-0.5 if weight > 0 and not lone else float("nan"),
         chi_square=float(covariance.squares(residual)),
     )
 

@@ -272,5 +272,7 @@ def deletion_scores(
             whole = law_gradient(data, candidates, roughness)
             rest = whole - np.einsum("rkq,q->rk", covariance.effect, covariance.shared(gradient))
             variance = variance + rest**2 / information
-        score = np.where(outside, ahead / np.sqrt(variance), score)
+        known = outside & (variance > 0)
+        ahead = np.where(known, ahead, np.nan) / np.sqrt(np.where(known, variance, 1.0))
+        score = np.where(outside, ahead, score)
     return score, shift

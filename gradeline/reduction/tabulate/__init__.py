@@ -19,6 +19,12 @@ from gradeline.reduction.tabulate.inputs import (
 )
 from gradeline.reduction.tabulate.losses import fitting_table, loss_run_table, loss_table
 from gradeline.reduction.tabulate.readings import head_table, scatter_table, tap_table
+from gradeline.reduction.tabulate.record import (
+    record_facts,
+    record_flag_table,
+    record_trace_table,
+    window_table,
+)
 from gradeline.reduction.tabulate.runs import reach_table, run_table
 from gradeline.reduction.tabulate.walls import bore_table, wall_table
 
@@ -43,10 +49,14 @@ __all__ = [
     "raw_reading_table",
     "reach_table",
     "reading_unit_table",
+    "record_facts",
+    "record_flag_table",
+    "record_trace_table",
     "run_table",
     "scatter_table",
     "stated_reach_table",
     "stated_tap_table",
     "tap_table",
     "wall_table",
+    "window_table",
 ]

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from gradeline.reduction.tables import DRAWING_TABLES, RESULT_TABLES, Column
+from gradeline.reduction.tables import DRAWING_TABLES, RECORD_TABLES, RESULT_TABLES, Column
 
 __all__ = ["frame"]
 
@@ -24,7 +24,7 @@ def frame(table: str, columns: Mapping[str, Values]) -> pd.DataFrame:
     Parameters
     ----------
     table : str
-        Name of a table in `RESULT_TABLES` or `DRAWING_TABLES`.
+        Name of a table in `RESULT_TABLES`, `RECORD_TABLES` or `DRAWING_TABLES`.
     columns : mapping of str to values
         One sequence a column, all of one length.
 
@@ -38,14 +38,24 @@ def frame(table: str, columns: Mapping[str, Values]) -> pd.DataFrame:
     >>> frame("flags", {name: [] for name in RESULT_TABLES["flags"]}).shape
     (0, 7)
     """
-    specification = RESULT_TABLES.get(table) or DRAWING_TABLES[table]
-    return pd.DataFrame({name: _column(columns[name], kind) for name, kind in specification.items()})
+    specification = RESULT_TABLES.get(table) or RECORD_TABLES.get(table) or DRAWING_TABLES[table]
+    index = pd.RangeIndex(len(columns[next(iter(specification))]))
+    return pd.DataFrame(
+        {name: _column(columns[name], kind, index) for name, kind in specification.items()}, index=index
+    )
 
 
-def _column(values: Values, column: Column) -> Array | pd.api.extensions.ExtensionArray | pd.Series[Any]:
+def _column(
+    values: Values, column: Column, index: pd.RangeIndex
+) -> Array | pd.api.extensions.ExtensionArray | pd.Series[Any]:
     # Arrays rather than a Series each: a reduction has some three hundred columns.
     if column.kind == "number":
         return np.asarray(values, dtype=float)
     if column.kind == "truth":
+        if isinstance(values, np.ndarray) and values.dtype == bool:
+            return pd.arrays.BooleanArray(values, np.zeros(values.shape, dtype=bool))
         return pd.array(list(values), dtype="boolean")
-    return pd.Series([None if value in (None, "") else str(value) for value in values], dtype=object)
+    # A Series, since of an array of objects pandas would make texts of its own kind.
+    return pd.Series(
+        [None if value is None or value == "" else str(value) for value in values], index, dtype=object
+    )

@@ -1,0 +1,1 @@
+"""Logger files, streamed: one pass of an engine over any number of rows, a bounded number of blocks kept."""
