@@ -126,6 +126,8 @@ def ageing_of(
                 "roughness_low": max(value - wide, 0.0),
                 "roughness_high": max(value + wide, 0.0),
                 "friction_factor": float(law.factor(reynolds, shown / diameter)),
+                "friction_factor_low": float(law.factor(reynolds, max(value - wide, 0.0) / diameter)),
+                "friction_factor_high": float(law.factor(reynolds, max(value + wide, 0.0) / diameter)),
                 "beyond_surveys": day > max(days),
             }
         )

@@ -9,16 +9,16 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
-from scipy.special import fdtrc, stdtr, stdtrit
 
 from gradeline.comparison.ageing import Ageing, ageing_of
+from gradeline.comparison.bores import DIFFER, ONE, OneBore, one_bore
+from gradeline.comparison.changes import tell_changes, tell_factors, unchanged, with_left_out
 from gradeline.comparison.matching import Taken, Together, matched, part_of, shared_rows
 from gradeline.comparison.odd import odd_ones
 from gradeline.comparison.sayings import assumptions_of, cautions_of
 from gradeline.comparison.tables import Comparison, table_of
 from gradeline.errors import UsageError
-from gradeline.fitting.joint import JointLevels, Part, freedom_of, joint_levels
+from gradeline.fitting.joint import JointLevels, joint_levels
 from gradeline.fitting.one_thread import one_thread
 from gradeline.hydraulics.friction import TURBULENT_LIMIT
 from gradeline.reduction import reduce
@@ -27,10 +27,6 @@ from gradeline.reduction.tables import Reduction
 from gradeline.survey import Survey
 
 __all__ = ["compare"]
-
-Array = NDArray[np.float64]
-
-_MANY = 1e9
 
 
 @one_thread
@@ -78,7 +74,9 @@ def compare(
     Notes
     -----
     The pipe is taken as the same: errors of bore, tap positions (and so of the lengths between them) and gravity are one
-    error in all surveys that state them alike, and all but cancel in a difference. A change is tested on ln f at the
+    error in all surveys that state them alike, and all but cancel in a difference. Bores that are stated otherwise make no
+    change: all surveys are compared in one bore, in which f differs between them as S/Q² does. Where the statements agree
+    within their uncertainties it is their mean; where they do not, S at equal flow is all that is compared. A change is tested on ln f at the
     common Re, of which the likelihood is nearly a parabola; where ε is told from zero this is a test of ε. Degrees of freedom
     by Welch and Satterthwaite.
 
@@ -108,18 +106,27 @@ def compare(
         raise UsageError(
             f"no two surveys have a wall of one name ({named}); give the same wall the same name"
         )
+    bores = {name: one_bore([wall for _, wall in found]) for name, found in walls.items()}
     held = [
-        _wall(name, found, together, reynolds, level, len(walls), last, dated=dated)
+        _wall(name, found, bores[name], together, reynolds, level, len(walls), last, dated=dated)
         for name, found in walls.items()
     ]
-    shared = [row for name, found in walls.items() for row in shared_rows(name, found, together)]
+    shared = [
+        row
+        for name, found in walls.items()
+        for row in shared_rows(
+            name, [(one, wall) for (one, _), wall in zip(found, bores[name].walls, strict=True)], together
+        )
+    ]
     return Comparison(
         surveys=table_of("surveys", [row for one in held for row in one.surveys]),
         walls=table_of("walls", [one.wall for one in held]),
         ageing=table_of("ageing", [row for one in held for row in one.ageing]),
         runs=table_of("runs", [row for one in held for row in one.runs]),
         shared=table_of("shared", shared),
-        assumptions=assumptions_of(together, level, tests=len(walls), dated=dated),
+        assumptions=assumptions_of(
+            together, level, tests=len(walls), dated=dated, walls=[one.wall for one in held]
+        ),
         cautions=cautions_of(taken, walls, [one.wall for one in held], [one.surveys for one in held], last),
         level=level,
         dated=dated,
@@ -214,6 +221,7 @@ class _Held:
 def _wall(
     name: str,
     found: Sequence[tuple[Taken, FittedWall]],
+    bore: OneBore,
     together: Together,
     reynolds: float | None,
     level: float,
@@ -223,25 +231,40 @@ def _wall(
     dated: bool,
 ) -> _Held:
     rows = [_told(one, wall) for one, wall in found]
-    runs = [row for one, wall in found for row in _run_rows(one, wall)]
+    # Of bores that differ it is not known which is true, so that the runs stand as each survey has them.
+    shown = [wall for _, wall in found] if bore.kind == DIFFER else bore.walls
+    runs = [row for (one, wall), mine in zip(found, shown, strict=True) for row in _run_rows(one, wall, mine)]
     usable = [
         n for n, (_, wall) in enumerate(found) if rows[n]["reason"] is None and np.isfinite(wall.fit.low)
     ]
-    about: dict[str, Any] = {"wall": name, "surveys_compared": len(usable)}
+    about: dict[str, Any] = {"wall": name, "surveys_compared": len(usable), "bores": bore.kind}
     if len(usable) < 2:
         why = "fewer than two surveys give this wall a friction and tell how sure it is"
         return _Held(about | {"reason": why}, rows, [], runs)
-    common = reynolds if reynolds is not None else _common_reynolds([rows[n] for n in usable])
-    about["reynolds"] = common
-    diameter = float(found[usable[0]][1].data.diameter[0])
-    parts = [part_of(found[n][0].label, found[n][1], together) for n in usable]
+    common = reynolds if reynolds is not None else _common_reynolds([bore.walls[n] for n in usable])
+    diameter = bore.diameter
+    about |= {"reynolds": common, "diameter": diameter}
+    parts = [part_of(found[n][0].label, bore.walls[n], together) for n in usable]
     levels = joint_levels(parts, common, diameter)
+    fuller = [with_left_out(part) for part in parts]
+    same = all(one is other for one, other in zip(fuller, parts, strict=True))
+    whole = levels if same else joint_levels(fuller, common, diameter)
     mine = [rows[n] for n in usable]
-    _tell_factors(mine, levels, parts, common, diameter, level)
-    _tell_changes(mine, levels, level, tests)
-    about |= _unchanged(levels, level, tests)
+    differ = bore.kind == DIFFER
+    if differ:
+        own = [part_of(found[n][0].label, found[n][1], together) for n in usable]
+        tell_factors(mine, joint_levels(own, common, diameter), own, common, diameter, level)
+    else:
+        tell_factors(mine, levels, parts, common, diameter, level)
+    tell_changes(mine, levels, whole, level, tests, of_roughness=not differ)
+    if bore.kind in (ONE, DIFFER):
+        for n, row in zip(usable, mine, strict=True):
+            row["log_factor_by_bore"] = float(bore.log_factor[n] - bore.log_factor[usable[0]])
+    about |= unchanged(levels, whole, level, tests)
     ageing: Ageing | None = None
-    if dated:
+    if dated and differ:
+        about["reason"] = "the stated bores differ beyond their uncertainties: no rate of growth"
+    elif dated:
         days = [date_of(found[n][0].reduction) for n in usable]
         ageing = ageing_of(
             parts, levels, [day for day in days if day is not None], common, diameter, level, until
@@ -283,117 +306,42 @@ def _unsure(wall: FittedWall) -> str | None:
     return None if np.isfinite(wall.fit.low) else "nothing tells how sure its friction is"
 
 
-def _run_rows(one: Taken, wall: FittedWall) -> list[dict[str, Any]]:
-    """The turbulent runs that entered, for drawing; f of each with its whole uncertainty."""
+def _run_rows(one: Taken, wall: FittedWall, shown: FittedWall) -> list[dict[str, Any]]:
+    """The turbulent runs that entered, for drawing; f of each with its whole uncertainty, in the bore that is shown."""
     runs, used = one.reduction.runs, wall.fit.used
     reaches = one.reduction.reaches["reach"][(one.reduction.reaches["wall"] == wall.name).to_numpy(bool)]
     flowing = list(dict.fromkeys(runs["run"][(runs["regime"] != "static").to_numpy(bool)]))
     entered = {
-        (flowing[r], reach)
+        (flowing[r], reach): (r, k)
         for r in range(used.shape[0])
         for k, reach in enumerate(reaches)
         if used[r, k] and r < len(flowing)
     }
+    faster = shown.data.reynolds / wall.data.reynolds
+    rougher = (shown.data.diameter * shown.data.slope / shown.data.velocity**2) / (
+        wall.data.diameter * wall.data.slope / wall.data.velocity**2
+    )
     return [
-        {"wall": wall.name, "survey": one.label}
-        | {key: row[key] for key in ("run", "reach", "reynolds", "friction_factor", "friction_factor_u")}
+        {
+            "wall": wall.name,
+            "survey": one.label,
+            "run": row["run"],
+            "reach": row["reach"],
+            "reynolds": row["reynolds"] * faster[place],
+            "friction_factor": row["friction_factor"] * rougher[place],
+            "friction_factor_u": row["friction_factor_u"] * rougher[place],
+        }
         for row in runs.to_dict("records")
-        if (row["run"], row["reach"]) in entered
+        if (place := entered.get((row["run"], row["reach"]))) is not None
     ]
 
 
-def _common_reynolds(rows: Sequence[dict[str, Any]]) -> float:
+def _common_reynolds(walls: Sequence[FittedWall]) -> float:
     """The middle of what all surveys tested, or between them where they tested nothing in common; two digits."""
-    low, high = max(row["reynolds_low"] for row in rows), min(row["reynolds_high"] for row in rows)
+    tested = [wall.data.reynolds[wall.fit.used] for wall in walls]
+    low, high = max(one.min() for one in tested), min(one.max() for one in tested)
     middle = float(np.sqrt(low * high))
     return float(f"{max(middle, TURBULENT_LIMIT):.1e}")
-
-
-def _quantile(level: float, dof: float) -> float:
-    return float(stdtrit(min(dof, _MANY), 0.5 + level / 2.0))
-
-
-def _size(levels: JointLevels, n: int, log_factor: float) -> float:
-    """ε of an ln f near that of a survey, m: along the law's own bend, of second order in ε."""
-    return float(levels.roughness[n] + (log_factor - levels.log_factor[n]) / levels.by_roughness[n])
-
-
-def _tell_factors(
-    rows: Sequence[dict[str, Any]],
-    levels: JointLevels,
-    parts: Sequence[Part],
-    reynolds: float,
-    diameter: float,
-    level: float,
-) -> None:
-    """Add f at the common Re in each survey's own bore, and ε without what all surveys share."""
-    for n, (row, part) in enumerate(zip(rows, parts, strict=True)):
-        weights = np.eye(len(rows))[n]
-        u, dof = float(np.sqrt(levels.covariance[n, n])), freedom_of(levels, weights)
-        t = _quantile(level, dof)
-        law = part.data.law.factor
-        own = np.log(law(reynolds, levels.roughness[n] / part.data.diameter[0])) - np.log(
-            law(reynolds, levels.roughness[n] / diameter)
-        )
-        factor = float(np.exp(levels.log_factor[n] + own))
-        row |= {
-            "friction_factor": factor,
-            "friction_factor_u": factor * u,
-            "friction_factor_low": factor * float(np.exp(-t * u)),
-            "friction_factor_high": factor * float(np.exp(t * u)),
-        }
-        if levels.resolved[n]:
-            apart = t * float(np.sqrt(max(levels.apart[n, n], 0.0)))
-            row["roughness_apart_low"] = max(_size(levels, n, levels.log_factor[n] - apart), 0.0)
-            row["roughness_apart_high"] = _size(levels, n, levels.log_factor[n] + apart)
-
-
-def _tell_changes(rows: Sequence[dict[str, Any]], levels: JointLevels, level: float, tests: int) -> None:
-    """Add each survey's change against the first."""
-    alarm = (1.0 - level) / (tests * max(len(rows) - 1, 1))
-    for n, row in enumerate(rows[1:], 1):
-        weights = np.zeros(len(rows))
-        weights[0], weights[n] = -1.0, 1.0
-        change = float(weights @ levels.log_factor)
-        u, dof = float(np.sqrt(weights @ levels.covariance @ weights)), freedom_of(levels, weights)
-        t = _quantile(level, dof)
-        p = 2.0 * float(stdtr(min(dof, _MANY), -abs(change) / u)) if u > 0 else float(change == 0)
-        row |= {
-            "log_factor_change": change,
-            "log_factor_change_u": u,
-            "log_factor_change_dof": dof if np.isfinite(dof) else None,
-            "log_factor_change_low": change - t * u,
-            "log_factor_change_high": change + t * u,
-            "change_p": p,
-            "changed": bool(p < alarm),
-        }
-        if levels.resolved[0] and levels.resolved[n]:
-            by = weights / levels.by_roughness
-            grown = float(levels.roughness[n] - levels.roughness[0])
-            wide = _quantile(level, freedom_of(levels, by)) * float(np.sqrt(by @ levels.covariance @ by))
-            row |= {
-                "roughness_change": grown,
-                "roughness_change_low": grown - wide,
-                "roughness_change_high": grown + wide,
-            }
-
-
-def _unchanged(levels: JointLevels, level: float, tests: int) -> dict[str, Any]:
-    """Return whether all surveys found one friction: the F test of their contrasts."""
-    count = len(levels.log_factor)
-    contrasts = np.column_stack([-np.ones(count - 1), np.eye(count - 1)])
-    apart = contrasts @ levels.log_factor
-    covariance = contrasts @ levels.covariance @ contrasts.T
-    dof = min(freedom_of(levels, row) for row in contrasts)
-    square = float(apart @ np.linalg.pinv(covariance, hermitian=True) @ apart)
-    p = float(fdtrc(count - 1, min(dof, _MANY), square / (count - 1)))
-    last = contrasts[-1]
-    needed = float(stdtrit(min(dof, _MANY), 1.0 - (1.0 - level) / (2.0 * tests)))
-    return {
-        "unchanged_p": p,
-        "changed": bool(p < (1.0 - level) / tests),
-        "least_log_factor_change": needed * float(np.sqrt(last @ levels.covariance @ last)),
-    }
 
 
 def _tell_odd(

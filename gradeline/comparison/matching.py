@@ -110,7 +110,7 @@ def _why(
 ) -> str:
     if common:
         return {
-            "pipe": "the pipe is the same, and it is stated alike",
+            "pipe": "the pipe is the same, and all are compared with one value of it",
             "meter": "the flow meter is said to be the same",
             "gauges": "the gauges are said to be the same",
         }[entry.belongs]

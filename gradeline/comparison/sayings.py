@@ -6,24 +6,34 @@ import datetime
 from collections.abc import Mapping, Sequence
 from typing import Any
 
+from gradeline.comparison.bores import DIFFER, ONE, UNMATCHED
 from gradeline.comparison.matching import Taken, Together
 from gradeline.reduction.fitted import FittedWall
 
 __all__ = ["assumptions_of", "cautions_of"]
 
-#: Bores that differ by less are one bore, relative.
-_SAME_BORE = 1e-3
 #: A common Re this far outside what a survey tested is told, relative.
 _OUTSIDE = 0.02
 #: Past the surveys by more than the time that they span, the line is little but its assumption.
 _FAR = 1.0
+#: Flagged readings named of a survey.
+_NAMED = 4
 
 
-def assumptions_of(together: Together, level: float, *, tests: int, dated: bool) -> tuple[str, ...]:
+def assumptions_of(
+    together: Together, level: float, *, tests: int, dated: bool, walls: Sequence[Mapping[str, Any]]
+) -> tuple[str, ...]:
     """Return every choice that was made."""
     said = [
         "The pipe is the same in all surveys: the errors of its bore, of the tap positions and elevations, of given loss "
         "coefficients and of gravity are one error where they are stated alike, and leave the differences."
+    ]
+    said += [
+        f"Wall {wall['wall']}: the stated bores agree within their uncertainties and are taken as one, "
+        f"{_bore(wall['diameter'])}, the mean of the statements, each weighed by its uncertainty: f, its change and the line of "
+        "ageing are those in this bore. ε by each survey is that in the bore that it states."
+        for wall in walls
+        if wall.get("bores") == ONE and wall.get("diameter") is not None
     ]
     for what, same, option in (
         ("flow meter", together.meter, "--same-meter"),
@@ -66,8 +76,13 @@ def cautions_of(
     """Return what sets the surveys apart beside the wall, and where the comparison reaches past what was tested."""
     said: list[str] = []
     for wall, mine in zip(about, rows, strict=True):
-        said += _unlike(str(wall["wall"]), mine)
+        said += _unlike(wall, mine)
         said += _outside(wall, mine)
+        if wall.get("by_left_out"):
+            said.append(
+                f"Wall {wall['wall']}: the change rests on runs that were left out as off the law; with those among them that "
+                "chance alone may have put there it is not told from chance, so it is not called real."
+            )
         if until is not None:
             said += _past(wall, mine, until)
         scale = wall.get("line_scale") or 1.0
@@ -86,17 +101,55 @@ def cautions_of(
             said.append(
                 f"{one.label}: the reduction has flags of kind {' and '.join(ill)}; what they say bears on the comparison."
             )
+        said += _flagged(one)
     return tuple(said)
 
 
-def _unlike(wall: str, rows: Sequence[Mapping[str, Any]]) -> list[str]:
-    said = []
-    bores = [row["diameter"] for row in rows]
-    if max(bores) / min(bores) - 1.0 > _SAME_BORE:
-        listed = _listed([(row["survey"], f"{1000 * row['diameter']:.5g} mm") for row in rows])
+def _flagged(one: Taken) -> list[str]:
+    """Say which readings of a survey were flagged, and whether they entered."""
+    flags, heads = one.reduction.flags, one.reduction.heads
+    flagged = flags[(flags["kind"] == "reading").to_numpy(bool)]
+    if not len(flagged):
+        return []
+    used = {
+        (run, tap)
+        for run, tap, use in zip(heads["run"], heads["tap"], heads["used"].fillna(False), strict=True)
+        if use
+    }
+    places = [(row["run"], row["tap"]) for row in flagged.to_dict("records")]
+    out = [place for place in places if place not in used]
+    named = ", ".join(f"run {run} tap {tap}" for run, tap in places[:_NAMED])
+    more = f" and {len(places) - _NAMED} more" if len(places) > _NAMED else ""
+    fate = (
+        "left out"
+        if len(out) == len(places)
+        else "kept"
+        if not out
+        else f"{len(out)} of them left out"
+    )
+    return [
+        f"{one.label}: {len(places)} {'reading was' if len(places) == 1 else 'readings were'} flagged ({named}{more}) and {fate}."
+    ]
+
+
+def _bore(diameter: float) -> str:
+    return f"{1000 * diameter:.5g} mm"
+
+
+def _unlike(about: Mapping[str, Any], rows: Sequence[Mapping[str, Any]]) -> list[str]:
+    said, wall = [], about["wall"]
+    listed = _listed([(row["survey"], _bore(row["diameter"])) for row in rows])
+    if about.get("bores") == DIFFER:
         said.append(
-            f"Wall {wall}: the stated bores differ ({listed}), so their errors are not one. Changes are told as those of f of "
-            "the same roughnesses in the first bore."
+            f"Wall {wall}: the stated bores differ beyond their uncertainties ({listed}). f goes as the fifth power of the bore, "
+            "so that f and ε by each survey differ by the statements alone; what is compared is S at equal flow, which no "
+            "statement of a bore touches. It changes where the wall or the bore itself does. Of one pipe, state one bore "
+            "in all surveys for the change of ε and its rate; of pipes of unlike bore S at equal flow tells nothing of the wall."
+        )
+    elif about.get("bores") == UNMATCHED:
+        said.append(
+            f"Wall {wall}: the surveys divide the line into other reaches, so that their bores are not held against each other "
+            f"({listed} first); where they differ, so does f."
         )
     fluids = {row["fluid"] for row in rows}
     if len(fluids) > 1:

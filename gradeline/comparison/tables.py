@@ -44,6 +44,8 @@ COMPARISON_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
             "friction_factor_high": _NUMBER,
             "roughness_apart_low": _M,
             "roughness_apart_high": _M,
+            "roughness_together": _M,
+            "log_factor_by_bore": _NUMBER,
             "log_factor_change": _NUMBER,
             "log_factor_change_u": _NUMBER,
             "log_factor_change_dof": _NUMBER,
@@ -62,6 +64,8 @@ COMPARISON_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
         "walls": {
             "wall": _TEXT,
             "surveys_compared": _NUMBER,
+            "bores": _TEXT,
+            "diameter": _M,
             "reynolds": _NUMBER,
             "unchanged_p": _NUMBER,
             "changed": _TRUTH,
@@ -85,6 +89,8 @@ COMPARISON_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
             "roughness_low": _M,
             "roughness_high": _M,
             "friction_factor": _NUMBER,
+            "friction_factor_low": _NUMBER,
+            "friction_factor_high": _NUMBER,
             "beyond_surveys": _TRUTH,
         },
         # turbulent runs that entered, for drawing
@@ -164,7 +170,8 @@ class Comparison:
                 )
                 grown = f"; growth of roughness {rate} a year ({100 * self.level:.4g} %)"
             change = "changed beyond chance" if wall["changed"] else "no change beyond chance"
-            lines.append(f"{wall['wall']}: {change} at Re {thousands(wall['reynolds'], 2)}{grown}")
+            of = " of S at equal flow" if wall["bores"] == "differ" else ""
+            lines.append(f"{wall['wall']}: {change}{of} at Re {thousands(wall['reynolds'], 2)}{grown}")
         return shown(
             "Comparison",
             lines,

@@ -5,11 +5,11 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
-from gradeline.errors import ReductionError
+from gradeline.errors import ReductionError, UsageError
 from gradeline.quantities.printing import SI_DISPLAY, format_number
 from gradeline.reduction.line import Line
 from gradeline.reduction.published_losses import published_loss
-from gradeline.reduction.surfaces import SOURCES, Surface, known_surfaces
+from gradeline.reduction.surfaces import SOURCES, Surface, known_surfaces, one_spelling
 from gradeline.survey import GAUGE_KINDS, Gauge, Survey
 
 __all__ = ["Assumed", "losses_assumed", "roughness_assumed", "with_reading_uncertainty"]
@@ -54,16 +54,20 @@ def roughness_assumed(
 
     Raises
     ------
-    ReductionError
+    UsageError
         For a wall that the survey does not have, or a roughness below zero.
     """
     walls = list(dict.fromkeys(reach.wall for reach in survey.reaches))
     by_wall = given if isinstance(given, Mapping) else {} if given is None else dict.fromkeys(walls, given)
+    spelt = {one_spelling(wall): wall for wall in walls}
+    by_wall = {
+        name if name in walls else spelt.get(one_spelling(name), name): value for name, value in by_wall.items()
+    }
     for name, value in by_wall.items():
         if name not in walls:
-            raise ReductionError(f"roughness: there is no wall {name!r}; walls are {', '.join(walls)}")
+            raise UsageError(f"roughness: there is no wall {name!r}; walls are {', '.join(walls)}")
         if not value >= 0:
-            raise ReductionError(f"roughness: {value} m of {name!r} is below zero; give 0 for a smooth wall")
+            raise UsageError(f"roughness: {value} m of {name!r} is below zero; give 0 for a smooth wall")
     found, cautions = {}, []
     histories = {one.wall: one for one in survey.wall_histories}
     for wall in walls:
@@ -105,7 +109,7 @@ def _surface(wall: str) -> Surface | None:
 
 
 def _words(name: str) -> set[str]:
-    plain = "".join(letter if letter.isalpha() else " " for letter in name.lower())
+    plain = "".join(letter if letter.isalpha() else " " for letter in one_spelling(name))
     return {word for word in plain.split() if len(word) >= _TELLING}
 
 
@@ -126,14 +130,14 @@ def losses_assumed(line: Line, given: Mapping[str, float]) -> dict[str, Assumed]
 
     Raises
     ------
-    ReductionError
+    UsageError
         For a fitting whose K is not to be fitted.
     """
     free = [one.name for one in line.fittings if one.loss_coefficient is None]
     for name in given:
         if name not in free:
             known = ", ".join(free) or "none"
-            raise ReductionError(
+            raise UsageError(
                 f"loss: there is no fitting {name!r} whose K is to be fitted; there is {known}"
             )
     found = {}

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from gradeline.errors import ReductionError
+from gradeline.errors import ReductionError, UsageError
 from gradeline.fitting.one_thread import one_thread
 from gradeline.planning import tabulate
 from gradeline.planning.accuracy import Accuracy, accuracy_of
@@ -80,7 +80,7 @@ def plan(
     head : float or None
         Piezometric head at the last tap in all runs, m above datum; None: the middle of what can be read.
     spacing : float or None
-        Least distance between two taps in the recommended layout, m, above 0; None: five bores.
+        Least distance between two taps in the recommended layout, m, above 0; None: ten bores.
     fixed : collection of str
         Taps that cannot be moved.
     level : float
@@ -94,7 +94,9 @@ def plan(
     Raises
     ------
     ReductionError
-        Where nothing flows or nothing is read, or for an argument that does not fit the survey.
+        Where nothing flows or nothing is read.
+    UsageError
+        For an argument that does not fit the survey.
 
     Notes
     -----
@@ -109,9 +111,9 @@ def plan(
     [1.5e-06]
     """
     if not 0.0 < level < 1.0:
-        raise ReductionError(f"the level of the intervals is between 0 and 1, such as 0.95; found {level}")
+        raise UsageError(f"the level of the intervals is between 0 and 1, such as 0.95; found {level}")
     if spacing is not None and not spacing > 0:
-        raise ReductionError(f"spacing: {spacing} m is not above 0; give the least distance between two taps")
+        raise UsageError(f"spacing: {spacing} m is not above 0; give the least distance between two taps")
     _check(survey, fixed)
     survey, read = with_reading_uncertainty(survey, reading, reading_pressure)
     walls, wall_cautions = roughness_assumed(survey, roughness)
@@ -177,7 +179,7 @@ def plan(
             names,
             fits=bool(expected.fits.all()),
         ),
-        layout=tabulate.layout_table(survey, layout),
+        layout=tabulate.layout_table(survey, expected.line, layout),
         flows=tabulate.flow_table(expected, flows.recommended),
         comparison=tabulate.comparison_table(expected, now, after, later, names),
         grade_lines=tabulate.grade_line_table(reduction),
@@ -200,7 +202,7 @@ def _check(survey: Survey, fixed: Collection[str]) -> None:
     names = [tap.name for tap in survey.taps]
     for name in fixed:
         if name not in names:
-            raise ReductionError(f"fixed: there is no tap {name!r}; taps are {', '.join(names)}")
+            raise UsageError(f"fixed: there is no tap {name!r}; taps are {', '.join(names)}")
 
 
 def _with(survey: Survey, flows: _Flows, expect: Expect, level: float) -> tuple[Expected, Accuracy]:

@@ -12,10 +12,10 @@ from gradeline.hydraulics.friction import entrance_length
 from gradeline.hydraulics.gradelines import passed, path_lengths
 from gradeline.planning.expected import Expected
 from gradeline.reduction.heads import heads_of
-from gradeline.reduction.line import Line, disturbed_taps
+from gradeline.reduction.line import CAUTIOUS_RECOVERY, Line, disturbed_taps
 from gradeline.survey import Survey
 
-__all__ = ["Layout", "Zones", "d_optimal_places", "recommended_layout", "undisturbed", "with_places"]
+__all__ = ["Layout", "Zones", "bores_downstream", "d_optimal_places", "recommended_layout", "undisturbed", "with_places"]
 
 Array = NDArray[np.float64]
 Zones = tuple[tuple[float, float], ...]
@@ -26,8 +26,9 @@ _ROUNDS = 30
 _GRID = 400
 #: Taps on each side of a fitted loss, as the reduction wants them.
 _BESIDE = 2
-#: Spacing where none is given, in bores (common practice: a tapping is not to disturb the next).
-_BORES_APART = 5.0
+#: Spacing where none is given, in bores (common practice: a tapping is not to disturb the next; two taps that stand close
+#: together at an end also tell little of whether the line between the ends is straight).
+_BORES_APART = 10.0
 _NEGLIGIBLE = 1e-9
 #: How far inside an undisturbed length a tap lies at least, m: its end may belong to the disturbance.
 _INSIDE = 1e-7
@@ -195,7 +196,7 @@ def _exchanged(
     return places, best
 
 
-def undisturbed(survey: Survey, line: Line, reynolds: Array) -> Zones:
+def undisturbed(survey: Survey, line: Line, reynolds: Array, *, recovery: float = 0.0) -> Zones:
     """Return the lengths in which a tap is disturbed in none of the runs, m.
 
     Parameters
@@ -206,6 +207,8 @@ def undisturbed(survey: Survey, line: Line, reynolds: Array) -> Zones:
         Its fittings, changes of bore among them.
     reynolds : (R, K) array
         Re of the flowing runs, dimensionless: the longest entrance length counts.
+    recovery : float
+        Bores downstream of every fitting that are left out at least, whatever shorter recovery it states.
     """
     last = len(line.diameter) - 1
     out: list[tuple[float, float]] = []
@@ -220,7 +223,7 @@ def undisturbed(survey: Survey, line: Line, reynolds: Array) -> Zones:
         out.append(
             (
                 fitting.at - half - fitting.approach * line.diameter[upstream],
-                fitting.at + half + fitting.recovery * line.diameter[downstream],
+                fitting.at + half + max(fitting.recovery, recovery) * line.diameter[downstream],
             )
         )
     zones, at = [], float(line.bounds[0])
@@ -231,6 +234,17 @@ def undisturbed(survey: Survey, line: Line, reynolds: Array) -> Zones:
     if at < line.bounds[-1]:
         zones.append((at, float(line.bounds[-1])))
     return tuple(zones)
+
+
+def bores_downstream(line: Line, places: Array) -> Array:
+    """Return how many bores each place (T,), m, lies downstream of the nearest fitting, its end counted; NaN where of none."""
+    last = len(line.diameter) - 1
+    found = np.full(len(places), np.nan)
+    for fitting in line.fittings:
+        downstream = int(np.clip(np.searchsorted(line.bounds, fitting.at, side="right") - 1, 0, last))
+        after = (places - fitting.at - fitting.length / 2) / line.diameter[downstream]
+        found = np.fmin(found, np.where(after > 0, after, np.nan))
+    return found
 
 
 def with_places(survey: Survey, places: Array) -> Survey:
@@ -281,7 +295,7 @@ def recommended_layout(
     expected : Expected
         What it is expected to bring home.
     spacing : float or None
-        Least distance between two taps, m; None: five bores of the widest reach.
+        Least distance between two taps, m; None: ten bores of the widest reach.
     fixed : collection of str
         Taps that stay.
 
@@ -294,7 +308,6 @@ def recommended_layout(
     heads = heads_of(expected.survey, expected.media)
     flowing = expected.flow.reynolds[:, 0] > 0
     reynolds = expected.flow.reynolds[flowing]
-    zones = undisturbed(survey, line, reynolds)
     places = line.chainage
     disturbed = np.asarray(disturbed_taps(survey, line, reynolds)[0].any(axis=0))
     apart = _BORES_APART * float(line.diameter.max()) if spacing is None else spacing
@@ -324,9 +337,15 @@ def recommended_layout(
         return np.asarray(found)
 
     held = [n for n, tap in enumerate(survey.taps) if tap.name in set(fixed)]
-    best = d_optimal_places(places.tolist(), zones, value, spacing=apart, step=float(step), fixed=held)
-    reached = float(value(best[None, :])[0])
-    if not np.isfinite(reached) or _broken(best, places, zones, apart, held):
+    # Where the flow has surely recovered, if there is room; else from the recovery that each fitting states.
+    for recovery in (CAUTIOUS_RECOVERY, 0.0):
+        zones = undisturbed(survey, line, reynolds, recovery=recovery)
+        best = d_optimal_places(places.tolist(), zones, value, spacing=apart, step=float(step), fixed=held)
+        reached = float(value(best[None, :])[0])
+        allowed = np.isfinite(reached) and not _broken(best, places, zones, apart, held)
+        if allowed:
+            break
+    if not allowed:
         why = (
             "no layout with this many taps, this far apart, tells all that is to be fitted outside the disturbed lengths; "
             "allow a smaller spacing or add taps"

@@ -8,10 +8,11 @@ import numpy as np
 
 from gradeline.planning.assumed import Assumed
 from gradeline.planning.expected import Expected
-from gradeline.planning.layout import Layout
+from gradeline.planning.layout import Layout, with_places
 from gradeline.planning.tabulate import flows_of
 from gradeline.quantities.printing import SI_DISPLAY, format_number
 from gradeline.reduction import Reduction
+from gradeline.reduction.line import disturbed_taps, line_of
 from gradeline.survey import GAUGE_KINDS, Survey
 
 __all__ = ["plan_assumptions", "plan_cautions"]
@@ -109,6 +110,7 @@ def plan_cautions(
             f"{', '.join(unused)} {'lies' if len(unused) == 1 else 'lie'} in a disturbed length in some run: readings there do not "
             "enter. The recommended layout keeps clear of it."
         )
+    said += _near_fittings(survey, expected, layout)
     start, end = expected.line.bounds[[0, -1]]
     share = (layout.recommended - start) / (end - start)
     middle = (share > _MIDDLE[0]) & (share < _MIDDLE[1])
@@ -127,6 +129,20 @@ def plan_cautions(
                 "can give."
             )
     return said
+
+
+def _near_fittings(survey: Survey, expected: Expected, layout: Layout) -> list[str]:
+    """Say which taps would stand where the reduction will doubt that the flow has recovered."""
+    if layout.reason is not None:
+        return []
+    moved = with_places(survey, layout.recommended)
+    reynolds = expected.flow.reynolds[expected.flow.reynolds[:, 0] > 0]
+    now = set(disturbed_taps(survey, expected.line, reynolds)[2])
+    return [
+        f"At its recommended chainage: {text[:1].lower()}{text[1:]} Where that is in doubt, state a longer recovery of the fitting."
+        for text in disturbed_taps(moved, line_of(moved), reynolds)[2]
+        if text not in now
+    ]
 
 
 def _runs(names: Sequence[object]) -> str:

@@ -115,6 +115,9 @@ PLAN_TABLES: Mapping[str, Mapping[str, Column]] = MappingProxyType(
             "chainage": _M,
             "recommended_chainage": _M,
             "disturbed": _TRUTH,
+            # of the nearest fitting upstream; none is missing
+            "bores_downstream": _NUMBER,
+            "recommended_bores_downstream": _NUMBER,
         },
         "flows": {"run": _TEXT, "flow": _FLOW, "recommended_flow": _FLOW},
         # before and after all that is recommended

@@ -15,9 +15,10 @@ from gradeline.planning.assumed import Assumed
 from gradeline.planning.expected import Expected
 from gradeline.planning.flows import flow_marks
 from gradeline.planning.improvements import Change
-from gradeline.planning.layout import Layout
+from gradeline.planning.layout import Layout, bores_downstream
 from gradeline.planning.tables import table_of
 from gradeline.reduction import Reduction
+from gradeline.reduction.line import Line
 from gradeline.survey import GAUGE_KINDS, Survey
 
 __all__ = [
@@ -221,15 +222,21 @@ def improvement_table(
     return table_of("improvements", rows)
 
 
-def layout_table(survey: Survey, layout: Layout) -> pd.DataFrame:
+def layout_table(survey: Survey, line: Line, layout: Layout) -> pd.DataFrame:
     """Return the taps with their chainages now and as recommended."""
     recommended = layout.recommended if layout.reason is None else np.full(len(layout.places), np.nan)
     return table_of(
         "layout",
         [
-            (tap.name, float(now), float(then), bool(out))
-            for tap, now, then, out in zip(
-                survey.taps, layout.places, recommended, layout.disturbed, strict=True
+            (tap.name, float(now), float(then), bool(out), float(after), float(then_after))
+            for tap, now, then, out, after, then_after in zip(
+                survey.taps,
+                layout.places,
+                recommended,
+                layout.disturbed,
+                bores_downstream(line, layout.places),
+                bores_downstream(line, recommended),
+                strict=True,
             )
         ],
     )

@@ -88,6 +88,8 @@ class Carried:
         Wall of each reach.
     start, end, diameter, area, laminar_constant : (K,) array
         m, m, m, m², dimensionless.
+    tested_low, tested_high : (K,) array
+        Least and largest Re of the runs behind the roughness, in each reach, dimensionless; NaN where there are none.
     fittings : tuple of str
         Labels.
     at, reference, loss_coefficient : (M,) array
@@ -130,6 +132,8 @@ class Carried:
     diameter: Array
     area: Array
     laminar_constant: Array
+    tested_low: Array
+    tested_high: Array
     fittings: tuple[str, ...]
     at: Array
     reference: NDArray[np.intp]
@@ -266,6 +270,8 @@ def _carried(held: Mapping[str, Any]) -> Carried:
         diameter=_column(reaches, "diameter"),
         area=_column(reaches, "area"),
         laminar_constant=_column(reaches, "laminar_constant"),
+        tested_low=_tested(reaches, walls, "reynolds_low"),
+        tested_high=_tested(reaches, walls, "reynolds_high"),
         fittings=tuple(str(one["fitting"]) for one in fittings),
         at=_column(fittings, "at"),
         reference=np.array([int(one["reach"]) for one in fittings], dtype=np.intp),
@@ -285,6 +291,14 @@ def _carried(held: Mapping[str, Any]) -> Carried:
         covariance=_table(held["covariance"], z, z),
         walls=tuple(_wall(one, z) for one in walls),
         notes=tuple(str(one) for one in held["notes"]),
+    )
+
+
+def _tested(reaches: list[Mapping[str, Any]], walls: list[Mapping[str, Any]], key: str) -> Array:
+    """An end of the tested Re of each reach; that of its wall where a file of an older program holds no other."""
+    of_wall = {str(one["wall"]): one[key] for one in walls}
+    return np.array(
+        [_number(one[key] if key in one else of_wall[str(one["wall"])]) for one in reaches], dtype=float
     )
 
 

@@ -20,19 +20,31 @@ from gradeline.hydraulics.friction import (
 )
 from gradeline.prediction.carried import Carried
 from gradeline.prediction.interval import profile_interval, sets_of
-from gradeline.prediction.losses import Conditions, Parts, friction_parts, loss_parts, velocity_head_parts
+from gradeline.prediction.losses import (
+    LAMINAR_IN_ZONE,
+    TURBULENT_IN_ZONE,
+    ZONE,
+    Conditions,
+    Parts,
+    friction_parts,
+    loss_parts,
+    velocity_head_parts,
+)
 from gradeline.quantities import Measured
 
-__all__ = ["CRITICAL", "Answer", "PipeLine", "Place"]
+__all__ = ["BETWEEN", "CRITICAL", "Answer", "PipeLine", "Place"]
 
 Array = NDArray[np.float64]
 Three = tuple[float, float, float]
 
 CRITICAL = "Re lies in the critical zone (2000 to 4000), where no law of friction holds"
+BETWEEN = f"{CRITICAL}: the interval runs from laminar to turbulent flow"
 _NO_INTERVAL = "a single run of unknown scatter tells no interval"
 _NOTHING_STATED = "nothing is stated that would make it uncertain"
 _SAME_PLACE = 1e-6
 _DOUBLINGS = 60
+#: A head that is missed by more than this share is passed over in a jump; without one it is met to rounding.
+_MISSED = 1e-6
 
 
 @dataclass(frozen=True)
@@ -59,8 +71,8 @@ class Answer:
         Head loss of the new line, m.
     reaches, fittings, grade_lines : list of dict
         Rows of the tables of those names.
-    reason : str or None
-        Why a value is missing.
+    reason, extra_reason : str or None
+        Why a value, or what is lost beyond a new line, is missing.
     """
 
     flow: float
@@ -71,6 +83,7 @@ class Answer:
     fittings: list[dict[str, Any]]
     grade_lines: list[dict[str, Any]]
     reason: str | None
+    extra_reason: str | None
 
 
 @dataclass(frozen=True)
@@ -204,15 +217,17 @@ class PipeLine:
             hydraulic.append(one)
         return np.vstack([each, total, extra, *lines, *hydraulic])
 
-    def _parts(self, flow: float, *, zone: bool = True) -> tuple[Parts, Array, NDArray[np.bool_]]:
+    def _parts(
+        self, flow: float, *, limits: tuple[float, float] = ZONE
+    ) -> tuple[Parts, Array, NDArray[np.bool_]]:
         """All parts, f of each reach (K,), and which fittings have no K."""
         carried, mean = self.carried, self._sets.mean
-        friction, factor = friction_parts(carried, self.conditions, flow, self.roughness, mean, zone=zone)
+        friction, factor = friction_parts(carried, self.conditions, flow, self.roughness, mean, limits=limits)
         law_u = 0.0 if math.isnan(carried.friction_law_u) else carried.friction_law_u
         reynolds = self.conditions.reynolds(carried, flow)
-        turbulent = reynolds > (TURBULENT_LIMIT if zone else LAMINAR_LIMIT)
+        turbulent = reynolds > limits[1]
         law = np.where(turbulent, law_u, 0.0)
-        parts = [self._extended(friction, law, 0, reynolds)]
+        parts = [self._extended(friction, law, 0, np.where(turbulent, reynolds, 0.0))]
         losses = loss_parts(carried, self.conditions, flow, mean)
         unknown = np.isnan(carried.loss_coefficient)
         parts.append(self._extended(Parts(np.nan_to_num(losses.head), np.nan_to_num(losses.gradient))))
@@ -220,7 +235,7 @@ class PipeLine:
             parts.append(Parts(np.zeros_like(friction.head), np.zeros_like(parts[0].gradient)))
         else:
             rough = np.broadcast_to(self.new_roughness[carried.wall_of], self.roughness.shape)
-            fresh, _ = friction_parts(carried, self.conditions, flow, rough, mean, zone=zone)
+            fresh, _ = friction_parts(carried, self.conditions, flow, rough, mean, limits=limits)
             parts.append(self._extended(fresh, law, 1))
         parts.append(self._extended(velocity_head_parts(carried, self.conditions, flow, factor[0], mean)))
         whole = Parts(
@@ -251,8 +266,10 @@ class PipeLine:
         return Parts(parts.head, gradient)
 
     def _intervals(self, parts: Parts, weights: Array, measured: Array | float) -> tuple[Array, Array, Array]:
-        head = parts.head @ weights.T
-        gradient = np.einsum("tn,cnz->ctz", weights, parts.gradient)
+        # A reach in the critical zone leaves those alone that it is no part of.
+        missing = np.isnan(parts.head)
+        head = np.where(missing @ (weights != 0).T, np.nan, np.where(missing, 0.0, parts.head) @ weights.T)
+        gradient = np.einsum("tn,cnz->ctz", weights, np.nan_to_num(parts.gradient))
         value, low, high = profile_interval(head, gradient, self._sets, self._covariance, measured)
         # Nobody stated anything: no interval, which is not one of no width.
         none = ~(high > low)
@@ -268,11 +285,13 @@ class PipeLine:
         measured[: k + m + 1] = self.measured_u**2
         with np.errstate(invalid="ignore"):
             value, low, high = self._intervals(parts, weights, measured)
-        three = list(zip(value.tolist(), low.tolist(), high.tolist(), strict=True))
-        total, extra = three[k + m], three[k + m + 1]
         reynolds = self.conditions.reynolds(carried, flow)
         critical = (reynolds >= LAMINAR_LIMIT) & (reynolds <= TURBULENT_LIMIT)
-        if self.new_roughness is None:
+        if critical.any():
+            low, high = self._between_laws(flow, weights, measured, value, low, high)
+        three = list(zip(value.tolist(), low.tolist(), high.tolist(), strict=True))
+        total, extra = three[k + m], three[k + m + 1]
+        if self.new_roughness is None or critical.any():  # the two pipes need not be in the same state
             extra = (math.nan, math.nan, math.nan)
         lines = three[k + m + 2 :]
         count = len(self.places)
@@ -284,7 +303,27 @@ class PipeLine:
             reaches=self._reach_rows(flow, reynolds, factor, three, critical),
             fittings=self._fitting_rows(flow, three[k : k + m], unknown),
             grade_lines=self._line_rows(flow, lines[:count], lines[count:]),
-            reason=CRITICAL if critical.any() else self._no_interval(total),
+            reason=_critical_reason(total) if critical.any() else self._no_interval(total),
+            extra_reason=CRITICAL if critical.any() else self._no_interval(total),
+        )
+
+    def _between_laws(
+        self, flow: float, weights: Array, measured: Array, value: Array, low: Array, high: Array
+    ) -> tuple[Array, Array]:
+        """Ends of the intervals where a value has no law: the lower one of laminar, the upper one of turbulent flow."""
+        ends = []
+        for limits in (LAMINAR_IN_ZONE, TURBULENT_IN_ZONE):
+            parts, _, _ = self._parts(flow, limits=limits)
+            with np.errstate(invalid="ignore"):
+                at, below, above = self._intervals(parts, weights, measured)
+            if math.isfinite(self._sets.limit):  # nothing makes the law's own value uncertain
+                below, above = np.where(np.isnan(below), at, below), np.where(np.isnan(above), at, above)
+            ends.append((below, above))
+        (first_low, first_high), (second_low, second_high) = ends
+        none = np.isnan(value)
+        return (
+            np.where(none, np.minimum(first_low, second_low), low),
+            np.where(none, np.maximum(first_high, second_high), high),
         )
 
     def _no_interval(self, three: Three) -> str | None:
@@ -304,7 +343,11 @@ class PipeLine:
             w = int(carried.wall_of[k])
             wall = carried.walls[w]
             tested = w not in self.replaced and names[k] == "turbulent"
-            low, high = (wall.reynolds_low, wall.reynolds_high) if tested else (math.nan, math.nan)
+            low, high = (
+                (float(carried.tested_low[k]), float(carried.tested_high[k]))
+                if tested
+                else (math.nan, math.nan)
+            )
             value, below, above = three[k]
             rows.append(
                 {
@@ -323,7 +366,7 @@ class PipeLine:
                     "tested_reynolds_low": low,
                     "tested_reynolds_high": high,
                     "beyond": _beyond(float(reynolds[k]), low, high),
-                    "reason": CRITICAL if critical[k] else self._no_interval(three[k]),
+                    "reason": _critical_reason(three[k]) if critical[k] else self._no_interval(three[k]),
                 }
             )
         return rows
@@ -383,7 +426,7 @@ class PipeLine:
 
     def total(self, flow: float, *, zone: bool = True) -> Three:
         """Return the head loss of the line at a flow (m³/s) with its interval, m."""
-        parts, _, _ = self._parts(flow, zone=zone)
+        parts, _, _ = self._parts(flow, limits=ZONE if zone else TURBULENT_IN_ZONE)
         k, m = len(self.carried.reaches), len(self.carried.fittings)
         value, low, high = self._intervals(parts, self._weights[[k + m]], self.measured_u**2)
         return float(value[0]), float(low[0]), float(high[0])
@@ -393,12 +436,32 @@ class PipeLine:
         flow = self._flow_for(head, 0)
         carried = self.carried
         reynolds = self.conditions.reynolds(carried, flow)
-        if ((reynolds >= LAMINAR_LIMIT) & (reynolds <= TURBULENT_LIMIT)).any():
+        inside = ((reynolds >= LAMINAR_LIMIT) & (reynolds <= TURBULENT_LIMIT)).any()
+        # The loss jumps where laminar flow ends: a head within the jump belongs to no flow of either law.
+        jumped = abs(self.total(flow, zone=False)[0] - head) > _MISSED * head
+        if inside or jumped:
             return math.nan, math.nan, math.nan, CRITICAL
         none = self._no_interval(self.total(flow))
         if none is not None:
             return flow, math.nan, math.nan, none
-        return flow, self._flow_for(head, 2), self._flow_for(head, 1), None
+        low, high = self._flow_for(head, 2), self._flow_for(head, 1)
+        return flow, low, high, self._ends_in_zone(low, high)
+
+    def _ends_in_zone(self, low: float, high: float) -> str | None:
+        """Say which ends of an interval of flows lie where no law of friction holds."""
+        ends = []
+        for name, flow in (("lower", low), ("upper", high)):
+            reynolds = self.conditions.reynolds(self.carried, flow)
+            if ((reynolds >= LAMINAR_LIMIT) & (reynolds <= TURBULENT_LIMIT)).any():
+                ends.append(name)
+        if not ends:
+            return None
+        words = (
+            f"the {ends[0]} end, that of turbulent flow, lies"
+            if len(ends) == 1
+            else "both ends, those of turbulent flow, lie"
+        )
+        return f"{words} in the critical zone (Re 2000 to 4000), where no law of friction holds"
 
     def _flow_for(self, head: float, which: int) -> float:
         """The flow at which the head loss, or an end of its interval, is `head`; losses rise with the flow."""
@@ -418,6 +481,10 @@ class PipeLine:
             if short(low) < 0:
                 break
         return float(brentq(short, low, high, xtol=1e-15, rtol=1e-12))
+
+
+def _critical_reason(three: Three) -> str:
+    return BETWEEN if math.isfinite(three[1]) else CRITICAL
 
 
 def _beyond(reynolds: float, low: float, high: float) -> float:

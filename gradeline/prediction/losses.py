@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,9 +17,25 @@ from gradeline.hydraulics.friction import (
 )
 from gradeline.prediction.carried import Carried
 
-__all__ = ["Conditions", "Parts", "friction_parts", "loss_parts", "velocity_head_parts"]
+__all__ = [
+    "LAMINAR_IN_ZONE",
+    "TURBULENT_IN_ZONE",
+    "ZONE",
+    "Conditions",
+    "Parts",
+    "friction_parts",
+    "loss_parts",
+    "velocity_head_parts",
+]
 
 Array = NDArray[np.float64]
+
+
+#: Re at which laminar flow ends and turbulent flow begins: by the laws themselves, and where one of them stands in between,
+#: both ends of the zone included.
+ZONE = (LAMINAR_LIMIT, TURBULENT_LIMIT)
+TURBULENT_IN_ZONE = (LAMINAR_LIMIT, math.nextafter(LAMINAR_LIMIT, 0.0))
+LAMINAR_IN_ZONE = (math.nextafter(TURBULENT_LIMIT, math.inf), TURBULENT_LIMIT)
 
 
 @dataclass(frozen=True)
@@ -63,7 +80,13 @@ class Parts:
 
 
 def friction_parts(
-    carried: Carried, conditions: Conditions, flow: float, roughness: Array, mean: Array, *, zone: bool = True
+    carried: Carried,
+    conditions: Conditions,
+    flow: float,
+    roughness: Array,
+    mean: Array,
+    *,
+    limits: tuple[float, float] = ZONE,
 ) -> tuple[Parts, Array]:
     """Return the friction loss of each reach, and f.
 
@@ -79,8 +102,9 @@ def friction_parts(
         ε, m.
     mean : (C, z) array
         Errors that the runs show, dimensionless.
-    zone : bool
-        Whether no law holds in the critical zone (NaN); else the turbulent one stands in.
+    limits : tuple of float
+        Re below which flow is laminar and above which it is turbulent, dimensionless; NaN between the two, where no law
+        holds. `ZONE` leaves the critical zone out; with `TURBULENT_IN_ZONE` and `LAMINAR_IN_ZONE` a law stands in there.
 
     Returns
     -------
@@ -96,7 +120,7 @@ def friction_parts(
     """
     velocity, reynolds = conditions.velocity(carried, flow), conditions.reynolds(carried, flow)
     rough = roughness / carried.diameter
-    turbulent = reynolds > (TURBULENT_LIMIT if zone else LAMINAR_LIMIT)
+    turbulent = reynolds > limits[1]
     safe = np.where(turbulent, reynolds, 2 * TURBULENT_LIMIT)
     factor, by_reynolds, by_roughness = colebrook_white_sensitivities(
         np.broadcast_to(safe, rough.shape), np.where(np.isfinite(rough), rough, 0.0)
@@ -104,7 +128,7 @@ def friction_parts(
     factor = np.where(np.isfinite(rough), factor, np.nan)
     flowing = np.where(reynolds > 0, reynolds, 1.0)
     laminar = np.where(reynolds > 0, carried.laminar_constant / flowing, 0.0)
-    slow = reynolds < LAMINAR_LIMIT
+    slow = ~turbulent & (reynolds < limits[0])
     factor = np.where(turbulent, factor, np.where(slow, laminar, np.nan))
     by_reynolds = np.where(turbulent, by_reynolds, -1.0)
     relative = np.where(turbulent, by_roughness * np.nan_to_num(rough), 0.0)

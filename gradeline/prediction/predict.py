@@ -133,6 +133,11 @@ def predict(
     if not 0 < share <= 1:
         raise UsageError(f"efficiency: lies above 0 and up to 1 (or 100 %); found {efficiency!r}")
     lift = 0.0 if static_head is None else quantity(static_head, "length", "static head", above=None).value
+    if lift < 0:
+        raise UsageError(
+            f"static head: is what the pump lifts, 0 or above; found {static_head!r}; for a fall that drives the flow give it "
+            "as the available head"
+        )
     spread = 0.0 if head_loss_u is None else quantity(head_loss_u, "length", "head loss uncertainty").value
     end = None if end_head is None else quantity(end_head, "length", "end head", above=None).value
     line = PipeLine(
@@ -161,6 +166,7 @@ def predict(
         if not len(flows) and math.isfinite(capacity[0]["flow"]):
             flows = np.array([capacity[0]["flow"]])
     answers = [line.at(float(one)) for one in flows]
+    carries = [line.at(row["flow"]) for row in capacity if math.isfinite(row["flow"])]
     power = conditions.density * carried.gravity / share
     tables = {
         "flows": [_flow_row(one, lift, power) for one in answers],
@@ -176,13 +182,14 @@ def predict(
         assumptions=assumptions_of(
             carried,
             line,
+            answers,
             temperature=(kelvin, temperature is not None),
             new=None if new is None else new[1],
             efficiency=(share, efficiency is not None),
             static_head=(lift, static_head is not None),
             hours=hours,
         ),
-        cautions=cautions_of(carried, line, answers),
+        cautions=cautions_of(carried, line, [*answers, *(one for one in carries if one.flow not in flows)]),
         level=carried.level,
         temperature=kelvin,
     )
@@ -264,7 +271,7 @@ def _new_row(answer: Answer, power: float, hours: float | None) -> dict[str, Any
         **_three("extra_head", answer.extra),
         **_three("extra_power", answer.extra, power * answer.flow),
         **_three("extra_energy", answer.extra, power * answer.flow * seconds),
-        "reason": answer.reason,
+        "reason": answer.extra_reason,
     }
 
 

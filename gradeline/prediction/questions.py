@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from gradeline.errors import QuantityError, UsageError
 from gradeline.prediction.carried import Carried
 from gradeline.quantities import Measured, parse_quantity
-from gradeline.reduction.surfaces import SOURCES, known_surfaces
+from gradeline.reduction.surfaces import SOURCES, Surface, known_surfaces, one_spelling
 
 __all__ = ["flows_asked", "new_roughness", "quantity", "roughness_of_walls", "taken_flows"]
 
@@ -25,15 +25,20 @@ _STEPS = 6
 _MOST = 100_000
 #: A relative roughness beyond this is no wall that the law is claimed for.
 _ROUGHEST = 0.1
+#: Surfaces that a refusal names at most.
+_NEAREST = 4
 
 
-def quantity(value: Asked, dimension: str, name: str, *, above: float | None = 0.0) -> Measured:
+def quantity(
+    value: Asked, dimension: str, name: str, *, above: float | None = 0.0, uncertain: bool = False
+) -> Measured:
     """Return a text with a unit, or a number in SI, as a value; `name` is how messages call it.
 
     Raises
     ------
     UsageError
-        Where it is none, or not above `above`.
+        Where it is none, not above `above`, or stated with an uncertainty that a prediction does not carry (`uncertain`
+        tells where it does).
 
     Examples
     --------
@@ -48,6 +53,8 @@ def quantity(value: Asked, dimension: str, name: str, *, above: float | None = 0
         found = parse_quantity(value, dimension) if isinstance(value, str) else Measured(float(value))
     except QuantityError as error:
         raise UsageError(f"{name}: {error}") from None
+    if found.u is not None and not uncertain:
+        raise UsageError(f"{name}: give the value alone, without an uncertainty; found {value!r}")
     if not math.isfinite(found.value) or (above is not None and found.value <= above):
         raise UsageError(f"{name}: has to be above {above or 0:g}; found {value!r}")
     return found
@@ -105,12 +112,14 @@ def roughness_of_walls(
     names = [wall.name for wall in carried.walls]
     found: dict[int, Measured] = {}
     if everywhere is not None:
-        one = quantity(everywhere, "length", "roughness", above=None)
+        one = quantity(everywhere, "length", "roughness", above=None, uncertain=True)
         found = dict.fromkeys(range(len(names)), one)
-    for name, value in walls.items():
+    for asked, value in walls.items():
+        alike = [one for one in names if one_spelling(one) == one_spelling(asked)]
+        name = alike[0] if len(alike) == 1 else asked
         if name not in names:
             raise UsageError(f"wall: there is no wall {name!r}; {_choices(name, names, 'walls are')}")
-        found[names.index(name)] = quantity(value, "length", f"wall {name}", above=None)
+        found[names.index(name)] = quantity(value, "length", f"wall {name}", above=None, uncertain=True)
     for wall, one in found.items():
         bore = float(carried.diameter[carried.wall_of == wall].min())
         if not 0 <= one.value <= _ROUGHEST * bore:
@@ -139,7 +148,8 @@ def new_roughness(carried: Carried, asked: Asked | None) -> tuple[Array, str] | 
     if not isinstance(asked, str) or re.match(r"\s*[0-9.]", asked):
         value = quantity(asked, "length", "new roughness", above=None).value
         return np.full(len(carried.walls), value), f"ε = {1000 * value:.4g} mm, as given"
-    if asked.strip().casefold() == "published":
+    wanted = one_spelling(asked)
+    if wanted == "published":
         missing = [wall.name for wall in carried.walls if not math.isfinite(wall.published)]
         if missing:
             raise UsageError(
@@ -148,14 +158,14 @@ def new_roughness(carried: Carried, asked: Asked | None) -> tuple[Array, str] | 
             )
         return np.array([wall.published for wall in carried.walls]), "as the survey states it of new walls"
     surfaces = known_surfaces()
-    wanted = asked.strip().casefold()
     exact = [one for one in surfaces if one.name.casefold() == wanted]
     found = exact or [one for one in surfaces if wanted in one.name.casefold()]
     if len(found) != 1:
-        names = [one.name for one in (found or surfaces)]
         rule = "several surfaces have" if found else "no listed surface has"
+        near = found or _nearest(wanted, surfaces)
         raise UsageError(
-            f"new roughness: {rule} {asked!r} in its name; give a roughness such as '0.05 mm', or one of: {'; '.join(names)}"
+            f"new roughness: {rule} {asked!r} in its name; give a roughness such as '0.05 mm', or one of the surfaces: "
+            f'{"; ".join(repr(one.name) for one in near[:_NEAREST])} (the whole list: README.md, "Published surfaces")'
         )
     one = found[0]
     spread = (
@@ -165,6 +175,18 @@ def new_roughness(carried: Carried, asked: Asked | None) -> tuple[Array, str] | 
         np.full(len(carried.walls), one.middle),
         f"{one.name}: ε = {1000 * one.middle:.3g} mm{spread} ({SOURCES[one.source]})",
     )
+
+
+def _nearest(wanted: str, surfaces: Sequence[Surface]) -> list[Surface]:
+    """Surfaces that share words with a name, those most like it first; the most like it where none does."""
+    words = set(re.findall(r"[a-z]{3,}", wanted))
+
+    def likeness(one: Surface) -> tuple[int, float]:
+        shared = len(words & set(re.findall(r"[a-z]{3,}", one.name)))
+        return shared, difflib.SequenceMatcher(None, wanted, one.name).ratio()
+
+    ranked = sorted(surfaces, key=likeness, reverse=True)
+    return [one for one in ranked if likeness(one)[0]] or ranked
 
 
 def taken_flows(carried: Carried, asked: Mapping[str, Asked]) -> Array:

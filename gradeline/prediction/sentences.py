@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 
+from gradeline.hydraulics.friction import colebrook_white
 from gradeline.prediction.carried import Carried
 from gradeline.prediction.line import Answer, PipeLine
 
@@ -17,6 +18,7 @@ _SHIFT = 5e-4
 def assumptions_of(
     carried: Carried,
     line: PipeLine,
+    answers: Sequence[Answer],
     *,
     temperature: tuple[float, bool],
     new: str | None,
@@ -41,6 +43,8 @@ def assumptions_of(
         said.append(
             "The friction law is taken as exact, since the survey states no friction_law under [uncertainty]; 2 % of f is common."
         )
+    said += _shifted(carried, answers)
+    said += _other_losses(carried, answers)
     for w, one in line.replaced.items():
         u = f" ± {1000 * one.u:.3g}" if one.u else ""
         said.append(
@@ -79,6 +83,45 @@ def assumptions_of(
             "walls, may differ from that by a part of its uncertainty."
         )
     return tuple(said)
+
+
+def _shifted(carried: Carried, answers: Sequence[Answer]) -> list[str]:
+    """Say where S is not that of the f and the bore beside it, since the runs together show the bore to be another."""
+    diameter = dict(zip(carried.reaches, carried.diameter.tolist(), strict=True))
+    away = [
+        abs(
+            row["slope"]
+            / (row["friction_factor"] * row["velocity"] ** 2 / (2 * carried.gravity * diameter[row["reach"]]))
+            - 1
+        )
+        for answer in answers
+        for row in answer.reaches
+        if math.isfinite(row["slope"]) and row["slope"] > 0
+    ]
+    most = max(away, default=0.0)
+    if not most > _SHIFT:
+        return []
+    return [
+        "Bores and loss coefficients are as all runs together show them best, within their stated uncertainties; Re, V and f "
+        f"are told of the stated bores, so that f V²/2gD differs from S by up to {100 * most:.2g} %, and a K may differ from "
+        "that of the reduction."
+    ]
+
+
+def _other_losses(carried: Carried, answers: Sequence[Answer]) -> list[str]:
+    """Say which K differs, as it is printed, from that of the reduction, and why."""
+    alone = dict(zip(carried.fittings, carried.loss_coefficient.tolist(), strict=True))
+    here = {row["fitting"]: row["loss_coefficient"] for answer in answers for row in answer.fittings}
+    differ = [
+        f"{name!r} {value:.3g} for {alone[name]:.3g}"
+        for name, value in here.items()
+        if math.isfinite(value) and f"{value:.3g}" != f"{alone[name]:.3g}"
+    ]
+    if not differ:
+        return []
+    return [
+        f"K is that which suits roughness and bore best, all fitted together, not K alone as in the reduction: {', '.join(differ)}."
+    ]
 
 
 def _errors(carried: Carried) -> list[str]:
@@ -124,7 +167,8 @@ def cautions_of(carried: Carried, line: PipeLine, answers: Sequence[Answer]) -> 
             _flow(critical[0]) if len(critical) == 1 else f"{_flow(min(critical))} to {_flow(max(critical))}"
         )
         said.append(
-            f"At {span} Re lies between 2000 and 4000, where no law of friction holds: no head loss is told there."
+            f"At {span} Re lies between 2000 and 4000, where no law of friction holds: no head loss is told there"
+            f"{_between(carried, line, answers)}."
         )
     for name, value, reason in zip(carried.fittings, carried.loss_coefficient, carried.reasons, strict=True):
         if math.isnan(value):
@@ -145,6 +189,23 @@ def cautions_of(carried: Carried, line: PipeLine, answers: Sequence[Answer]) -> 
             f"axis at {row['chainage']:.4g} m{end}: the pressure there is below the atmosphere's."
         )
     return tuple(said)
+
+
+def _between(carried: Carried, line: PipeLine, answers: Sequence[Answer]) -> str:
+    """What is told in place of a head loss: the interval between the laws, and the f that they give."""
+    at = [
+        (k, row["reynolds"])
+        for answer in answers
+        for k, row in enumerate(answer.reaches)
+        if row["regime"] == "critical" and math.isfinite(row["head_loss_low"])
+    ]
+    if not at:
+        return ""
+    slow = [carried.laminar_constant[k] / reynolds for k, reynolds in at]
+    swift = [
+        float(colebrook_white(reynolds, line.roughness[0, k] / carried.diameter[k])) for k, reynolds in at
+    ]
+    return f", only the interval from laminar to turbulent flow (f from {min(slow):.3g} to {max(swift):.3g})"
 
 
 def _re(value: float) -> str:

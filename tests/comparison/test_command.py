@@ -78,3 +78,47 @@ def test_wrong_use_is_told(folders, arguments, message) -> None:
 
 def test_surveys_of_one_folder_name_are_told_apart() -> None:
     assert labels_of([Path("a/x.xlsx"), Path("b/x.xlsx"), Path("b/y")]) == ["a/x", "b/x", "b/y"]
+
+
+def test_what_a_reduction_wrote_is_refused_with_the_remedy(folders) -> None:
+    written = folders / "2031" / "reduction"
+    written.mkdir()
+    (written / "reduction.json").write_text("{}", "utf-8")
+    for given in (written, written / "reduction.json"):
+        done = run(folders / "2026", given)
+        assert done.exit_code == 2
+        assert done.stderr.splitlines()[0] == (
+            f"{given}: this is what a reduction wrote, while a comparison fits the runs of the surveys anew; give the folder "
+            f"of the survey, {folders / '2031'}"
+        )
+    shutil.rmtree(written)
+
+
+@pytest.mark.parametrize(
+    ("arguments", "code", "message"),
+    [
+        (["2026"], 2, "a comparison takes two surveys or more; found 1"),
+        (["2026", "2099"], 3, "nothing was compared: mend the surveys named above, or leave them out"),
+        (["2026", "2031", "--until", "soon"], 2, "'soon' is not a date; write it as 2035-01-01"),
+    ],
+)
+def test_a_failure_is_a_record_as_well(folders, arguments, code, message) -> None:
+    done = run(*[folders / one if one.isdigit() and len(one) == 4 else one for one in arguments], "--json")
+    assert done.exit_code == code
+    record = json.loads(done.stdout)
+    assert (record["exit_code"], record["message"]) == (code, message)
+    assert message in done.stderr
+    if code == 3:
+        good, bad = record["surveys"]
+        assert (good["exit_code"], good["problems"]) == (0, [])
+        assert (bad["exit_code"], bad["problems"][0]["file"]) == (3, str(folders / "2099"))
+
+
+@pytest.mark.parametrize("command", ["plan", "predict"])
+def test_predictions_and_plans_tell_a_failure_in_json_too(tmp_path, command) -> None:
+    done = CliRunner().invoke(app, [command, str(tmp_path / "nowhere"), "--json"], prog_name="gradeline")
+    assert done.exit_code == 3
+    record = json.loads(done.stdout)
+    assert (record["source"], record["exit_code"]) == (str(tmp_path / "nowhere"), 3)
+    assert record["message"] or record["problems"]
+    assert done.stderr

@@ -9,7 +9,7 @@ import pandas as pd
 import pytest
 
 import gradeline
-from gradeline.errors import ReductionError
+from gradeline.errors import ReductionError, UsageError
 from gradeline.planning import PLAN_TABLES, Plan, plan
 from gradeline.planning.improvements import changes_of
 from gradeline.quantities import Measured
@@ -198,8 +198,37 @@ def test_a_smooth_wall_and_laminar_runs_are_said() -> None:
     ],
 )
 def test_arguments_that_do_not_fit(more: dict[str, object], message: str) -> None:
-    with pytest.raises(ReductionError, match=message.replace("(", r"\(")):
+    with pytest.raises(UsageError, match=message.replace("(", r"\(")):
         plan(bench(), **more)  # type: ignore[arg-type]
+
+
+def test_taps_are_recommended_where_the_flow_has_surely_recovered() -> None:
+    """800 m is the gate valve's place and 203 mm the bore: `survey.toml`."""
+    found = plan(gradeline.read_plan("data_demo/cast_main"))
+    layout = found.layout.set_index("tap")
+    bores = (layout.loc["M8", "recommended_chainage"] - 800.0) / 0.203
+    assert layout.loc["M8", "recommended_bores_downstream"] == pytest.approx(bores)
+    assert layout["recommended_bores_downstream"].min() >= 30
+    assert not any(text.startswith("At its recommended chainage") for text in found.cautions)
+
+
+def test_recommended_taps_that_the_reduction_will_doubt_are_said() -> None:
+    """Where a line is too short for 30 bores the stated recovery holds, and what is doubtful is said."""
+    survey, _ = make_survey(
+        np.random.default_rng(1),
+        chainage=[0.5, 1.5, 2.5, 3.4, 4.6, 4.9],
+        reaches=[NominalReach(0.0, 5.0, 0.05, 5e-5)],
+        flows=[2e-3, 3e-3, 4e-3],
+        fittings=[NominalFitting(4.0, 2.0)],
+    )
+    found = plan(survey, spacing=0.2, reading=0.0005)
+    assert found.layout_reason is None
+    doubtful = found.layout[found.layout["recommended_bores_downstream"] < 30]
+    assert len(doubtful)
+    for row in doubtful.to_dict("records"):
+        assert any(
+            text.startswith(f"At its recommended chainage: tap {row['tap']} lies") for text in found.cautions
+        )
 
 
 def test_runs_without_flow_are_refused() -> None:

@@ -15,7 +15,7 @@ from gradeline.prediction import predict
 from gradeline.quantities.printing import US_DISPLAY
 from gradeline.reduction import reduce
 from gradeline.report import write
-from gradeline.report.figures.prediction import draw_head_loss, draw_predicted_lines
+from gradeline.report.figures.prediction import _left_out, draw_head_loss, draw_predicted_lines
 from gradeline.report.prediction import prediction_text
 from tests.prediction.test_predict import survey
 
@@ -68,6 +68,12 @@ def test_a_table_of_flows(folder, tmp_path) -> None:
     assert done.stdout == ""
     assert "  flows.csv row 3, flow [L/s]: 'half' is not a number" in done.stderr
     assert "  flows.csv row 4, flow [L/s]: a flow is above 0; found '-1'" in done.stderr
+    table.write_text("flow [L/s]\n0.5(1)\n")
+    done = run("predict", folder, "--flows", table)
+    assert (
+        "flows.csv row 2, flow [L/s]: give the flow alone, without an uncertainty; found '0.5(1)'"
+        in done.stderr
+    )
     table.write_text("Q\n0.5\n")
     done = run("predict", folder, "--flows", table)
     assert (
@@ -136,7 +142,7 @@ def test_out_holds_tables_record_and_figures(folder, tmp_path) -> None:
     (out / "notes.txt").write_text("mine")
     foreign = run(*asked, "--overwrite")
     assert foreign.exit_code == 4
-    assert "holds notes.txt, which is no part of a prediction, so nothing was written" in foreign.stderr
+    assert "holds notes.txt, which is no part of a prediction, so nothing was replaced" in foreign.stderr
     assert (out / "notes.txt").read_text() == "mine"
     assert not [path for path in out.parent.iterdir() if path != out]
 
@@ -146,6 +152,46 @@ def test_us_units_in_text_and_figures(folder) -> None:
     assert "(ft)" in text
     assert "Water at 59" in text
     assert " m)" not in text
+
+
+def test_faults_of_the_flows_are_headed_by_their_file(folder, tmp_path) -> None:
+    table = tmp_path / "flows.csv"
+    table.write_text("flow [L/s],note\n-3,a\nx,b\n")
+    done = run("predict", folder, "--flows", table)
+    assert done.exit_code == 3
+    assert done.stderr.splitlines() == [
+        f"{table}: 2 problems",
+        "  flows.csv row 2, flow [L/s]: a flow is above 0; found '-3'",
+        "  flows.csv row 3, flow [L/s]: 'x' is not a number",
+    ]
+
+
+def test_a_decimal_comma_where_semicolons_separate(folder, tmp_path) -> None:
+    table = tmp_path / "flows.csv"
+    table.write_text("flow [L/s];note\n0,5;a\n1;b\n")
+    done = run("predict", folder, "--flows", table, "--json")
+    assert [row["flow"] for row in json.loads(done.stdout)["flows"]] == [0.0005, 0.001]
+
+
+def test_a_wide_table_of_a_pump_is_cut_nowhere(folder) -> None:
+    told = run("predict", folder, "--flow", "0.1 to 0.6 L/s", "--static-head", "2 m", "--units", "us").stdout
+    assert "…" not in told
+    assert max(map(len, told.splitlines())) <= 100
+    # 745.7 W a horsepower (NIST SP 811, appendix B.8)
+    row = predict(folder, flow="0.6 L/s", static_head="2 m").flows.iloc[0]
+    assert f"{row['pump_power'] / 745.69987:.7f}"[:6] in told
+    assert "(hp)" in told
+
+
+def test_more_flows_than_a_figure_holds_are_said(folder) -> None:
+    found = predict(folder, flow="0.3 to 1.5 L/s", steps=12)
+    with mpl.rc_context():
+        ax = Figure().add_subplot()
+        drawn = draw_predicted_lines(ax, found)
+    assert len(drawn.hgl) == 8
+    assert _left_out(found) == ", 8 of 12 flows"
+    six = predict(folder, flow="0.3 to 1.5 L/s", steps=6)
+    assert _left_out(six) == ""
 
 
 def test_the_figures_hold_the_tables(folder) -> None:
@@ -159,15 +205,17 @@ def test_the_figures_hold_the_tables(folder) -> None:
         band = drawn.bands[2].get_paths()[0].vertices[:, 1]
         assert band.min() == pytest.approx(rows["piezometric_head_low"].min())
         assert band.max() == pytest.approx(rows["piezometric_head_high"].max())
+        band = drawn.egl_bands[2].get_paths()[0].vertices[:, 1]
+        assert band.min() == pytest.approx(rows["energy_head_low"].min())
+        assert band.max() == pytest.approx(rows["energy_head_high"].max())
         assert ax.get_xlabel() == "chainage x (m)"
         assert ax.get_ylabel() == "head above datum (m)"
         labels = [text.get_text() for text in ax.get_legend().get_texts()]
         assert labels == [
-            "HGL, 0.5000 L/s",
-            "HGL, 0.7500 L/s",
-            "HGL, 1.000 L/s",
+            "HGL",
             "EGL",
             "95 % band of the HGL",
+            "95 % band of the EGL",
             "pipe's axis",
         ]
         ax = Figure().add_subplot()
@@ -175,3 +223,20 @@ def test_the_figures_hold_the_tables(folder) -> None:
         np.testing.assert_allclose(loss.line.get_ydata(), found.flows["head_loss"] / 0.3048)
         np.testing.assert_allclose(loss.new.get_ydata(), found.new_pipe["head_loss_new"] / 0.3048)
         assert ax.get_ylabel() == "head loss of the line (ft)"
+
+
+def test_one_band_stands_for_both_lines_where_the_velocity_head_is_nothing(folder) -> None:
+    found = predict(folder, flow="1 L/s")
+    lines = found.grade_lines
+    # Friction a thousandfold: the velocity head, the distance of the lines, stays.
+    ends = ("", "_low", "_high")
+    head = lines["energy_head"] - lines["piezometric_head"]
+    for end in ends:
+        lines[f"piezometric_head{end}"] = 1000 * lines[f"piezometric_head{end}"]
+        lines[f"energy_head{end}"] = lines[f"piezometric_head{end}"] + head
+    with mpl.rc_context():
+        ax = Figure().add_subplot()
+        drawn = draw_predicted_lines(ax, found)
+        assert drawn.egl_bands == ()
+        labels = [text.get_text() for text in ax.get_legend().get_texts()]
+        assert labels[1:3] == ["EGL", "95 % band of both lines"]

@@ -211,6 +211,27 @@ def test_the_capacity_loses_the_head(noisy) -> None:
     assert at["pump_head_low"].iloc[2] == pytest.approx(3.0, rel=1e-6)
 
 
+@pytest.mark.parametrize("share", [1.001, 1.05, 1.2, 1.5, 1.9])
+def test_a_head_in_the_jump_at_the_end_of_laminar_flow_has_no_capacity(share: float) -> None:
+    bore, viscosity, length = 0.04, 1e-6, 10.0
+    line = made_line(diameter=bore, length=length, density=998.0, kinematic_viscosity=viscosity)
+    # Hagen and Poiseuille at Re 2000, by hand: h = 32 ν L V / (g D²).
+    last = 32 * viscosity * length * (2000 * viscosity / bore) / (9.81 * bore**2)
+    row = predict(line, available_head=share * last, roughness="0.1 mm").capacity.iloc[0]
+    assert math.isnan(row["flow"])
+    assert "critical zone" in row["reason"]
+    below = predict(line, available_head=0.999 * last, roughness="0.1 mm").capacity.iloc[0]
+    assert below["flow"] == pytest.approx(0.999 * 2000 * viscosity / bore * math.pi / 4 * bore**2, rel=1e-9)
+
+
+def test_a_capacity_beyond_what_was_tested_is_said_beside_tested_flows(exact) -> None:
+    found = predict(exact[0], flow="1 L/s", available_head="200 m")
+    assert found.capacity["flow"].iloc[0] > exact[0].runs["flow"].max()
+    assert not found.flows["extrapolated"].any()
+    (caution,) = (text for text in found.cautions if "the highest tested" in text)
+    assert caution.startswith("Reach 'reach 1': Re ")
+
+
 def test_the_friction_law_widens_it(exact) -> None:
     found, _ = survey()
     plain = predict(exact[0], flow="0.8 L/s").flows.iloc[0]
@@ -252,6 +273,22 @@ def test_what_if_takes_the_roughness_given(exact) -> None:
     u = (higher / f - 1) * 10 * given["head_loss"]
     half = [(one["head_loss_high"] - one["head_loss_low"]) / 2 for one in (given, bare)]
     assert math.sqrt(half[0] ** 2 - half[1] ** 2) == pytest.approx(1.96 * u, rel=0.05)
+
+
+def test_a_slope_that_follows_another_bore_than_the_stated_one_is_told(exact) -> None:
+    main = reduce(gradeline.read_survey("data_demo/cast_main"), monte_carlo=False)
+    found = predict(main, flow="65 L/s")
+    bores = np.array([0.254, 0.203])
+    stated = found.reaches["friction_factor"] * found.reaches["velocity"] ** 2 / (2 * main.gravity * bores)
+    most = float((found.reaches["slope"] / stated - 1).abs().max())
+    assert most > 0.005
+    (said,) = (text for text in found.assumptions if "f V²/2gD" in text)
+    assert f"differs from S by up to {100 * most:.2g} %" in said
+    # As the runs have it: the measured slopes are met within their uncertainties.
+    run = main.runs[main.runs["run"] == "5"]
+    off = (found.reaches["slope"].to_numpy() - run["slope"].to_numpy()) / run["slope_u"].to_numpy()
+    assert np.abs(off).max() < 2
+    assert not any("f V²/2gD" in text for text in predict(exact[0], flow="1 L/s").assumptions)
 
 
 def test_against_a_new_pipe(exact) -> None:
@@ -320,7 +357,33 @@ def test_no_law_in_the_critical_zone() -> None:
     found = predict(line, flow=[flow], roughness="0.1 mm")
     assert math.isnan(found.flows["head_loss"].iloc[0])
     assert "critical zone" in found.flows["reason"].iloc[0]
-    assert any("between 2000 and 4000" in text for text in found.cautions)
+    (caution,) = (text for text in found.cautions if "between 2000 and 4000" in text)
+    # Laminar f = 64/3000; turbulent by substituting f again and again into Colebrook's implicit law
+    # (J. Inst. Civ. Eng. 11 (1939) 133), 1/√f = −2 log₁₀(ε/(3.7 D) + 2.51/(Re √f)).
+    swift = 0.04
+    for _ in range(100):
+        swift = (-2 * math.log10(0.0025 / 3.7 + 2.51 / (3000 * math.sqrt(swift)))) ** -2
+    assert f"f from 0.0213 to {swift:.3g}" in caution
+    row = found.reaches.iloc[0]
+    assert row["reason"].endswith("the interval runs from laminar to turbulent flow")
+    # Hagen and Poiseuille by hand: h = 32 ν L V/(g D²), V = Re ν/D; and Darcy with the turbulent f.
+    speed = 3000 * 1e-6 / 0.04
+    assert row["head_loss_low"] == pytest.approx(32 * 1e-6 * 10 * speed / (9.81 * 0.04**2), rel=1e-9)
+    assert row["head_loss_high"] == pytest.approx(swift * 10 / 0.04 * speed**2 / (2 * 9.81), rel=1e-9)
+    assert found.flows["head_loss_high"].iloc[0] == pytest.approx(row["head_loss_high"])
+    assert math.isnan(row["head_loss"])
+    assert math.isnan(row["friction_factor"])
+
+
+def test_a_critical_reach_leaves_the_loss_of_the_others(exact) -> None:
+    found = predict(exact[0], flow=[1e-5 * n for n in range(1, 30)])
+    regimes = found.reaches["regime"].to_numpy(str)
+    assert {"laminar", "critical", "turbulent"} <= set(regimes)
+    told = found.reaches["head_loss"].notna().to_numpy(bool)
+    np.testing.assert_array_equal(told, regimes != "critical")
+    flows = found.flows.set_index("flow")
+    assert (flows["head_loss"].notna() | flows["reason"].notna()).all()
+    assert (flows["head_loss_low"] < flows["head_loss_high"]).all()
 
 
 def test_nothing_stated_is_no_interval() -> None:
@@ -355,6 +418,14 @@ def test_it_shows_itself_in_a_notebook(noisy) -> None:
         ({}, "nothing to predict: give a flow, such as '12 L/s', or an available head, such as '14 m'"),
         ({"flow": "12 m"}, "flow: the unit 'm' is a length, not a flow; give a unit such as L/s"),
         ({"flow": "-1 L/s"}, "flow: has to be above 0; found '-1 L/s'"),
+        (
+            {"flow": "1 L/s +/- 0.1 L/s"},
+            "flow: give the value alone, without an uncertainty; found '1 L/s +/- 0.1 L/s'",
+        ),
+        (
+            {"flow": "1 L/s", "static_head": "2.0(1) m"},
+            "static head: give the value alone, without an uncertainty",
+        ),
         ({"flow": "5 to 2 L/s"}, "flow: a range rises from its first value to its last; found '5 to 2 L/s'"),
         ({"flow": "5 L/s", "steps": 3}, "steps: they divide a range of flows"),
         ({"flow": "1 to 2 L/s", "steps": 1}, "steps: a range takes from 2 to 100000 flows; found 1"),
@@ -394,6 +465,10 @@ def test_it_shows_itself_in_a_notebook(noisy) -> None:
             "available head: has to exceed the static head of 2 m; found 1 m",
         ),
         (
+            {"flow": "1 L/s", "static_head": "-40 m"},
+            "static head: is what the pump lifts, 0 or above; found '-40 m'",
+        ),
+        (
             {"flow": "1 L/s", "offtakes": {"x": "1 L/s"}},
             "off-take: there is no off-take 'x'; the survey has none; leave it out",
         ),
@@ -403,6 +478,56 @@ def test_what_cannot_be_asked(exact, asked, said) -> None:
     with pytest.raises(UsageError) as told:
         predict(exact[0], **asked)
     assert said in str(told.value)
+
+
+@pytest.mark.parametrize("asked", ["galvanized steel, ordinary", "Galvanised steel, ordinary"])
+def test_a_surface_in_british_or_american_spelling(exact, asked) -> None:
+    """Idelchik 2007: 0.1 to 0.15 mm, of which the geometric mean is taken."""
+    found = predict(exact[0], flow="1 L/s", new_pipe=asked)
+    (said,) = (text for text in found.assumptions if text.startswith("New pipe: galvanized steel, ordinary"))
+    assert f"ε = {math.sqrt(0.1 * 0.15):.3g} mm" in said
+
+
+def test_a_refused_surface_names_the_nearest_and_where_the_list_is(exact) -> None:
+    with pytest.raises(UsageError) as told:
+        predict(exact[0], flow="1 L/s", new_pipe="shiny steel")
+    assert len(str(told.value)) < 330
+    assert "commercial steel or wrought iron" in str(told.value)
+    assert "README.md" in str(told.value)
+
+
+def test_tested_reynolds_numbers_are_those_of_each_reach() -> None:
+    """Re = 4 Q/(π D ν): of one flow it goes as 1/D."""
+    reaches = [
+        NominalReach(0.0, 10.0, 0.06, 1e-4, wall="iron"),
+        NominalReach(10.0, 20.0, 0.04, 1e-4, wall="iron"),
+    ]
+    found, _ = survey(
+        chainage=np.array([0.5, 3.0, 6.0, 9.0, 11.0, 14.0, 17.0, 19.5]),
+        reaches=reaches,
+        flows=np.geomspace(1e-3, 4e-3, 5),
+    )
+    reduction = reduce(found, monte_carlo=False)
+    rows = predict(reduction, flow="2 L/s").reaches
+    for end, function in (("low", min), ("high", max)):
+        for row in rows.to_dict("records"):
+            own = reduction.runs[reduction.runs["reach"] == row["reach"]]
+            assert row[f"tested_reynolds_{end}"] == pytest.approx(function(own["reynolds"]), rel=1e-9)
+    wide, narrow = rows["tested_reynolds_high"]
+    assert narrow / wide == pytest.approx(0.06 / 0.04)
+
+
+def test_an_interval_of_flows_that_ends_in_the_critical_zone_is_said(exact) -> None:
+    reduction, _ = exact
+    # Just above Re 4000 at the middle, an uncertain roughness of the wall lets the lower end fall below.
+    viscosity = reduction.runs["kinematic_viscosity"].iloc[0]
+    flow = 4010 * np.pi * BORE * viscosity / 4
+    head = predict(reduction, flow=flow, temperature=288.15).flows["head_loss"].iloc[0]
+    row = predict(reduction, available_head=float(head), temperature=288.15, head_loss_u=0.02 * head).capacity.iloc[0]
+    assert 4 * row["flow_low"] / (np.pi * BORE * viscosity) < 4000
+    assert row["reason"] == (
+        "the lower end, that of turbulent flow, lies in the critical zone (Re 2000 to 4000), where no law of friction holds"
+    )
 
 
 def test_what_is_no_reduction(tmp_path) -> None:
