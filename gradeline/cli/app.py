@@ -38,6 +38,10 @@ _Temperature = Annotated[
     typer.Option("--temperature", metavar="Q", help='Temperature, for one table of heads: "18 degC".'),
 ]
 _Json = Annotated[bool, typer.Option("--json", help="Print the result as JSON, for other programs.")]
+_Units = Annotated[
+    Literal["si", "us"],
+    typer.Option("--units", help="Units of the text: SI or US customary; json is always SI."),
+]
 _SURVEYS = "Surveys: folders, .xlsx workbooks, or tables of heads (.csv)."
 
 
@@ -58,7 +62,7 @@ app = typer.Typer(
     help="From manometer and gauge readings along a pipe to head loss, friction factor and wall roughness, each "
     "with its uncertainty.\n\nExample: gradeline reduce data_demo/copper_bench",
     epilog="Exit codes: 0 done (flags are results, not failures), 1 an error that gradeline does not know, 2 wrong "
-    "use, 3 the survey has problems, 4 output could not be written; of several surveys the highest.",
+    "use, 3 the survey has problems, 4 output could not be written; of several surveys the highest. 130: ended by Ctrl-C.",
     no_args_is_help=True,
     pretty_exceptions_enable=False,
     rich_markup_mode=None,
@@ -112,6 +116,7 @@ def check(
     diameter: _Diameter = None,
     flow: _Flow = None,
     temperature: _Temperature = None,
+    units: _Units = "si",
     as_json: _Json = False,
 ) -> None:
     """Load surveys, tell every problem at once, and say what was understood.
@@ -120,18 +125,27 @@ def check(
     """
 
     def one(source: Path) -> dict[str, Any] | None:
+        from gradeline.cli.progress import reading  # noqa: PLC0415 (loaded when asked for: start-up time)
         from gradeline.loader import read_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
 
-        read = read_survey(source, diameter=diameter, flow=flow, temperature=temperature)
+        with reading(source.name) as progress:
+            read = read_survey(
+                source, diameter=diameter, flow=flow, temperature=temperature, progress=progress
+            )
+        if read.record is not None:
+            from gradeline.reduction.record import with_record_read  # noqa: PLC0415 (only a logger's file needs it)
+
+            read = with_record_read(read)
         if as_json:
             from gradeline.cli.plain import survey_record  # noqa: PLC0415 (loaded when asked for: start-up time)
 
             return survey_record(read)
         from gradeline.cli.understood import understood  # noqa: PLC0415 (loaded when asked for: start-up time)
+        from gradeline.quantities.printing import DISPLAYS  # noqa: PLC0415 (loaded when asked for: start-up time)
 
         if source != surveys[0]:
             typer.echo()
-        typer.echo(understood(read))
+        typer.echo(understood(read, DISPLAYS[units]))
         _say(f"{source}: no problems")
         return None
 
@@ -154,6 +168,7 @@ def _print_outcomes(outcomes: Sequence[Outcome], name: str) -> None:
 @app.command(short_help="Tell what each gauge can show, and which gauge fluid suits.")
 def gauges(
     surveys: Annotated[list[Path], typer.Argument(metavar="SURVEY...", help=_SURVEYS)],
+    units: _Units = "si",
     as_json: _Json = False,
 ) -> None:
     """Tell the range of head that each gauge can show, its resolution as head, and the gauge fluid that suits.
@@ -181,8 +196,9 @@ def gauges(
 
             return [plain(each) for each in gauge_ranges(survey)]
         from gradeline.cli.gauges import gauges_told  # noqa: PLC0415 (loaded when asked for: start-up time)
+        from gradeline.quantities.printing import DISPLAYS  # noqa: PLC0415 (loaded when asked for: start-up time)
 
-        typer.echo(gauges_told(survey))
+        typer.echo(gauges_told(survey, DISPLAYS[units]))
         return None
 
     outcomes = []
@@ -342,6 +358,34 @@ def reduce(
             help="Print the results as JSON, for other programs; files are then written only where --out is given.",
         ),
     ] = False,
+    jobs: Annotated[
+        int | None,
+        typer.Option(
+            "--jobs",
+            "-j",
+            metavar="N",
+            min=1,
+            max=1024,
+            help="Surveys at once, a process each: by default one for each processor core.",
+        ),
+    ] = None,
+    summary: Annotated[
+        Path | None,
+        typer.Option(
+            "--summary",
+            metavar="FILE",
+            help="A table over all surveys, .csv or .parquet, a row for each survey and wall; of several surveys "
+            "DIR/summary.csv by default where --out is given.",
+        ),
+    ] = None,
+    scheduler: Annotated[
+        str | None,
+        typer.Option(
+            "--scheduler",
+            metavar="ADDRESS",
+            help="Hand the surveys to the workers of a Dask cluster instead, such as tcp://10.0.0.5:8786.",
+        ),
+    ] = None,
 ) -> None:
     """Reduce surveys: fit every run, find wrong readings, estimate the wall, write the report.
 
@@ -350,8 +394,13 @@ def reduce(
     A table with the columns chainage [m] and head [mm] alone: gradeline reduce heads.csv --diameter "26.6 mm" --flow
     "0.84 L/s" --temperature "18 degC"
     """
+    from gradeline.cli.many.summary import summary_path  # noqa: PLC0415 (loaded when asked for: start-up time)
     from gradeline.cli.reducing import Choices, reduce_surveys, targets_of  # noqa: PLC0415 (loaded when asked for: start-up time)
 
+    if jobs is not None and scheduler is not None:
+        raise typer.BadParameter(
+            "--jobs is for this machine, --scheduler for a cluster, whose workers say how many they are; give one of them"
+        )
     targets = targets_of(surveys, out)
     choices = Choices(
         level=level,
@@ -372,6 +421,9 @@ def reduce(
         units=units,
         paper=paper,
         as_json=as_json,
+        jobs=jobs,
+        scheduler=scheduler,
+        summary=summary_path(summary, out, targets, several=len(surveys) > 1),
     )
     if code:
         raise typer.Exit(code)

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Annotated, Literal
 
 import typer
 
-from gradeline.cli.outcome import NOT_WRITTEN, WRONG_USE, attempt
+from gradeline.cli.outcome import NOT_WRITTEN, WRONG_USE, Outcome, attempt
 from gradeline.cli.progress import bar
 from gradeline.errors import OutputError, UsageError
 
@@ -18,6 +18,9 @@ if TYPE_CHECKING:
     from gradeline.reduction import Reduction
 
 __all__ = ["Asked", "compare", "compare_surveys", "labels_of"]
+
+#: Files of a reduction that somebody might take for the survey.
+_OF_REDUCTION = frozenset({"reduction.json", "carried.json"})
 
 
 @dataclass(frozen=True)
@@ -94,35 +97,61 @@ def compare_surveys(
         Exit code. A survey that cannot be reduced ends the comparison once all have been looked at.
     """
     if len(surveys) < 2:
-        typer.echo(f"a comparison takes two surveys or more; found {len(surveys)}", err=True)
-        return WRONG_USE
+        why = f"a comparison takes two surveys or more; found {len(surveys)}"
+        return _refused(WRONG_USE, why, (), as_json=as_json)
     if len({one.resolve() for one in surveys}) < len(surveys):
-        typer.echo("one survey is given twice; name each survey once", err=True)
-        return WRONG_USE
-    reductions: list[Reduction] = []
-    codes = [0]
+        return _refused(WRONG_USE, "one survey is given twice; name each survey once", (), as_json=as_json)
+    outcomes: list[Outcome] = []
     with bar(len(surveys)) as shown:
         for source in surveys:
             shown.begin(source.name)
             outcome = attempt(lambda source=source: _reduced(source, asked.level), source, contain=True)  # type: ignore[misc]
             for line in outcome.lines():
                 shown.tell(line, err=True)
-            codes.append(outcome.code)
-            if outcome.code == 0:
-                reductions.append(outcome.result)
+            outcomes.append(outcome)
             shown.end()
-    if max(codes):
-        typer.echo("nothing was compared: mend the surveys named above, or leave them out", err=True)
-        return max(codes)
+    if code := max(one.code for one in outcomes):
+        why = "nothing was compared: mend the surveys named above, or leave them out"
+        return _refused(code, why, outcomes, as_json=as_json)
     try:
-        comparison = _compared(reductions, labels_of(surveys), asked)
+        comparison = _compared([one.result for one in outcomes], labels_of(surveys), asked)
     except UsageError as error:
-        typer.echo(str(error), err=True)
-        return WRONG_USE
-    return _told(comparison, out=out, overwrite=overwrite, as_json=as_json, units=units)
+        return _refused(WRONG_USE, str(error), outcomes, as_json=as_json)
+    try:
+        _told(comparison, out=out, overwrite=overwrite, as_json=as_json, units=units)
+    except OutputError as error:
+        return _refused(NOT_WRITTEN, str(error), outcomes, as_json=as_json)
+    return 0
+
+
+def _refused(code: int, message: str, outcomes: Sequence[Outcome], *, as_json: bool) -> int:
+    """Say why nothing was compared, with `as_json` as a record on stdout too."""
+    typer.echo(message, err=True)
+    if as_json:
+        from gradeline.cli.plain import outcome_record, print_json  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+        told = [outcome_record(one) for one in outcomes]
+        print_json({"exit_code": code, "message": message, "surveys": told})
+    return code
+
+
+def _no_survey(source: Path) -> str | None:
+    """Say what to give instead of what a reduction wrote; None where it is none."""
+    folder = source if source.is_dir() else source.parent
+    if not (folder / "reduction.json").is_file() or (folder / "survey.toml").is_file():
+        return None
+    if not source.is_dir() and source.name not in _OF_REDUCTION:
+        return None
+    survey = folder.resolve().parent
+    remedy = "give the folder of the survey"
+    if (survey / "survey.toml").is_file():
+        remedy += f", {folder.parent if folder.name else survey}"
+    return f"this is what a reduction wrote, while a comparison fits the runs of the surveys anew; {remedy}"
 
 
 def _reduced(source: Path, level: float) -> Reduction:
+    if (refusal := _no_survey(source)) is not None:
+        raise UsageError(refusal)
     from gradeline.loader import read_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     survey = read_survey(source)
@@ -148,18 +177,14 @@ def _compared(reductions: Sequence[Reduction], labels: Sequence[str], asked: Ask
 
 def _told(
     comparison: Comparison, *, out: Path | None, overwrite: bool, as_json: bool, units: Literal["si", "us"]
-) -> int:
+) -> None:
     from gradeline.quantities.printing import SI_DISPLAY, US_DISPLAY  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     display = US_DISPLAY if units == "us" else SI_DISPLAY
     if out is not None:
         from gradeline.report.comparison_output import write_comparison  # noqa: PLC0415 (loaded when asked for: start-up time)
 
-        try:
-            write_comparison(comparison, out, overwrite=overwrite, display=display)
-        except OutputError as error:
-            typer.echo(str(error), err=True)
-            return NOT_WRITTEN
+        write_comparison(comparison, out, overwrite=overwrite, display=display)
     if as_json:
         from gradeline.cli.plain import print_json  # noqa: PLC0415 (loaded when asked for: start-up time)
         from gradeline.report.comparison_output import comparison_record  # noqa: PLC0415 (loaded when asked for: start-up time)
@@ -171,7 +196,6 @@ def _told(
         typer.echo(comparison_text(comparison, display))
     if out is not None:
         typer.echo(f"Written to {out}", err=True)
-    return 0
 
 
 def compare(

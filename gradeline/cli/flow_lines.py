@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from gradeline.flow_methods import FLOW_METHODS, FlowKey, FlowSetup
-from gradeline.quantities import Measured
+from gradeline.quantities.printing import SI_DISPLAY, Display
 
 __all__ = ["flow_template", "flow_text"]
 
@@ -48,23 +48,16 @@ def _line(mark: str, name: str, value: str, meaning: str) -> str:
     return f"{f'{mark}{name} = {value}':<31} # {meaning}"
 
 
-def flow_text(setup: FlowSetup) -> str:
-    """Return how the flow was measured in one line, values in SI; empty where it was simply given."""
-    if setup == FlowSetup():
-        return ""
-    said = ["the flow itself" if setup.method == "direct" else setup.method]
-    said += [f"{key} {_value(value)}" for key, value in setup.settings.items()]
-    for outlet in setup.outlets:
-        own = ", ".join(f"{key} {_value(value)}" for key, value in outlet.settings.items())
-        said.append(f"outlet {outlet.name} ({own})")
-    if setup.read is not None:
-        said.append(f"taps read {setup.read}")
-    if setup.constant_head_at is not None:
-        said.append(f"head constant at {setup.constant_head_at:g} m")
-    return f"Flow (SI): {', '.join(said)}"
+def flow_text(setup: FlowSetup, display: Display = SI_DISPLAY) -> str:
+    """Return how the flow was measured in one line, as the report tells it; empty where it was simply given."""
+    from gradeline.reduction.tabulate.flow import flow_rows  # noqa: PLC0415 (a new survey asks for none of it)
+    from gradeline.report.inputs import stated_words  # noqa: PLC0415 (as above)
 
-
-def _value(value: Measured | str) -> str:
-    if isinstance(value, str):
-        return value
-    return f"{value.value:.6g}" + ("" if value.u is None else f" ± {value.u:.2g}")
+    said = []
+    for _, _, what, text, quantity, value, u in flow_rows(setup):
+        words = stated_words(display, {"quantity": quantity, "text": text, "value": value, "value_u": u})
+        if what == "method":
+            said.append("the flow itself" if text == "direct" else words)
+        else:
+            said.append(f"{what} {words}")
+    return f"Flow: {', '.join(said)}" if said else ""

@@ -8,12 +8,14 @@ from collections.abc import Iterable, Mapping
 from dataclasses import fields, is_dataclass
 from typing import TYPE_CHECKING, Any
 
+import typer
+
 from gradeline.cli.outcome import Outcome
 
 if TYPE_CHECKING:
     from gradeline.survey import Survey
 
-__all__ = ["outcome_record", "plain", "print_json", "survey_record"]
+__all__ = ["conclude", "outcome_record", "plain", "print_json", "survey_record"]
 
 #: What a survey says, without what the reduction alone needs of how it was written down.
 _OF_SURVEY = (
@@ -99,3 +101,26 @@ def outcome_record(outcome: Outcome, **results: Any) -> dict[str, Any]:
 def print_json(value: Any) -> None:
     """Print a value as JSON; the terminal's own encoding makes no difference, since all else than ASCII is escaped."""
     print(json.dumps(value, indent=1, allow_nan=False), flush=True)
+
+
+def conclude(outcome: Outcome, *, as_json: bool) -> None:
+    """Tell a failure on stderr, with `as_json` as a record on stdout too, and end with its exit code; else do nothing.
+
+    Parameters
+    ----------
+    outcome : Outcome
+        What became of the one thing that a command did.
+    as_json : bool
+        Whether the command was asked for JSON.
+
+    Raises
+    ------
+    typer.Exit
+        Where the outcome is a failure.
+    """
+    for line in outcome.lines():
+        typer.echo(line, err=True)
+    if outcome.code:
+        if as_json:
+            print_json(outcome_record(outcome))
+        raise typer.Exit(outcome.code)

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Annotated, Any, Literal
 import typer
 
 from gradeline.cli.outcome import attempt
+from gradeline.cli.plain import conclude
 from gradeline.errors import QuantityError, UsageError
 
 if TYPE_CHECKING:
@@ -71,7 +72,7 @@ def plan(
     ] = None,
     spacing: Annotated[
         str | None,
-        _quantity("--spacing", "Least distance between two recommended taps; five bores by default."),
+        _quantity("--spacing", "Least distance between two recommended taps; ten bores by default."),
     ] = None,
     fixed: Annotated[
         list[str] | None,
@@ -120,10 +121,7 @@ def plan(
         _done(told, out, overwrite=overwrite, units=units, as_json=as_json)
 
     outcome = attempt(one, survey)
-    for line in outcome.lines():
-        typer.echo(line, err=True)
-    if outcome.code:
-        raise typer.Exit(outcome.code)
+    conclude(outcome, as_json=as_json)
 
 
 def _done(told: Plan, out: Path | None, *, overwrite: bool, units: str, as_json: bool) -> None:

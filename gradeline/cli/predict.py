@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Annotated, Any, Literal
 import typer
 
 from gradeline.cli.outcome import attempt
+from gradeline.cli.plain import conclude
 from gradeline.errors import Problem, QuantityError, SurveyError, UsageError
 
 if TYPE_CHECKING:
@@ -108,12 +109,16 @@ def predict(
 
     Example: gradeline predict data_demo/copper_bench/reduction --flow "0.2 to 1.4 L/s" --steps 7
     """
+    asked: Any = flow
+    if flows is not None and flow is None:
+        table = attempt(lambda: flows_in(flows), flows)
+        conclude(table, as_json=as_json)
+        asked = table.result
 
     def one() -> Prediction:
         if flow is not None and flows is not None:
             raise UsageError("--flow and --flows: both say at which flows; give one of them")
         walls, offtakes = _pairs("--wall", wall), _pairs("--offtake", offtake)
-        asked: Any = flow if flows is None else flows_in(flows)
         from gradeline.prediction import predict as predict_line  # noqa: PLC0415 (loaded when asked for: start-up time)
 
         return predict_line(
@@ -134,10 +139,7 @@ def predict(
         )
 
     outcome = attempt(lambda: _done(one(), out, overwrite=overwrite, units=units, as_json=as_json), reduction)
-    for line in outcome.lines():
-        typer.echo(line, err=True)
-    if outcome.code:
-        raise typer.Exit(outcome.code)
+    conclude(outcome, as_json=as_json)
 
 
 def _done(prediction: Prediction, out: Path | None, *, overwrite: bool, units: str, as_json: bool) -> None:
@@ -181,7 +183,7 @@ def flows_in(path: Path) -> list[float]:
     SurveyError
         With every fault of the table.
     """
-    from gradeline.loader.delimited import read_rows, separator_of  # noqa: PLC0415 (loaded when asked for: start-up time)
+    from gradeline.loader.delimited import WITH_COMMA, read_rows, separator_of  # noqa: PLC0415 (loaded when asked for: start-up time)
     from gradeline.quantities import parse_quantity  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     name = path.name
@@ -190,7 +192,8 @@ def flows_in(path: Path) -> list[float]:
     except (OSError, UnicodeDecodeError) as error:
         why = getattr(error, "strerror", None) or "it is no UTF-8 text"
         raise UsageError(f"{path} cannot be read ({why}); give a table with a column flow [L/s]") from None
-    rows, lines, fault = read_rows(text, separator_of(text))
+    separator = separator_of(text)
+    rows, lines, fault = read_rows(text, separator)
     if fault is not None:
         raise SurveyError(
             [Problem(name, fault[0], None, f"the row cannot be read ({fault[1]}); save the table as csv")]
@@ -215,11 +218,23 @@ def flows_in(path: Path) -> list[float]:
     problems, found = [], []
     for row, line in zip(rows[1:], lines[1:], strict=True):
         cell = row[place].strip() if place < len(row) else ""
+        if separator != "," and WITH_COMMA.fullmatch(cell):
+            cell = cell.replace(",", ".")
         try:
-            value = parse_quantity(f"{cell} {match[1]}", "flow").value
+            known = parse_quantity(f"{cell} {match[1]}", "flow")
         except QuantityError as error:
             problems.append(Problem(name, line, headings[place], f"{error}"))
             continue
+        value = known.value
+        if known.u is not None:
+            problems.append(
+                Problem(
+                    name,
+                    line,
+                    headings[place],
+                    f"give the flow alone, without an uncertainty; found {cell!r}",
+                )
+            )
         if value <= 0:
             problems.append(Problem(name, line, headings[place], f"a flow is above 0; found {cell!r}"))
         found.append(value)

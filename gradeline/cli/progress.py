@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import os
 import sys
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from typing import TYPE_CHECKING
 
@@ -13,7 +13,7 @@ import typer
 if TYPE_CHECKING:
     from rich.progress import Progress, TaskID
 
-__all__ = ["Bar", "bar", "wants_bar"]
+__all__ = ["Bar", "bar", "reading", "wants_bar"]
 
 
 def wants_bar() -> bool:
@@ -77,3 +77,44 @@ def bar(total: int, noun: str = "surveys") -> Iterator[Bar]:
     )
     with progress:
         yield Bar(progress, progress.add_task("the first", total=total))
+
+
+@contextmanager
+def reading(name: str, *, shown: bool = True) -> Iterator[Callable[[float], None] | None]:
+    """Give what is told the share of a large file that was read, 0 to 1, and draws it; None where nobody sees it.
+
+    Parameters
+    ----------
+    name : str
+        What is read.
+    shown : bool
+        Whether a bar may be drawn: no other one is.
+    """
+    if not shown or not wants_bar():
+        yield None
+        return
+    drawn: list[Progress] = []
+
+    def told(share: float) -> None:
+        if not drawn:  # nothing is drawn for what tells nothing: a file that is read at once
+            from rich.console import Console  # noqa: PLC0415 (loaded when asked for: start-up time)
+            from rich.progress import BarColumn, Progress, TaskProgressColumn, TextColumn, TimeRemainingColumn  # noqa: PLC0415
+
+            progress = Progress(
+                BarColumn(),
+                TaskProgressColumn(),
+                TextColumn("of {task.description} read", markup=False),  # a name may hold square brackets
+                TimeRemainingColumn(),
+                console=Console(stderr=True),
+                transient=True,
+            )
+            progress.add_task(name, total=1.0)
+            progress.start()
+            drawn.append(progress)
+        drawn[0].update(drawn[0].task_ids[0], completed=share)
+
+    try:
+        yield told
+    finally:
+        for progress in drawn:
+            progress.stop()

@@ -1,71 +1,22 @@
-"""`gradeline reduce`: every survey in turn, and what is told of each."""
+"""`gradeline reduce`: every survey, and what is told of each."""
 
 from __future__ import annotations
 
-import json
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Generator, Mapping, Sequence
+from contextlib import closing, nullcontext
 from pathlib import Path
-from typing import TYPE_CHECKING, Any, Literal
+from typing import Any, Literal
 
 import typer
 
-from gradeline.cli.outcome import Outcome, attempt
-from gradeline.cli.progress import bar
-
-if TYPE_CHECKING:
-    from gradeline.reduction import Reduction
-    from gradeline.survey import Survey
+from gradeline.cli.many.choices import Choices, reduced
+from gradeline.cli.many.orders import Done, Order
+from gradeline.cli.many.printed import Records
+from gradeline.cli.outcome import INTERRUPTED, NOT_WRITTEN, WRONG_USE
+from gradeline.cli.progress import Bar, bar
+from gradeline.errors import OutputError, UsageError
 
 __all__ = ["Choices", "reduce_surveys", "reduced", "targets_of"]
-
-
-@dataclass(frozen=True)
-class Choices:
-    """How surveys are to be reduced; the names of the options of `gradeline reduce`.
-
-    Parameters
-    ----------
-    level : float
-        Coverage of the intervals.
-    correct : {"static", "offsets", "none"}
-        Which offsets are taken off.
-    keep_all : bool
-        Whether flagged readings stay in the fits.
-    exclude : tuple of str
-        Readings left out by hand.
-    monte_carlo : bool
-        Whether intervals are held against Monte Carlo.
-    diameter, flow, temperature : str or None
-        Beside one table of heads.
-    """
-
-    level: float
-    correct: Literal["static", "offsets", "none"]
-    keep_all: bool
-    exclude: tuple[str, ...]
-    monte_carlo: bool
-    diameter: str | None = None
-    flow: str | None = None
-    temperature: str | None = None
-
-
-def reduced(source: Path, choices: Choices) -> Reduction:
-    """Read and reduce one survey."""
-    from gradeline.loader import read_survey  # noqa: PLC0415 (loaded when asked for: start-up time)
-
-    read = read_survey(source, diameter=choices.diameter, flow=choices.flow, temperature=choices.temperature)
-    _check_exclusions(choices.exclude, read)
-    from gradeline.reduction import reduce  # noqa: PLC0415 (loaded when asked for: start-up time)
-
-    return reduce(
-        read,
-        level=choices.level,
-        correct=choices.correct,
-        keep_all=choices.keep_all,
-        exclude=choices.exclude,
-        monte_carlo=choices.monte_carlo,
-    )
 
 
 def reduce_surveys(
@@ -78,13 +29,16 @@ def reduce_surveys(
     as_json: bool,
     units: Literal["si", "us"] = "si",
     paper: Literal["a4", "letter"] = "a4",
+    jobs: int | None = None,
+    scheduler: str | None = None,
+    summary: Path | None = None,
 ) -> int:
     """Reduce surveys, write their reports and tell what was found.
 
     Parameters
     ----------
     surveys : sequence of Path
-        One is told in full, several in a line each.
+        One is told in full, several in a line each, in the order given.
     targets : sequence of Path or None
         Where the results of each go; None: nowhere.
     choices : Choices
@@ -95,6 +49,12 @@ def reduce_surveys(
         Whether the results go to stdout as JSON instead.
     units : {"si", "us"}
         Units of the reader.
+    jobs : int, optional
+        Surveys at once, a process each where it is above 1; by default one for each core that may be used.
+    scheduler : str, optional
+        Address of a Dask scheduler that hands them to its workers instead.
+    summary : Path, optional
+        Where the summary over all surveys goes, .csv or .parquet.
 
     Returns
     -------
@@ -102,83 +62,90 @@ def reduce_surveys(
         The highest exit code.
     """
     several = len(surveys) > 1
-    outcomes: list[Outcome] = []
-    records: list[dict[str, Any]] = []
-    with bar(len(surveys)) as shown:
-        for source, target in zip(surveys, targets, strict=True):
-            shown.begin(source.name)
-            outcome = attempt(
-                lambda source=source, target=target: _one(  # type: ignore[misc]
-                    source, target, choices, formats=formats, overwrite=overwrite, units=units, paper=paper
-                ),
-                source,
-                contain=several,
-            )
-            for line in outcome.lines():
-                shown.tell(line, err=True)
-            if as_json:
-                records.append(_record(outcome, target))
-            elif outcome.code == 0:
-                shown.tell(_told(outcome.result, source, several=several, units=units))
-            if outcome.code == 0 and target is not None and not several:
-                shown.tell(f"Written to {_page(target, formats)}", err=True)
-            outcomes.append(Outcome(source, outcome.code))  # the tables of forty surveys need not be kept
-            shown.end()
-        if several:
-            done = sum(outcome.code == 0 for outcome in outcomes)
-            shown.tell(f"{done} of {len(surveys)} surveys reduced{_where(targets) if done else ''}", err=True)
-    if as_json:
-        from gradeline.cli.plain import print_json  # noqa: PLC0415 (loaded when asked for: start-up time)
+    orders = [
+        Order(
+            source,
+            target,
+            choices,
+            formats,
+            overwrite=overwrite,
+            units=units,
+            paper=paper,
+            several=several,
+            as_json=as_json,
+            summary=summary is not None,
+        )
+        for source, target in zip(surveys, targets, strict=True)
+    ]
+    codes: list[int] = []
+    rows: list[Mapping[str, Any]] = []
+    with bar(len(surveys)) as shown, Records() if as_json else nullcontext() as records:
+        try:
+            if summary is not None:
+                from gradeline.cli.many.summary import check_summary, write_summary  # noqa: PLC0415 (seldom needed)
 
-        print_json({"surveys": records})
-    return max(outcome.code for outcome in outcomes)
-
-
-def _one(
-    source: Path,
-    target: Path | None,
-    choices: Choices,
-    *,
-    formats: tuple[str, ...],
-    overwrite: bool,
-    units: str,
-    paper: Literal["a4", "letter"],
-) -> Reduction:
-    reduction = reduced(source, choices)
-    if target is not None:
-        from gradeline.quantities.printing import DISPLAYS  # noqa: PLC0415 (loaded when asked for: start-up time)
-        from gradeline.report import write  # noqa: PLC0415 (loaded when asked for: start-up time)
-
-        write(reduction, target, formats=formats, overwrite=overwrite, display=DISPLAYS[units], paper=paper)
-    return reduction
+                check_summary(summary, overwrite=overwrite)
+            with closing(_carried_out(orders, jobs, scheduler, shown)) as all_done:
+                for order, done in zip(orders, all_done, strict=True):
+                    _tell(shown, order, done)
+                    if records is not None and done.record is not None:
+                        records.add(done.record)
+                    codes.append(done.code)
+                    rows.extend(done.rows)
+            if summary is not None:
+                write_summary(summary, rows)
+        except KeyboardInterrupt:
+            shown.tell(_interrupted(codes, len(surveys), several=several), err=True)
+            return INTERRUPTED
+        except (UsageError, OutputError) as error:
+            shown.tell(str(error), err=True)
+            codes.append(NOT_WRITTEN if isinstance(error, OutputError) else WRONG_USE)
+        else:
+            if several:
+                count = codes.count(0)
+                where = _where(targets, summary) if count else ""
+                shown.tell(f"{count} of {len(surveys)} surveys reduced{where}", err=True)
+    return max(codes)
 
 
-def _told(reduction: Reduction, source: Path, *, several: bool, units: str) -> str:
-    from gradeline.quantities.printing import DISPLAYS  # noqa: PLC0415 (loaded when asked for: start-up time)
-    from gradeline.report import one_line, terminal_summary  # noqa: PLC0415 (loaded when asked for: start-up time)
+def _carried_out(
+    orders: Sequence[Order], jobs: int | None, scheduler: str | None, shown: Bar
+) -> Generator[Done, None, None]:
+    """What became of each, by whichever way was asked for."""
+    if scheduler is not None:
+        from gradeline.cli.many.cluster import on_cluster  # noqa: PLC0415 (loaded when asked for: start-up time)
 
-    display = DISPLAYS[units]
-    return f"{source}: {one_line(reduction, display)}" if several else terminal_summary(reduction, display)
+        return on_cluster(orders, scheduler, shown)
+    from gradeline.cli.many.workers import cores, in_turn, in_workers  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+    at_once = min(jobs if jobs is not None else cores(), len(orders))
+    return in_workers(orders, at_once, shown) if at_once > 1 else in_turn(orders, shown)
 
 
-def _record(outcome: Outcome, target: Path | None) -> dict[str, Any]:
-    from gradeline.cli.plain import outcome_record  # noqa: PLC0415 (loaded when asked for: start-up time)
-    from gradeline.report.output import program_version  # noqa: PLC0415 (loaded when asked for: start-up time)
-    from gradeline.report.record import as_json  # noqa: PLC0415 (loaded when asked for: start-up time)
+def _tell(shown: Bar, order: Order, done: Done) -> None:
+    for line in done.messages:
+        shown.tell(line, err=True)
+    if done.told is not None:
+        shown.tell(done.told)
+    if done.code == 0 and order.target is not None and not order.several:
+        shown.tell(f"Written to {_page(order.target, order.formats)}", err=True)
 
-    done = outcome.code == 0
-    return outcome_record(
-        outcome,
-        written_to=str(target) if done and target is not None else None,
-        reduction=json.loads(as_json(outcome.result, program_version())) if done else None,
+
+def _interrupted(codes: Sequence[int], count: int, *, several: bool) -> str:
+    if not several:
+        return "interrupted; nothing was written"
+    return (
+        f"interrupted: {codes.count(0)} of {count} surveys told above are reduced, each written whole or not at all; the "
+        "others were left as they were, and no summary was written"
     )
 
 
-def _where(targets: Sequence[Path | None]) -> str:
+def _where(targets: Sequence[Path | None], summary: Path | None) -> str:
     folders = {target.parent for target in targets if target is not None}
+    said = f"; summary in {summary}" if summary is not None else ""
     if not folders:
-        return ""
-    return f"; results in {folders.pop()}" if len(folders) == 1 else "; results beside each"
+        return said
+    return (f"; results in {folders.pop()}" if len(folders) == 1 else "; results beside each") + said
 
 
 def _page(target: Path, formats: tuple[str, ...]) -> Path:
@@ -204,24 +171,11 @@ def targets_of(surveys: Sequence[Path], out: Path | None) -> list[Path]:
     if len(surveys) == 1:
         return [out]
     targets = [out / (source.stem if source.is_file() else source.resolve().name) for source in surveys]
-    for place, target in enumerate(targets):
-        if target in targets[:place]:
+    taken: set[Path] = set()
+    for target in targets:
+        if target in taken:
             raise typer.BadParameter(
                 f"two surveys are called {target.name!r}; reduce them to different --out"
             )
+        taken.add(target)
     return targets
-
-
-def _check_exclusions(excluded: Sequence[str], survey: Survey) -> None:
-    """Every exclusion names readings that the survey has."""
-    taps, runs = set(survey.readings.columns), set(survey.readings.index)
-    for text in excluded:
-        if text in taps:
-            continue
-        run, _, tap = text.rpartition(":")
-        if tap not in taps:
-            raise typer.BadParameter(
-                f"--exclude {text}: there is no tap {tap!r}; taps are {', '.join(map(str, survey.readings.columns))}"
-            )
-        if run not in runs:
-            raise typer.BadParameter(f"--exclude {text}: there is no run {run!r}; write --exclude RUN:TAP")

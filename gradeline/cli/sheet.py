@@ -40,7 +40,7 @@ def write_sheet(
     Returns
     -------
     dict
-        ``written_to``, and ``columns``, the headings in order.
+        ``written_to``, ``columns``, the headings in order, and ``listed``, those of readings that are listed one a row.
 
     Raises
     ------
@@ -51,12 +51,15 @@ def write_sheet(
     from gradeline.loader.recording import read_recording  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     recording = read_recording(source)
+    if target.is_symlink():
+        raise OutputError(f"{target} is a link; name the file itself with --out")
     if target.is_dir():
         raise OutputError(f"{target} is a folder; name a file, such as {target / NAME}")
     if target.exists() and not overwrite:
         raise OutputError(
             f"{target} exists already; name another file with --out, or replace it with --overwrite"
         )
+    from gradeline.report.file import write_file  # noqa: PLC0415 (loaded when asked for: start-up time)
     from gradeline.report.output import program_version  # noqa: PLC0415 (loaded when asked for: start-up time)
     from gradeline.report.recording_sheet import (  # noqa: PLC0415 (loaded when asked for: start-up time)
         SheetColumn,
@@ -65,18 +68,30 @@ def write_sheet(
 
     content = recording_sheet(
         recording.title,
-        [SheetColumn(column.heading, column.under, column.static) for column in recording.columns],
+        [
+            # a note's heading begins so in the file; on the sheet that stands below it
+            SheetColumn(column.heading.removeprefix("note "), "note", column.static)
+            if column.heading.startswith("note ")
+            else SheetColumn(column.heading, column.under, column.static)
+            for column in recording.columns
+        ],
         recording.gauges,
         program_version(),
         runs=runs,
         repeats=repeats,
         paper=paper,
+        listed=recording.listed,
+        read=[SheetColumn(one.heading, one.under) for one in recording.read],
     )
     try:
         target.parent.mkdir(parents=True, exist_ok=True)
-        target.write_bytes(content)
+        write_file(target, content)
     except OSError as error:
         raise OutputError(
             f"{target}: the sheet could not be written ({error.strerror or error}); name another file with --out"
         ) from error
-    return {"written_to": str(target), "columns": [column.heading for column in recording.columns]}
+    return {
+        "written_to": str(target),
+        "columns": [column.heading for column in recording.columns],
+        "listed": list(recording.listed),
+    }

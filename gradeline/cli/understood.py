@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 
 import numpy as np
 from numpy.typing import NDArray
 
 from gradeline.cli.flow_lines import flow_text
-from gradeline.quantities import Measured, Unit, parse_unit
+from gradeline.cli.shown_units import ShownUnit, ShownUnits, plain_number
+from gradeline.quantities import Measured
+from gradeline.quantities.printing import SI_DISPLAY, Display
 from gradeline.reduction.flow import metered_flow
 from gradeline.survey import GAUGE_KINDS, Fluid, Gauge, Pressure, Reach, Stated, Survey
 
@@ -36,23 +38,39 @@ _UNCERTAINTIES = {
 }
 
 
-def understood(survey: Survey) -> str:
-    """Return what a survey says: SI units but for the bore (mm) and the flow (L/s), what is stated as stated."""
+def understood(survey: Survey, display: Display = SI_DISPLAY) -> str:
+    """Return what a survey says.
+
+    Parameters
+    ----------
+    survey : Survey
+        Valid, with or without a flow of its own.
+    display : Display
+        Units of the reader. In SI what is stated of gauges and uncertainties stands in the unit in which it was stated; in US
+        customary units all values are converted, and "Units as found" tells the others.
+
+    Returns
+    -------
+    str
+        The same words in both.
+    """
     survey = metered_flow(survey).survey
     flows = survey.runs["flow"].to_numpy(float)
+    units = ShownUnits(survey, display)
+    along, bore, rough, flow = (units.of(one) for one in ("chainage", "diameter", "roughness", "flow"))
     parts = [
         f"{survey.title}" + (f" ({survey.date})" if survey.date else ""),
-        f"Fluid: {_fluid(survey.fluid)}",
-        flow_text(survey.flow),
+        f"Fluid: {_fluid(units, survey.fluid)}",
+        flow_text(survey.flow, display),
         _table(
             "Reaches",
-            ("reach", "from, m", "to, m", "bore, mm", "wall"),
+            ("reach", f"from, {along.text}", f"to, {along.text}", f"bore, {bore.text}", "wall"),
             [
                 (
                     reach.name + (" (inlet)" if reach.inlet else ""),
-                    f"{reach.start:g}",
-                    f"{reach.end:g}",
-                    _measured(reach.diameter, 1000) + _shape(reach),
+                    along.value(reach.start),
+                    along.value(reach.end),
+                    bore.measured(reach.diameter) + _shape(units, reach),
                     reach.wall,
                 )
                 for reach in survey.reaches
@@ -60,13 +78,13 @@ def understood(survey: Survey) -> str:
         ),
         _table(
             "Known of the walls",
-            ("wall", "published, mm", "source", "earlier, mm", "source"),
+            ("wall", f"published, {rough.text}", "source", f"earlier, {rough.text}", "source"),
             [
                 (
                     one.wall,
-                    "" if one.published is None else _measured(one.published, 1000),
+                    "" if one.published is None else rough.measured(one.published),
                     one.published_source or "",
-                    "" if one.earlier is None else _measured(one.earlier, 1000),
+                    "" if one.earlier is None else rough.measured(one.earlier),
                     one.earlier_source or "",
                 )
                 for one in survey.wall_histories
@@ -74,9 +92,9 @@ def understood(survey: Survey) -> str:
         ),
         _table(
             "Off-takes",
-            ("off-take", "at, m", "takes, L/s"),
+            ("off-take", f"at, {along.text}", f"takes, {flow.text}"),
             [
-                (one.name, f"{one.at:g}", _range(1000 * survey.runs[one.column].to_numpy(float)))
+                (one.name, along.value(one.at), _range(flow, survey.runs[one.column].to_numpy(float)))
                 for one in survey.offtakes
             ],
         ),
@@ -87,14 +105,14 @@ def understood(survey: Survey) -> str:
         ),
         _table(
             "Fittings",
-            ("fitting", "at, m", "loss coefficient", "velocity head"),
+            ("fitting", f"at, {along.text}", "loss coefficient", "velocity head"),
             [
                 (
                     fitting.name + (f" ({fitting.kind})" if fitting.kind else ""),
-                    f"{fitting.at:g}",
+                    along.value(fitting.at),
                     "to be fitted"
                     if fitting.loss_coefficient is None
-                    else _measured(fitting.loss_coefficient),
+                    else units.of("number").measured(fitting.loss_coefficient),
                     f"{fitting.velocity} bore" if fitting.velocity == "smaller" else fitting.velocity,
                 )
                 for fitting in survey.fittings
@@ -104,67 +122,68 @@ def understood(survey: Survey) -> str:
             "Gauges",
             ("gauge", "kind", "settings", "stated"),
             [
-                (gauge.name, gauge.kind, _settings(survey, gauge), _gauge_uncertainties(survey, gauge))
+                (gauge.name, gauge.kind, _settings(units, gauge), _gauge_uncertainties(units, gauge))
                 for gauge in (*survey.gauges, *survey.flow_gauges)
             ],
         ),
-        _taps(survey),
-        _runs(survey, flows),
+        _taps(units),
+        _runs(units, flows),
         f"Units as found: {_units(survey)}",
-        "Stated uncertainties: " + (_stated(survey) or "none in [uncertainty]"),
-        _bullets("Assumptions", survey.assumptions),
-        _bullets("Cautions", survey.cautions),
+        "Stated uncertainties: " + (_stated(units) or "none in [uncertainty]"),
+        _bullets("Assumptions", units.sentences(survey.assumptions)),
+        _bullets("Cautions", units.sentences(survey.cautions)),
     ]
     return "\n\n".join(part for part in parts if part)
 
 
-def _measured(value: Measured, factor: float = 1.0) -> str:
-    """A value with its uncertainty, as stated."""
-    text = f"{value.value * factor:.6g}"
-    return text if value.u is None else f"{text} ± {value.u * factor:.2g}"
-
-
-def _shape(reach: Reach) -> str:
+def _shape(units: ShownUnits, reach: Reach) -> str:
     """Where the section is no circle, what it is; the bore is then its hydraulic diameter."""
     if reach.section is None:
         return ""
     first, second = (side.value for side in reach.section.sides)
     if reach.section.shape == "given":
-        return f" (hydraulic; {first:.6g} m², perimeter {second:.6g} m)"
-    sign = "×" if reach.section.shape == "rectangle" else "/"
-    return f" (hydraulic; {reach.section.shape} {1000 * first:.6g} {sign} {1000 * second:.6g})"
+        length = units.of("length")
+        area = ShownUnit(f"{length.text}²", length.factor**2).value(first)
+        return f" (hydraulic; {area} {length.text}², perimeter {length.value(second)} {length.text})"
+    sign, bore = "×" if reach.section.shape == "rectangle" else "/", units.of("diameter")
+    return f" (hydraulic; {reach.section.shape} {bore.value(first)} {sign} {bore.value(second)})"
 
 
-def _range(values: NDArray[np.float64]) -> str:
+def _range(unit: ShownUnit, values: NDArray[np.float64]) -> str:
     """The least and the largest of the flows that are taken, one where they are equal."""
     flowing = values[values > 0]
     low, high = (float(flowing.min()), float(flowing.max())) if len(flowing) else (0.0, 0.0)
-    return f"{low:.6g}" if low == high else f"{low:.6g} to {high:.6g}"
+    return unit.value(low) if low == high else f"{unit.value(low)} to {unit.value(high)}"
 
 
-def _fluid(fluid: Fluid) -> str:
+def _fluid(units: ShownUnits, fluid: Fluid) -> str:
     if fluid.table is not None:
         return f"{fluid.name}, density and viscosity from each run's temperature by {fluid.table.file}"
     if fluid.line_pressure is not None:
-        return f"{fluid.name} at {_measured(fluid.line_pressure, 1e-3)} kPa absolute, from each run's temperature"
+        pressure = units.told("pressure", fluid.line_pressure)
+        return f"{fluid.name} at {pressure} absolute, from each run's temperature"
     if fluid.density is None:
         return f"{fluid.name}, density and viscosity from each run's temperature"
-    given = [f"density {_measured(fluid.density)} kg/m³"]
+    given = [f"density {units.told('density', fluid.density)}"]
     if fluid.expansion is not None and fluid.density_temperature is not None:
-        at = f"{fluid.density_temperature - 273.15:g} °C"
-        given[0] += f" at {at}, expansion {_measured(fluid.expansion)} 1/K"
+        at = _at(units, fluid.density_temperature)
+        given[0] += f" at {at}, expansion {units.per_kelvin(fluid.expansion)}"
     given += [
-        f"kinematic viscosity {_measured(value, 1e6)} mm²/s at {kelvin - 273.15:g} °C"
+        f"kinematic viscosity {units.told('kinematic viscosity', value)} at {_at(units, kelvin)}"
         for kelvin, value in fluid.viscosity_at
     ]
     if fluid.viscosity is not None:
-        given.append(f"viscosity {_measured(fluid.viscosity, 1000)} mPa s")
+        given.append(f"viscosity {units.told('viscosity', fluid.viscosity)}")
     if fluid.kinematic_viscosity is not None:
-        given.append(f"kinematic viscosity {_measured(fluid.kinematic_viscosity, 1e6)} mm²/s")
+        given.append(f"kinematic viscosity {units.told('kinematic viscosity', fluid.kinematic_viscosity)}")
     return f"{fluid.name}, {', '.join(given)}"
 
 
-def _settings(survey: Survey, gauge: Gauge) -> str:
+def _at(units: ShownUnits, kelvin: float) -> str:
+    return units.told("temperature", Measured(kelvin))
+
+
+def _settings(units: ShownUnits, gauge: Gauge) -> str:
     dimensions = {
         name: key.dimension.removeprefix("gas ") for name, key in GAUGE_KINDS[gauge.kind].keys.items()
     }
@@ -173,41 +192,37 @@ def _settings(survey: Survey, gauge: Gauge) -> str:
         if isinstance(value, str):
             found.append(f"{name} {value}")
             continue
-        unit = _unit(survey, f"survey.toml gauge.{gauge.name}.{name}", dimensions[name], _SETTINGS)
-        u = None if value.u is None else unit.difference_from_si(value.u)
+        unit = units.stated(f"survey.toml gauge.{gauge.name}.{name}", dimensions[name], _SETTINGS)
         absolute = " abs" if isinstance(value, Pressure) and value.absolute else ""
-        found.append(f"{name} {_measured(Measured(unit.from_si(value.value), u))} {unit.text}{absolute}")
+        found.append(f"{name} {unit.measured(value)} {unit.text}{absolute}")
     if gauge.span is not None:
         reading = GAUGE_KINDS[gauge.kind].reading
-        unit = _unit(survey, f"survey.toml gauge.{gauge.name}.range", reading, _SETTINGS)
-        found.append(
-            f"range {unit.from_si(gauge.span[0]):.6g} to {unit.from_si(gauge.span[1]):.6g} {unit.text}"
-        )
+        unit = units.stated(f"survey.toml gauge.{gauge.name}.range", reading, _SETTINGS)
+        found.append(f"range {unit.value(gauge.span[0])} to {unit.value(gauge.span[1])} {unit.text}")
     if gauge.calibration is not None:
         found.append(f"calibration {gauge.calibration.file} ({len(gauge.calibration.reading)} points)")
     found += [
-        f"leg of {leg.fluid} from {_end(leg.start, leg.start_u)} to {_end(leg.end, leg.end_u)}"
+        f"leg of {leg.fluid} from {_end(units, leg.start, leg.start_u)} to {_end(units, leg.end, leg.end_u)}"
         for leg in gauge.legs
     ]
     return ", ".join(found)
 
 
-def _end(end: float | str, u: float | None) -> str:
-    return end if isinstance(end, str) else f"{end:g} m" + (f" ± {1000 * u:.2g} mm" if u else "")
+def _end(units: ShownUnits, end: float | str, u: float | None) -> str:
+    if isinstance(end, str):
+        return end
+    small = units.of("small head")
+    spread = f" ± {small.difference(u, 2)} {small.text}" if u else ""
+    return units.told("elevation", Measured(end)) + spread
 
 
-def _unit(survey: Survey, place: str, dimension: str, usual: Mapping[str, str]) -> Unit:
-    """The unit in which a value was stated, the usual one where a survey was not read from files."""
-    return parse_unit(survey.units.get(place, usual[dimension]), dimension)
+def _uncertainty(units: ShownUnits, place: str, dimension: str, value: float) -> str:
+    """A stated uncertainty."""
+    unit = units.stated(place, dimension, _UNCERTAINTIES)
+    return f"{unit.difference(value)} {unit.text}"
 
 
-def _uncertainty(survey: Survey, place: str, dimension: str, value: float) -> str:
-    """A stated uncertainty in the unit in which it was stated."""
-    unit = _unit(survey, place, dimension, _UNCERTAINTIES)
-    return f"{unit.difference_from_si(value):.6g} {unit.text}"
-
-
-def _gauge_uncertainties(survey: Survey, gauge: Gauge) -> str:
+def _gauge_uncertainties(units: ShownUnits, gauge: Gauge) -> str:
     reading = GAUGE_KINDS[gauge.kind].reading
     named = (
         ("uncertainty", gauge.reading_u, reading),
@@ -216,19 +231,21 @@ def _gauge_uncertainties(survey: Survey, gauge: Gauge) -> str:
         ("u_scale", gauge.scale_u, "dimensionless"),
     )
     return ", ".join(
-        f"{name} {_uncertainty(survey, f'survey.toml gauge.{gauge.name}.{name}', dimension, value)}"
+        f"{name} {_uncertainty(units, f'survey.toml gauge.{gauge.name}.{name}', dimension, value)}"
         for name, value, dimension in named
         if value is not None
     )
 
 
-def _taps(survey: Survey) -> str:
+def _taps(units: ShownUnits) -> str:
+    survey = units.survey
     own = [
         name
         for name in ("gauge_elevation", "reading_u", "chainage_u", "elevation_u")
         if any(getattr(tap, name) is not None for tap in survey.taps)
     ]
-    units = {name: _tap_unit(survey, name) for name in own}
+    in_units = {name: _tap_unit(units, name) for name in own}
+    along, level = units.of("chainage"), units.of("elevation")
     titles = {
         "gauge_elevation": "gauge elevation",
         "reading_u": "u(reading)",
@@ -239,14 +256,12 @@ def _taps(survey: Survey) -> str:
     rows = [
         (
             tap.name,
-            f"{tap.chainage:g}",
-            f"{tap.elevation:g}",
+            along.value(tap.chainage),
+            level.value(tap.elevation),
             tap.gauge or "",
             f"{taken[tap.name]} of {len(survey.runs)}" if tap.name in taken else "",
             *(
-                ""
-                if (value := getattr(tap, name)) is None
-                else f"{units[name].difference_from_si(value):.6g}"
+                "" if (value := getattr(tap, name)) is None else in_units[name].difference(value)
                 for name in own
             ),
         )
@@ -254,43 +269,45 @@ def _taps(survey: Survey) -> str:
     ]
     headings = (
         "tap",
-        "chainage, m",
-        "elevation, m",
+        f"chainage, {along.text}",
+        f"elevation, {level.text}",
         "gauge",
         "runs read",
-        *(f"{titles[name]}, {units[name].text}" for name in own),
+        *(f"{titles[name]}, {in_units[name].text}" for name in own),
     )
     return _table("Taps", headings, rows)
 
 
-def _tap_unit(survey: Survey, name: str) -> Unit:
+def _tap_unit(units: ShownUnits, name: str) -> ShownUnit:
     """The unit of a column of taps."""
     column = name.removesuffix("_u").replace("_", " ") + (" uncertainty" if name.endswith("_u") else "")
     place = f"taps.csv {column}"
     if name == "gauge_elevation":
-        return _unit(survey, place, "length", _SETTINGS)
+        return units.stated(place, "length", _SETTINGS)
     if name != "reading_u":
-        return _unit(survey, place, "length", _UNCERTAINTIES)
+        return units.stated(place, "length", _UNCERTAINTIES)
+    survey = units.survey
     kinds = {gauge.name: GAUGE_KINDS[gauge.kind].reading for gauge in survey.gauges}
     reads = next(kinds[tap.gauge] for tap in survey.taps if tap.reading_u is not None and tap.gauge in kinds)
-    return _unit(survey, place, reads, _UNCERTAINTIES)
+    return units.stated(place, reads, _UNCERTAINTIES)
 
 
-def _runs(survey: Survey, flows: np.ndarray) -> str:
+def _runs(units: ShownUnits, flows: np.ndarray) -> str:
+    survey, flow_unit, degree = units.survey, units.of("flow"), units.of("temperature")
     static = int((flows == 0).sum())
     counted = f"{len(flows)} run{'s' * (len(flows) != 1)}, {static} of them static"
     read = survey.readings.notna().sum(axis=1).to_numpy()
-    celsius = survey.runs["temperature"].to_numpy(float) - 273.15
+    kelvin = survey.runs["temperature"].to_numpy(float)
     rows = [
         (
             run,
-            f"{1000 * flow:.5g}" if flow > 0 else "static",
-            f"{temperature:.5g}" if np.isfinite(temperature) else "",
+            plain_number(flow * flow_unit.factor, 5) if flow > 0 else "static",
+            plain_number(temperature * degree.factor + degree.offset, 5) if np.isfinite(temperature) else "",
             f"{taken} of {len(survey.observations)}",
             str(repeats),
         )
         for run, flow, temperature, taken, repeats in zip(
-            survey.runs["run"], flows, celsius, read, survey.runs["repeats"], strict=True
+            survey.runs["run"], flows, kelvin, read, survey.runs["repeats"], strict=True
         )
     ]
     left = len(rows) - _RUNS_SHOWN
@@ -298,7 +315,7 @@ def _runs(survey: Survey, flows: np.ndarray) -> str:
     return (
         _table(
             f"Runs ({counted})",
-            ("run", "flow, L/s", "temperature, °C", "taps read", "rows"),
+            ("run", f"flow, {flow_unit.text}", f"temperature, {degree.text}", "taps read", "rows"),
             rows[:_RUNS_SHOWN],
         )
         + more
@@ -323,7 +340,7 @@ def _units(survey: Survey) -> str:
     return ", ".join(found)
 
 
-def _stated(survey: Survey) -> str:
+def _stated(units: ShownUnits) -> str:
     dimensions = {
         "reading": "length",
         "reading_pressure": "pressure",
@@ -334,7 +351,7 @@ def _stated(survey: Survey) -> str:
         "temperature_run": "temperature difference",
     }
     found: list[str] = []
-    for name, value in vars(survey.stated).items():
+    for name, value in vars(units.survey.stated).items():
         if value is None:
             continue
         number, dimension = (
@@ -343,7 +360,7 @@ def _stated(survey: Survey) -> str:
         if dimension is None or (isinstance(value, Stated) and value.relative):
             dimension = "dimensionless"
         label = "reading" if name == "reading_pressure" else name
-        found.append(f"{label} {_uncertainty(survey, f'survey.toml uncertainty.{label}', dimension, number)}")
+        found.append(f"{label} {_uncertainty(units, f'survey.toml uncertainty.{label}', dimension, number)}")
     return ", ".join(found)
 
 

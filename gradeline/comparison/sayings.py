@@ -120,13 +120,7 @@ def _flagged(one: Taken) -> list[str]:
     out = [place for place in places if place not in used]
     named = ", ".join(f"run {run} tap {tap}" for run, tap in places[:_NAMED])
     more = f" and {len(places) - _NAMED} more" if len(places) > _NAMED else ""
-    fate = (
-        "left out"
-        if len(out) == len(places)
-        else "kept"
-        if not out
-        else f"{len(out)} of them left out"
-    )
+    fate = "left out" if len(out) == len(places) else "kept" if not out else f"{len(out)} of them left out"
     return [
         f"{one.label}: {len(places)} {'reading was' if len(places) == 1 else 'readings were'} flagged ({named}{more}) and {fate}."
     ]

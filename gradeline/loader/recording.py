@@ -74,7 +74,7 @@ class Recording:
     title : str
         Of the survey.
     columns : tuple of Recorded
-        Those of ``readings.csv``, in its order.
+        Those of ``readings.csv``, in its order, unless `listed` says otherwise.
     gauges : tuple of (str, str)
         Each gauge with its kind.
     taken_from : str or None
@@ -148,7 +148,7 @@ def read_recording(path: str | os.PathLike[str]) -> Recording:
     title = (header.title if header is not None else None) or (
         path.stem if path.is_file() else path.resolve().name
     )
-    headings, taken_from, listed = _written(ledger, columns)
+    headings, taken_from, listed = _written(ledger)
     read = _rows_listed(ledger, columns, places) if listed else ()
     if not headings:
         headings = _new_headings(document, columns, known)
@@ -188,7 +188,7 @@ def _primary(table: FlowTable | None) -> frozenset[str]:
     return frozenset(name for name, of in table.column_names.items() if of == table.method.primary)
 
 
-def _written(ledger: Ledger, taps: TapTable) -> tuple[list[str], str | None, tuple[str, ...]]:
+def _written(ledger: Ledger) -> tuple[list[str], str | None, tuple[str, ...]]:
     """The headings of the readings that are there already, and those of a list of readings; none where there are none."""
     quiet = Ledger(ledger.folder, source=ledger.source)
     place = place_of(quiet, "readings")

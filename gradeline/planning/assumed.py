@@ -61,7 +61,8 @@ def roughness_assumed(
     by_wall = given if isinstance(given, Mapping) else {} if given is None else dict.fromkeys(walls, given)
     spelt = {one_spelling(wall): wall for wall in walls}
     by_wall = {
-        name if name in walls else spelt.get(one_spelling(name), name): value for name, value in by_wall.items()
+        name if name in walls else spelt.get(one_spelling(name), name): value
+        for name, value in by_wall.items()
     }
     for name, value in by_wall.items():
         if name not in walls:
@@ -137,9 +138,7 @@ def losses_assumed(line: Line, given: Mapping[str, float]) -> dict[str, Assumed]
     for name in given:
         if name not in free:
             known = ", ".join(free) or "none"
-            raise UsageError(
-                f"loss: there is no fitting {name!r} whose K is to be fitted; there is {known}"
-            )
+            raise UsageError(f"loss: there is no fitting {name!r} whose K is to be fitted; there is {known}")
     found = {}
     for place, fitting in enumerate(line.fittings):
         if fitting.loss_coefficient is not None:

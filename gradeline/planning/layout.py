@@ -15,7 +15,15 @@ from gradeline.reduction.heads import heads_of
 from gradeline.reduction.line import CAUTIOUS_RECOVERY, Line, disturbed_taps
 from gradeline.survey import Survey
 
-__all__ = ["Layout", "Zones", "bores_downstream", "d_optimal_places", "recommended_layout", "undisturbed", "with_places"]
+__all__ = [
+    "Layout",
+    "Zones",
+    "bores_downstream",
+    "d_optimal_places",
+    "recommended_layout",
+    "undisturbed",
+    "with_places",
+]
 
 Array = NDArray[np.float64]
 Zones = tuple[tuple[float, float], ...]

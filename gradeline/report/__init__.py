@@ -14,13 +14,24 @@ if TYPE_CHECKING:
     from gradeline.report.brief import one_line
     from gradeline.report.output import write
     from gradeline.report.sentences import summarise
+    from gradeline.report.summary import failed_row, summary_rows
     from gradeline.report.terminal import terminal_summary
 
-__all__ = ["FORMATS", "one_line", "summarise", "terminal_summary", "write"]
+__all__ = [
+    "FORMATS",
+    "failed_row",
+    "one_line",
+    "summarise",
+    "summary_rows",
+    "terminal_summary",
+    "write",
+]
 
 _HOMES = {
+    "failed_row": "gradeline.report.summary",
     "one_line": "gradeline.report.brief",
     "summarise": "gradeline.report.sentences",
+    "summary_rows": "gradeline.report.summary",
     "terminal_summary": "gradeline.report.terminal",
     "write": "gradeline.report.output",
 }

@@ -6,6 +6,7 @@ import math
 from collections.abc import Mapping
 from typing import Any
 
+from gradeline.comparison.bores import DIFFER, ONE
 from gradeline.comparison.tables import Comparison
 from gradeline.quantities.printing import (
     MISSING,
@@ -18,6 +19,7 @@ from gradeline.quantities.printing import (
     rounded,
     thousands,
 )
+from gradeline.report.converted import converted_sentences
 from gradeline.report.printed import (
     PrintedTable,
     Row,
@@ -28,9 +30,12 @@ from gradeline.report.printed import (
     percent,
     records,
 )
-from gradeline.report.terminal import _bullets, _table, _wrapped
+from gradeline.report.text import listed, paragraph, text_table
 
 __all__ = ["comparison_found", "comparison_text", "survey_table"]
+
+#: A difference of the column of ε and of the change shows from this share of the change or of its interval on.
+_SHOWS = 0.1
 
 
 def comparison_text(comparison: Comparison, display: Display = SI_DISPLAY) -> str:
@@ -52,25 +57,32 @@ def comparison_text(comparison: Comparison, display: Display = SI_DISPLAY) -> st
     dates = sorted(date for date in comparison.surveys["date"].dropna())
     when = f", {dates[0]} to {dates[-1]}" if comparison.dated else ""
     blocks = [f"Comparison of {len(names)} surveys{when}"]
-    blocks.append("\n".join(["Found", *_bullets(comparison_found(comparison, display))]))
+    blocks.append(listed("Found", comparison_found(comparison, display)))
     walls = records(comparison.walls)
     for wall in walls:
         table = survey_table(comparison, str(wall["wall"]), display)
-        blocks.append(_table(f"Wall {wall['wall']}: {table.caption}", table, set()))
+        blocks.append(text_table(f"Wall {wall['wall']}: {table.caption}", table, set()))
     if len(comparison.shared):
-        blocks.append("\n".join(["Errors of the differences", *_bullets(_shared(comparison))]))
+        blocks.append(listed("Errors of the differences", _shared(comparison)))
     if comparison.cautions:
-        blocks.append("\n".join(["Cautions", *_bullets(comparison.cautions)]))
-    blocks.append("\n".join(["Assumptions", *_bullets(comparison.assumptions)]))
+        blocks.append(
+            listed("Cautions", converted_sentences(comparison.cautions, display, _labels(comparison)))
+        )
     blocks.append(
-        "\n".join(
-            _wrapped(
-                f"Intervals cover {percent(comparison.level)}. Those of each survey hold all its errors; those of a change "
-                "leave out what the surveys share. This supports a judgement and does not replace one."
-            )
+        listed("Assumptions", converted_sentences(comparison.assumptions, display, _labels(comparison)))
+    )
+    blocks.append(
+        paragraph(
+            f"Intervals cover {percent(comparison.level)}. Those of each survey hold all its errors; those of a change "
+            "leave out what the surveys share. This supports a judgement and does not replace one."
         )
     )
     return "\n\n".join(blocks)
+
+
+def _labels(comparison: Comparison) -> list[object]:
+    """Names of the surveys, which stay as they are in any units."""
+    return [*comparison.surveys["survey"], *comparison.walls["wall"]]
 
 
 def comparison_found(comparison: Comparison, display: Display = SI_DISPLAY) -> list[str]:
@@ -97,7 +109,9 @@ def comparison_found(comparison: Comparison, display: Display = SI_DISPLAY) -> l
             said.append(f"Wall {wall['wall']}: not compared, {wall['reason']}.")
             continue
         of_wall = [
+            *_bores(wall, compared, display),
             _change(wall, compared, display) if len(compared) == 2 else _changes(wall, compared, display),
+            *_alone(wall, compared, display),
             *_odd(wall, compared),
             *_growth(comparison, wall, display),
         ]
@@ -120,28 +134,75 @@ def _ends(low: float, high: float) -> str:
     return f"{_ratio(low)} to {_ratio(high)} %"
 
 
+def _measure(wall: Row) -> str:
+    """What is compared: f, or S at equal flow where the stated bores differ."""
+    at = thousands(wall["reynolds"], 3)
+    return f"S at equal flow (near Re {at})" if wall["bores"] == DIFFER else f"f at Re {at}"
+
+
+def _bores(wall: Row, rows: list[dict[str, Any]], display: Display) -> list[str]:
+    """Say that stated bores differ, by how much, and what that alone makes of f."""
+    if wall["bores"] != DIFFER:
+        return []
+    first = rows[0]
+    other = max(rows, key=lambda row: abs(row["log_factor_by_bore"]))
+    apart = other["diameter"] / first["diameter"] - 1.0
+    return [
+        f"the bore is stated differently: {display.text('diameter', first['diameter'], digits=5, unit=True)} in "
+        f"{first['survey']} and {display.text('diameter', other['diameter'], digits=5, unit=True)} in {other['survey']}, "
+        f"{100 * abs(apart):.2g} % {'larger' if apart > 0 else 'smaller'}, which alone makes f differ by "
+        f"{_ratio(other['log_factor_by_bore'])} % (f goes as D⁵). Compared is therefore S at equal flow, which no statement "
+        "of a bore touches."
+    ]
+
+
+def _alone(wall: Row, rows: list[dict[str, Any]], display: Display) -> list[str]:
+    """Say why the column of ε does not subtract to the change, where that shows."""
+    first, last = rows[0], rows[-1]
+    change = last["roughness_change"]
+    if change is None or not (first["roughness_resolved"] and last["roughness_resolved"]):
+        return []
+    alone = last["roughness"] - first["roughness"]
+    width = last["roughness_change_high"] - last["roughness_change_low"]
+    if abs(alone - change) <= _SHOWS * max(width, abs(change)):
+        return []
+    factor, unit = display.factor("roughness"), display.unit("roughness")
+    shown = f"{format_number(factor * abs(alone), 2)} {unit}"
+    why = (
+        "each in the bore that it states; the change is of all surveys fitted together in one bore"
+        if wall["bores"] == ONE
+        else "with all its errors; the change is of all surveys fitted together"
+    )
+    return [
+        f"the column of ε, where the two are {shown} apart, holds each survey fitted alone, {why}, so that what they share is "
+        "one error and the runs weigh otherwise: the column need not subtract to the change."
+    ]
+
+
 def _change(wall: Row, rows: list[dict[str, Any]], display: Display) -> str:
     first, second = rows
-    change, at = second["log_factor_change"], thousands(wall["reynolds"], 3)
+    change, what = second["log_factor_change"], _measure(wall)
     ends = _ends(second["log_factor_change_low"], second["log_factor_change_high"])
     between = f"between {first['survey']} and {second['survey']}"
     if wall["changed"]:
         verb = "rose" if change > 0 else "fell"
         text = (
-            f"the change is real. f at Re {at} {verb} by {format_change(math.expm1(change))} {between} "
+            f"the change is real. {what} {verb} by {format_change(math.expm1(change))} {between} "
             f"({ends}; {_chance(wall['unchanged_p'])})"
         )
     else:
         text = (
-            f"no change is told from chance. f at Re {at} differs by {_ratio(change)} % {between} ({ends}; "
+            f"no change is told from chance. {what} differs by {_ratio(change)} % {between} ({ends}; "
             f"{_chance(wall['unchanged_p'])}); a change by {format_change(math.expm1(wall['least_log_factor_change']))} "
             "would have been told"
         )
-    return text + _size(second, display) + "."
+    return text + _size(wall, second, display) + "."
 
 
-def _size(row: Row, display: Display) -> str:
+def _size(wall: Row, row: Row, display: Display) -> str:
     """The change of ε beside that of f."""
+    if wall["bores"] == DIFFER:
+        return ""
     if row["roughness_change"] is None:
         return (
             "; ε is not told from zero in both of them, so it is f itself that is compared, against the law"
@@ -157,9 +218,14 @@ def _size(row: Row, display: Display) -> str:
 
 
 def _changes(wall: Row, rows: list[dict[str, Any]], display: Display) -> str:
-    at = thousands(wall["reynolds"], 3)
-    factors = [row["friction_factor"] for row in rows]
-    spread = f"f at Re {at} from {format_number(min(factors), 3)} to {format_number(max(factors), 3)}"
+    what = "f"
+    if wall["bores"] == DIFFER:
+        what = "S at equal flow"
+        changes = [row["log_factor_change"] or 0.0 for row in rows]
+        spread = f"{_measure(wall)} from {_ratio(min(changes))} to {_ratio(max(changes))} % against {rows[0]['survey']}"
+    else:
+        factors = [row["friction_factor"] for row in rows]
+        spread = f"{_measure(wall)} from {format_number(min(factors), 3)} to {format_number(max(factors), 3)}"
     if not wall["changed"]:
         return (
             f"the {len(rows)} surveys found one friction as far as can be told ({spread}; "
@@ -175,7 +241,10 @@ def _changes(wall: Row, rows: list[dict[str, Any]], display: Display) -> str:
     to_last = ""
     if last["changed"]:
         ends = _ends(last["log_factor_change_low"], last["log_factor_change_high"])
-        to_last = f"; to {last['survey']} f changed by {_ratio(last['log_factor_change'])} % ({ends}){_size(last, display)}"
+        to_last = (
+            f"; to {last['survey']} {what} changed by {_ratio(last['log_factor_change'])} % ({ends})"
+            f"{_size(wall, last, display)}"
+        )
     return (
         f"the friction differs among the {len(rows)} surveys beyond chance ({spread}; {_chance(wall['unchanged_p'])}). "
         f"{against}{to_last}."
@@ -221,9 +290,11 @@ def _growth(comparison: Comparison, wall: Row, display: Display) -> list[str]:
             "roughness", *(end[f"roughness{part}"] for part in ("", "_low", "_high")), unit=True
         )
         between = display.interval("roughness", end["roughness_low"], end["roughness_high"])
+        factors = [end[f"friction_factor{part}"] for part in ("", "_low", "_high")]
         said.append(
             f"on {end['date']} the roughness is then expected at {value} ({between}), and f at Re "
-            f"{thousands(wall['reynolds'], 3)} at {format_number(end['friction_factor'], 3)}."
+            f"{thousands(wall['reynolds'], 3)} at {format_within(*factors)} ({format_interval(*factors[1:])}, from the roughness "
+            "alone)."
         )
     return said
 
@@ -288,16 +359,20 @@ def survey_table(comparison: Comparison, wall: str, display: Display = SI_DISPLA
     def marks(row: Row) -> str:
         return " ".join(["real"] * bool(row["changed"]) + ["odd"] * bool(row["odd"])) or MISSING
 
-    unit = display.unit("roughness")
+    unit, differ = display.unit("roughness"), about["bores"] == DIFFER
     columns = [
         name_column("survey"),
         TableColumn("date", lambda row: row["date"] or MISSING, always=False),
         TableColumn(f"roughness ε ({unit})", roughness),
         TableColumn(f"its {level} interval ({unit})", interval, always=False),
         TableColumn("f", lambda row: rounded(row["friction_factor"], row["friction_factor_u"])),
-        TableColumn("change of f (%)", change),
+        TableColumn("change of S (%)" if differ else "change of f (%)", change),
         TableColumn("mark", marks, always=False),
     ]
     at = thousands(about["reynolds"], 3) if known(about["reynolds"]) else MISSING
-    caption = f"ε by each survey, f at Re {at}, and its change against the first"
+    caption = (
+        "by each survey in the bore that it states; S at equal flow against the first"
+        if differ
+        else f"ε by each survey, f at Re {at}, and its change against the first"
+    )
     return lay_out(caption, rows, columns)

@@ -11,7 +11,7 @@ import pandas as pd
 from gradeline.quantities.printing import SI_DISPLAY, Display, format_number
 from gradeline.reduction.tables import DRAWING_TABLES, RESULT_TABLES, Reduction
 
-__all__ = ["converted", "converted_text"]
+__all__ = ["converted", "converted_sentences", "converted_text"]
 
 #: What a unit of the reduction's sentences measures.
 _QUANTITIES = {
@@ -91,6 +91,21 @@ def _odd_labels(reduction: Reduction) -> tuple[str, ...]:
             if column in _LABELS:
                 found.update(label for label in getattr(reduction, name)[column] if isinstance(label, str))
     return tuple(sorted((label for label in found if _QUANTITY.search(label)), key=len, reverse=True))
+
+
+def converted_sentences(sentences: Iterable[str], display: Display, labels: Iterable[object]) -> list[str]:
+    """Return sentences in the units of a reader, labels that read like a quantity as they are; as given for SI.
+
+    Examples
+    --------
+    >>> from gradeline.quantities.printing import US_DISPLAY
+    >>> converted_sentences(["0.046 mm of wall '50 mm steel'."], US_DISPLAY, ["50 mm steel"])
+    ["0.0018 in of wall '50 mm steel'."]
+    """
+    if display is SI_DISPLAY:
+        return list(sentences)
+    odd = sorted({str(one) for one in labels if _QUANTITY.search(str(one))}, key=len, reverse=True)
+    return [converted_text(sentence, display, odd) for sentence in sentences]
 
 
 def converted_text(text: str, display: Display, kept: Iterable[str] = ()) -> str:

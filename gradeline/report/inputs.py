@@ -6,6 +6,7 @@ import math
 from collections.abc import Callable, Sequence
 from typing import Any
 
+from gradeline.quantities import parse_unit
 from gradeline.quantities.printing import MISSING, SI_DISPLAY, Display, format_number
 from gradeline.reduction.tables import Reduction
 from gradeline.report.printed import (
@@ -32,6 +33,7 @@ __all__ = [
 ]
 
 NOT_STATED = "not stated"
+_DEGREES = {"degC": "°C", "degF": "°F"}
 #: Readings side by side in one table, so that it fits on paper.
 _WIDEST = 12
 #: What is stated of gauges and valves in words, set to the left.
@@ -39,13 +41,22 @@ _IN_WORDS = {"kind", "upstream", "downstream", "gauge fluid", "line fluid", "whe
 
 
 def _stated(display: Display, quantity: str, value: float | None, u: float | None) -> str:
-    """A value to six digits at most, or rounded to its ± where one was stated."""
+    """A value to six digits at most, or rounded to its ± where one was stated; in other units than SI to what it had."""
     if value is None or not math.isfinite(value):
         return NOT_STATED
     if known(u):
         return display.text(quantity, value, u)
-    shown = f"{display.value(quantity, value):.6g}"
-    return format_number(display.value(quantity, value), 6) if "e" in shown else shown.replace("-", "−")
+    digits = _digits(display, quantity, value)
+    shown = f"{display.value(quantity, value):.{digits}g}"
+    return format_number(display.value(quantity, value), digits) if "e" in shown else shown.replace("-", "−")
+
+
+def _digits(display: Display, quantity: str, value: float) -> int:
+    """How many digits of a stated value are shown: six, in other units than SI hardly more than it has in those."""
+    if display is SI_DISPLAY:
+        return 6
+    written = f"{abs(SI_DISPLAY.value(quantity, value)):.6g}".partition("e")[0].replace(".", "").strip("0")
+    return min(max(len(written) + 2, 3), 6)
 
 
 def _with_unit(display: Display, quantity: str, text: str) -> str:
@@ -108,7 +119,8 @@ def stated_tap_table(reduction: Reduction, display: Display = SI_DISPLAY) -> Pri
 
     def of(quantity: str, key: str) -> Callable[[Row], str]:
         values = [display.value(quantity, row[key]) for row in rows if known(row[key])]
-        places = max((_places(value) for value in values), default=0)
+        digits = max((_digits(display, quantity, row[key]) for row in rows if known(row[key])), default=6)
+        places = max((_places(value, digits) for value in values), default=0)
         return lambda row: (
             MISSING if not known(row[key]) else _fixed(display.value(quantity, row[key]), places)
         )
@@ -148,7 +160,9 @@ def _crossed(rows: Sequence[Row], display: Display, caption: str, first: str) ->
     heads = list(dict.fromkeys(str(row["what"]) for row in rows))
     lines: dict[str, dict[str, Any]] = {}
     for row in rows:
-        lines.setdefault(str(row["name"]), {"name": row["name"]})[str(row["what"])] = stated_words(display, row)
+        lines.setdefault(str(row["name"]), {"name": row["name"]})[str(row["what"])] = stated_words(
+            display, row
+        )
 
     def column(what: str) -> TableColumn:
         return TableColumn(what, lambda line: str(line.get(what, MISSING)), text=what in _IN_WORDS)
@@ -201,7 +215,9 @@ def statements(reduction: Reduction, display: Display = SI_DISPLAY) -> tuple[tup
         rows = _group(reduction, group)
         if rows:
             parts = [
-                stated_words(display, row) if row["what"] == "name" else f"{row['what']} {stated_words(display, row)}"
+                stated_words(display, row)
+                if row["what"] == "name"
+                else f"{row['what']} {stated_words(display, row)}"
                 for row in rows
             ]
             found.append((head, ", ".join(parts)))
@@ -239,14 +255,8 @@ def raw_reading_tables(
             rows,
             [
                 name_column("run"),
-                TableColumn(
-                    display.head("flow", "flow"), lambda row: _stated_or_dash(display, "flow", row["flow"])
-                ),
-                TableColumn(
-                    display.head("t", "temperature"),
-                    lambda row: _stated_or_dash(display, "temperature", row["temperature"]),
-                    always=False,
-                ),
+                _as_written(reduction, display, "flow", "flow"),
+                _as_written(reduction, display, "temperature", "t"),
                 *(column(label) for label in labels[at : at + _WIDEST]),
             ],
             note=None,
@@ -255,13 +265,35 @@ def raw_reading_tables(
     )
 
 
+def _as_written(reduction: Reduction, display: Display, name: str, words: str) -> TableColumn:
+    """The column of flow or temperature in the unit that it was read in; in those of the reader where it was worked out."""
+    text = (reduction.survey.get("units") or {}).get(name)
+    if text is None:
+        return TableColumn(
+            display.head(words, name),
+            lambda row: _stated_or_dash(display, name, row[name]),
+            always=name == "flow",
+        )
+    unit = parse_unit(text, name)
+    label = _DEGREES.get(unit.text, unit.label)
+    values = [unit.from_si(value) for value in reduction.runs[name].drop_duplicates() if known(value)]
+    places = max((_places(value) for value in values), default=0)
+
+    def cell(row: Row) -> str:
+        if not known(row[name]):
+            return MISSING
+        return _fixed(unit.from_si(row[name]), places)
+
+    return TableColumn(f"{words} ({label})", cell, always=name == "flow")
+
+
 def _stated_or_dash(display: Display, quantity: str, value: float | None) -> str:
     return MISSING if not known(value) else _stated(display, quantity, value, None)
 
 
-def _places(value: float) -> int:
-    """How many decimals a value needs for six digits, none after the last that is not zero."""
-    return len(f"{value:.6g}".partition(".")[2]) if _plain(value) else 0
+def _places(value: float, digits: int = 6) -> int:
+    """How many decimals a value needs for some digits, none after the last that is not zero."""
+    return len(f"{value:.{digits}g}".partition(".")[2]) if _plain(value) else 0
 
 
 def _plain(value: float) -> bool:

@@ -22,6 +22,7 @@ from gradeline.report.printed import (
     known,
     lay_out,
     name_column,
+    percent,
     records,
     truth,
 )
@@ -286,10 +287,23 @@ def transition_table(reduction: Reduction, display: Display = SI_DISPLAY) -> Pri
     )
 
 
+def _needed(reduction: Reduction) -> str:
+    """Say where what tells two laws apart comes from."""
+    needed = sorted({round(row["needed"], 6) for row in records(reduction.laws) if known(row["needed"])})
+    if not needed:
+        return ""
+    told = " and ".join(format_number(one, 3) for one in needed)
+    return (
+        f" What tells two of them apart, χ² larger by {told}, is t² at {percent(reduction.level)} with the degrees of freedom "
+        "of the pooled scatter: 3.84 at 95 % where that is known, more where few readings tell it."
+    )
+
+
 def law_table(reduction: Reduction, display: Display = SI_DISPLAY) -> PrintedTable:
     """Return the laws with the roughness that suits each best and its misfit."""
     return lay_out(
-        "Laws of turbulent friction, each at the roughness that suits it best, all on the same slopes with one covariance.",
+        f"Laws of turbulent friction, each at the roughness that suits it best, all on the same slopes with one covariance."
+        f"{_needed(reduction)}",
         [row for row in records(reduction.laws) if row["law"] is not None],
         [
             name_column("wall"),
@@ -362,8 +376,9 @@ def conveyance_table(reduction: Reduction, *, limit: int | None = None) -> Print
         if known(row["hazen_williams_c"])
     ]
     return lay_out(
-        "Hazen–Williams C (m^0.37/s; 0.8492) and Manning n (s/m^(1/3)) of each turbulent run. Both change with the flow where the "
-        "formula is used beyond its range.",
+        "Hazen–Williams C (V = 0.8492 C R^0.63 S^0.54 in m and s, 1.318 in ft and s) and Manning n (V = R^(2/3) S^(1/2)/n in m "
+        "and s, 1.486/n in ft and s) of each turbulent run: the same numbers in either units. Both change with the flow where "
+        "the formula is used beyond its range.",
         rows,
         [
             name_column("run"),

@@ -44,6 +44,7 @@ from gradeline.report.laws import (
     transition_table,
     zero_drift_table,
 )
+from gradeline.report.logger import record_flag_table, record_sentences, window_table
 from gradeline.report.losses import loss_table
 from gradeline.report.printed import PrintedTable, percent
 from gradeline.report.sentences import Summary, summarise
@@ -106,6 +107,7 @@ def outline(reduction: Reduction, version: str, display: Display = SI_DISPLAY) -
     date = str(survey.get("date") or "")
     sections = (
         _summary(summary),
+        *_record(reduction),
         _grade_lines(reduction),
         _residuals(reduction),
         _taps_and_line(reduction, display),
@@ -168,6 +170,22 @@ def _summary(summary: Summary) -> Section:
         "",
         (SideBySide((found, tuple(right)), "columns"), Paragraph(summary.close, "close")),
     )
+
+
+def _record(reduction: Reduction) -> tuple[Section, ...]:
+    sentences = record_sentences(reduction)
+    if not sentences:
+        return ()
+    windows = window_table(reduction, limit=_MOST_ROWS)
+    faults = record_flag_table(reduction, limit=_MOST_ROWS)
+    blocks = (
+        *(Paragraph(sentence) for sentence in sentences),
+        Drawings(("record",), "alone"),
+        Heading("Windows"),
+        Tabled(windows, "Windows", max(len(reduction.windows) - _MOST_ROWS, 0)),
+        *_where_any(faults, "What is wrong with the record", "What is wrong with the record"),
+    )
+    return (Section("record", "The logger's record", "Record", blocks),)
 
 
 def _grade_lines(reduction: Reduction) -> Section:

@@ -3,8 +3,6 @@
 from __future__ import annotations
 
 import re
-import shutil
-import tempfile
 from collections.abc import Collection
 from importlib.metadata import PackageNotFoundError
 from importlib.metadata import version as installed_version
@@ -13,27 +11,30 @@ from typing import Literal
 
 from gradeline.errors import OutputError
 from gradeline.quantities.printing import SI_DISPLAY, Display
-from gradeline.reduction.tables import RESULT_TABLES, Reduction
+from gradeline.reduction.tables import RECORD_TABLES, RESULT_TABLES, Reduction
+from gradeline.report.folder import Contents, write_folder
 from gradeline.report.formats import DEFAULT_FORMATS, FORMATS, PAPERS
-from gradeline.report.record import as_csv, as_json, carried_json
+from gradeline.report.record import as_csv, as_json, carried_json, result_rows, tables_of
 
 __all__ = ["program_version", "write"]
 
 _FIGURE = re.compile(
-    r"(grade_lines_\d{2,}(_[A-Za-z0-9_-]{1,40})?|grade_lines_sheet_\d+|residuals|slope_velocity|friction_factor|tap_error_\d+|unlisted_\d+|uncertainty_budget|likelihood_\d+|loss_coefficient_\d+)\.(svg|png)"
+    r"(record|grade_lines_\d{2,}(_[A-Za-z0-9_-]{1,40})?|grade_lines_sheet_\d+|residuals|slope_velocity|friction_factor|tap_error_\d+|unlisted_\d+|uncertainty_budget|likelihood_\d+|loss_coefficient_\d+)\.(svg|png)"
 )
-_FILES = frozenset(
-    {
-        "report.html",
-        "reduction.json",
-        "carried.json",
-        "report.pdf",
-        "reduction.xlsx",
-        *(f"{table}.csv" for table in RESULT_TABLES),
-    }
+_REPORT = Contents(
+    "report",
+    frozenset(
+        {
+            "report.html",
+            "reduction.json",
+            "carried.json",
+            "report.pdf",
+            "reduction.xlsx",
+            *(f"{table}.csv" for table in (*RESULT_TABLES, *RECORD_TABLES)),
+        }
+    ),
+    _FIGURE,
 )
-#: Left behind by file managers; nobody's work.
-_LITTER = frozenset({".DS_Store", "Thumbs.db", "desktop.ini"})
 
 
 def program_version() -> str:
@@ -86,104 +87,12 @@ def write(
         raise OutputError(f"{named}; choose from {', '.join(FORMATS)}")
     if paper not in PAPERS:
         raise OutputError(f"unknown paper {paper!r}; choose from {', '.join(PAPERS)}")
-    folder = Path(folder)
-    try:
-        target = folder.resolve()
-        _check(target, folder, overwrite=overwrite)
-        made = _make_parents(target.parent)
-    except OutputError:
-        raise
-    except OSError as error:
-        raise _refused(folder, error) from error
-    work: Path | None = None
-    done = False
-    try:
-        work = Path(tempfile.mkdtemp(prefix=f".{target.name}-", dir=target.parent))
-        fresh = work / "new"
-        fresh.mkdir()
-        _fill(reduction, fresh, frozenset(formats), display, paper)
-        _check(target, folder, overwrite=overwrite)  # again: drawing took its time
-        _swap(fresh, target, work / "old")
-        done = True
-    except OutputError:
-        raise
-    except OSError as error:
-        raise _refused(folder, error) from error
-    finally:
-        if work is not None:
-            shutil.rmtree(work, ignore_errors=True)
-        if not done:
-            for parent in made:
-                _remove_if_empty(parent)
-
-
-def _refused(folder: Path, error: OSError) -> OutputError:
-    why = error.strerror or str(error)
-    return OutputError(f"{folder}: the report could not be written ({why}); choose another folder with --out")
-
-
-def _check(target: Path, shown: Path, *, overwrite: bool) -> None:
-    """Refuse a target that holds something we may not replace."""
-    if not target.exists():
-        return
-    if not target.is_dir():
-        raise OutputError(f"{shown} is a file, not a folder; choose another folder with --out")
-    entries = sorted(target.iterdir())
-    if not entries:
-        return
-    if not overwrite:
-        raise OutputError(
-            f"{shown} is not empty (it holds {entries[0].name}); choose another folder with --out, or replace an "
-            "earlier report with --overwrite"
-        )
-    foreign = _foreign(target)
-    if foreign is not None:
-        raise OutputError(
-            f"{shown} holds {foreign}, which is no part of a report, so nothing was replaced; move it away or choose "
-            "another folder with --out"
-        )
-
-
-def _foreign(target: Path) -> str | None:
-    """Name a file under `target` that this program does not write; None where there is none."""
-    for entry in sorted(target.iterdir()):
-        if entry.name == "figures" and entry.is_dir() and not entry.is_symlink():
-            for figure in sorted(entry.iterdir()):
-                ours = _FIGURE.fullmatch(figure.name) or figure.name in _LITTER
-                if not ours or figure.is_symlink() or not figure.is_file():
-                    return f"figures/{figure.name}"
-        elif entry.name not in _FILES | _LITTER or entry.is_symlink() or not entry.is_file():
-            return entry.name
-    return None
-
-
-def _make_parents(parent: Path) -> list[Path]:
-    """Make the folders above the target; return those that were made, the deepest first."""
-    made = []
-    at = parent
-    while not at.exists():
-        made.append(at)
-        at = at.parent
-    parent.mkdir(parents=True, exist_ok=True)
-    return made
-
-
-def _remove_if_empty(folder: Path) -> None:
-    if folder.is_dir() and not any(folder.iterdir()):
-        folder.rmdir()
-
-
-def _swap(fresh: Path, target: Path, old: Path) -> None:
-    """Move the new folder into place; the old one comes back where that fails."""
-    had = target.exists()
-    if had:
-        target.rename(old)
-    try:
-        fresh.rename(target)
-    except OSError:
-        if had:
-            old.rename(target)
-        raise
+    write_folder(
+        folder,
+        _REPORT,
+        lambda fresh: _fill(reduction, fresh, frozenset(formats), display, paper),
+        overwrite=overwrite,
+    )
 
 
 def _fill(
@@ -195,12 +104,13 @@ def _fill(
 ) -> None:
     """Make every file of a report in an empty folder."""
     version = program_version()
+    rows = result_rows(reduction) if formats & {"json", "csv"} else None
     if "json" in formats:
-        (folder / "reduction.json").write_bytes(as_json(reduction, version))
+        (folder / "reduction.json").write_bytes(as_json(reduction, version, rows=rows))
         (folder / "carried.json").write_bytes(carried_json(reduction))
     if "csv" in formats:
-        for table in RESULT_TABLES:
-            (folder / f"{table}.csv").write_bytes(as_csv(reduction, table))
+        for table in tables_of(reduction):
+            (folder / f"{table}.csv").write_bytes(as_csv(reduction, table, rows=rows))
     if "xlsx" in formats:
         from gradeline.report.xlsx import as_xlsx  # noqa: PLC0415 (loaded when asked for: start-up time)
 

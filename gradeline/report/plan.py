@@ -7,6 +7,7 @@ from collections.abc import Iterator
 
 from gradeline.planning.tables import Plan
 from gradeline.quantities.printing import MISSING, SI_DISPLAY, Display, format_number, thousands
+from gradeline.report.converted import converted_sentences
 from gradeline.report.printed import (
     PrintedTable,
     Row,
@@ -18,7 +19,7 @@ from gradeline.report.printed import (
     records,
     truth,
 )
-from gradeline.report.terminal import WIDTH, _bullets, _table, _wrapped
+from gradeline.report.text import WIDTH, bullets, listed, paragraph, text_table
 
 __all__ = ["plan_summary"]
 
@@ -44,17 +45,17 @@ def plan_summary(plan: Plan, display: Display = SI_DISPLAY) -> str:
     str
         Plain text, no line longer than 100 columns, no line end after the last line.
     """
-    blocks = ["\n".join(_wrapped(f"Plan: {plan.title}"))]
-    blocks.append("\n".join(["To expect", *_bullets(_expected(plan, display))]))
+    blocks = [paragraph(f"Plan: {plan.title}")]
+    blocks.append(listed("To expect", _expected(plan, display)))
     if plan.cautions:
-        blocks.append("\n".join(["To look at", *_bullets(plan.cautions)]))
+        blocks.append(listed("To look at", converted_sentences(plan.cautions, display, _labels(plan))))
     blocks.append(_changes(plan, display))
     blocks += [*_layout(plan, display), *_flows(plan, display), *_comparison(plan, display)]
     blocks.append(_runs(plan, display))
     if plan.columns["above_crown"].notna().any():  # else no gauge tells the level
         blocks.append(_levels(plan, display))
     blocks += _columns(plan, display)
-    blocks.append("\n".join(["Taken for granted", *_bullets(plan.assumptions)]))
+    blocks.append(listed("Taken for granted", converted_sentences(plan.assumptions, display, _labels(plan))))
     return "\n\n".join(blocks)
 
 
@@ -142,7 +143,7 @@ def _changes(plan: Plan, display: Display) -> str:
     ]
     table = lay_out("", kept, columns, note=None)
     more = (len(rows) - len(kept)) // max(walls, 1)
-    return _table("What buys most (S and f of the fastest run)", table, set(), "plan.json", more)
+    return text_table("What buys most (S and f of the fastest run)", table, set(), "plan.json", more)
 
 
 def _percentage(ratio: float | None) -> str:
@@ -153,10 +154,21 @@ def _hundred(share: float | None) -> str:
     return MISSING if not known(share) or share is None else format_number(100 * share, 2)
 
 
+def _labels(plan: Plan) -> list[object]:
+    """Names of the survey, which stay as they are in any units."""
+    return [
+        *plan.walls["wall"],
+        *plan.layout["tap"],
+        *plan.fittings["fitting"],
+        *plan.runs["reach"],
+        *plan.runs["run"],
+    ]
+
+
 def _layout(plan: Plan, display: Display) -> Iterator[str]:
     rows = records(plan.layout)
     if plan.layout_reason is not None:
-        yield "\n".join(["Taps", *_bullets([f"{plan.layout_reason[:1].upper()}{plan.layout_reason[1:]}."])])
+        yield listed("Taps", [f"{plan.layout_reason[:1].upper()}{plan.layout_reason[1:]}."])
         return
     table = lay_out(
         "",
@@ -172,6 +184,14 @@ def _layout(plan: Plan, display: Display) -> Iterator[str]:
                 lambda row: _length(row["recommended_chainage"], display),
             ),
             TableColumn("disturbed now", lambda row: truth(row["disturbed"])),
+            *(
+                TableColumn(
+                    f"{words} after a fitting (bores)",
+                    lambda row, key=key: format_number(row[key], 2),  # type: ignore[misc]
+                    always=False,
+                )
+                for words, key in (("now", "bores_downstream"), ("then", "recommended_bores_downstream"))
+            ),
         ],
         note=None,
     )
@@ -181,7 +201,7 @@ def _layout(plan: Plan, display: Display) -> Iterator[str]:
         )
     else:
         title = "Taps"
-    yield _table(title, table, set())
+    yield text_table(title, table, set())
 
 
 def _length(value: float | None, display: Display) -> str:
@@ -192,7 +212,7 @@ def _length(value: float | None, display: Display) -> str:
 
 def _flows(plan: Plan, display: Display) -> Iterator[str]:
     if plan.flows_reason is not None:
-        yield "\n".join(["Flows", *_bullets([f"{plan.flows_reason[:1].upper()}{plan.flows_reason[1:]}."])])
+        yield listed("Flows", [f"{plan.flows_reason[:1].upper()}{plan.flows_reason[1:]}."])
         return
     table = lay_out(
         "",
@@ -209,7 +229,7 @@ def _flows(plan: Plan, display: Display) -> Iterator[str]:
         ],
         note=None,
     )
-    yield _table(f"Flows that tell the wall best ({plan.flows_spread})", table, set())
+    yield text_table(f"Flows that tell the wall best ({plan.flows_spread})", table, set())
 
 
 _QUANTITIES = {
@@ -247,7 +267,7 @@ def _comparison(plan: Plan, display: Display) -> Iterator[str]:
         ],
         note=None,
     )
-    yield _table("Before and after all that is recommended", table, set())
+    yield text_table("Before and after all that is recommended", table, set())
 
 
 def _runs(plan: Plan, display: Display) -> str:
@@ -272,7 +292,7 @@ def _runs(plan: Plan, display: Display) -> str:
         ),
     ]
     table = lay_out("", rows[:_MOST_RUNS], columns, note=None)
-    return _table("Runs as expected", table, set(), "plan.json", len(rows) - _MOST_RUNS)
+    return text_table("Runs as expected", table, set(), "plan.json", len(rows) - _MOST_RUNS)
 
 
 def _levels(plan: Plan, display: Display) -> str:
@@ -298,7 +318,7 @@ def _levels(plan: Plan, display: Display) -> str:
     )
     last = plan.layout["tap"].iloc[-1]
     title = f"Piezometric head at {last}: planned, and between which all columns can be read"
-    return _table(title, table, set(), "plan.json", len(plan.levels) - _MOST_RUNS)
+    return text_table(title, table, set(), "plan.json", len(plan.levels) - _MOST_RUNS)
 
 
 def _columns(plan: Plan, display: Display) -> Iterator[str]:
@@ -322,7 +342,7 @@ def _columns(plan: Plan, display: Display) -> Iterator[str]:
             for mine in runs
         ]
         title = "Readings as expected" if not start else "Readings as expected, further ones"
-        yield _table(
+        yield text_table(
             title,
             PrintedTable("", tuple(heads), tuple(cells), frozenset({0})),
             set(),
@@ -340,7 +360,7 @@ def _columns(plan: Plan, display: Display) -> Iterator[str]:
         if mark in marks
     ]
     if said:
-        yield "\n".join(_bullets(said))
+        yield "\n".join(bullets(said))
 
 
 def _reading_head(row: Row, display: Display) -> str:

@@ -1,33 +1,30 @@
-"""Writing a plan: its text, its record, its tables and figures, all of them or none."""
+"""A plan as record and as a folder of files."""
 
 from __future__ import annotations
 
-import csv
-import io
-import json
-import math
-import shutil
-import tempfile
 from pathlib import Path
 from typing import Any
 
-from gradeline.errors import OutputError
 from gradeline.planning.tables import PLAN_TABLES, Plan
 from gradeline.quantities.printing import SI_DISPLAY, Display
-from gradeline.report.output import _make_parents, _refused, _remove_if_empty, _swap, program_version
+from gradeline.report.folder import Contents, write_folder
+from gradeline.report.output import program_version
 from gradeline.report.plan import plan_summary
-from gradeline.report.printed import records
+from gradeline.report.record import csv_of, json_of, jsonable, rows_of
 
 __all__ = ["plan_record", "write_plan"]
 
 _FIGURES = ("expected_grade_lines", "expected_deflections")
-_FILES = frozenset(
-    {
-        "plan.txt",
-        "plan.json",
-        *(f"{name}.csv" for name in PLAN_TABLES),
-        *(f"{name}.{kind}" for name in _FIGURES for kind in ("svg", "png")),
-    }
+_PLAN = Contents(
+    "plan",
+    frozenset(
+        {
+            "plan.txt",
+            "plan.json",
+            *(f"{name}.csv" for name in PLAN_TABLES),
+            *(f"{name}.{kind}" for name in _FIGURES for kind in ("svg", "png")),
+        }
+    ),
 )
 
 
@@ -39,18 +36,9 @@ def plan_record(plan: Plan) -> dict[str, Any]:
     plan : Plan
         What was planned.
     """
-    words = {name: _value(value) for name, value in plan.words.items()}
-    tables = {
-        name: [{key: _value(value) for key, value in row.items()} for row in records(table)]
-        for name, table in plan.tables.items()
-    }
+    words = {name: jsonable(value) for name, value in plan.words.items()}
+    tables = {name: rows_of(columns, plan.tables[name]) for name, columns in PLAN_TABLES.items()}
     return {"gradeline": program_version(), **words, **tables}
-
-
-def _value(value: Any) -> Any:
-    if isinstance(value, float):
-        return value if math.isfinite(value) else None
-    return list(value) if isinstance(value, tuple) else value
 
 
 def write_plan(plan: Plan, folder: Path, *, overwrite: bool = False, display: Display = SI_DISPLAY) -> None:
@@ -72,83 +60,16 @@ def write_plan(plan: Plan, folder: Path, *, overwrite: bool = False, display: Di
     OutputError
         Where the folder holds something else, or the disk refuses.
     """
-    target = folder.resolve()
-    work: Path | None = None
-    made: list[Path] = []
-    done = False
-    try:
-        _check(target, folder, overwrite=overwrite)
-        made = _make_parents(target.parent)
-        work = Path(tempfile.mkdtemp(prefix=f".{target.name}-", dir=target.parent))
-        fresh = work / "new"
-        fresh.mkdir()
-        _fill(plan, fresh, display)
-        _swap(fresh, target, work / "old")
-        done = True
-    except OutputError:
-        raise
-    except OSError as error:
-        raise _refused(folder, error) from error
-    finally:
-        if work is not None:
-            shutil.rmtree(work, ignore_errors=True)
-        if not done:
-            for parent in made:
-                _remove_if_empty(parent)
-
-
-def _check(target: Path, shown: Path, *, overwrite: bool) -> None:
-    if not target.exists():
-        return
-    if not target.is_dir():
-        raise OutputError(f"{shown} is a file, not a folder; choose another folder with --out")
-    entries = sorted(entry.name for entry in target.iterdir())
-    if not entries:
-        return
-    if not overwrite:
-        raise OutputError(
-            f"{shown} is not empty (it holds {entries[0]}); choose another folder with --out, or replace an earlier plan "
-            "with --overwrite"
-        )
-    foreign = [name for name in entries if name not in _FILES]
-    if foreign:
-        raise OutputError(
-            f"{shown} holds {foreign[0]}, which is no part of a plan, so nothing was replaced; move it away or choose another "
-            "folder with --out"
-        )
+    write_folder(folder, _PLAN, lambda fresh: _fill(plan, fresh, display), overwrite=overwrite)
 
 
 def _fill(plan: Plan, folder: Path, display: Display) -> None:
-    from gradeline.report.figures.plan import plan_figures  # noqa: PLC0415 (loaded when asked for: start-up time)
-    from gradeline.report.figures.style import styled  # noqa: PLC0415 (loaded when asked for: start-up time)
+    from gradeline.report.figures.plan import plan_pictures  # noqa: PLC0415 (loaded when asked for: start-up time)
 
-    (folder / "plan.txt").write_text(plan_summary(plan, display) + "\n", encoding="utf-8")
-    text = json.dumps(plan_record(plan), ensure_ascii=False, allow_nan=False, indent=1)
-    (folder / "plan.json").write_text(text + "\n", encoding="utf-8")
-    for name, table in plan.tables.items():
-        (folder / f"{name}.csv").write_text(_csv(name, records(table)), encoding="utf-8")
-    with styled():
-        for name, figure in plan_figures(plan, display=display).items():
-            figure.savefig(folder / f"{name}.svg", metadata={"Date": None})
-            figure.savefig(folder / f"{name}.png", dpi=150)
-
-
-def _csv(name: str, rows: list[dict[str, Any]]) -> str:
-    out = io.StringIO()
-    writer = csv.writer(out, lineterminator="\n")
-    writer.writerow(PLAN_TABLES[name])
-    for row in rows:
-        writer.writerow([_cell(row[key]) for key in PLAN_TABLES[name]])
-    return out.getvalue()
-
-
-def _cell(value: Any) -> str:
-    if value is None:
-        return ""
-    if isinstance(value, bool):
-        return "true" if value else "false"
-    if isinstance(value, float):
-        return repr(value)
-    text = str(value).replace("\r", "\n")
-    # A spreadsheet takes such a text for a formula.
-    return f"'{text}" if text[:1] in ("=", "+", "-", "@", "\t", "\n") else text
+    (folder / "plan.txt").write_text(plan_summary(plan, display) + "\n", "utf-8", "backslashreplace")
+    (folder / "plan.json").write_bytes(json_of(plan_record(plan)))
+    for name, columns in PLAN_TABLES.items():
+        (folder / f"{name}.csv").write_bytes(csv_of(columns, rows_of(columns, plan.tables[name])))
+    for name, (svg, png) in plan_pictures(plan, display=display).items():
+        (folder / f"{name}.svg").write_bytes(svg)
+        (folder / f"{name}.png").write_bytes(png)

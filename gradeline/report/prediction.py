@@ -2,20 +2,15 @@
 
 from __future__ import annotations
 
-import csv
-import io
-import json
-import shutil
-import tempfile
-from collections.abc import Callable, Collection, Mapping
+from collections.abc import Callable, Collection, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
-from gradeline.errors import OutputError
 from gradeline.prediction.tables import PREDICTION_TABLES, Prediction
 from gradeline.quantities.printing import (
     MISSING,
     SI_DISPLAY,
+    US_DISPLAY,
     Display,
     format_interval,
     format_number,
@@ -23,7 +18,7 @@ from gradeline.quantities.printing import (
     thousands,
 )
 from gradeline.report.converted import converted_text
-from gradeline.report.output import _make_parents, _refused, _remove_if_empty, _swap
+from gradeline.report.folder import Contents, write_folder
 from gradeline.report.printed import (
     PrintedTable,
     Row,
@@ -34,8 +29,8 @@ from gradeline.report.printed import (
     percent,
     records,
 )
-from gradeline.report.record import _cell, _value
-from gradeline.report.terminal import _bullets, _table, _wrapped
+from gradeline.report.record import csv_of, json_of, rows_of
+from gradeline.report.text import listed, paragraph, text_table
 
 __all__ = ["PREDICTION_FORMATS", "prediction_record", "prediction_text", "write_prediction"]
 
@@ -43,6 +38,8 @@ __all__ = ["PREDICTION_FORMATS", "prediction_record", "prediction_text", "write_
 PREDICTION_FORMATS = ("json", "csv", "svg", "png")
 _MOST_ROWS = 40
 _KILO, _KWH = 1e3, 3.6e6
+# 550 foot pounds-force a second (NIST SP 811, appendix B.8)
+_HORSEPOWER = 550 * 0.3048 * 0.45359237 * 9.80665
 
 
 def prediction_text(prediction: Prediction, display: Display = SI_DISPLAY) -> str:
@@ -60,10 +57,10 @@ def prediction_text(prediction: Prediction, display: Display = SI_DISPLAY) -> st
     str
         Plain text, no line longer than 100 columns.
     """
-    blocks = ["\n".join(_wrapped(f"Prediction: {prediction.title}"))]
+    blocks = [paragraph(f"Prediction: {prediction.title}")]
     found = _capacity(prediction, display)
     if found:
-        blocks.append("\n".join(["Found", *_bullets(found)]))
+        blocks.append(listed("Found", found))
     many = len(prediction.flows) > 1
     for title, name, table in (
         ("Head loss of the line", "flows", _flow_table(prediction, display)),
@@ -74,10 +71,10 @@ def prediction_text(prediction: Prediction, display: Display = SI_DISPLAY) -> st
     ):
         rows = len(getattr(prediction, name))
         if rows and table is not None:
-            blocks.append(_table(title, table, set(), f"{name}.csv (with --out)", rows - _MOST_ROWS))
+            blocks.append(text_table(title, table, set(), f"{name}.csv (with --out)", rows - _MOST_ROWS))
     if prediction.cautions:
-        blocks.append("\n".join(["Cautions", *_bullets(_told(prediction.cautions, prediction, display))]))
-    blocks.append("\n".join(["Assumptions", *_bullets(_told(prediction.assumptions, prediction, display))]))
+        blocks.append(listed("Cautions", _told(prediction.cautions, prediction, display)))
+    blocks.append(listed("Assumptions", _told(prediction.assumptions, prediction, display)))
     return "\n\n".join(blocks)
 
 
@@ -100,7 +97,8 @@ def _capacity(prediction: Prediction, display: Display) -> list[str]:
         between = (
             f" ({percent(prediction.level)}: {span})" if known(row["flow_low"]) else f" ({row['reason']})"
         )
-        said.append(f"Under {head} the line carries {flow}{between}.")
+        note = f"; {row['reason']}" if known(row["flow_low"]) and row["reason"] else ""
+        said.append(f"Under {head} the line carries {flow}{between}{note}.")
     return said
 
 
@@ -122,8 +120,20 @@ def _within(
     ]
 
 
-def _scaled(name: str, words: str, unit: str, size: float) -> list[TableColumn]:
-    """The same for powers and energies, which have one unit for all readers."""
+def _power(
+    rows: Sequence[Row], display: Display, name: str, words: str, *, always: bool
+) -> list[TableColumn]:
+    """Powers in watts where all are small, else in kilowatts, with horsepower beside for readers of US units."""
+    largest = max((abs(row[name]) for row in rows if known(row[name])), default=0.0)
+    unit, size = ("W", 1.0) if largest < _KILO else ("kW", _KILO)
+    columns = _scaled(name, words, unit, size, always=always)
+    if display is US_DISPLAY:
+        columns += _scaled(name, words, "hp", _HORSEPOWER)
+    return columns
+
+
+def _scaled(name: str, words: str, unit: str, size: float, *, always: bool = False) -> list[TableColumn]:
+    """A value and its interval in a unit that no quantity of the display has."""
 
     def numbers(row: Row) -> list[float | None]:
         return [
@@ -131,7 +141,7 @@ def _scaled(name: str, words: str, unit: str, size: float) -> list[TableColumn]:
         ]
 
     return [
-        TableColumn(f"{words} ({unit})", lambda row: format_within(*numbers(row)), always=False),
+        TableColumn(f"{words} ({unit})", lambda row: format_within(*numbers(row)), always=always),
         TableColumn(f"interval ({unit})", lambda row: format_interval(*numbers(row)[1:]), always=False),
     ]
 
@@ -154,7 +164,7 @@ def _flow_table(prediction: Prediction, display: Display) -> PrintedTable:
             _flow_column(display),
             *_within(display, "head", "head_loss", "head loss"),
             *(_within(display, "head", "pump_head", "pump head") if lifted else []),
-            *_scaled("pump_power", "pump power", "kW", _KILO),
+            *_power(rows, display, "pump_power", "pump power", always=True),
         ],
     )
 
@@ -196,9 +206,10 @@ def _fitting_table(prediction: Prediction, display: Display) -> PrintedTable:
 
 
 def _new_table(prediction: Prediction, display: Display) -> PrintedTable:
+    rows = _shown(prediction, "new_pipe")
     return lay_out(
         "",
-        _shown(prediction, "new_pipe"),
+        rows,
         [
             _flow_column(display),
             TableColumn(
@@ -206,7 +217,7 @@ def _new_table(prediction: Prediction, display: Display) -> PrintedTable:
                 lambda row: display.text("head", row["head_loss_new"], digits=3),
             ),
             *_within(display, "head", "extra_head", "extra head"),
-            _scaled("extra_power", "extra power", "kW", _KILO)[0],
+            *_power(rows, display, "extra_power", "extra power", always=False),
             *_scaled("extra_energy", "extra energy a year", "kWh", _KWH),
         ],
     )
@@ -223,9 +234,12 @@ def _line_table(prediction: Prediction, display: Display) -> PrintedTable:
 
         return cell
 
-    def interval(row: Row) -> str:
-        low, high = row["piezometric_head_low"], row["piezometric_head_high"]
-        return MISSING if low == high else display.interval("head", low, high)
+    def interval(name: str) -> Callable[[Row], str]:
+        def cell(row: Row) -> str:
+            low, high = row[f"{name}_low"], row[f"{name}_high"]
+            return MISSING if low == high else display.interval("head", low, high)
+
+        return cell
 
     return lay_out(
         "",
@@ -237,8 +251,9 @@ def _line_table(prediction: Prediction, display: Display) -> PrintedTable:
                 display.head("axis", "elevation"), lambda row: display.text("elevation", row["elevation"])
             ),
             TableColumn(display.head("EGL", "head"), level("energy_head")),
+            TableColumn(display.head("interval", "head"), interval("energy_head"), always=False),
             TableColumn(display.head("HGL", "head"), level("piezometric_head")),
-            TableColumn(display.head("interval", "head"), interval, always=False),
+            TableColumn(display.head("interval", "head"), interval("piezometric_head"), always=False),
         ],
         note=None,
     )
@@ -266,26 +281,17 @@ def prediction_record(prediction: Prediction, version: str) -> dict[str, Any]:
         "temperature": prediction.temperature,
         "assumptions": list(prediction.assumptions),
         "cautions": list(prediction.cautions),
-        **{name: _rows(prediction, name) for name in PREDICTION_TABLES},
+        **{name: rows_of(columns, getattr(prediction, name)) for name, columns in PREDICTION_TABLES.items()},
     }
 
 
-def _rows(prediction: Prediction, name: str) -> list[dict[str, Any]]:
-    columns = PREDICTION_TABLES[name]
-    return [
-        {key: _value(row[key], column, count=False) for key, column in columns.items()}
-        for row in records(getattr(prediction, name))
-    ]
-
-
-def _as_csv(prediction: Prediction, name: str) -> bytes:
-    out = io.StringIO()
-    writer = csv.writer(out, lineterminator="\n")
-    columns = PREDICTION_TABLES[name]
-    writer.writerow(columns)
-    for row in _rows(prediction, name):
-        writer.writerow([_cell(row[key], column) for key, column in columns.items()])
-    return out.getvalue().encode("utf-8", errors="backslashreplace")
+_PREDICTION = Contents(
+    "prediction",
+    frozenset(
+        {"prediction.json", *(f"{table}.csv" for table in PREDICTION_TABLES)}
+        | {f"{name}.{kind}" for name in ("grade_lines", "head_loss") for kind in ("svg", "png")}
+    ),
+)
 
 
 def write_prediction(
@@ -319,54 +325,12 @@ def write_prediction(
     OutputError
         Where the folder holds something else, or the disk refuses.
     """
-    files = _files(prediction, version, formats, display)
-    target = Path(folder).resolve()
-    work: Path | None = None
-    made: list[Path] = []
-    done = False
-    try:
-        _check(target, Path(folder), overwrite=overwrite)
-        made = _make_parents(target.parent)
-        work = Path(tempfile.mkdtemp(prefix=f".{target.name}-", dir=target.parent))
-        fresh = work / "new"
-        fresh.mkdir()
-        for name, content in files.items():
+
+    def fill(fresh: Path) -> None:
+        for name, content in _files(prediction, version, formats, display).items():
             (fresh / name).write_bytes(content)
-        _swap(fresh, target, work / "old")
-        done = True
-    except OutputError:
-        raise
-    except OSError as error:
-        raise _refused(Path(folder), error) from error
-    finally:
-        if work is not None:
-            shutil.rmtree(work, ignore_errors=True)
-        if not done:
-            for parent in made:
-                _remove_if_empty(parent)
 
-
-_NAMES = frozenset(
-    {"prediction.json", *(f"{table}.csv" for table in PREDICTION_TABLES)}
-    | {f"{name}.{kind}" for name in ("grade_lines", "head_loss") for kind in ("svg", "png")}
-)
-
-
-def _check(target: Path, shown: Path, *, overwrite: bool) -> None:
-    if target.exists() and not target.is_dir():
-        raise OutputError(f"{shown} is a file; choose another folder with --out")
-    entries = sorted(target.iterdir()) if target.exists() else []
-    foreign = [one.name for one in entries if one.name not in _NAMES or one.is_symlink() or not one.is_file()]
-    if foreign:
-        raise OutputError(
-            f"{shown} holds {foreign[0]}, which is no part of a prediction, so nothing was written; choose another folder "
-            "with --out"
-        )
-    if entries and not overwrite:
-        raise OutputError(
-            f"{shown} is not empty (it holds {entries[0].name}); choose another folder with --out, or replace an earlier "
-            "prediction with --overwrite"
-        )
+    write_folder(folder, _PREDICTION, fill, overwrite=overwrite)
 
 
 def _files(
@@ -374,14 +338,12 @@ def _files(
 ) -> Mapping[str, bytes]:
     found: dict[str, bytes] = {}
     if "json" in formats:
-        text = json.dumps(
-            prediction_record(prediction, version), indent=1, ensure_ascii=False, allow_nan=False
-        )
-        found["prediction.json"] = (text + "\n").encode("utf-8", errors="backslashreplace")
+        found["prediction.json"] = json_of(prediction_record(prediction, version))
     if "csv" in formats:
-        for name in PREDICTION_TABLES:
-            if len(getattr(prediction, name)):
-                found[f"{name}.csv"] = _as_csv(prediction, name)
+        for name, columns in PREDICTION_TABLES.items():
+            table = getattr(prediction, name)
+            if len(table):
+                found[f"{name}.csv"] = csv_of(columns, rows_of(columns, table))
     kinds = [kind for kind in ("svg", "png") if kind in formats]
     if kinds:
         from gradeline.report.figures.prediction import prediction_pictures  # noqa: PLC0415 (start-up time)

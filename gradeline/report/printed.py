@@ -7,6 +7,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
+import numpy as np
 import pandas as pd
 
 from gradeline.quantities.printing import MISSING
@@ -15,6 +16,7 @@ __all__ = [
     "PrintedTable",
     "Row",
     "TableColumn",
+    "columns_of",
     "count",
     "known",
     "lay_out",
@@ -55,14 +57,32 @@ class PrintedTable:
 
 def records(table: pd.DataFrame) -> list[dict[str, Any]]:
     """Return the rows of a table as dicts, a missing value of any kind as None."""
-    columns = {
-        name: [
-            None if missing else value
-            for value, missing in zip(table[name].tolist(), table[name].isna(), strict=True)
-        ]
-        for name in table.columns
-    }
+    columns = columns_of(table)
     return [dict(zip(columns, row, strict=True)) for row in zip(*columns.values(), strict=True)]
+
+
+def columns_of(table: pd.DataFrame) -> dict[str, list[Any]]:
+    """Return the columns of a table as lists of plain values, a missing value of any kind as None.
+
+    Examples
+    --------
+    >>> columns_of(pd.DataFrame({"wall": ["steel", None], "roughness": [1e-5, float("nan")]}))
+    {'wall': ['steel', None], 'roughness': [1e-05, None]}
+    """
+    return {str(name): _values(column) for name, column in table.items()}
+
+
+def _values(column: pd.Series[Any]) -> list[Any]:
+    # By kind of column: pandas' own test for missing values costs more than all else for the short tables of a survey.
+    kind = column.dtype.kind if isinstance(column.dtype, np.dtype) else ""
+    if kind in ("i", "u", "b"):
+        return column.tolist()
+    if kind == "f":
+        return [None if value != value else value for value in column.tolist()]  # noqa: PLR0124 (NaN alone does so)
+    return [
+        None if missing else value
+        for value, missing in zip(column.tolist(), column.isna().tolist(), strict=True)
+    ]
 
 
 def percent(level: float) -> str:

@@ -7,21 +7,38 @@ import io
 import json
 import math
 import re
+from collections.abc import Collection, Iterable, Mapping
 from typing import Any
 
 import pandas as pd
 
-from gradeline.reduction.tables import RESULT_TABLES, Column, Reduction
-from gradeline.report.printed import records
+from gradeline.reduction.tables import RECORD_TABLES, RESULT_TABLES, Column, Reduction
+from gradeline.report.printed import columns_of
 
-__all__ = ["as_csv", "as_json", "carried_json", "guarded", "table_rows"]
+__all__ = [
+    "as_csv",
+    "as_json",
+    "carried_json",
+    "csv_of",
+    "guarded",
+    "json_of",
+    "jsonable",
+    "result_rows",
+    "rows_of",
+    "table_rows",
+    "tables_of",
+]
 
 #: Numbers that count something are written without a decimal point.
-_COUNTS = frozenset({"slope_dof", "observations_used", "runs_used"})
+_COUNTS = frozenset({"slope_dof", "observations_used", "runs_used", "samples"})
+_ENCODER = json.JSONEncoder(ensure_ascii=False, allow_nan=False)
 _PLAIN_NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?")
 
 
-def as_json(reduction: Reduction, version: str) -> bytes:
+_Rows = Mapping[str, list[dict[str, Any]]]
+
+
+def as_json(reduction: Reduction, version: str, *, rows: _Rows | None = None) -> bytes:
     """Return ``reduction.json``: survey, assumptions, cautions and the result tables, one row a line.
 
     Parameters
@@ -30,6 +47,8 @@ def as_json(reduction: Reduction, version: str) -> bytes:
         What is written; SI units.
     version : str
         Of the program.
+    rows : mapping, optional
+        Its `result_rows`, where they are there already.
 
     Returns
     -------
@@ -38,16 +57,32 @@ def as_json(reduction: Reduction, version: str) -> bytes:
     """
     parts: dict[str, str] = {
         "gradeline": _dump(version),
-        "survey": _dump(_jsonable(dict(reduction.survey))),
+        "survey": _dump(jsonable(dict(reduction.survey))),
         "assumptions": _dump(list(reduction.assumptions)),
         "cautions": _dump(list(reduction.cautions)),
     }
-    for table in RESULT_TABLES:
-        rows = [_dump(row) for row in table_rows(table, getattr(reduction, table))]
-        parts[table] = "[\n  " + ",\n  ".join(rows) + "\n ]" if rows else "[]"
+    for table, found in (result_rows(reduction) if rows is None else rows).items():
+        lines = [_dump(row) for row in found]
+        parts[table] = "[\n  " + ",\n  ".join(lines) + "\n ]" if lines else "[]"
     text = "{\n " + ",\n ".join(f'"{key}": {value}' for key, value in parts.items()) + "\n}\n"
     # a file name that was not UTF-8 holds surrogates, which JSON may carry as \udcXX
     return text.encode("utf-8", errors="backslashreplace")
+
+
+def tables_of(reduction: Reduction) -> Mapping[str, Mapping[str, Column]]:
+    """Return the tables that are written of a reduction: those of a logger's record only where there is one.
+
+    Parameters
+    ----------
+    reduction : Reduction
+        What is written.
+    """
+    return {**RESULT_TABLES, **RECORD_TABLES} if reduction.survey.get("record") else RESULT_TABLES
+
+
+def result_rows(reduction: Reduction) -> _Rows:
+    """Return the rows of every table that is written of a reduction, by the table's name, for `as_json` and `as_csv`."""
+    return {table: table_rows(table, getattr(reduction, table)) for table in tables_of(reduction)}
 
 
 def carried_json(reduction: Reduction) -> bytes:
@@ -78,7 +113,7 @@ def carried_json(reduction: Reduction) -> bytes:
     return text.encode("utf-8", errors="backslashreplace")
 
 
-def as_csv(reduction: Reduction, table: str) -> bytes:
+def as_csv(reduction: Reduction, table: str, *, rows: _Rows | None = None) -> bytes:
     r"""Return a result table as csv: a heading row of the keys, SI units, empty cells for missing values.
 
     Parameters
@@ -86,7 +121,9 @@ def as_csv(reduction: Reduction, table: str) -> bytes:
     reduction : Reduction
         What is written.
     table : str
-        A key of ``RESULT_TABLES``.
+        A key of ``tables_of``.
+    rows : mapping, optional
+        The reduction's `result_rows`, where they are there already.
 
     Returns
     -------
@@ -94,47 +131,86 @@ def as_csv(reduction: Reduction, table: str) -> bytes:
         UTF-8 with ``\n`` line ends. A text cell that a spreadsheet could take for a formula (it begins with
         ``= + - @`` and is no number) gets a leading apostrophe.
     """
+    found = table_rows(table, getattr(reduction, table)) if rows is None else rows[table]
+    return csv_of(tables_of(reduction)[table], found)
+
+
+def csv_of(columns: Mapping[str, Column], rows: Iterable[Mapping[str, Any]]) -> bytes:
+    r"""Return rows as csv: a heading row of the columns' names, empty cells for missing values, UTF-8, ``\n`` line ends.
+
+    Parameters
+    ----------
+    columns : mapping of str to Column
+        In order.
+    rows : iterable of mapping
+        As `rows_of` has them.
+
+    Examples
+    --------
+    >>> csv_of({"wall": Column("text"), "roughness": Column("number", "m")}, [{"wall": "=a", "roughness": None}])
+    b"wall,roughness\n'=a,\n"
+    """
     out = io.StringIO()
     writer = csv.writer(out, lineterminator="\n")
-    columns = RESULT_TABLES[table]
     writer.writerow(columns)
-    for row in table_rows(table, getattr(reduction, table)):
+    for row in rows:
         writer.writerow([_cell(row[name], column) for name, column in columns.items()])
     return out.getvalue().encode("utf-8", errors="backslashreplace")
 
 
+def json_of(record: Mapping[str, Any]) -> bytes:
+    """Return a record as JSON, one value a line, a line end after the last; NaN and Infinity never occur."""
+    text = json.dumps(record, ensure_ascii=False, allow_nan=False, indent=1)
+    return (text + "\n").encode("utf-8", errors="backslashreplace")
+
+
 def _dump(value: object) -> str:
-    return json.dumps(value, ensure_ascii=False, allow_nan=False)
+    return _ENCODER.encode(value)
 
 
 def table_rows(table: str, data: pd.DataFrame) -> list[dict[str, Any]]:
     """Return the rows of a result table with exactly its keys, values of plain Python types, None where missing."""
-    columns = RESULT_TABLES[table]
-    return [
-        {name: _value(row[name], column, count=name in _COUNTS) for name, column in columns.items()}
-        for row in records(data[list(columns)])
-    ]
+    columns = RESULT_TABLES.get(table) or RECORD_TABLES[table]
+    return rows_of(columns, data, counts=_COUNTS)
 
 
-def _value(value: Any, column: Column, *, count: bool) -> Any:
-    if value is None:
-        return None
+def rows_of(
+    columns: Mapping[str, Column], data: pd.DataFrame, *, counts: Collection[str] = ()
+) -> list[dict[str, Any]]:
+    """Return the rows of a table with exactly these columns, values of plain Python types, None where missing.
+
+    Parameters
+    ----------
+    columns : mapping of str to Column
+        In order.
+    data : DataFrame
+        With at least those columns.
+    counts : collection of str
+        Columns whose numbers count something: whole numbers there are of type int.
+    """
+    found = columns_of(data)
+    plain = [_plain(found[name], column, count=name in counts) for name, column in columns.items()]
+    return [dict(zip(columns, row, strict=True)) for row in zip(*plain, strict=True)]
+
+
+def _plain(values: list[Any], column: Column, *, count: bool) -> list[Any]:
+    """The values of a column as plain Python types of its kind."""
     if column.kind == "truth":
-        return bool(value)
+        return [None if value is None else bool(value) for value in values]
     if column.kind == "text":
-        return str(value)
-    number = float(value)
-    if not math.isfinite(number):
-        return None
-    return int(number) if count and number.is_integer() else number
+        return [None if value is None else str(value) for value in values]
+    numbers = [None if value is None or not math.isfinite(value) else float(value) for value in values]
+    if count:
+        return [int(one) if one is not None and one.is_integer() else one for one in numbers]
+    return numbers
 
 
-def _jsonable(value: Any) -> Any:
-    """A value of the survey's description as JSON can hold it."""
+def jsonable(value: Any) -> Any:
+    """Return a value that stands in no table (a word, a number, several of them) as JSON can hold it."""
     if isinstance(value, dict) or hasattr(value, "items"):
-        return {str(key): _jsonable(item) for key, item in value.items()}
+        return {str(key): jsonable(item) for key, item in value.items()}
     if isinstance(value, (list, tuple)):
-        return [_jsonable(item) for item in value]
+        return [jsonable(item) for item in value]
     if value is None or isinstance(value, (bool, int, str)):
         return value
     if isinstance(value, float):

@@ -16,6 +16,8 @@ __all__ = ["SheetColumn", "recording_sheet"]
 
 #: mm: the narrowest column that a number can be written in, the one of the runs, a row, and the row of what is said once.
 _NARROWEST, _RUN, _ROW, _BLOCK = 12.5, 15.0, 8.2, 11.0
+#: mm: of the frames of cells. And rows of one run that are kept on one page at most.
+_THIN, _KEPT = 0.15, 12
 _WASH = (244, 246, 247)
 _FRAME = (120, 130, 138)
 _SIDES = Padding(left=0.3, right=0.3)
@@ -41,6 +43,8 @@ def recording_sheet(
     runs: int = 10,
     repeats: int = 1,
     paper: Literal["a4", "letter"] = "a4",
+    listed: Sequence[str] = (),
+    read: Sequence[SheetColumn] = (),
 ) -> bytes:
     """Return a recording sheet as a PDF.
 
@@ -49,7 +53,7 @@ def recording_sheet(
     title : str
         Of the survey.
     columns : sequence of SheetColumn
-        Those of ``readings.csv``; the first names the run and comes again where the columns do not fit side by side.
+        Those of ``readings.csv``; that of the runs comes again where the columns do not fit side by side.
     gauges : sequence of (str, str)
         Each gauge with its kind.
     version : str
@@ -58,6 +62,10 @@ def recording_sheet(
         Rows for flowing runs, and how many rows each has; both at least 1. A static run comes first.
     paper : {"a4", "letter"}
         Size of the sheets; they lie on their long edge where the columns ask for it.
+    listed : sequence of str
+        Columns of ``readings.csv`` where it lists readings one a row; `columns` are then those of ``runs.csv``.
+    read : sequence of SheetColumn
+        What is read in each run, a row each in such a list: the tap as heading, its place and unit under it.
 
     Returns
     -------
@@ -73,19 +81,67 @@ def recording_sheet(
             upright.close_fonts()
             sheet = Paper(paper, title, version, landscape=True)
         sheet.set_draw_color(*_FRAME)
+        sheet.set_line_width(_THIN)
         sheet.add_page()
         _head(sheet, title)
         widths = _widths(sheet, columns)
-        bands = _bands(widths, sheet.epw)
+        run = _run_place(columns)
+        bands = _bands(widths, run, sheet.epw)
         rows = [("static", True)] * repeats + [
             (str(run), False) for run in range(1, runs + 1) for _ in range(repeats)
         ]
-        for place, band in enumerate(bands):
-            if place:
+        if not listed or len(columns) > 1:
+            for place, band in enumerate(bands):
+                if place:
+                    sheet.add_page()
+                _band(sheet, columns, band, run, _spread(widths, band, sheet.epw), rows)
+        if listed:
+            if len(columns) > 1:
                 sheet.add_page()
-            _band(sheet, columns, band, _spread(widths, band, sheet.epw), rows)
-        _words(sheet, gauges, repeats)
+            _list(sheet, listed, read, rows)
+        _words(sheet, gauges, repeats, listed=bool(listed))
         return sheet.finished()
+
+
+def _list(
+    sheet: Paper, listed: Sequence[str], read: Sequence[SheetColumn], rows: Sequence[tuple[str, bool]]
+) -> None:
+    """The readings one a row: each run, and in it the taps in order, as a list of readings has them."""
+    columns = [SheetColumn(heading) for heading in listed]
+    names = [heading.partition("[")[0].strip().casefold() for heading in listed]
+    run = names.index("run") if "run" in names else 0
+    tap = names.index("tap") if "tap" in names else min(1, len(names) - 1)
+    widths = _spread(_widths(sheet, columns), range(len(columns)), sheet.epw)
+    _heads(sheet, columns, widths)
+    for label, _ in rows:
+        if sheet.left() < min(len(read), _KEPT) * _ROW:
+            sheet.add_page()
+            _heads(sheet, columns, widths)
+        for place, one in enumerate(read):
+            if sheet.left() < _ROW:
+                sheet.add_page()
+                _heads(sheet, columns, widths)
+            x, y = sheet.l_margin, sheet.get_y()
+            for column, width in enumerate(widths):
+                sheet.set_xy(x, y)
+                sheet.face(8.5, bold=column == run)
+                words = label if column == run else one.heading if column == tap else ""
+                sheet.cell(width, _ROW, words, border=1, align="C")
+                if column == tap and one.under:
+                    sheet.set_xy(x, y + 0.62 * _ROW)
+                    sheet.face(5.5, colour=MUTED)
+                    sheet.cell(width, 0.34 * _ROW, clean(one.under), align="C")
+                x += width
+            if place == len(read) - 1:
+                _rule(sheet, y + _ROW, sum(widths))
+            sheet.set_xy(sheet.l_margin, y + _ROW)
+
+
+def _rule(sheet: Paper, y: float, width: float) -> None:
+    """A thick rule between two runs, upon the frames of the cells."""
+    sheet.set_line_width(0.5)
+    sheet.line(sheet.l_margin, y, sheet.l_margin + width, y)
+    sheet.set_line_width(_THIN)
 
 
 def _head(sheet: Paper, title: str) -> None:
@@ -113,17 +169,27 @@ def _widths(sheet: Paper, columns: Sequence[SheetColumn]) -> list[float]:
         words = max(sheet.get_string_width(word) for word in (*clean(column.heading).split(" "), "0"))
         sheet.face(6.5)
         words = max(words, *(sheet.get_string_width(word) for word in (*clean(column.under).split(" "), "0")))
-        found.append(max(_RUN if n == 0 else _NARROWEST, min(words + 1.8, 45.0)))
+        found.append(max(_RUN if n == _run_place(columns) else _NARROWEST, min(words + 1.8, 45.0)))
     return found
 
 
-def _bands(widths: Sequence[float], room: float) -> list[list[int]]:
-    """Columns side by side, each band with the column of the runs first, of about the same number of columns each."""
-    bands: list[list[int]] = [[0]]
-    for n in range(1, len(widths)):
-        if len(bands[-1]) > 1 and sum(widths[k] for k in bands[-1]) + widths[n] > room + 1e-6:
-            bands.append([0])
-        bands[-1].append(n)
+def _run_place(columns: Sequence[SheetColumn]) -> int:
+    """The column that names the run, which need not be the first."""
+    return next((n for n, column in enumerate(columns) if column.heading.strip().casefold() == "run"), 0)
+
+
+def _bands(widths: Sequence[float], run: int, room: float) -> list[list[int]]:
+    """Columns side by side in their order; of more than one band each later one has the column of the runs first."""
+    bands: list[list[int]] = [[]]
+    for n, width in enumerate(widths):
+        # Room for the column of the runs is kept in a band that does not hold it yet.
+        kept = widths[run] if len(bands) == 1 and n < run else 0.0
+        if len(bands[-1]) > 1 and sum(widths[k] for k in bands[-1]) + width + kept > room + 1e-6:
+            if run not in bands[-1]:
+                bands[-1].insert(0, run)
+            bands.append([run])
+        if n not in bands[-1]:
+            bands[-1].append(n)
     return bands
 
 
@@ -138,30 +204,41 @@ def _band(
     sheet: Paper,
     columns: Sequence[SheetColumn],
     band: Sequence[int],
+    run: int,
     widths: Sequence[float],
     rows: Sequence[tuple[str, bool]],
 ) -> None:
     heads = [columns[n] for n in band]
     _heads(sheet, heads, widths)
-    before = None
-    for label, static in rows:
-        if sheet.left() < _ROW:
+    each = sum(label == rows[0][0] for label, _ in rows)
+    rules: list[float] = []
+    for n, (label, static) in enumerate(rows):
+        # the rows of a run stay on one page
+        if (n % each == 0 and sheet.left() < min(each, _KEPT) * _ROW) or sheet.left() < _ROW:
+            _ruled(sheet, rules, sum(widths))
             sheet.add_page()
             _heads(sheet, heads, widths)
         y = sheet.get_y()
-        if before is not None and before != label:
-            sheet.set_line_width(0.35)
-            sheet.line(sheet.l_margin, y, sheet.l_margin + sum(widths), y)
-            sheet.set_line_width(0.15)
-        before = label
+        if each > 1 and n % each == each - 1:
+            rules.append(y + _ROW)
         x = sheet.l_margin
-        for place, (column, width) in enumerate(zip(heads, widths, strict=True)):
-            words = label if place == 0 else column.static if static else ""
+        for place, column, width in zip(band, heads, widths, strict=True):
+            words = label if place == run else column.static if static else ""
             sheet.set_xy(x, y)
-            sheet.face(8.5, bold=place == 0)
+            sheet.face(8.5, bold=place == run)
             sheet.cell(width, _ROW, words, border=1, align="C")
             x += width
         sheet.set_xy(sheet.l_margin, y + _ROW)
+    end = sheet.get_y()
+    _ruled(sheet, rules, sum(widths))
+    sheet.set_xy(sheet.l_margin, end)
+
+
+def _ruled(sheet: Paper, rules: list[float], width: float) -> None:
+    """Draw the rules of a page after its cells, whose frames would lie upon them, and forget them."""
+    for y in rules:
+        _rule(sheet, y, width)
+    rules.clear()
 
 
 def _heads(sheet: Paper, heads: Sequence[SheetColumn], widths: Sequence[float]) -> None:
@@ -207,13 +284,18 @@ def _height(sheet: Paper, head: SheetColumn, width: float) -> float:
     return total
 
 
-def _words(sheet: Paper, gauges: Sequence[tuple[str, str]], repeats: int) -> None:
+def _words(sheet: Paper, gauges: Sequence[tuple[str, str]], repeats: int, *, listed: bool) -> None:
     """What has to be known to fill it in."""
     sheet.set_y(sheet.get_y() + 2)
     sheet.need(16)
-    rows = "Rows with one run's label are repeats of it. " if repeats > 1 else ""
+    rows = "Rows with one run's label are repeats of it. " if repeats > 1 and not listed else ""
+    of = (
+        "The columns are those of runs.csv and, one reading a row, of readings.csv."
+        if listed
+        else "Columns and headings are those of readings.csv; where note stands under a heading, it begins with that in the file."
+    )
     text = (
-        "Columns and headings are those of readings.csv. Nothing flows in a static run. Leave a cell empty where nothing was read, "
+        f"{of} Nothing flows in a static run. Leave a cell empty where nothing was read, "
         f"and write each reading as it stands on the scale, in the unit of the heading. {rows}"
         f"Gauges: {'; '.join(f'{name} ({kind})' for name, kind in gauges)}."
     )

@@ -325,15 +325,26 @@ def _readings(reduction: Reduction, flags: Sequence[dict[str, Any]]) -> Iterable
             fate = ""
         score = f" (score {format_number(flag['score'], 2)})" if known(flag["score"]) else ""
         words = f"Run {flag['run']}, tap {flag['tap']}: {read} was read, {expected} expected{score}{fate}."
+        own = f"{flag['tap']}: "
+        if suggestion.startswith(own) and " written for " in suggestion:  # what was read stands in it
+            told = suggestion.removeprefix(own)
+            yield f"Run {flag['run']}, tap {flag['tap']}: {expected} expected{score}{fate}: {_ended(told)}"
+            continue
         yield f"{words} {_sentence(suggestion)}" if suggestion else words
     if len(flagged) > _MOST_NAMED:
         yield f"{_plural(len(flagged) - _MOST_NAMED, 'more reading')} were flagged; the table of flags names them."
 
 
+def _ended(text: str) -> str:
+    """Return words with a full stop where none ends them."""
+    plain = text.strip()
+    return plain + ("" if plain.endswith((".", "?", "!")) else ".")
+
+
 def _sentence(text: str) -> str:
     """Return words as a sentence of their own."""
     plain = text.strip()
-    return plain[:1].upper() + plain[1:] + ("" if plain.endswith((".", "?", "!")) else ".")
+    return _ended(plain[:1].upper() + plain[1:])
 
 
 def _runs(flags: Sequence[dict[str, Any]]) -> Iterable[str]:
@@ -443,7 +454,7 @@ def _cautions(reduction: Reduction, told: Sequence[str]) -> Iterable[str]:
         parts.append(_plural(assumptions, "assumption"))
     if parts:
         total = cautions + assumptions
-        yield f"{' and '.join(parts)} {'is' if total == 1 else 'are'} listed; read them before a number is used."
+        yield f"{' and '.join(parts)} {'is' if total == 1 else 'are'} listed (also in report.html and reduction.json); read them before a number is used."
 
 
 def _missing(

@@ -130,11 +130,9 @@ def wall_table(
         return lambda row: rounded(row[name], older.get(row["wall"], {}).get(f"{name}_u"))
 
     level = percent(reduction.level)
-    bound = (
-        ""
-        if level == "95 %"
-        else f" The upper bound is one of 95 %, whatever the level of the intervals ({level})."
-    )
+    bound = " The upper bound is one-sided, all of its 5 % above it, and so may lie inside the two-sided interval."
+    if level != "95 %":
+        bound += f" It is one of 95 %, whatever the level of the intervals ({level})."
 
     def within(key: str) -> Callable[[Row], str]:
         return lambda row: display.within("roughness", row[key], row["roughness_low"], row["roughness_high"])
@@ -150,7 +148,7 @@ def wall_table(
                 display.head(f"{level} interval", "roughness"),
                 lambda row: display.interval("roughness", row["roughness_low"], row["roughness_high"]),
             ),
-            TableColumn(display.head("95 % upper bound", "roughness"), within("roughness_upper95")),
+            TableColumn(display.head("one-sided 95 % upper bound", "roughness"), within("roughness_upper95")),
             TableColumn("resolved", lambda row: truth(row["roughness_resolved"]), text=True),
             TableColumn("hydraulically smooth", lambda row: truth(row["hydraulically_smooth"]), text=True),
             TableColumn("ε⁺", lambda row: format_number(row["roughness_reynolds"], 3)),

@@ -18,6 +18,11 @@ import tracemalloc
 from collections.abc import Callable
 from pathlib import Path
 
+import numpy as np
+from fluids.friction import Colebrook
+from scipy.optimize import curve_fit
+
+from gradeline.fitting.wall import example_wall, fit_wall
 from tests.bench.monte_carlo import DRAWN_RUNS, draw_factors, draw_normal, run_draws
 from tests.bench.runs import RUNS, SCRIPT_RUNS, batch, bench_runs, frame, run_script, script_readings
 
@@ -109,6 +114,31 @@ def monte_carlo(rounds: int, count: int) -> None:
     print(f"  peak memory of the draws: {peak / 1e6:.0f} MB")
 
 
+def wall(rounds: int) -> None:
+    """The joint fit of a wall against the curve that a practitioner would fit: same slopes, one roughness."""
+    data = example_wall()
+    used = np.isfinite(data.slope)
+    diameter, gravity = float(data.diameter[0]), data.gravity
+    viscosity = data.kinematic_viscosity
+
+    def slopes(velocity: np.ndarray, roughness: float) -> np.ndarray:
+        factors = [
+            Colebrook(Re=v * diameter / nu, eD=abs(roughness) / diameter)
+            for v, nu in zip(velocity, viscosity, strict=True)
+        ]
+        return np.log(np.array(factors) * velocity**2 / (2 * gravity * diameter))
+
+    def plain() -> float:
+        found, _ = curve_fit(slopes, data.velocity[:, 0], np.log(data.slope[:, 0]), p0=[1e-3 * diameter])
+        return float(found[0])
+
+    taken = alternate(rounds, {"plain curve fit": plain, "fit_wall": lambda: fit_wall(data, used)})
+    seconds = {name: statistics.median(values) for name, values in taken.items()}
+    print(f"one wall of {used.sum()} slopes, medians of {rounds} rounds in turn")
+    for name, value in seconds.items():
+        print(f"  {name:24}{1e3 * value:>8.2f} ms {value / seconds['plain curve fit']:>8.2f} × the plain fit")
+
+
 def main() -> None:
     """Measure and print."""
     parser = argparse.ArgumentParser(description=__doc__.split("\n", maxsplit=1)[0])
@@ -118,6 +148,7 @@ def main() -> None:
     asked = parser.parse_args()
     monte_carlo(min(asked.rounds, 3), asked.draws)
     per_run(asked.rounds)
+    wall(asked.rounds)
     command(asked.rounds, asked.survey)
 
 

@@ -258,7 +258,7 @@ def test_reduce_passes_every_option_on(survey, rooms, tmp_path):
 
 
 def test_one_bad_survey_does_not_stop_the_others(survey, bad_survey, rooms, tmp_path):
-    result = run("reduce", bad_survey, survey, "--out", tmp_path / "out")
+    result = run("reduce", bad_survey, survey, "--out", tmp_path / "out", "--jobs", "1")
     assert result.exit_code == 3
     assert [folder for _, folder, _ in rooms.written] == [tmp_path / "out" / "bench_line"]
     assert f"{bad_survey}: 2 problems" in result.stderr
@@ -266,7 +266,7 @@ def test_one_bad_survey_does_not_stop_the_others(survey, bad_survey, rooms, tmp_
 
 def test_the_highest_exit_code_is_kept(survey, bad_survey, rooms):
     rooms.error = OutputError("the folder holds results already; give --overwrite")
-    result = run("reduce", survey, bad_survey)
+    result = run("reduce", survey, bad_survey, "--jobs", "1")
     assert result.exit_code == 4
     assert "the folder holds results already; give --overwrite" in result.stderr
     assert f"{bad_survey}: 2 problems" in result.stderr

@@ -81,11 +81,11 @@ def test_a_folder_with_something_in_it_is_left_alone(tmp_path: Path) -> None:
         ([*FEW, "--reading", "0 mm"], 2, "give an uncertainty above 0"),
         ([*FEW, "--roughness", "1 mm", "--wall", "a=1 mm"], 2, "both say how rough a wall is"),
         ([*FEW, "--wall", "1 mm"], 2, 'give a name and a value, such as "lower main=0.15 mm"'),
-        ([*FEW, "--wall", "copper=1 mm"], 3, "there is no wall 'copper'; walls are drawn copper"),
+        ([*FEW, "--wall", "copper=1 mm"], 2, "there is no wall 'copper'; walls are drawn copper"),
         ([*FEW, "--loss", "valve=x"], 2, "'x' is not a number; K has no unit"),
         ([*FEW, "--head", "1 m +/- 1 mm"], 2, "give the value alone, without an uncertainty"),
         ([*FEW, "--level", "95"], 2, "--level 95 is no coverage"),
-        ([*FEW, "--fixed", "T99"], 3, "there is no tap 'T99'"),
+        ([*FEW, "--fixed", "T99"], 2, "there is no tap 'T99'"),
     ],
 )
 def test_mistakes_are_told_with_their_code(more: list[str], code: int, message: str) -> None:

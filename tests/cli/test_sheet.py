@@ -55,6 +55,38 @@ def test_taps_stand_with_their_chainages(tmp_path):
     assert "445\u00a0m".replace("\u00a0", "") in pages(tmp_path / "sheet.pdf")[0].replace("\u00a0", "")
 
 
+def test_a_list_of_readings_has_a_row_for_each_tap_of_each_run(tmp_path):
+    folder = tmp_path / "listed"
+    shutil.copytree(DEMOS / "copper_bench", folder)
+    head, *rows = [line.split(",") for line in (folder / "readings.csv").read_text().splitlines()]
+    taps = [(n, text) for n, text in enumerate(head) if text.startswith("T") and "[" in text]
+    others = [n for n in range(len(head)) if n not in dict(taps)]
+    (folder / "runs.csv").write_text("\n".join(",".join(row[n] for n in others) for row in [head, *rows]))
+    unit = taps[0][1].partition("[")[2]
+    listed = [f"{row[0]},{text.split()[0]},{row[n]}" for row in rows for n, text in taps if row[n]]
+    (folder / "readings.csv").write_text("\n".join([f"run,tap,reading [{unit}", *listed]))
+    out = tmp_path / "sheet.pdf"
+    result = run("sheet", folder, "--out", out, "--runs", 3)
+    assert result.exit_code == 0, result.output
+    text = "".join(pages(out))
+    assert squeezed(f"reading [{unit}") in text
+    assert "onereadingarow" in text
+    recording = read_recording(folder)
+    assert [one.heading for one in recording.read] == [text.split()[0] for _, text in taps]
+    for _, name in taps:
+        label = name.split()[0]
+        assert text.count(f"3{label}") + text.count(f"static{label}") >= 2
+
+
+def test_the_rows_of_a_run_stay_on_one_page():
+    columns = [SheetColumn("run"), SheetColumn("T1 [mm]")]
+    content = recording_sheet("Rig", columns, [("board", "piezometer")], "9", runs=40, repeats=3)
+    for page in PdfReader(io.BytesIO(content), strict=True).pages:
+        lines = [line.strip() for line in page.extract_text().splitlines()]
+        for label in map(str, range(1, 41)):
+            assert lines.count(label) in (0, 3)
+
+
 def filled(recording):
     """The sheet as somebody might have filled it in: a static run and two that flow."""
     rows = [",".join(one.heading for one in recording.columns)]
@@ -122,12 +154,14 @@ def test_headings_alone_are_headings(survey):
     assert [one.heading for one in read_recording(survey).columns] == headings.split(",")
 
 
-def test_readings_listed_one_a_row_get_a_column_a_tap(survey):
+def test_readings_listed_one_a_row_stay_so(survey):
     (survey / "runs.csv").write_text("run,flow [L/s],temperature [degC]\n1,0.2,15\n")
     (survey / "readings.csv").write_text("run,tap,reading [cm]\n1,T1,50\n1,T2,49\n1,T3,48\n")
-    assert [one.heading for one in read_recording(survey).columns] == [
-        *("run", "flow [L/s]", "temperature [degC]", "T1 [cm]", "T2 [cm]", "T3 [cm]"),
-    ]
+    recording = read_recording(survey)
+    assert [one.heading for one in recording.columns] == ["run", "flow [L/s]", "temperature [degC]"]
+    assert recording.listed == ("run", "tap", "reading [cm]")
+    assert [one.heading for one in recording.read] == ["T1", "T2", "T3"]
+    assert all(one.under.endswith(", cm") for one in recording.read)
 
 
 def test_rows_for_a_static_run_then_runs_and_repeats():
@@ -196,3 +230,32 @@ def test_faults_of_the_line_are_told(survey, tmp_path):
 def test_wrong_options_are_wrong_use(survey, options):
     assert run("sheet", survey, *options).exit_code == 2
     assert not (survey / "recording_sheet.pdf").exists()
+
+
+def test_the_labels_of_the_runs_stand_in_the_column_of_the_runs_wherever_it_lies(survey):
+    headings = "flow [L/s],run,temperature [degC],T1 [mm],T2 [mm],T3 [mm]"
+    (survey / "readings.csv").write_text(headings + "\n")
+    assert run("sheet", survey, "--runs", "2").exit_code == 0
+    places = {}
+
+    def seen(text, _matrix, at, *_more):
+        if text.strip():
+            places.setdefault(text.strip(), at[4])
+
+    PdfReader(survey / "recording_sheet.pdf").pages[0].extract_text(visitor_text=seen)
+    # Left edges: the flow of the static run, then the labels, then the first tap.
+    assert places["0"] < min(places["static"], places["1"])
+    assert max(places["static"], places["1"]) < places["T1 [mm]"]
+
+
+def test_the_column_of_the_runs_comes_again_on_each_sheet_wherever_it_lies():
+    columns = [
+        SheetColumn("flow [L/s]", static="0"),
+        *(SheetColumn(f"T{n} [mm]", f"{n}.5 m") for n in range(1, 31)),
+        SheetColumn("run"),
+    ]
+    content = recording_sheet("Bench", columns, [], "9.9", runs=3)
+    texts = [squeezed(sheet.extract_text()) for sheet in PdfReader(io.BytesIO(content)).pages]
+    assert len(texts) > 1
+    assert all(text.count("static") >= 1 and "run" in text for text in texts)
+    assert sum(text.count(f"T{n}[mm]") for text in texts for n in range(1, 31)) == 30

@@ -5,6 +5,7 @@ from __future__ import annotations
 import dataclasses
 
 import numpy as np
+import pandas as pd
 import pytest
 
 import gradeline
@@ -32,7 +33,21 @@ def test_growth_by_thirty_per_cent_is_found_with_its_rate(ageing) -> None:
     assert end["date"] == "2035-01-01"
     assert end["beyond_surveys"]
     assert end["roughness_low"] < 2e-3 * DIAMETER * (1 + 0.06 * 14.84) < end["roughness_high"]
+    assert end["friction_factor_low"] < end["friction_factor"] < end["friction_factor_high"]
     assert any("further than the 5 years" in text for text in found.cautions)
+
+
+def test_flagged_readings_are_said_with_their_fate(unchanged) -> None:
+    first, second = unchanged
+    run, tap = first.heads.loc[first.heads["used"].fillna(False), ["run", "tap"]].iloc[0]
+    flag = dict.fromkeys(first.flags.columns) | {"kind": "reading", "run": run, "tap": tap}
+    flags = pd.concat([first.flags, pd.DataFrame([flag]).astype(object)], ignore_index=True)
+    here = (first.heads["run"] == run) & (first.heads["tap"] == tap)
+    for used, fate in ((True, "kept"), (False, "left out")):
+        heads = first.heads.assign(used=first.heads["used"].mask(here, used))
+        found = gradeline.compare([dataclasses.replace(first, flags=flags, heads=heads), second])
+        (said,) = (text for text in found.cautions if "flagged (" in text)
+        assert said.endswith(f"1 reading was flagged (run {run} tap {tap}) and {fate}.")
 
 
 def test_what_the_surveys_found_alone_stands_beside(ageing) -> None:

@@ -353,7 +353,10 @@ def test_one_fault_is_told_at_its_place(write_survey, name, change, told):
     ("whole", "told"),
     [
         ({"taps_csv": None}, "taps.csv: the file is missing; add it to the folder"),
-        ({"readings_csv": None}, "readings.csv: the file is missing; add it to the folder (before there are readings: gradeline plan, gradeline sheet)"),
+        (
+            {"readings_csv": None},
+            "readings.csv: the file is missing; add it to the folder (before there are readings: gradeline plan, gradeline sheet)",
+        ),
         ({"survey_toml": None}, "survey.toml: the file is missing; add it to the folder"),
         (
             {"readings_csv": None, "readings_xlsx": b"PK\x03\x04..."},

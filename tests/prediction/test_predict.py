@@ -523,7 +523,9 @@ def test_an_interval_of_flows_that_ends_in_the_critical_zone_is_said(exact) -> N
     viscosity = reduction.runs["kinematic_viscosity"].iloc[0]
     flow = 4010 * np.pi * BORE * viscosity / 4
     head = predict(reduction, flow=flow, temperature=288.15).flows["head_loss"].iloc[0]
-    row = predict(reduction, available_head=float(head), temperature=288.15, head_loss_u=0.02 * head).capacity.iloc[0]
+    row = predict(
+        reduction, available_head=float(head), temperature=288.15, head_loss_u=0.02 * head
+    ).capacity.iloc[0]
     assert 4 * row["flow_low"] / (np.pi * BORE * viscosity) < 4000
     assert row["reason"] == (
         "the lower end, that of turbulent flow, lies in the critical zone (Re 2000 to 4000), where no law of friction holds"

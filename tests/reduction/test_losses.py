@@ -234,6 +234,23 @@ def test_a_k_that_falls_with_reynolds_is_told():
     assert "per decade: the value given is that of the fast runs" in said
 
 
+def test_a_head_that_rises_at_a_loss_is_said():
+    """A loss takes head: a K of −0.6 in every run, as a tap label the wrong way round would give, is none."""
+    made, _ = make_survey(
+        np.random.default_rng(2),
+        chainage=TAPS,
+        reaches=[NominalReach(0.0, 6.0, 0.05, 1e-4)],
+        flows=FAST,
+        fittings=[NominalFitting(3.0, -0.6)],
+        sigma=1e-4,
+    )
+    (said,) = (
+        text for text in reduce(made, monte_carlo=False).cautions if text.startswith("The head rises at")
+    )
+    assert "in run 1 (K = −0." in said
+    assert "which no loss can do" in said
+
+
 def test_a_constant_k_has_no_trend():
     found = reduce(with_falling_k(0.0))
     assert not found.losses["depends_on_reynolds"].item()

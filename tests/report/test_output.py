@@ -8,7 +8,7 @@ import pytest
 
 from gradeline.errors import OutputError
 from gradeline.reduction.tables import RESULT_TABLES, Reduction
-from gradeline.report import FORMATS, write
+from gradeline.report import FORMATS, swap, write
 from gradeline.report import output as output_module
 from gradeline.report.figures import pictures
 
@@ -143,7 +143,7 @@ def test_a_failure_half_way_leaves_everything_as_it_was(
     write(field, tmp_path / "out", formats=("json",))
     before = files(tmp_path)
 
-    def fail(*_: object) -> bytes:
+    def fail(*_: object, **__: object) -> bytes:
         raise error
 
     monkeypatch.setattr(output_module, "as_csv", fail)  # after reduction.json was written
@@ -156,8 +156,9 @@ def test_a_failure_half_way_leaves_everything_as_it_was(
     assert [path.name for path in tmp_path.iterdir()] == ["out"]
 
 
+@pytest.mark.parametrize("error", [PermissionError(13, "Permission denied"), KeyboardInterrupt()])
 def test_the_old_report_comes_back_where_the_swap_fails(
-    field: Reduction, bench: Reduction, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+    field: Reduction, bench: Reduction, tmp_path: Path, monkeypatch: pytest.MonkeyPatch, error: BaseException
 ) -> None:
     write(field, tmp_path / "out", formats=("json",))
     before = files(tmp_path)
@@ -165,13 +166,44 @@ def test_the_old_report_comes_back_where_the_swap_fails(
 
     def fail(self: Path, target: Path) -> Path:
         if self.name == "new":
-            raise PermissionError(13, "Permission denied")
+            raise error
         return rename(self, target)
 
+    monkeypatch.setattr(
+        swap, "exchanged", lambda *_: False
+    )  # as where folders cannot be exchanged in one step
     monkeypatch.setattr(Path, "rename", fail)
-    with pytest.raises(OutputError, match="Permission denied"):
+    expected = OutputError if isinstance(error, OSError) else KeyboardInterrupt
+    with pytest.raises(
+        expected, match=r"\(Permission denied\); the earlier report there stands unchanged|^$"
+    ):
         write(bench, tmp_path / "out", formats=("json",), overwrite=True)
     assert files(tmp_path) == before
+
+
+def test_an_old_report_that_cannot_come_back_is_kept_and_told(
+    field: Reduction, bench: Reduction, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    write(field, tmp_path / "out", formats=("json",))
+    before = files(tmp_path / "out")
+    rename = Path.rename
+
+    def fail(self: Path, target: Path) -> Path:
+        if self.name in ("new", "old"):
+            raise OSError(5, "Input/output error", str(self))
+        return rename(self, target)
+
+    with monkeypatch.context() as broken:
+        broken.setattr(swap, "exchanged", lambda *_: False)
+        broken.setattr(Path, "rename", fail)
+        with pytest.raises(OutputError, match=r"stands whole in .*/\.out-\w{8}/old and comes back") as told:
+            write(bench, tmp_path / "out", formats=("json",), overwrite=True)
+    aside = str(told.value).partition("stands whole in ")[2].partition(" and comes")[0]
+    assert files(Path(aside)) == before
+    with pytest.raises(OutputError, match="the earlier report, back from a call that was killed"):
+        write(bench, tmp_path / "out", formats=("json",))
+    assert files(tmp_path / "out") == before
+    assert [path.name for path in tmp_path.iterdir()] == ["out"]
 
 
 @pytest.mark.parametrize("name", ["bench", "field", "many", "hostile"])

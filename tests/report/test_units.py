@@ -8,12 +8,14 @@ from pathlib import Path
 
 import pytest
 
+from gradeline.quantities import parse_unit
 from gradeline.quantities.printing import SI_DISPLAY, US_DISPLAY
 from gradeline.reduction.tables import Reduction
 from gradeline.report import summarise, terminal_summary, write
 from gradeline.report.blocks import headings
 from gradeline.report.converted import converted, converted_text
 from gradeline.report.figures import pictures
+from gradeline.report.inputs import raw_reading_tables, stated_words
 from gradeline.report.outline import outline
 
 
@@ -131,3 +133,26 @@ def test_the_record_is_si_in_any_units(bench: Reduction, tmp_path: Path) -> None
         write(bench, tmp_path / name, formats=("json", "csv"), display=display)
     for path in sorted((tmp_path / "si").iterdir()):
         assert path.read_bytes() == (tmp_path / "us" / path.name).read_bytes()
+
+
+def test_flow_and_temperature_as_read_stay_in_the_unit_of_the_record(bench: Reduction) -> None:
+    units = {**bench.survey, "units": {"flow": "L/min", "temperature": "degC"}}
+    (first, *_) = raw_reading_tables(dataclasses.replace(bench, survey=units), US_DISPLAY)
+    assert first.heads[:3] == ("run", "flow (L/min)", "t (°C)")
+    flowing = bench.runs[bench.runs["regime"] != "static"].iloc[0]
+    row = next(row for row in first.rows if row[0] == flowing["run"])
+    assert float(row[1]) == pytest.approx(60_000 * flowing["flow"], rel=1e-5)
+    assert float(row[2]) == pytest.approx(flowing["temperature"] - 273.15, abs=1e-5)
+
+
+def test_stated_values_have_no_more_digits_than_were_stated() -> None:
+    """1 mm is 0.0393701 in (0.0254 m an inch, exact): six digits of it would be none of the statement's."""
+    row = {"quantity": "small head", "value": 0.001, "value_u": None, "text": None}
+    assert stated_words(US_DISPLAY, row) == "0.0394 in"
+    assert stated_words(SI_DISPLAY, row) == "1 mm"
+    assert stated_words(US_DISPLAY, {**row, "quantity": "chainage", "value": 445.0}) == "1460 ft"
+
+
+def test_a_gallon_is_spelt_one_way_in_sentences_and_read_in_both() -> None:
+    assert parse_unit("US gal/min", "flow").factor == parse_unit("US_gal/min", "flow").factor
+    assert parse_unit("US_gal/min", "flow").label == US_DISPLAY.unit("flow")

@@ -463,8 +463,8 @@ def test_no_table_speaks_of_what_this_version_does_not_show(bench: Reduction) ->
 def test_another_level_leaves_the_upper_bound_at_95(bench: Reduction) -> None:
     table = wall_table(dataclasses.replace(bench, level=0.99))
     assert "99 % interval (mm)" in table.heads
-    assert "95 % upper bound (mm)" in table.heads
-    assert "The upper bound is one of 95 %, whatever the level of the intervals (99 %)." in table.caption
+    assert "one-sided 95 % upper bound (mm)" in table.heads
+    assert "It is one of 95 %, whatever the level of the intervals (99 %)." in table.caption
     assert "whatever" not in wall_table(bench).caption
 
 

@@ -14,7 +14,7 @@ from python_calamine import CalamineWorkbook
 
 from gradeline.reduction.tables import RESULT_TABLES, Reduction
 from gradeline.report import write
-from gradeline.report.xlsx import as_xlsx
+from gradeline.report.xlsx import _pattern, as_xlsx
 
 
 def sheets(content: bytes) -> dict[str, list[list[object]]]:
@@ -34,7 +34,7 @@ def content(field: Reduction) -> bytes:
 
 def test_a_sheet_for_each_table_with_its_columns_and_units(content: bytes) -> None:
     found = sheets(content)
-    assert list(found) == ["survey", *RESULT_TABLES, "charts"]
+    assert list(found) == ["survey", *RESULT_TABLES, "charts", "chart data"]
     for name, columns in RESULT_TABLES.items():
         assert found[name][0] == list(columns)
         for unit, column in zip(found[name][1], columns.values(), strict=True):
@@ -97,14 +97,57 @@ def test_charts_show_the_runs_on_log_axes(content: bytes, field: Reduction) -> N
     charts = [xml for name, xml in parts(content).items() if name.startswith("xl/charts/chart")]
     assert len(charts) == 2
     for xml in charts:
-        assert xml.count('<c:logBase val="10"/>') == 2
-        assert xml.count("<c:ser>") == len(field.reaches)
-    rows = sheets(content)["charts"]
+        assert "(1)" not in xml
+        assert xml.count("<c:errBars>") == len(field.reaches)
+    fitted = sum("fitted law" in xml for xml in charts)
+    assert [xml.count("<c:ser>") for xml in charts] == [len(field.reaches), 2 * len(field.reaches)]
+    assert fitted == 1
+    rows = sheets(content)["chart data"]
     upper = field.runs[(field.runs["reach"] == "upper main") & (field.runs["regime"] != "static")]
     shown = [(row[0], row[1]) for row in rows[3:] if row[0] != ""]
     assert shown == [
         pytest.approx(pair, rel=1e-15) for pair in zip(upper["velocity"], upper["slope"], strict=True)
     ]
+
+
+def test_axes_lie_about_the_data(content: bytes, field: Reduction) -> None:
+    flowing = field.runs[field.runs["regime"] != "static"]
+    charts = [xml for name, xml in sorted(parts(content).items()) if name.startswith("xl/charts/chart")]
+    for xml, names in zip(charts, (("velocity", "slope"), ("reynolds", "friction_factor")), strict=True):
+        limits = [
+            (float(low), float(high))
+            for high, low in re.findall(r'<c:max val="([^"]+)"/><c:min val="([^"]+)"/>', xml)
+        ]
+        for (low, high), name in zip(limits, names, strict=True):
+            assert low <= flowing[name].min() <= flowing[name].max() <= high
+            # the next of 1, 2 and 5 on a log axis, at the interval's ends on an even one
+            assert high / low < 30 * flowing[name].max() / flowing[name].min()
+
+
+def test_sheets_are_made_for_paper(content: bytes) -> None:
+    found = parts(content)
+    for name, xml in found.items():
+        if name.startswith("xl/worksheets/"):
+            assert 'fitToWidth="1"' in xml or "<pageSetUpPr fitToPage" in xml
+            assert "page &amp;P of &amp;N" in xml
+    assert found["xl/workbook.xml"].count("_xlnm.Print_Titles") >= len(RESULT_TABLES)
+    survey = found["xl/worksheets/sheet1.xml"]
+    heights = [float(height) for height in re.findall(r'<row [^>]* ht="([^"]+)"', survey)]
+    assert max(heights) >= 30  # a long text has more than one line
+
+
+@pytest.mark.parametrize(
+    ("sizes", "pattern"),
+    [
+        ([6.0, 12.0], "0"),
+        ([0.041234, 0.0375], "0.000000"),
+        ([20164.3, 2576.1], "0"),
+        ([1.2e-6], "0.0000E+00"),
+        ([], "0"),
+    ],
+)
+def test_number_formats_show_about_five_digits(sizes: list[float], pattern: str) -> None:
+    assert _pattern(sizes) == pattern
 
 
 def test_a_survey_at_rest_has_no_charts(make) -> None:

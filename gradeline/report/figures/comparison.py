@@ -6,6 +6,7 @@ import datetime
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, field
 from functools import partial
+from statistics import NormalDist
 from typing import Any
 
 import numpy as np
@@ -16,6 +17,7 @@ from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 from numpy.typing import NDArray
 
+from gradeline.comparison.bores import ONE
 from gradeline.comparison.tables import Comparison
 from gradeline.hydraulics.friction import colebrook_white
 from gradeline.quantities.printing import SI_DISPLAY, Display, thousands
@@ -333,7 +335,7 @@ def draw_factors(ax: Axes, comparison: Comparison, wall: str) -> FactorArtists:
     Returns
     -------
     FactorArtists
-        Up to six surveys have a colour and a mark each; of more, the first, the last and the odd ones.
+        Up to six surveys have a colour, a mark and intervals of their runs each; of more, the first, the last and the odd ones.
     """
     rows, runs = _rows(comparison, wall), _rows(comparison, wall, "runs")
     about = _rows(comparison, wall, "walls")[0]
@@ -360,6 +362,8 @@ def draw_factors(ax: Axes, comparison: Comparison, wall: str) -> FactorArtists:
             label=f"{len(others)} other surveys",
         )
     heights = [factor, colebrook_white(grid, 0.0)]
+    # About what each run's interval is: the table of runs holds standard uncertainties alone.
+    reach_of = NormalDist().inv_cdf(0.5 + comparison.level / 2.0)
     for n, name in enumerate(told):
         colour = REACH_COLOURS[n] if n < len(REACH_COLOURS) else COLOURS["vermilion"]
         here = np.array([run["survey"] == name for run in runs])
@@ -375,9 +379,32 @@ def draw_factors(ax: Axes, comparison: Comparison, wall: str) -> FactorArtists:
             zorder=4,
             label=shorten(name, 18),
         )
+        spread = reach_of * np.array(
+            [run["friction_factor_u"] if known(run["friction_factor_u"]) else np.nan for run in runs], float
+        )
+        bars = here & np.isfinite(spread)
+        if bars.any():
+            ax.vlines(
+                reynolds[bars],
+                np.maximum(factor[bars] - spread[bars], 0.2 * factor[bars]),
+                factor[bars] + spread[bars],
+                color=colour,
+                linewidth=0.9,
+                alpha=0.7,
+                zorder=3.5,
+            )
+            heights += [
+                factor[bars] + spread[bars],
+                np.maximum(factor[bars] - spread[bars], 0.2 * factor[bars]),
+            ]
         row = next(row for row in rows if row["survey"] == name)
         if known(row["roughness"]):
-            law = colebrook_white(grid, row["roughness"] / row["diameter"])
+            # Of unlike bores that are taken as one, the runs stand in that one, and so does the law.
+            one = about["bores"] == ONE and known(row["roughness_together"])
+            relative = (
+                row["roughness_together"] / about["diameter"] if one else row["roughness"] / row["diameter"]
+            )
+            law = colebrook_white(grid, relative)
             (laws[name],) = ax.plot(grid, law, color=colour, linewidth=1.1, zorder=3)
             heights.append(law)
     (smooth,) = ax.plot(

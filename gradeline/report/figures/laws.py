@@ -254,7 +254,17 @@ def draw_slope_velocity(
             order += [_mark(container), *([powers[key]] if key in powers else [])]
         order += [artist for artist in (flagged, turning) if artist is not None]
         corner = _clearest_corner(ax, x[seen], y[seen], len(order))
-        ax.legend(handles=order, loc=corner, handlelength=1.8, labelspacing=0.35)
+        # upon a band of its own, so that the grey one between the critical velocities does not run through it
+        ax.legend(
+            handles=order,
+            loc=corner,
+            handlelength=1.8,
+            labelspacing=0.35,
+            frameon=True,
+            facecolor="white",
+            framealpha=0.92,
+            edgecolor="none",
+        )
     else:
         ax.text(
             0.5,

@@ -117,7 +117,7 @@ def draw_likelihood(
         linewidth=1.2,
         linestyle=(0, (5, 2)),
         zorder=2.5,
-        label="95 % upper bound",
+        label="95 % upper bound, one-sided",
     )
     low, high = float(x.min()), float(x.max())
     limit = float(table["smooth_limit"].iloc[0]) * factor

@@ -16,13 +16,21 @@ from matplotlib.text import Annotation
 
 from gradeline.planning.tables import Plan
 from gradeline.quantities.printing import SI_DISPLAY, Display
+from gradeline.report.figures.end_labels import label_left_ends
+from gradeline.report.figures.render import png_of, svg_of
 from gradeline.report.figures.style import COLOURS, INK, MUTED, REACH_COLOURS, legend_above, shorten, styled
 
-__all__ = ["DeflectionArtists", "ExpectedArtists", "draw_deflections", "draw_expected_lines", "plan_figures"]
+__all__ = [
+    "DeflectionArtists",
+    "ExpectedArtists",
+    "draw_deflections",
+    "draw_expected_lines",
+    "plan_figures",
+    "plan_pictures",
+]
 
 _MARKERS = ("o", "s", "D", "^", "v", "P", "X")
-#: Labels of runs closer than this share of the height are left out.
-_APART = 0.04
+_DPI = 150
 
 
 @dataclass(frozen=True)
@@ -159,34 +167,16 @@ def _marks(ax: Axes, columns: pd.DataFrame, along: float, up: float, *, filled: 
 def _flow_labels(
     ax: Axes, lines: dict[str, Line2D], flow: dict[str, float], display: Display
 ) -> tuple[Annotation, ...]:
-    """The flow at the upstream end of each line, where the lines lie furthest apart; those without room are left out."""
-    found: list[Annotation] = []
-    low, high = ax.get_ylim()
-    taken: list[float] = []
-    for run, line in sorted(lines.items(), key=lambda item: -flow.get(item[0], 0.0)):
-        heights = np.asarray(line.get_ydata(), dtype=float)
-        if not len(heights) or not math.isfinite(heights[0]):
-            continue
-        height = float(heights[0])
-        if any(abs(height - other) < _APART * (high - low) for other in taken):
-            continue
-        taken.append(height)
-        found.append(
-            ax.annotate(
-                display.text("flow", flow[run], digits=3, unit=True),
-                (float(np.asarray(line.get_xdata(), dtype=float)[0]), height),
-                xytext=(-4, 0),
-                textcoords="offset points",
-                ha="right",
-                va="center",
-                fontsize=8,
-                color=INK,
-            )
-        )
-    if found:
-        left, right = ax.get_xlim()
-        ax.set_xlim(left - 0.1 * (right - left), right)
-    return tuple(found)
+    """The flow at the upstream end of each line, where the lines lie furthest apart."""
+    drawn = {
+        run: line
+        for run, line in lines.items()
+        if len(np.asarray(line.get_ydata())) and math.isfinite(float(np.asarray(line.get_ydata())[0]))
+    }
+    named: dict[str, Line2D] = {}
+    for run, line in drawn.items():  # two runs of one flow share a label
+        named.setdefault(display.text("flow", flow[run], digits=3, unit=True), line)
+    return label_left_ends(ax, list(named.values()), list(named))
 
 
 def draw_deflections(ax: Axes, plan: Plan, *, display: Display = SI_DISPLAY) -> DeflectionArtists:
@@ -264,10 +254,27 @@ def plan_figures(plan: Plan, *, display: Display = SI_DISPLAY) -> dict[str, Figu
     pairs = bool(plan.columns["tap_2"].notna().any())
     with styled():
         figure = Figure(figsize=(8.0, 4.6), layout="constrained")
+        _title(figure, plan, "expected grade lines")
         draw_expected_lines(figure.add_subplot(), plan, display=display)
         found["expected_grade_lines"] = figure
         if pairs:
             figure = Figure(figsize=(8.0, 4.2), layout="constrained")
+            _title(figure, plan, "expected deflections")
             draw_deflections(figure.add_subplot(), plan, display=display)
             found["expected_deflections"] = figure
     return found
+
+
+def _title(figure: Figure, plan: Plan, words: str) -> None:
+    figure.suptitle(
+        f"{shorten(plan.title, 50)}: {words}", x=0.02, ha="left", fontsize=10.5, fontweight="bold", color=INK
+    )
+
+
+def plan_pictures(plan: Plan, *, display: Display = SI_DISPLAY) -> dict[str, tuple[bytes, bytes]]:
+    """Return the figures of a plan as svg and png, by the name of their file; the same bytes for the same plan."""
+    with styled(**{"svg.hashsalt": "plan"}):
+        return {
+            name: (svg_of(figure), png_of(figure, _DPI))
+            for name, figure in plan_figures(plan, display=display).items()
+        }

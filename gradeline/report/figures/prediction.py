@@ -17,7 +17,8 @@ from numpy.typing import NDArray
 
 from gradeline.prediction.tables import Prediction
 from gradeline.quantities.printing import SI_DISPLAY, Display
-from gradeline.report.figures.render import _as_png, _as_svg
+from gradeline.report.figures.end_labels import label_left_ends
+from gradeline.report.figures.render import png_of, svg_of
 from gradeline.report.figures.style import COLOURS, INK, MUTED, REACH_COLOURS, legend_above, shorten, styled
 
 __all__ = [
@@ -32,19 +33,25 @@ Array = NDArray[np.float64]
 
 _SIZE = (6.4, 4.3)
 #: Flows beyond which one figure no longer tells them apart.
-_MOST_LINES = 5
+_MOST_LINES = 8
 _DPI = 125
 #: The pipe is drawn where the heads take at least this part of the height that both need, as 1 over it.
 _SHARE = 6.0
+#: Both grade lines have bands of their own where a velocity head takes at least this part of the height.
+_APART = 0.02
 
 
 @dataclass(frozen=True)
 class PredictedLineArtists:
-    """What `draw_predicted_lines` drew: a line and a band for each flow, and the pipe; None where there is none."""
+    """What `draw_predicted_lines` drew: two lines and their bands for each flow, and the pipe; None where there is none.
+
+    `egl_bands` is empty where they lie upon those of the HGL.
+    """
 
     hgl: tuple[Line2D, ...]
     egl: tuple[Line2D, ...]
     bands: tuple[FillBetweenPolyCollection | None, ...]
+    egl_bands: tuple[FillBetweenPolyCollection | None, ...]
     axis: Line2D | None
     legend_rows: int
 
@@ -73,17 +80,25 @@ def _chosen(prediction: Prediction) -> list[float]:
     return [flows[n] for n in np.linspace(0, len(flows) - 1, _MOST_LINES).round().astype(int)]
 
 
+def _left_out(prediction: Prediction) -> str:
+    """Say that only some flows are drawn; nothing where all are."""
+    told = int(prediction.flows["head_loss"].notna().sum())
+    return f", {_MOST_LINES} of {told} flows" if told > _MOST_LINES else ""
+
+
 def draw_predicted_lines(
     ax: Axes, prediction: Prediction, *, display: Display = SI_DISPLAY
 ) -> PredictedLineArtists:
-    """Draw the hydraulic and energy grade line at each flow with the band of the former, and the pipe's axis.
+    """Draw the hydraulic and energy grade line at each flow, each with its band, and the pipe's axis.
+
+    Where all velocity heads are too small for the two bands to be told apart, one stands for both and the legend says so.
 
     Parameters
     ----------
     ax : Axes
         Where to draw.
     prediction : Prediction
-        Its table ``grade_lines`` is read; of more than five flows five are drawn.
+        Its table ``grade_lines`` is read; of more than eight flows eight are drawn, and the figure says so.
     display : Display
         Units of the axes.
 
@@ -94,22 +109,25 @@ def draw_predicted_lines(
     scale, along = display.factor("head"), display.factor("chainage")
     hgl: list[Line2D] = []
     egl: list[Line2D] = []
+    egl_bands: list[FillBetweenPolyCollection | None] = []
     bands: list[FillBetweenPolyCollection | None] = []
     handles: list[Artist] = []
     flows = _chosen(prediction)
+    apart = _bands_apart(prediction, flows)
     for n, flow in enumerate(flows):
         rows = prediction.grade_lines[prediction.grade_lines["flow"] == flow]
         colour = REACH_COLOURS[n % len(REACH_COLOURS)]
+        # One flow: the lines have their colours of every report. Several: that of the flow, and a grey band for the EGL.
+        egl_colour = INK if len(flows) == 1 else colour
         x = _numbers(rows, "chainage") * along
-        low, high = (_numbers(rows, f"piezometric_head_{end}") * scale for end in ("low", "high"))
-        band = None
-        if np.isfinite(low).any():
-            band = ax.fill_between(x, low, high, color=colour, alpha=0.25, linewidth=0, zorder=1.5)
+        band = _draw_band(ax, x, rows, "piezometric_head", scale, colour, 0.25)
+        if apart:
+            egl_bands.append(_draw_band(ax, x, rows, "energy_head", scale, MUTED, 0.22))
         name = display.text("flow", flow, unit=True)
         (upper,) = ax.plot(
             x,
             _numbers(rows, "energy_head") * scale,
-            color=colour,
+            color=egl_colour,
             linewidth=1.0,
             linestyle=(0, (5, 2)),
             label="_egl",
@@ -117,27 +135,23 @@ def draw_predicted_lines(
         (lower,) = ax.plot(
             x, _numbers(rows, "piezometric_head") * scale, color=colour, linewidth=1.5, label=f"HGL, {name}"
         )
-        if len(flows) > 1:  # which is which without the colour
-            ax.annotate(
-                name,
-                (x[0], lower.get_ydata()[0]),  # type: ignore[index]
-                xytext=(4, -4),
-                textcoords="offset points",
-                va="top",
-                fontsize=8,
-                color=INK,
-            )
         hgl.append(lower)
         egl.append(upper)
         bands.append(band)
-        handles.append(lower)
+    if len(flows) == 1:
+        handles += hgl
+    elif hgl:  # the labels at their ends tell the flows
+        handles.append(Line2D([], [], color=MUTED, linewidth=1.5, label="HGL"))
     axis = _draw_axis(ax, prediction, flows, display)
     if egl:
-        handles.append(Line2D([], [], color=MUTED, linewidth=1.0, linestyle=(0, (5, 2)), label="EGL"))
-    drawn = next((band for band in bands if band is not None), None)
-    if drawn is not None:
-        drawn.set_label(f"{100 * prediction.level:.3g} % band of the HGL")
-        handles.append(drawn)
+        muted = INK if len(flows) == 1 else MUTED
+        handles.append(Line2D([], [], color=muted, linewidth=1.0, linestyle=(0, (5, 2)), label="EGL"))
+    words = f"{100 * prediction.level:.3g} % band of"
+    for drawn, name in ((bands, "the HGL" if apart else "both lines"), (egl_bands, "the EGL")):
+        first = next((band for band in drawn if band is not None), None)
+        if first is not None:
+            first.set_label(f"{words} {name}")
+            handles.append(first)
     if axis is not None:
         handles.append(axis)
     ax.set_xlabel(display.head("chainage x", "chainage"))
@@ -153,7 +167,29 @@ def draw_predicted_lines(
         arrowprops={"arrowstyle": "-|>", "color": MUTED, "linewidth": 1.2},
     )
     ax.text(0.895, 0.955, "flow", transform=ax.transAxes, ha="right", va="center", fontsize=9, color=MUTED)
-    return PredictedLineArtists(tuple(hgl), tuple(egl), tuple(bands), axis, legend_above(ax, handles))
+    if len(flows) > 1:  # which is which without the colour
+        label_left_ends(ax, hgl, [display.text("flow", flow, digits=3, unit=True) for flow in flows])
+    return PredictedLineArtists(
+        tuple(hgl), tuple(egl), tuple(bands), tuple(egl_bands), axis, legend_above(ax, handles)
+    )
+
+
+def _draw_band(
+    ax: Axes, x: Array, rows: pd.DataFrame, name: str, scale: float, colour: str, alpha: float
+) -> FillBetweenPolyCollection | None:
+    low, high = (_numbers(rows, f"{name}_{end}") * scale for end in ("low", "high"))
+    if not np.isfinite(low).any():
+        return None
+    return ax.fill_between(x, low, high, color=colour, alpha=alpha, linewidth=0, zorder=1.5)
+
+
+def _bands_apart(prediction: Prediction, flows: list[float]) -> bool:
+    """Whether HGL and EGL lie so far apart that a band of each can be seen; they differ by the velocity head alone."""
+    lines = prediction.grade_lines[prediction.grade_lines["flow"].isin(flows)]
+    if not len(lines):
+        return False
+    egl, hgl = _numbers(lines, "energy_head"), _numbers(lines, "piezometric_head")
+    return float(np.max(egl - hgl)) >= _APART * float(egl.max() - hgl.min())
 
 
 def _draw_axis(ax: Axes, prediction: Prediction, flows: list[float], display: Display) -> Line2D | None:
@@ -198,7 +234,11 @@ def draw_head_loss(ax: Axes, prediction: Prediction, *, display: Display = SI_DI
     table = prediction.flows.sort_values("flow")
     scale, across = display.factor("head"), display.factor("flow")
     x = _numbers(table, "flow") * across
-    low, high = (_numbers(table, f"head_loss_{end}") * scale for end in ("low", "high"))
+    # In the critical zone no line is drawn, and the interval there is no band about one.
+    told = table["head_loss"].notna().to_numpy(bool)
+    low, high = (
+        np.where(told, _numbers(table, f"head_loss_{end}") * scale, np.nan) for end in ("low", "high")
+    )
     band = None
     if np.isfinite(low).any():
         band = ax.fill_between(
@@ -263,7 +303,9 @@ def prediction_pictures(
         if _chosen(prediction):
             figure, ax = _canvas()
             rows = draw_predicted_lines(ax, prediction, display=display).legend_rows
-            _title(figure, f"{shorten(prediction.title, 50)}: predicted grade lines", rows)
+            _title(
+                figure, f"{shorten(prediction.title, 50)}: predicted grade lines{_left_out(prediction)}", rows
+            )
             found["grade_lines"] = _rendered(figure, kinds)
         if len(_chosen(prediction)) > 1:
             figure, ax = _canvas()
@@ -287,7 +329,7 @@ def _title(figure: Figure, text: str, rows: int) -> None:
 def _rendered(figure: Figure, kinds: Collection[str]) -> dict[str, bytes]:
     made = {}
     if "svg" in kinds:
-        made["svg"] = _as_svg(figure)
+        made["svg"] = svg_of(figure)
     if "png" in kinds:
-        made["png"] = _as_png(figure, _DPI)
+        made["png"] = png_of(figure, _DPI)
     return made

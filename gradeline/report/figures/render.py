@@ -34,11 +34,12 @@ from gradeline.report.figures.differences import drawn_runs
 from gradeline.report.figures.grade_lines import flagged_words, run_title
 from gradeline.report.figures.laws import draw_friction_factor, draw_slope_velocity
 from gradeline.report.figures.likelihood import LikelihoodArtists, draw_likelihood, drawn_walls
+from gradeline.report.figures.logger_record import record_alt, record_figure, recorded
 from gradeline.report.figures.losses import LossArtists, draw_loss_coefficient, drawn_losses
 from gradeline.report.figures.residuals import any_left_over, draw_residuals
 from gradeline.report.figures.style import shorten, styled
 
-__all__ = ["Picture", "embedded", "pictures"]
+__all__ = ["Picture", "embedded", "pictures", "png_of", "svg_of"]
 
 #: More runs than this are drawn as panels.
 SINGLE_RUNS = 24
@@ -64,7 +65,7 @@ class Picture:
         One line for the page's caption.
     alt : str
         What it shows, for readers who do not see it.
-    group : {"grade lines", "residuals", "ailments", "slope velocity", "friction factor", "fittings", "budget", "likelihood"}
+    group : {"record", "grade lines", "residuals", "ailments", "slope velocity", "friction factor", "fittings", "budget", "likelihood"}
         The section of the page it belongs to.
     svg, png : bytes
         Empty where that format was not asked for.
@@ -119,6 +120,14 @@ _Plan = tuple[str, str, str, str, Callable[[], Figure]]
 
 
 def _plans(reduction: Reduction, display: Display, blanks: Canvases) -> Iterator[_Plan]:
+    if recorded(reduction):
+        yield (
+            "record",
+            "The logger's record",
+            record_alt(reduction),
+            "record",
+            partial(record_figure, reduction),
+        )
     runs = drawn_runs(reduction)
     if len(runs) <= SINGLE_RUNS:
         for n, run in enumerate(runs, 1):
@@ -276,17 +285,18 @@ def _render(
 ) -> Picture:
     mpl.rcParams["svg.hashsalt"] = name
     figure = draw()
-    as_svg = _as_svg(figure) if svg else b""
+    as_svg = svg_of(figure) if svg else b""
     for_paper = b""
     if paper:
         with mpl.rc_context({"svg.fonttype": "path"}):
-            for_paper = _METADATA.sub(b"", _as_svg(figure), count=1)
+            for_paper = _METADATA.sub(b"", svg_of(figure), count=1)
         if b"<pattern" in for_paper:
-            for_paper = _as_png(figure, _PAPER_DPI)
-    return Picture(name, title, alt, group, as_svg, _as_png(figure, _DPI) if png else b"", for_paper)
+            for_paper = png_of(figure, _PAPER_DPI)
+    return Picture(name, title, alt, group, as_svg, png_of(figure, _DPI) if png else b"", for_paper)
 
 
-def _as_svg(figure: Figure) -> bytes:
+def svg_of(figure: Figure) -> bytes:
+    """Return a figure as SVG, the same bytes every time where `svg.hashsalt` is set."""
     out = io.BytesIO()
     FigureCanvasSVG(figure).print_svg(  # type: ignore[no-untyped-call]  # the library has no types
         out, metadata={"Date": None, "Creator": None}
@@ -294,7 +304,8 @@ def _as_svg(figure: Figure) -> bytes:
     return out.getvalue()
 
 
-def _as_png(figure: Figure, dpi: int) -> bytes:
+def png_of(figure: Figure, dpi: int) -> bytes:
+    """Return a figure as PNG, the same bytes every time."""
     out = io.BytesIO()
     figure.set_dpi(dpi)
     canvas = FigureCanvasAgg(figure)

@@ -27,6 +27,9 @@ from gradeline.report.figures.style import (
 __all__ = ["ResidualArtists", "any_left_over", "draw_residuals"]
 
 _MANY_MARKS = 4000
+#: Taps whose scatter differs by more than this factor are drawn in standard deviations.
+_UNLIKE = 4.0
+_DEVIATIONS = "standard deviations"
 #: A residual below this, in the unit of the axis, is no more than the rounding of the arithmetic.
 _ROUNDING = 1e-6
 _NAMED_TAPS = 24
@@ -101,7 +104,7 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
     x = np.array(
         [order[name] + spread.get(run, 0.0) for name, run in zip(_names(heads), run_of, strict=True)], float
     )
-    y = heads["residual"].to_numpy(float, na_value=np.nan) * display.factor("small head")
+    y, halves, unit = _on_one_axis(reduction, labels_in_order, display)
     # static runs from which the offsets were taken lie on the line by construction
     at_rest = np.array([regimes.get(run) == "static" for run in run_of], bool)
     if not (np.abs(y[at_rest]) > 1e-6).any():
@@ -112,7 +115,7 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
     outlying = np.array([flag == "outlier" for flag in flags], bool) & np.isfinite(y)
     regime = np.array([regimes.get(run, "static") for run in run_of], object)
 
-    still, fastest, two_sigma = _scatter_bands(ax, reduction, labels_in_order, display)
+    still, fastest, two_sigma = _scatter_bands(ax, *halves)
     near = np.isfinite(y) & ~outlying & (used | (np.abs(y) < 3 * two_sigma))
     sound = np.abs(y[near])
     limit = 1.35 * max([two_sigma, *sound.tolist()], default=1.0)
@@ -162,7 +165,7 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
             label="flagged",
             zorder=4,
         )
-        labels = _ring_labels(ax, np.flatnonzero(outlying), run_of, (x, y, shown), len(order), display)
+        labels = _ring_labels(ax, np.flatnonzero(outlying), run_of, (x, y, shown), len(order), unit)
     ax.vlines(np.arange(len(order) - 1) + 0.5, -limit, limit, color="#d5dadd", linewidth=0.7, zorder=0.8)
     ax.axhline(0, color=MUTED, linewidth=0.9, zorder=2)
     ax.set_ylim(-limit, limit)
@@ -177,7 +180,11 @@ def draw_residuals(ax: Axes, reduction: Reduction, *, display: Display = SI_DISP
             color=MUTED,
         )
     _tap_axis(ax, labels_in_order)
-    ax.set_ylabel(display.head("measured − fitted energy head", "small head"))
+    ax.set_ylabel(
+        "residual / scatter of its gauge"
+        if unit == _DEVIATIONS
+        else f"measured − fitted energy head ({unit})"
+    )
     handles = [
         artist for artist in (*drawn.values(), left_out, flagged, still, fastest) if artist is not None
     ]
@@ -213,7 +220,7 @@ def _ring_labels(
     run_of: npt.NDArray[np.object_],
     places: tuple[npt.NDArray[np.float64], npt.NDArray[np.float64], npt.NDArray[np.float64]],
     taps: int,
-    display: Display,
+    unit: str,
 ) -> list[Annotation]:
     """Name the first rings: x, residual and where it is shown are the three `places`."""
     x, y, shown = places
@@ -228,18 +235,17 @@ def _ring_labels(
         level = min(set(range(_NAMED_RINGS)) - taken)
         named.append((at[0], bool(y[row] > 0), level))
         name, to_right = shorten(run_of[row], 16), bool(x[row] < 0.6 * taps)
-        labels.append(_ring_label(ax, name, at, y[row], level=level, to_right=to_right, display=display))
+        labels.append(_ring_label(ax, name, at, y[row], level=level, to_right=to_right, unit=unit))
     return labels
 
 
 def _ring_label(
-    ax: Axes, run: str, at: tuple[float, float], value: float, *, level: int, to_right: bool, display: Display
+    ax: Axes, run: str, at: tuple[float, float], value: float, *, level: int, to_right: bool, unit: str
 ) -> Annotation:
     x, shown = at
     beyond = abs(value) > abs(shown) * 1.0001
     text = f"run {run}"
     if beyond:
-        unit = display.unit("small head")
         text = f"run {run}: {'+' if value > 0 else ''}{format_number(value, 3)} {unit} {'↑' if value > 0 else '↓'}"
     return ax.annotate(
         text,
@@ -255,10 +261,34 @@ def _ring_label(
     )
 
 
-def _scatter_bands(
-    ax: Axes, reduction: Reduction, labels: list[str], display: Display
-) -> tuple[PolyCollection | None, PolyCollection | None, float]:
-    """Two standard deviations of the pooled scatter at each tap, at rest and in the fastest run."""
+def _on_one_axis(
+    reduction: Reduction, labels: list[str], display: Display
+) -> tuple[npt.NDArray[np.float64], tuple[npt.NDArray[np.float64], npt.NDArray[np.float64]], str]:
+    """The residuals, the half widths of the bands at rest and in the fastest run, and the unit of them all.
+
+    Gauges of unlike accuracy share no axis of heads, since fine scatter of one is gross in another: there the residuals
+    are in standard deviations of the scatter in the fastest run.
+    """
+    heads = reduction.heads
+    y = heads["residual"].to_numpy(float, na_value=np.nan) * display.factor("small head")
+    still, fastest = _half_widths(reduction, labels, display)
+    if not _kinds_apart(fastest):
+        return y, (still, fastest), display.unit("small head")
+    size = fastest / 2
+    place = {name: n for n, name in enumerate(labels)}
+    return y / size[[place[name] for name in _names(heads)]], (still / size, fastest / size), _DEVIATIONS
+
+
+def _kinds_apart(half: npt.NDArray[np.float64]) -> bool:
+    """Whether the scatter of the taps is so unlike that one axis of heads shows that of some alone."""
+    told = half[np.isfinite(half) & (half > 0)]
+    return len(told) == len(half) > 0 and bool(told.max() > _UNLIKE * told.min())
+
+
+def _half_widths(
+    reduction: Reduction, labels: list[str], display: Display
+) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64]]:
+    """Two standard deviations of the pooled scatter at each tap, at rest and in the fastest run; NaN where not known."""
     heads, scatter = reduction.heads, reduction.scatter
     gauge_of = dict(zip(_names(heads), heads["gauge"].tolist(), strict=True))
     row_of = {gauge: _scatter_row(reduction, gauge) for gauge in set(gauge_of.values())}
@@ -273,11 +303,16 @@ def _scatter_bands(
         return np.array([np.nan if row is None else values[row] for row in rows], float)
 
     low, moving = of_taps("base"), of_taps("surge")
+    return scale * low, scale * np.hypot(low, np.nan_to_num(moving) * head)
+
+
+def _scatter_bands(
+    ax: Axes, low: npt.NDArray[np.float64], high: npt.NDArray[np.float64]
+) -> tuple[PolyCollection | None, PolyCollection | None, float]:
+    """Bands of these half widths at each tap, and the largest of them."""
     if not np.isfinite(low).any():
         return None, None, 0.0
-    high = scale * np.hypot(low, np.nan_to_num(moving) * head)
-    low = scale * low
-    places = np.concatenate([[n - 0.5, n + 0.5] for n in range(len(labels))])
+    places = np.concatenate([[n - 0.5, n + 0.5] for n in range(len(low))])
 
     def band(half: npt.NDArray[np.float64], alpha: float, label: str) -> PolyCollection:
         both = np.repeat(half, 2)
