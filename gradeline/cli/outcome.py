@@ -12,7 +12,16 @@ import typer
 
 from gradeline.errors import GradelineError, OutputError, Problem, SurveyError, UsageError
 
-__all__ = ["INTERRUPTED", "NOT_WRITTEN", "SURVEY_PROBLEMS", "UNKNOWN", "WRONG_USE", "Outcome", "attempt", "unknown_error"]
+__all__ = [
+    "INTERRUPTED",
+    "NOT_WRITTEN",
+    "SURVEY_PROBLEMS",
+    "UNKNOWN",
+    "WRONG_USE",
+    "Outcome",
+    "attempt",
+    "unknown_error",
+]
 
 UNKNOWN, WRONG_USE, SURVEY_PROBLEMS, NOT_WRITTEN = 1, 2, 3, 4
 #: As a shell counts what Ctrl-C ended.

@@ -187,7 +187,13 @@ def _taps(survey: Survey, corrections: Corrections, flowing: Flowing) -> list[_F
             "local loss near it or a change of slope; the slopes may be biased until the cause is found"
         )
         errors = flowing.fits.error[np.isfinite(flowing.fits.error[:, i]), i]
-        if place == 0 and misfit.pattern == 0 and corrections.applied and corrections.known[i] and errors.size:
+        if (
+            place == 0
+            and misfit.pattern == 0
+            and corrections.applied
+            and corrections.known[i]
+            and errors.size
+        ):
             error = float(np.median(errors))
             text = f"off by the same amount in most runs: {_static_slip(survey, corrections, error, i)}"
         found.append(_Flag("tap", None, survey.observations[i].label, score=float(score[i]), suggestion=text))
