@@ -76,4 +76,4 @@ def test_several_surveys_go_into_one_folder(heads: Path, tmp_path: Path) -> None
     other = heads.with_name("second.csv")
     other.write_bytes(heads.read_bytes())
     assert run("reduce", heads, other, *OPTIONS, "--formats", "json", "--out", tmp_path / "all")[0] == 0
-    assert {path.name for path in (tmp_path / "all").iterdir()} == {"heads", "second"}
+    assert {path.name for path in (tmp_path / "all").iterdir()} == {"heads", "second", "summary.csv"}

@@ -274,7 +274,7 @@ def test_the_gauge_is_understood_and_reported(write_flow):
         write_flow(toml + 'uncertainty = "0.5 mm"\nrange = "0 to 1 m"\n', cells(columns))
     )
     text = understood(survey)
-    assert "differential_gauge m2" in text
+    assert "differential gauge m2" in text, text
     assert "  m2     u-tube" in text
     assert "m2 left" in text
     assert "  1    0.4 " in text

@@ -95,7 +95,7 @@ def test_the_density_of_a_leg_is_an_error_of_all_runs(tmp_path):
 @pytest.mark.parametrize("missing", [(), (1, 3, 5)])
 def test_a_drift_is_corrected_by_the_turns_of_what_was_read(missing):
     """Taps read in order while the flow falls by 2 %: each head is that of its own moment, read or not by the others."""
-    from gradeline.survey import FlowSetup  # noqa: PLC0415 - only here
+    from gradeline.flow_methods import FlowSetup  # noqa: PLC0415 - only here
 
     survey, _ = tube(FAST, sigma=1e-9)
     heads = survey.readings.to_numpy().copy()

@@ -85,23 +85,18 @@ def test_a_file_that_goes_and_comes_is_followed(follower, survey):
 
 def test_a_file_that_stays_locked_is_told_and_tried_again(follower, survey, monkeypatch):
     follower.step()
-    opened, read, locked = Path.open, Path.read_bytes, {"on": True}
+    locked = {"on": True}
 
-    def refused(self):
-        return locked["on"] and self.name == "readings.csv"
+    def refusing(opened):
+        def open_it(path, *arguments, **keys):
+            if locked["on"] and str(path).endswith("readings.csv"):
+                raise PermissionError(13, "Permission denied")
+            return opened(path, *arguments, **keys)
 
-    def open_it(self, *arguments, **keys):
-        if refused(self):
-            raise PermissionError(13, "Permission denied")
-        return opened(self, *arguments, **keys)
+        return open_it
 
-    def read_it(self):
-        if refused(self):
-            raise PermissionError(13, "Permission denied")
-        return read(self)
-
-    monkeypatch.setattr(Path, "open", open_it)
-    monkeypatch.setattr(Path, "read_bytes", read_it)
+    for place, name in ((os, "open"), (Path, "open"), (Path, "read_bytes")):
+        monkeypatch.setattr(place, name, refusing(getattr(place, name)))
     monkeypatch.setattr("gradeline.cli.watch.following.PATIENCE", 0.5)
     os.utime(survey / "readings.csv", (1, 1))
     assert follower.step().code == 3
