@@ -8,7 +8,7 @@ from unittest import mock
 import numpy as np
 
 from gradeline.quantities import Measured
-from gradeline.reduction import compose
+from gradeline.reduction import estimates
 from gradeline.reduction.monte_carlo import RunDraws
 from tests.simulate.surveys import NominalReach, Uncertainties, make_survey
 
@@ -28,8 +28,8 @@ def run_draws() -> list[RunDraws]:
         ),
     )
     reach = replace(survey.reaches[0], diameter=Measured(0.02664, 3e-5))
-    with mock.patch.object(compose, "checked_friction", wraps=compose.checked_friction) as checked:
-        compose.reduce(replace(survey, reaches=(reach,)))
+    with mock.patch.object(estimates, "checked_friction", wraps=estimates.checked_friction) as checked:
+        estimates.estimates_of(replace(survey, reaches=(reach,)))
     flowing, friction = checked.call_args.args
     places = np.arange(DRAWN_RUNS)
     return [
