@@ -103,8 +103,7 @@ def _shifted(carried: Carried, answers: Sequence[Answer]) -> list[str]:
         return []
     return [
         "Bores and loss coefficients are as all runs together show them best, within their stated uncertainties; Re, V and f "
-        f"are told of the stated bores, so that f V²/2gD differs from S by up to {100 * most:.2g} %, and a K may differ from "
-        "that of the reduction."
+        f"are told of the stated bores, so that f V²/2gD differs from S by up to {100 * most:.2g} %."
     ]
 
 
