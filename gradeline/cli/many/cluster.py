@@ -96,8 +96,13 @@ def on_cluster(orders: Sequence[Order], address: str, watcher: Watcher) -> Gener
 
 def _client(distributed: Any, address: str) -> Any:
     """A client of the scheduler that answers in time and has workers."""
-    for name in ("distributed", "asyncio", "tornado"):
-        logging.getLogger(name).setLevel(logging.CRITICAL)  # what matters is told in our own words
+    for name in [*logging.root.manager.loggerDict, "asyncio", "tornado"]:
+        if name.partition(".")[0] in {
+            "distributed",
+            "asyncio",
+            "tornado",
+        }:  # each part of it has a level of its own
+            logging.getLogger(name).setLevel(logging.CRITICAL)  # what matters is told in our own words
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")
         try:
