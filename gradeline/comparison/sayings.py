@@ -7,6 +7,7 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 from gradeline.comparison.bores import DIFFER, ONE, UNMATCHED
+from gradeline.comparison.changes import MARGIN
 from gradeline.comparison.matching import Taken, Together
 from gradeline.reduction.fitted import FittedWall
 
@@ -47,7 +48,7 @@ def assumptions_of(
                 f"The {what} {'are' if plural else 'is'} taken as {'others' if plural else 'another'} in each survey: to take an "
                 f"error as common that is not would make a change look surer than it is ({option} where it is)."
             )
-    chance = f"{100 * (1 - level):.3g} %"
+    chance = f"{100 * MARGIN * (1 - level):.3g} %"
     shared = "" if tests == 1 else f", shared among {tests} walls"
     said.append(
         f"A change is called real where chance alone would give as large a one in fewer than {chance} of cases{shared}; of "
