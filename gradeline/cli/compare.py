@@ -105,6 +105,7 @@ def compare_surveys(
     with bar(len(surveys)) as shown:
         for source in surveys:
             shown.begin(source.name)
+            # The default binds this source, which the type checker cannot see.
             outcome = attempt(lambda source=source: _reduced(source, asked.level), source, contain=True)  # type: ignore[misc]
             for line in outcome.lines():
                 shown.tell(line, err=True)

@@ -98,6 +98,8 @@ def reading(name: str, *, shown: bool = True) -> Iterator[Callable[[float], None
     def told(share: float) -> None:
         if not drawn:  # nothing is drawn for what tells nothing: a file that is read at once
             from rich.console import Console  # noqa: PLC0415 (loaded when asked for: start-up time)
+
+            # Loaded when asked for as well.
             from rich.progress import BarColumn, Progress, TaskProgressColumn, TextColumn, TimeRemainingColumn  # noqa: PLC0415
 
             progress = Progress(

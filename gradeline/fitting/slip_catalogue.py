@@ -106,7 +106,7 @@ def _of_digits(columns: list[Array], details: list[str], decimals: int, rows: in
     return Candidates(values, np.ones(values.shape[1]), tuple(details))
 
 
-def _transposed(values: Array, decimals: int, places: int, factors: Mapping[str, float]) -> Candidates:  # noqa: ARG001
+def _transposed(values: Array, decimals: int, places: int, factors: Mapping[str, float]) -> Candidates:  # noqa: ARG001 (all slips are called alike)
     """Two neighbouring digits in each other's place."""
     whole, count, sign, most = _digits(values, decimals, places)
     columns = []
@@ -120,7 +120,7 @@ def _transposed(values: Array, decimals: int, places: int, factors: Mapping[str,
     return _of_digits(columns, [""] * len(columns), decimals, len(values))
 
 
-def _one_digit(values: Array, decimals: int, places: int, factors: Mapping[str, float]) -> Candidates:  # noqa: ARG001
+def _one_digit(values: Array, decimals: int, places: int, factors: Mapping[str, float]) -> Candidates:  # noqa: ARG001 (all slips are called alike)
     """One digit another."""
     whole, count, sign, most = _digits(values, decimals, places)
     columns = []
@@ -133,7 +133,7 @@ def _one_digit(values: Array, decimals: int, places: int, factors: Mapping[str, 
     return _of_digits(columns, [""] * len(columns), decimals, len(values))
 
 
-def _decimal(values: Array, decimals: int, places: int, factors: Mapping[str, float]) -> Candidates:  # noqa: ARG001
+def _decimal(values: Array, decimals: int, places: int, factors: Mapping[str, float]) -> Candidates:  # noqa: ARG001 (all slips are called alike)
     """The decimal point one to three places off."""
     shifts = (-3, -2, -1, 1, 2, 3)
     rate = 10.0 ** np.array(shifts)
@@ -142,13 +142,13 @@ def _decimal(values: Array, decimals: int, places: int, factors: Mapping[str, fl
     return Candidates(values[:, None] * rate, rate, details, share)
 
 
-def _unit(values: Array, decimals: int, places: int, factors: Mapping[str, float]) -> Candidates:  # noqa: ARG001
+def _unit(values: Array, decimals: int, places: int, factors: Mapping[str, float]) -> Candidates:  # noqa: ARG001 (all slips are called alike)
     """Read in another unit than that of its column."""
     ratio = np.array(list(factors.values()), dtype=float)
     return Candidates(values[:, None] * ratio, ratio, tuple(factors))
 
 
-def _sign(values: Array, decimals: int, places: int, factors: Mapping[str, float]) -> Candidates:  # noqa: ARG001
+def _sign(values: Array, decimals: int, places: int, factors: Mapping[str, float]) -> Candidates:  # noqa: ARG001 (all slips are called alike)
     """The other sign."""
     return Candidates(np.where(values == 0, np.nan, -values)[:, None], np.ones(1), ("",))
 

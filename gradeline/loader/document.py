@@ -310,10 +310,10 @@ def read_document(ledger: Ledger) -> Document | None:
     gauges = _gauges(ledger, described)
     flow_gauges = _flow_gauges(ledger, at_meter)
     return Document(
-        survey=single["survey"] if "survey" in data else SurveyTable(),  # type: ignore[arg-type]
-        fluid=single["fluid"] if "fluid" in data else FluidTable(name="water"),  # type: ignore[arg-type]
-        site=single["site"] if "site" in data else SiteTable(),  # type: ignore[arg-type]
-        uncertainty=single["uncertainty"] if "uncertainty" in data else UncertaintyTable(),  # type: ignore[arg-type]
+        survey=single["survey"] if "survey" in data else SurveyTable(),  # type: ignore[arg-type]  # validated by key
+        fluid=single["fluid"] if "fluid" in data else FluidTable(name="water"),  # type: ignore[arg-type]  # validated by key
+        site=single["site"] if "site" in data else SiteTable(),  # type: ignore[arg-type]  # validated by key
+        uncertainty=single["uncertainty"] if "uncertainty" in data else UncertaintyTable(),  # type: ignore[arg-type]  # validated by key
         reaches=lists["reach"],  # type: ignore[arg-type]  # each list holds its own table
         fittings=lists["fitting"],  # type: ignore[arg-type]  # each list holds its own table
         offtakes=lists["offtake"],  # type: ignore[arg-type]  # each list holds its own table
@@ -323,7 +323,7 @@ def read_document(ledger: Ledger) -> Document | None:
         flow=_with_gauges(ledger, flow, flow_gauges, gauges),
         flow_gauges=flow_gauges,
         walls=read_walls(ledger, data.get("wall"), _validate),
-        logger=single["logger"] if "logger" in data else LoggerTable(),  # type: ignore[arg-type]
+        logger=single["logger"] if "logger" in data else LoggerTable(),  # type: ignore[arg-type]  # validated by key
     )
 
 
@@ -449,7 +449,7 @@ def _legs(
     if "leg" not in table:
         ledger.problem(NAME, None, path, f"the gauge has no legs; describe each one with [[{path}.leg]]")
         return (), rest
-    return _list(ledger, LegTable, table["leg"], f"{path}.leg"), rest  # type: ignore[return-value]
+    return _list(ledger, LegTable, table["leg"], f"{path}.leg"), rest  # type: ignore[return-value]  # a list of that model
 
 
 def _validate(ledger: Ledger, model: type[BaseModel], data: object, path: str) -> BaseModel | None:

@@ -263,7 +263,7 @@ def _outlets(
         read = validate(ledger, model, each, f"flow.outlet[{place}]")
         if read is None:
             continue
-        name = str(getattr(read, "name"))  # noqa: B009
+        name = str(getattr(read, "name"))  # noqa: B009 (the model is made at run time: no type knows its names)
         if name in {one.name for one in found}:
             ledger.problem(
                 _NAME,

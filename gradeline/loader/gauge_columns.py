@@ -33,7 +33,7 @@ class Observed:
 def _parts(gauge: GaugeTable, taps: Mapping[str, object]) -> list[str]:
     """What a gauge is read at one by one: its limbs, or its levels."""
     kind = GAUGE_KINDS[gauge.kind or ""]
-    return level_labels(gauge, taps) if kind.legs else list(kind.limbs)  # type: ignore[arg-type]
+    return level_labels(gauge, taps) if kind.legs else list(kind.limbs)  # type: ignore[arg-type]  # a mapping serves as its names
 
 
 def _differential(gauges: Mapping[str, GaugeTable]) -> list[GaugeTable]:

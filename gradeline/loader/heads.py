@@ -181,7 +181,7 @@ class TableOfHeads:
             "uncertainty": stated,
         }
 
-    def table(self, ledger: Ledger, name: str, *, required: bool = True) -> Cells | None:  # noqa: ARG002
+    def table(self, ledger: Ledger, name: str, *, required: bool = True) -> Cells | None:  # noqa: ARG002 (all sources are asked alike)
         """Return the part of the table that a survey has as ``taps``, ``readings`` or ``runs``."""
         cells = self._cells
         if cells is None:
@@ -193,7 +193,7 @@ class TableOfHeads:
         }
         return parts[name](cells)
 
-    def place_of(self, ledger: Ledger, name: str) -> str | None:  # noqa: ARG002
+    def place_of(self, ledger: Ledger, name: str) -> str | None:  # noqa: ARG002 (all sources are asked alike)
         """Return what messages call a table of the survey."""
         return self.file
 

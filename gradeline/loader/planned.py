@@ -326,7 +326,7 @@ def _wanted(document: Document, taps: TapTable, there: frozenset[str]) -> list[H
         if kind is None or not kind.differential:
             continue
         if kind.legs:
-            names += [f"{gauge.name} {part}" for part in level_labels(gauge, known)]  # type: ignore[arg-type]
+            names += [f"{gauge.name} {part}" for part in level_labels(gauge, known)]  # type: ignore[arg-type]  # as above: names alone
             continue
         limbs = [f"{gauge.name} {part}" for part in kind.limbs]
         # A well-type manometer is read at one limb, and so is a column that the survey has already.

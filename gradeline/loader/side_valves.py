@@ -41,7 +41,7 @@ def build_side_valves(
                 f"another side valve is called {table.name!r}; give each its own name",
             )
             continue
-        found.append(SideValve(table.name, table.state, _where(table.at, taps or ())))  # type: ignore[arg-type]
+        found.append(SideValve(table.name, table.state, _where(table.at, taps or ())))  # type: ignore[arg-type]  # the state was validated
     return tuple(found)
 
 

@@ -121,7 +121,7 @@ class Sheets:
         sheet = self._sheet(ledger, name, "add it") if required else self.workbook.sheet_called(name)
         return None if sheet is None else sheet_cells(ledger, self.workbook, sheet)
 
-    def place_of(self, ledger: Ledger, name: str) -> str | None:  # noqa: ARG002
+    def place_of(self, ledger: Ledger, name: str) -> str | None:  # noqa: ARG002 (all sources are asked alike)
         """Return the sheet of a table."""
         sheet = self.workbook.sheet_called(name)
         return None if sheet is None else self.workbook.place(sheet)

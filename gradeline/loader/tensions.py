@@ -62,4 +62,4 @@ def check_tension(ledger: Ledger, gauge: GaugeTable, kind: GaugeKind, fluid: Flu
 def _unequal(values: Mapping[str, Any]) -> bool:
     """Whether the limbs have two bores."""
     bores = [values.get(key) for key in ("left_bore", "right_bore")]
-    return all(one is not None for one in bores) and bores[0].value != bores[1].value  # type: ignore[union-attr]
+    return all(one is not None for one in bores) and bores[0].value != bores[1].value  # type: ignore[union-attr]  # none is None here

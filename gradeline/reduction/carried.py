@@ -109,7 +109,7 @@ def carried_of(
         "walls": _walls(survey, walls, sound, posterior),
         "notes": _notes(flowing),
     }
-    return _plain(found)  # type: ignore[no-any-return]
+    return _plain(found)  # type: ignore[no-any-return]  # of a dict a dict
 
 
 def _tested(walls: tuple[Wall, ...], reaches: int) -> Array:

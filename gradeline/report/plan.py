@@ -187,7 +187,7 @@ def _layout(plan: Plan, display: Display) -> Iterator[str]:
             *(
                 TableColumn(
                     f"{words} after a fitting (bores)",
-                    lambda row, key=key: format_number(row[key], 2),  # type: ignore[misc]
+                    lambda row, key=key: format_number(row[key], 2),  # type: ignore[misc]  # the default binds this key
                     always=False,
                 )
                 for words, key in (("now", "bores_downstream"), ("then", "recommended_bores_downstream"))

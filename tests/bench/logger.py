@@ -123,7 +123,7 @@ def make(folder: Path, rows: int) -> list[tuple[float, float]]:
 
 def _correlated(noise: np.ndarray, before: np.ndarray, kept: float) -> np.ndarray:
     """Make white noise an autoregression of first order, in place; return its last values."""
-    from scipy.signal import lfilter  # noqa: PLC0415
+    from scipy.signal import lfilter  # noqa: PLC0415 (only the maker needs it)
 
     noise[:], _ = lfilter([1.0], [1.0, -kept], noise, axis=0, zi=(kept * before)[None, :])
     return noise[-1].copy()

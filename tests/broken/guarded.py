@@ -70,7 +70,7 @@ def main() -> None:
     # Before the hands are tied, as matplotlib keeps a list of the machine's fonts, and tempfile tries where it may write.
     import matplotlib.font_manager  # noqa: F401, PLC0415
 
-    from gradeline.cli import main as program  # noqa: PLC0415
+    from gradeline.cli import main as program  # noqa: PLC0415 (in this order, in the child)
 
     tempfile.gettempdir()
     sys.addaudithook(watch)

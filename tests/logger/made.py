@@ -47,7 +47,7 @@ def slope(flow: float) -> float:
 
 def correlated(rng: np.random.Generator, count: int, kept: float = 0.7) -> np.ndarray:
     """An autoregression of first order with unit variance."""
-    from scipy.signal import lfilter  # noqa: PLC0415
+    from scipy.signal import lfilter  # noqa: PLC0415 (only the maker needs it)
 
     start = rng.standard_normal() * kept
     return np.asarray(

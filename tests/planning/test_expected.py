@@ -35,7 +35,7 @@ def simulated(**more: object) -> Survey:
         sigma=0.0,
         draw=False,
         fittings=[NominalFitting(1.5, 3.0)],
-        **more,  # type: ignore[arg-type]
+        **more,  # type: ignore[arg-type]  # keys of several types
     )
     return survey
 

@@ -116,7 +116,7 @@ def test_too_short_a_board_is_said_with_the_greatest_flow() -> None:
 
 def test_the_greatest_flow_fills_the_scale() -> None:
     """At it S × (distance of the end taps) is the length of the board: f of an independent law."""
-    from tests.simulate.line import friction_factor  # noqa: PLC0415
+    from tests.simulate.line import friction_factor  # noqa: PLC0415 (only here)
 
     survey = bench()
     board = replace(survey.gauges[0], span=(0.0, 0.5))
@@ -199,7 +199,7 @@ def test_a_smooth_wall_and_laminar_runs_are_said() -> None:
 )
 def test_arguments_that_do_not_fit(more: dict[str, object], message: str) -> None:
     with pytest.raises(UsageError, match=message.replace("(", r"\(")):
-        plan(bench(), **more)  # type: ignore[arg-type]
+        plan(bench(), **more)  # type: ignore[arg-type]  # keys of several types
 
 
 def test_taps_are_recommended_where_the_flow_has_surely_recovered() -> None:

@@ -76,7 +76,7 @@ def paper(request: pytest.FixtureRequest) -> str:
 
 @pytest.fixture(scope="session")
 def pdf(field: Reduction, drawn: tuple[Picture, ...], paper: str) -> bytes:
-    return as_pdf(field, drawn, "9.9", paper=paper)  # type: ignore[arg-type]
+    return as_pdf(field, drawn, "9.9", paper=paper)  # type: ignore[arg-type]  # a text for a literal
 
 
 def test_page_and_pdf_have_the_same_headings_in_the_same_order(

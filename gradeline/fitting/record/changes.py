@@ -42,7 +42,7 @@ def local_noise(values: Array, count: Array) -> Array:
     >>> bool(0.5 < np.median(local_noise(z, np.ones(400))) < 2.0)
     True
     """
-    from scipy.ndimage import percentile_filter  # noqa: PLC0415
+    from scipy.ndimage import percentile_filter  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     blocks = len(values)
     length = min(_CHUNK, blocks)

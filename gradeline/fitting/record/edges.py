@@ -122,7 +122,7 @@ def cut_at_changes(record: Searched, first: int, stop: int) -> tuple[list[int], 
 
 def _without_lone(values: Array, count: Array) -> Array:
     """Bins with those that stand alone, far off the five around, replaced by their median."""
-    from scipy.ndimage import median_filter  # noqa: PLC0415
+    from scipy.ndimage import median_filter  # noqa: PLC0415 (loaded when asked for: start-up time)
 
     if len(values) < 5:
         return values

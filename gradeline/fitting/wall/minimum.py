@@ -26,10 +26,8 @@ Mask = NDArray[np.bool_]
 _ROUNDS = 12
 _NEAR = 1e-2  # a step beyond this share of ε is no polish
 _ROUNDING = 1e-13  # what the last step is at most, as a share of ε
-_COARSE, _FINE = (
-    1e-4,
-    1e-9,
-)  # share of ε that a search leaves: where steps take it from there, and where they do not
+# Share of ε that a search leaves: where steps take it from there, and where they do not.
+_COARSE, _FINE = 1e-4, 1e-9
 
 
 @dataclass(frozen=True)

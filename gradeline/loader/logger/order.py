@@ -108,7 +108,7 @@ def _lines(table: Table, wanted: tuple[int, int]) -> dict[int, bytes]:
 
 
 def _note(ledger: Ledger, table: Table, line: int, at: float, earlier: float, before: int) -> None:
-    from gradeline.loader.logger.clock import clock_from  # noqa: PLC0415
+    from gradeline.loader.logger.clock import clock_from  # noqa: PLC0415 (only for a problem)
 
     first = next(
         row[table.time] for row in table.head.rows if np.isfinite(table.form.seconds(row[table.time]))

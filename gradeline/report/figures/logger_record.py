@@ -186,7 +186,7 @@ def draw_faults(ax: Axes, reduction: Reduction) -> FaultArtists:
     for kind, marker in _MARKS.items():
         rows = reduction.record_flags[(reduction.record_flags["kind"] == kind).to_numpy(bool)]
         at = [
-            (float(row.start) / seconds, lanes.index(_column(row.column)))  # type: ignore[arg-type]
+            (float(row.start) / seconds, lanes.index(_column(row.column)))  # type: ignore[arg-type]  # a row has no types
             for row in rows.itertuples()
             if _column(row.column) in lanes
         ]
@@ -200,7 +200,7 @@ def draw_faults(ax: Axes, reduction: Reduction) -> FaultArtists:
         if name not in lanes:
             continue
         lane = lanes.index(name)
-        start, end = float(row.start) / seconds, float(row.end) / seconds  # type: ignore[arg-type]
+        start, end = float(row.start) / seconds, float(row.end) / seconds  # type: ignore[arg-type]  # a row has no types
         (span,) = ax.plot([start, end], [lane, lane], color=COLOURS["vermilion"], linewidth=2.2, zorder=3)
         spans.append(span)
         # a word of eight points takes about 4.4 points a letter
